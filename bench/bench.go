@@ -1,0 +1,90 @@
+// Package bench says what a hospital test bench is: the set of instruments
+// with which a unit under test is measured. (Go benchmarks are elsewhere, in
+// the _test.go file of their topic.)
+//
+// It is not a driver and not a simulation; instruments and simulated are. It
+// judges nothing and keeps nothing; procedures does.
+//
+// Order of use: setup.Open makes a Rig from a bench file; run takes readings
+// from it; Close ends it.
+package bench
+
+import (
+	"context"
+	"time"
+
+	"kymobench/bench/line"
+	"kymobench/bench/quantity"
+)
+
+// Reading is one number as an instrument sent it, with its text as received.
+type Reading struct {
+	Sent  line.Instant // when the question left; At for a free-running instrument
+	At    line.Instant // when the last byte of the answer was taken
+	Text  string       // the frame as received, without its terminator
+	Value quantity.Value
+}
+
+// Middle is the instant half way between question and answer, the best single
+// stamp of an asked reading.
+func (r Reading) Middle() line.Instant { return r.Sent + (r.At-r.Sent)/2 }
+
+// Identified is an instrument that can say who it is.
+type Identified interface {
+	// Identify asks for the identity and refuses one that is not expected.
+	Identify(ctx context.Context) (string, error)
+	// Uptime asks how long the instrument has been switched on.
+	Uptime(ctx context.Context) (time.Duration, error)
+}
+
+// Manometer is an instrument that answers with one reading when asked.
+type Manometer interface {
+	Identified
+	Read(ctx context.Context) (Reading, error)
+	// Zero makes the instrument take the present pressure for zero.
+	Zero(ctx context.Context) error
+}
+
+// Streaming is an instrument that sends readings by itself.
+type Streaming interface {
+	// Watch hands every reading to take, in the order of arrival, from now on;
+	// an error of take ends the engine's present wait. A frame that is not a
+	// number is handed over with its text and err set.
+	Watch(take func(r Reading, err error) error)
+}
+
+// PressureSource makes pressure.
+type PressureSource interface {
+	Identified
+	// Set asks for a pressure; the reference tells when it is there.
+	Set(ctx context.Context, p quantity.Pressure) error
+	// Hold shuts the source off from the volume, which keeps its pressure.
+	Hold(ctx context.Context) error
+	// Vent opens the volume to atmosphere.
+	Vent(ctx context.Context) error
+}
+
+// Valve makes the step.
+type Valve interface {
+	Identified
+	// Release opens the fast valve: the pressure at the UUT falls to atmosphere.
+	Release(ctx context.Context) error
+	// Shut closes it again.
+	Shut(ctx context.Context) error
+}
+
+// Rig is the set of instruments of one run.
+type Rig struct {
+	Engine    *line.Engine
+	Inbox     line.Inbox
+	Reference Manometer
+	UUT       Streaming
+	Readout   Identified // who turns the bridge into numbers; nil when it cannot be asked
+	Source    PressureSource
+	Valve     Valve
+	// EmergencyVent writes the vent commands of source and valve at once, on
+	// every port, without waiting for answers or for the record.
+	EmergencyVent func()
+	// Close ends the ports.
+	Close func() error
+}

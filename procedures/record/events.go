@@ -1,0 +1,291 @@
+package record
+
+import (
+	"encoding/json"
+
+	"kymobench/bench/line"
+	"kymobench/bench/quantity"
+)
+
+// The kinds of event a record holds, each with its payload type. Quantities
+// stand as text with their unit ("300 mmHg"), as they stand in the files they
+// come from, so that a record can be read by eye; samples keep the text as
+// received from the instrument.
+const (
+	KindOpened      = "opened"      // Opened, always the first line
+	KindProcedure   = "procedure"   // File
+	KindBenchFile   = "bench_file"  // File
+	KindUUT         = "uut"         // UUT
+	KindReference   = "reference"   // Reference
+	KindReadout     = "readout"     // Readout
+	KindSource      = "source"      // Instrument
+	KindValve       = "valve"       // Valve
+	KindWarnings    = "warnings"    // Warnings
+	KindPrompt      = "prompt"      // Prompt
+	KindAnswer      = "answer"      // Answer
+	KindStage       = "stage"       // Stage
+	KindReading     = "reading"     // Reading
+	KindBlock       = "block"       // Block
+	KindZeroing     = "zeroing"     // Zeroing
+	KindPoint       = "point"       // Point
+	KindHold        = "hold"        // Hold
+	KindCapture     = "capture"     // Capture
+	KindVent        = "vent"        // Vent
+	KindFault       = "fault"       // Fault
+	KindReservation = "reservation" // Reservation
+	KindFinished    = "finished"    // Finished
+	KindRecovered   = "recovered"   // Recovered
+	KindResults     = "results"     // StoredResults, the last line but one
+	KindClosed      = "closed"      // Closed, always the last line
+)
+
+// Schema is the format of the record, in its first line.
+const Schema = "kymobench/record/1"
+
+// Opened is the first line of every record.
+type Opened struct {
+	Schema     string `json:"schema"`
+	Run        string `json:"run"`
+	Counter    int64  `json:"counter"`       // of this bench's runs, from 1
+	Previous   string `json:"previous_head"` // hash of the run before, "" for the first
+	Program    string `json:"program"`       // name and version
+	Department string `json:"department"`
+	Bench      string `json:"bench"`
+	Operator   string `json:"operator"`
+	Simulated  bool   `json:"simulated"`
+	Seed       uint64 `json:"seed,omitempty"` // of a simulated bench in memory
+}
+
+// File is a file the run used, whole.
+type File struct {
+	Name     string `json:"name"`
+	ID       string `json:"id,omitempty"`
+	Revision int64  `json:"revision,omitempty"`
+	Title    string `json:"title,omitempty"`
+	SHA256   string `json:"sha256"`
+	Text     string `json:"text"`
+}
+
+// Instrument is an instrument as the bench file describes it, with the
+// identity it answered.
+type Instrument struct {
+	Role     string `json:"role"`
+	Name     string `json:"name"`
+	Family   string `json:"family"`
+	Port     string `json:"port"`
+	Identity string `json:"identity"` // as answered, "" when it cannot be asked
+	Uptime   string `json:"uptime,omitempty"`
+}
+
+// UUT is the unit under test and how its output is read.
+type UUT struct {
+	SerialNumber          string         `json:"serial_number"`
+	Model                 string         `json:"model,omitempty"`
+	Lot                   string         `json:"lot,omitempty"`
+	Is                    string         `json:"is"` // bare transducer, transducer with cable and channel, channel
+	Family                string         `json:"family,omitempty"`
+	Port                  string         `json:"port,omitempty"`
+	Field                 quantity.Field `json:"field"`
+	Resolution            string         `json:"resolution,omitempty"`
+	Excitation            string         `json:"excitation,omitempty"`
+	NominalSensitivity    string         `json:"nominal_sensitivity,omitempty"`
+	SamplePeriod          string         `json:"sample_period,omitempty"`
+	SamplePeriodTolerance string         `json:"sample_period_tolerance,omitempty"` // half-width, a share ("0.01 %")
+	Height                string         `json:"height,omitempty"`
+	HeightUncertainty     string         `json:"height_uncertainty,omitempty"` // standard
+	Fluid                 string         `json:"fluid,omitempty"`
+	FluidDensity          float64        `json:"fluid_density_kg_m3,omitempty"`
+	Delay                 string         `json:"delay,omitempty"`
+	DelayUncertainty      string         `json:"delay_uncertainty,omitempty"`
+}
+
+// Reference is the reference manometer with its certificate.
+type Reference struct {
+	Instrument
+	Field                 quantity.Field `json:"field"`
+	Resolution            string         `json:"resolution,omitempty"`
+	ResponseTime          string         `json:"response_time,omitempty"`
+	ResponseTimeTolerance string         `json:"response_time_tolerance,omitempty"`
+	RangeLow              string         `json:"range_low,omitempty"`
+	RangeHigh             string         `json:"range_high,omitempty"`
+	Height                string         `json:"height,omitempty"`
+	Certificate           Certificate    `json:"certificate"`
+}
+
+// Certificate is what the reference's calibration certificate states.
+type Certificate struct {
+	Number               string       `json:"number,omitempty"`
+	Laboratory           string       `json:"laboratory,omitempty"`
+	Date                 string       `json:"date,omitempty"`
+	Due                  string       `json:"due,omitempty"`
+	CoverageFactor       float64      `json:"coverage_factor,omitempty"`
+	Uncertainty          string       `json:"uncertainty,omitempty"`            // expanded, at each set pressure
+	UncertaintyOfReading string       `json:"uncertainty_of_reading,omitempty"` // expanded, a share common to all readings
+	DriftOfReading       string       `json:"drift_of_reading,omitempty"`       // half-width, a share
+	Corrections          []Correction `json:"corrections,omitempty"`
+}
+
+// Correction says what to add to a reading at a pressure.
+type Correction struct {
+	At         string `json:"at"`
+	Correction string `json:"correction"`
+}
+
+// Readout is what turns the bridge's output into numbers.
+type Readout struct {
+	Instrument
+	Certificate     string  `json:"certificate,omitempty"`
+	Due             string  `json:"due,omitempty"`
+	CoverageFactor  float64 `json:"coverage_factor,omitempty"`
+	GainUncertainty string  `json:"gain_uncertainty,omitempty"` // expanded, a share
+	ZeroUncertainty string  `json:"zero_uncertainty,omitempty"` // expanded
+}
+
+// Valve is what makes the step.
+type Valve struct {
+	Instrument
+	EdgeTime          string `json:"edge_time,omitempty"`           // 10-90 %
+	EdgeTimeTolerance string `json:"edge_time_tolerance,omitempty"` // half-width, a share
+}
+
+// Warnings are the safety warnings shown and how they were acknowledged.
+type Warnings struct {
+	Lines        []string `json:"lines"`
+	Acknowledged string   `json:"acknowledged"`
+}
+
+// Prompt is a question to the operator.
+type Prompt struct {
+	Text string `json:"text"`
+}
+
+// Answer is the operator's line.
+type Answer struct {
+	Text string `json:"text"`
+	End  bool   `json:"end,omitempty"` // the input ended instead
+}
+
+// Stage marks where a stage of the procedure begins and ends.
+type Stage struct {
+	Number int    `json:"number"` // from 1, in the procedure's order
+	Kind   string `json:"kind"`
+	Phase  string `json:"phase"` // begin, end, abandoned
+	Why    string `json:"why,omitempty"`
+}
+
+// Reading is one asked reading; the line's own time is when its last byte was
+// taken. Watch summarises what the UUT sent since the reading before.
+type Reading struct {
+	Role  string       `json:"role"`
+	Sent  line.Instant `json:"sent"`
+	Text  string       `json:"text"`
+	Watch *Watch       `json:"watch,omitempty"`
+}
+
+// Watch summarises samples that are not kept, in the UUT's own unit.
+type Watch struct {
+	N       int     `json:"n"`
+	Mean    float64 `json:"mean"`
+	SD      float64 `json:"sd"`
+	Min     float64 `json:"min"`
+	Max     float64 `json:"max"`
+	Refused int     `json:"refused,omitempty"`
+}
+
+// BlockSize is the most samples one Block holds.
+const BlockSize = 250
+
+// Block is a stretch of samples of a free-running instrument, as received.
+type Block struct {
+	Role    string       `json:"role"`
+	Start   line.Instant `json:"start"`  // arrival of the first sample
+	Period  string       `json:"period"` // of the samples, as used ("1 ms")
+	Samples []string     `json:"samples"`
+}
+
+// Zeroing says that an instrument was zeroed.
+type Zeroing struct {
+	Role string `json:"role"`
+	How  string `json:"how"` // device, arithmetic
+}
+
+// Point is one point taken: the lines of the reference readings and sample
+// blocks it stands on. Purpose is "zero" for the reading before zeroing and
+// "static" for a point of a cycle.
+type Point struct {
+	Purpose  string  `json:"purpose"`
+	Stage    int     `json:"stage"`
+	Cycle    int     `json:"cycle,omitempty"` // from 1
+	Leg      string  `json:"leg,omitempty"`   // up, down
+	Set      string  `json:"set,omitempty"`   // "" when the data state none
+	Readings []int64 `json:"readings"`
+	Blocks   []int64 `json:"blocks,omitempty"`
+	// Text of a single UUT reading, for data that have no blocks.
+	UUT        string `json:"uut,omitempty"`
+	Excitation string `json:"excitation,omitempty"` // measured with this reading, if it was
+	Ready      string `json:"ready,omitempty"`      // what was waited for, in words
+}
+
+// Hold is the leak test: the source shut off, the reference read.
+type Hold struct {
+	Stage    int     `json:"stage"`
+	Set      string  `json:"set"`
+	Readings []int64 `json:"readings"`
+}
+
+// Capture is one step: the lines of its sample blocks, in order. Applied
+// blocks hold the applied pressure on the same clock, if it was measured.
+type Capture struct {
+	Stage     int          `json:"stage"`
+	Number    int          `json:"number"` // from 1
+	Direction string       `json:"direction,omitempty"`
+	Size      string       `json:"size,omitempty"`
+	Commanded line.Instant `json:"commanded,omitempty"`
+	Blocks    []int64      `json:"blocks"`
+	Applied   []int64      `json:"applied,omitempty"`
+	Edge      string       `json:"edge,omitempty"` // stated for this data; "" fitted or measured, else a time ("0 s" ideal)
+}
+
+// Vent says that the volume was opened to atmosphere, and why.
+type Vent struct {
+	Why string `json:"why"`
+}
+
+// Fault is something of the bench or the run, never of the UUT, that leaves
+// the run inconclusive.
+type Fault struct {
+	Code string `json:"code"`
+	Text string `json:"text"`
+}
+
+// Reservation weakens a result without stopping it.
+type Reservation struct {
+	Code string `json:"code"`
+	Text string `json:"text"`
+}
+
+// Finished ends the measuring: complete, or stopped with a code.
+type Finished struct {
+	Complete bool   `json:"complete"`
+	Code     string `json:"code,omitempty"`
+	Text     string `json:"text,omitempty"`
+}
+
+// Recovered says what was set aside when an open record was taken up again.
+type Recovered struct {
+	Bytes  int64  `json:"bytes"`
+	SHA256 string `json:"sha256"`
+	File   string `json:"file"`
+}
+
+// StoredResults are the Results as computed by the build that closed the record.
+type StoredResults struct {
+	Version int             `json:"version"` // of the computation
+	Layout  int             `json:"layout"`  // page layout the report is made with
+	JSON    json.RawMessage `json:"results"`
+}
+
+// Closed is the last line.
+type Closed struct {
+	Lines int64 `json:"lines"` // with this one
+}
