@@ -182,7 +182,8 @@ type Reading struct {
 	Watch *Watch       `json:"watch,omitempty"`
 }
 
-// Watch summarises samples that are not kept, in the UUT's own unit.
+// Watch summarises the UUT's samples between two readings of the reference, in
+// mmHg at the nominal sensitivity, before zeroing.
 type Watch struct {
 	N       int     `json:"n"`
 	Mean    float64 `json:"mean"`
