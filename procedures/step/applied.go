@@ -1,0 +1,122 @@
+package step
+
+import "math"
+
+// appliedInput is a measured applied pressure on the same samples as the
+// trace, less its level before the step and divided by its own height, so
+// that the fitted height is the height of the answer.
+type appliedInput struct {
+	u []float64
+}
+
+func (a *appliedInput) at(i int) float64 {
+	return a.u[max(0, min(i, len(a.u)-1))]
+}
+
+// hold is the exact step over delta = w dt radians of the state (p, q = p'/w)
+// of p” + 2 zeta w p' + w^2 p = w^2 u with u straight between its samples
+// (first-order hold): (p, q) becomes phi (p, q) + b0 u0 + b1 u1.
+type hold struct {
+	phi    [2][2]float64
+	b0, b1 [2]float64
+}
+
+// newHold follows from superposition: C + zeta s is the return from p = 1,
+// g the answer to a unit step and G the answer to a unit ramp.
+func newHold(delta, zeta float64) hold {
+	if delta == 0 {
+		return hold{phi: [2][2]float64{{1, 0}, {0, 1}}}
+	}
+	c, s := kernel(delta, zeta)
+	g := 1 - c - zeta*s
+	ramp, rampSlope := (delta-s-2*zeta*g)/delta, g/delta
+	return hold{
+		phi: [2][2]float64{{c + zeta*s, s}, {-s, c - zeta*s}},
+		b0:  [2]float64{g - ramp, s - rampSlope},
+		b1:  [2]float64{ramp, rampSlope},
+	}
+}
+
+// difference is (a - b)/h, entry by entry.
+func difference(a, b hold, h float64) hold {
+	var d hold
+	for i := range 2 {
+		for j := range 2 {
+			d.phi[i][j] = (a.phi[i][j] - b.phi[i][j]) / h
+		}
+		d.b0[i] = (a.b0[i] - b.b0[i]) / h
+		d.b1[i] = (a.b1[i] - b.b1[i]) / h
+	}
+	return d
+}
+
+// triple is a hold with its derivatives with respect to ln w and ln zeta,
+// taken by central differences: ten numbers a pass, not one a sample.
+type triple struct {
+	value, omega, zeta hold
+}
+
+func newTriple(delta, zeta float64) triple {
+	const h = 1e-4
+	up, down := math.Exp(h), math.Exp(-h)
+	t := triple{value: newHold(delta, zeta)}
+	if delta > 0 {
+		t.omega = difference(newHold(delta*up, zeta), newHold(delta*down, zeta), 2*h)
+		t.zeta = difference(newHold(delta, zeta*up), newHold(delta, zeta*down), 2*h)
+	}
+	return t
+}
+
+// recursor carries the state and its two sensitivities along the applied
+// pressure. Column g at sample i is p at t_i - t0: the state at the sample
+// before that instant, advanced by the part of a sample that is left.
+type recursor struct {
+	whole, part triple
+	omega       float64
+	lag         int // sample i needs the state at node i - lag
+	state       [3][2]float64
+}
+
+func (r *recursor) start(a *appliedInput, theta *[most]float64, dt float64) {
+	w, zeta := math.Exp(theta[lnOmega]), math.Exp(theta[lnZeta])
+	lag := math.Ceil(theta[delay] / dt)
+	r.lag = int(lag)
+	r.omega = w
+	r.whole = newTriple(w*dt, zeta)
+	r.part = newTriple(w*(lag*dt-theta[delay]), zeta)
+	r.state = [3][2]float64{}
+	// With a negative delay the first sample needs a later node.
+	for node := 0; node < -r.lag; node++ {
+		r.state = r.whole.advance(&r.state, a.at(node), a.at(node+1))
+	}
+}
+
+func (r *recursor) fill(a *appliedInput, start, k int, g *[blockSize]float64, d *[4][blockSize]float64) {
+	for i := range k {
+		node := start + i - r.lag
+		out := r.state
+		if node >= 0 {
+			out = r.part.advance(&r.state, a.at(node), a.at(node+1))
+			r.state = r.whole.advance(&r.state, a.at(node), a.at(node+1))
+		}
+		g[i] = out[0][0]
+		d[lnOmega][i] = out[1][0]
+		d[lnZeta][i] = out[2][0]
+		d[delay][i] = -r.omega * out[0][1]
+	}
+}
+
+// advance takes the state (value, d/dln w, d/dln zeta) over one hold.
+func (t *triple) advance(x *[3][2]float64, u0, u1 float64) [3][2]float64 {
+	p, q := x[0][0], x[0][1]
+	var y [3][2]float64
+	v, o, z := &t.value, &t.omega, &t.zeta
+	for i := range 2 {
+		y[0][i] = v.phi[i][0]*p + v.phi[i][1]*q + v.b0[i]*u0 + v.b1[i]*u1
+		y[1][i] = v.phi[i][0]*x[1][0] + v.phi[i][1]*x[1][1] +
+			o.phi[i][0]*p + o.phi[i][1]*q + o.b0[i]*u0 + o.b1[i]*u1
+		y[2][i] = v.phi[i][0]*x[2][0] + v.phi[i][1]*x[2][1] +
+			z.phi[i][0]*p + z.phi[i][1]*q + z.b0[i]*u0 + z.b1[i]*u1
+	}
+	return y
+}

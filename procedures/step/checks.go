@@ -1,0 +1,225 @@
+package step
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"gonum.org/v1/gonum/stat/distuv"
+)
+
+// quality looks at one fit for what would make its figures untrue.
+type quality struct {
+	fitted
+	step    *Step
+	quantum float64
+	rate    float64
+}
+
+// isStep tells a lasting change of level from whatever else set off the
+// onset: the model must explain the movement and the change exceed the noise.
+func (q *quality) isStep() bool {
+	h := math.Abs(q.step.Height)
+	if !(h > q.threshold/2) || !(h > 3*q.step.Noise) {
+		return false
+	}
+	var miss, all float64
+	mean := 0.0
+	y := q.problem.y
+	for _, v := range y {
+		mean += v / float64(len(y))
+	}
+	for i, v := range y {
+		r := q.step.Residuals[i] / q.scale
+		miss += r * r
+		all += (v - mean) * (v - mean)
+	}
+	return miss < 0.25*all
+}
+
+// rivals tells whether a second minimum explains the trace as well as the
+// best (cost within what noise can do) with another frequency.
+func (q *quality) rivals(fn float64, c covariance) bool {
+	other := math.Exp(q.second.theta[lnOmega]) / (2 * math.Pi)
+	if math.Abs(math.Log(other/fn)) < 0.05 {
+		return false
+	}
+	variance := c.sigma * c.sigma / (q.scale * q.scale)
+	return q.second.at.cost-q.at.cost < 16*variance
+}
+
+// clipped looks for a flat top: a run of equal extreme values entered or left
+// at a pace that a rounded top or a plateau approached by itself cannot have.
+func (q *quality) clipped(pressure []float64) bool {
+	y := pressure[q.from:q.to]
+	response := y[max(0, q.post-q.from-1):]
+	if len(response) < 4 {
+		return false
+	}
+	low, high := slices.Min(response), slices.Max(response)
+	return q.flat(response, low) || q.flat(response, high)
+}
+
+// flat looks for the run at one extreme. Noise: where the samples before the
+// step scatter over several digits, four equal extreme values in a row do not
+// happen by chance. Without noise: within a rounded top or plateau that shows
+// L equal samples the next one differs by at most about (1 + 4/L) digits.
+func (q *quality) flat(y []float64, extreme float64) bool {
+	h := math.Abs(q.step.Height)
+	noisy := q.step.Noise > q.quantum/2 && q.step.Noise > 1e-6*h
+	for i := 0; i < len(y); i++ {
+		run := 0
+		for i+run < len(y) && y[i+run] == extreme {
+			run++
+		}
+		if run == 0 {
+			continue
+		}
+		if noisy && run >= 4 && (q.step.Noise > q.quantum || run >= 8) {
+			return true
+		}
+		if !noisy && run >= 3 {
+			jump := 0.0
+			if i > 0 {
+				jump = math.Abs(y[i-1] - extreme)
+			}
+			if i+run < len(y) {
+				jump = math.Max(jump, math.Abs(y[i+run]-extreme))
+			}
+			if jump > math.Max(4*q.quantum, 0.02*h) {
+				return true
+			}
+		}
+		i += run
+	}
+	return false
+}
+
+// reserve adds the reservations that depend on residuals and noise.
+func (q *quality) reserve(fn, zeta float64) {
+	s := q.step
+	n := float64(len(s.Residuals))
+	if phi := s.Autocorrelation; phi > 0.2 && phi*math.Sqrt(n) > 5 && s.Noise > 1e-6*math.Abs(s.Height) {
+		s.reserve(ColouredNoise, fmt.Sprintf("the noise is correlated from sample to sample (%.2f); the intervals allow for it", phi))
+	}
+	if text, is := q.misfit(fn, zeta); is {
+		s.reserve(Misfit, text)
+	}
+	if q.quantum > 1e-4*math.Abs(s.Height) && s.Noise < 0.4*q.quantum {
+		s.reserve(Quantised, fmt.Sprintf("the digits of the trace (%.3g) are coarser than 2.5 times its noise (%.3g); the intervals may be too narrow", q.quantum, s.Noise))
+	}
+	moved := math.Abs(s.Drift) * float64(s.To-s.From) / q.rate
+	if moved > 0.05*math.Abs(s.Height) {
+		s.reserve(Drift, fmt.Sprintf("the level drifts by %.3g a second, %.2g %% of the step within the part fitted", s.Drift, 100*moved/math.Abs(s.Height)))
+	}
+}
+
+// misfit compares the energy of the smoothed residuals of the answer with
+// that before the step: more than 2.5 times (or more than chance gives a
+// short stretch, 1 in 10,000 by the F distribution), and a peak of over 0.5 %
+// of the step. Averaging over an eighth of a period leaves what a wrong model
+// leaves and takes the noise away.
+func (q *quality) misfit(fn, zeta float64) (string, bool) {
+	s := q.step
+	length := max(1, int(math.Round(q.rate/(8*fn))))
+	tau := settling(2*math.Pi*fn, zeta)
+	split := q.post - q.from - 1
+	if q.problem.applied == nil {
+		split -= int(q.width() / 2 * q.rate)
+	}
+	split = max(0, min(split, len(s.Residuals)))
+	end := min(len(s.Residuals), split+int(math.Max(10*tau, 2/fn)*q.rate)+2)
+	answer, peak, answerCells := smoothed(s.Residuals[split:end], length)
+	rest, _, restCells := smoothed(s.Residuals[:split], length)
+	loss := (1 - s.Autocorrelation) / (1 + s.Autocorrelation)
+	answerCells, restCells = math.Max(1, answerCells*loss), restCells*loss
+	if !(peak > 0.005*math.Abs(s.Height)) {
+		return "", false
+	}
+	floor := q.quantum * q.quantum / 12 / float64(length)
+	ratio := answer / math.Max(rest, floor)
+	limit := 2.5
+	if restCells >= 1 {
+		limit = math.Max(limit, distuv.F{D1: answerCells, D2: restCells}.Quantile(0.9999))
+	} else {
+		ratio = 0
+	}
+	if !(ratio > limit) {
+		return "", false
+	}
+	return fmt.Sprintf("the fit leaves up to %.2g %% of the step unexplained, beyond the noise before it; the line may not be a second-order system, or the step not single", 100*peak/math.Abs(s.Height)), true
+}
+
+// smoothed returns the mean square and the largest magnitude of r averaged
+// over length samples, and how many independent averages it holds.
+func smoothed(r []float64, length int) (energy, peak, cells float64) {
+	if len(r) < length {
+		return 0, 0, 0
+	}
+	sum := 0.0
+	count := 0.0
+	for i, v := range r {
+		sum += v
+		if i >= length {
+			sum -= r[i-length]
+		}
+		if i >= length-1 {
+			m := sum / float64(length)
+			energy += m * m
+			peak = math.Max(peak, math.Abs(m))
+			count++
+		}
+	}
+	return energy / count, peak, float64(len(r)) / float64(length)
+}
+
+// lineScatter is the standard deviation about a straight line.
+func lineScatter(y []float64) float64 {
+	n := float64(len(y))
+	if n < 4 {
+		return 0
+	}
+	var mean, xy, xx, sum float64
+	for _, v := range y {
+		mean += v / n
+	}
+	for i, v := range y {
+		x := float64(i) - (n-1)/2
+		xy += x * (v - mean)
+		xx += x * x
+	}
+	for i, v := range y {
+		r := v - mean - xy/xx*(float64(i)-(n-1)/2)
+		sum += r * r
+	}
+	return math.Sqrt(sum / (n - 2))
+}
+
+// quantum finds the step of the digits in a trace: the smallest difference
+// between values, if all differences are whole multiples of it. 0 when the
+// values follow no such grid or too few differ.
+func quantum(y []float64) float64 {
+	s := slices.Clone(y)
+	slices.Sort(s)
+	s = slices.Compact(s)
+	if len(s) < 2 {
+		return 0
+	}
+	least := math.Inf(1)
+	size := math.Max(math.Abs(s[0]), math.Abs(s[len(s)-1]))
+	for i := 1; i < len(s); i++ {
+		if d := s[i] - s[i-1]; d > 1e-9*size {
+			least = math.Min(least, d)
+		}
+	}
+	if math.IsInf(least, 1) {
+		return 0
+	}
+	for i := 1; i < len(s); i++ {
+		k := (s[i] - s[0]) / least
+		if math.Abs(k-math.Round(k)) > 0.05 && math.Abs(k) < 1e5 {
+			return 0
+		}
+	}
+	return least
+}

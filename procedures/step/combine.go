@@ -1,0 +1,105 @@
+package step
+
+import (
+	"math"
+	"slices"
+
+	"gonum.org/v1/gonum/stat/distuv"
+)
+
+// Combined is what the steps of one place and line say together.
+type Combined struct {
+	Determined         bool
+	Reasons            []string // codes, why it is undetermined
+	Frequency, Damping Estimate
+	Steps              int // determined steps used
+	DegreesOfFreedom   float64
+}
+
+// largestUncertainty is the relative standard uncertainty of fn beyond which
+// a figure is undetermined (facts of the project, measured on simulations).
+const largestUncertainty = 0.05
+
+// Combine takes the determined steps. One alone: its own figures. Several:
+// the mean of ln fn and of zeta with the plain Student t of their scatter,
+// n - 1 degrees of freedom, because steps differ by more than their own
+// uncertainty tells and weights by that uncertainty would then be far too
+// sure of themselves.
+//
+// A few steps can agree by accident. The half-width of an interval is
+// therefore at least the standard uncertainty of the mean that the fits
+// themselves claim (root of the sum of squares over n). It is not the whole
+// 95 % claim of the fits: with five steps that raises the coverage from 95 to
+// 98 %, this from 95 to 95.5 %.
+//
+// Without a determined step the reasons are those of the steps, or no_step.
+// A mean whose standard uncertainty of ln fn is over 5 % is undetermined.
+func Combine(steps []Step) Combined {
+	var c Combined
+	var frequency, damping, frequencyOwn, dampingOwn []float64
+	var only Step
+	for _, s := range steps {
+		if !s.Determined {
+			for _, r := range s.Reasons {
+				if !slices.Contains(c.Reasons, r) {
+					c.Reasons = append(c.Reasons, r)
+				}
+			}
+			continue
+		}
+		only = s
+		frequency = append(frequency, math.Log(s.Frequency.Value))
+		frequencyOwn = append(frequencyOwn, s.Frequency.StandardUncertainty/s.Frequency.Value)
+		damping = append(damping, s.Damping.Value)
+		dampingOwn = append(dampingOwn, s.Damping.StandardUncertainty)
+	}
+	c.Steps = len(frequency)
+	switch {
+	case len(steps) == 0:
+		c.Reasons = []string{NoStep}
+		return c
+	case c.Steps == 0:
+		return c
+	case c.Steps == 1:
+		return Combined{Determined: true, Frequency: only.Frequency, Damping: only.Damping, Steps: 1, DegreesOfFreedom: only.DegreesOfFreedom}
+	}
+	c.DegreesOfFreedom = float64(c.Steps - 1)
+	t := studentT(c.DegreesOfFreedom)
+	m, u := mean(frequency, frequencyOwn, t)
+	if !(u <= largestUncertainty) {
+		c.Reasons = []string{UncertaintyTooLarge}
+		return c
+	}
+	c.Determined, c.Reasons = true, nil
+	c.Frequency = logEstimate(m, u, t)
+	m, u = mean(damping, dampingOwn, t)
+	c.Damping = Estimate{m, u, math.Max(0, m-t*u), m + t*u}
+	return c
+}
+
+// mean returns the mean and its standard uncertainty: from the scatter, but
+// not less than 1/t of what the single uncertainties own justify.
+func mean(values, own []float64, t float64) (m, u float64) {
+	n := float64(len(values))
+	for _, v := range values {
+		m += v / n
+	}
+	var scatter, within float64
+	for i, v := range values {
+		scatter += (v - m) * (v - m)
+		within += own[i] * own[i]
+	}
+	return m, math.Max(math.Sqrt(scatter/(n-1)/n), math.Sqrt(within)/n/t)
+}
+
+// logEstimate turns a logarithm with its uncertainty into an estimate of the
+// quantity: the interval is symmetric in the logarithm.
+func logEstimate(m, u, t float64) Estimate {
+	v := math.Exp(m)
+	return Estimate{v, v * u, v * math.Exp(-t*u), v * math.Exp(t*u)}
+}
+
+// studentT is the two-sided 95 % quantile of Student's t.
+func studentT(degreesOfFreedom float64) float64 {
+	return distuv.StudentsT{Mu: 0, Sigma: 1, Nu: degreesOfFreedom}.Quantile(0.975)
+}

@@ -1,0 +1,257 @@
+package step
+
+import (
+	"fmt"
+	"math"
+)
+
+// Limits of what can be said (facts of the project, measured on simulations).
+const (
+	samplesNeeded     = 4    // a period
+	samplesComfort    = 5    // a period; between the two the result is reserved
+	samplesOverdamped = 10   // a period, when nothing oscillates
+	widestEdge        = 0.35 // edge width x fn
+)
+
+// judge turns a fit into a Step: uncertainties, reasons and reservations. It
+// reports false when what was fitted is no step at all.
+func (a *analysis) judge(f fitted) (Step, bool) {
+	p := f.problem
+	s := Step{From: f.from, To: f.to, EdgeWidth: f.width()}
+	height := f.scale * f.beta[response]
+	n := float64(f.to - f.from)
+	s.Height = height
+	s.Drift = f.scale * f.beta[1] * 2 / (n - 1) * a.trace.Rate
+	at := float64(f.origin) * a.dt
+	if p.applied == nil {
+		at += f.theta[delay]
+	} else {
+		at += a.appliedMiddle(f)
+		s.Delay = f.theta[delay]
+	}
+	s.At = a.trace.Start + at
+	s.Baseline = f.base + f.scale*(f.beta[0]+f.beta[1]*(2*(at*a.trace.Rate-float64(f.from))/(n-1)-1))
+	j := f.jacobian()
+	s.Residuals = f.residuals(j)
+	s.Fitted = make([]float64, len(s.Residuals))
+	for i := range s.Residuals {
+		s.Residuals[i] *= f.scale
+		s.Fitted[i] = a.trace.Pressure[f.from+i] - s.Residuals[i]
+	}
+	s.Noise = lineScatter(a.trace.Pressure[f.from:f.pre])
+	c := sandwich(j, s.Residuals, f.scale)
+	s.DegreesOfFreedom, s.Autocorrelation = c.freedom, c.correlation
+	q := quality{fitted: f, step: &s, quantum: a.quantum, rate: a.trace.Rate}
+	if !q.isStep() {
+		return s, false
+	}
+	fn := math.Exp(f.theta[lnOmega]) / (2 * math.Pi)
+	zeta := math.Exp(f.theta[lnZeta])
+	uLog, uZeta := c.deviation[linear+lnOmega], zeta*c.deviation[linear+lnZeta]
+	add := func(code string) { s.Reasons = append(s.Reasons, code) }
+	if q.clipped(a.trace.Pressure) {
+		add(Clipped)
+	}
+	rate := a.trace.Rate
+	slowly := f.rival && q.rivals(fn, c)
+	switch {
+	case fn*samplesNeeded > rate, zeta > 1+2*uZeta && fn*samplesOverdamped*math.Exp(-3*uLog) > rate, slowly:
+		add(SamplingTooSlow)
+	case fn*samplesComfort*math.Exp(-2*uLog) > rate:
+		s.reserve(SamplingSlow, fmt.Sprintf("%.3g samples a period of the natural frequency, fewer than %d", rate/fn, samplesComfort))
+	}
+	if p.applied == nil && f.width()*fn > widestEdge {
+		add(EdgeTooSlow)
+	}
+	if !(uLog <= largestUncertainty) {
+		add(UncertaintyTooLarge)
+	}
+	q.reserve(fn, zeta)
+	if p.fitWidth {
+		s.reserve(EdgeNotStated, "the edge of the step was neither stated nor measured; its width was fitted, its shape is not known")
+	}
+	if len(s.Reasons) > 0 {
+		return s, true
+	}
+	t := studentT(c.freedom)
+	s.Determined = true
+	s.Frequency = logEstimate(math.Log(fn), uLog, t)
+	s.Damping = Estimate{zeta, uZeta, math.Max(0, zeta-t*uZeta), zeta + t*uZeta}
+	return s, true
+}
+
+func (s *Step) reserve(code, text string) {
+	s.Reservations = append(s.Reservations, Reservation{code, text})
+}
+
+// appliedMiddle is the time, from the origin, at which the applied pressure
+// is half way.
+func (a *analysis) appliedMiddle(f fitted) float64 {
+	u := f.problem.applied.u
+	for i := 1; i < len(u); i++ {
+		if u[i] >= 0.5 && i >= f.pre-f.from {
+			part := (0.5 - u[i-1]) / (u[i] - u[i-1])
+			if !(part >= 0 && part <= 1) {
+				part = 1
+			}
+			return f.problem.first + (float64(i-1)+part)*a.dt
+		}
+	}
+	return 0
+}
+
+// jacobian returns the columns of 1, drift, g and A dg/dtheta at the
+// solution, in the scaled unit.
+func (f *fitted) jacobian() [][]float64 {
+	p := f.problem
+	n := len(p.y)
+	j := make([][]float64, linear+p.nonlinear)
+	j[0], j[1] = p.one, p.tau
+	for i := response; i < len(j); i++ {
+		j[i] = make([]float64, n)
+	}
+	p.begin(&f.theta)
+	for start := 0; start < n; start += blockSize {
+		k := min(blockSize, n-start)
+		if !p.fill(&f.theta, start, k) {
+			continue
+		}
+		copy(j[response][start:], p.g[:k])
+		for i := range p.nonlinear {
+			for m := range k {
+				j[linear+i][start+m] = f.beta[response] * p.d[i][m]
+			}
+		}
+	}
+	return j
+}
+
+func (f *fitted) residuals(j [][]float64) []float64 {
+	r := make([]float64, len(f.problem.y))
+	for i, y := range f.problem.y {
+		r[i] = y - f.beta[0] - f.beta[1]*j[1][i] - f.beta[response]*j[response][i]
+	}
+	return r
+}
+
+// covariance holds the standard deviations of the parameters, in the order
+// of the jacobian, in the scaled unit.
+type covariance struct {
+	deviation   [most]float64
+	sigma       float64 // of the residuals, unit of the trace
+	correlation float64 // from sample to sample
+	freedom     float64
+}
+
+// sandwich estimates the covariance of the parameters under noise that
+// follows x[i] = phi x[i-1] + white:
+//
+//	cov = s^2 (J'J)^-1 (J'R J)(J'J)^-1,  R[i][k] = phi^|i-k|
+//	s^2 = r'r/(n - tr((J'J)^-1 J'R J))
+//
+// phi is the lag-one correlation of the residuals, corrected for what the
+// fit took out of it (the same trace over n) and not below 0. Degrees of
+// freedom of s: n (1 - phi^2)/(1 + phi^2) less the number of parameters.
+// Source: generalised least squares; correction by hand.
+func sandwich(j [][]float64, residuals []float64, scale float64) covariance {
+	n, size := len(residuals), len(j)
+	var c covariance
+	var gram, inverse [most][most]float64
+	var unit [most]float64
+	for i := range size {
+		for k := range i + 1 {
+			gram[i][k] = dot(j[i], j[k])
+		}
+		if unit[i] = math.Sqrt(gram[i][i]); unit[i] == 0 {
+			unit[i] = 1
+		}
+	}
+	for i := range size {
+		c.deviation[i] = math.Inf(1)
+		for k := range i + 1 {
+			gram[i][k] /= unit[i] * unit[k]
+		}
+	}
+	c.freedom = 1
+	if !cholesky(&gram, size) {
+		return c
+	}
+	for k := range size {
+		var e [most]float64
+		e[k] = 1
+		substitute(&gram, &e, size)
+		for i := range size {
+			inverse[i][k] = e[i]
+		}
+	}
+	var sum, lag float64
+	for i, r := range residuals {
+		sum += r * r
+		if i > 0 {
+			lag += r * residuals[i-1]
+		}
+	}
+	raw := 0.0
+	if sum > 0 {
+		raw = lag / sum
+	}
+	var meat [most][most]float64
+	phi, taken := 0.0, float64(size)
+	for range 3 {
+		share := math.Min(taken/float64(n), 0.5)
+		phi = math.Min(math.Max(raw+share*(1-raw), 0), 0.99)
+		meat = correlated(j, unit, phi)
+		taken = 0
+		for i := range size {
+			for k := range size {
+				taken += inverse[i][k] * meat[k][i]
+			}
+		}
+		if phi == 0 {
+			break
+		}
+	}
+	c.correlation = phi
+	c.freedom = math.Max(1, float64(n)*(1-phi*phi)/(1+phi*phi)-float64(size))
+	variance := sum / math.Max(float64(n)-taken, 1)
+	// Rounding keeps even a perfect trace from being known exactly.
+	c.sigma = math.Max(math.Sqrt(variance), 1e-9*math.Abs(scale))
+	for i := range size {
+		v := 0.0
+		for k := range size {
+			for m := range size {
+				v += inverse[i][k] * meat[k][m] * inverse[m][i]
+			}
+		}
+		c.deviation[i] = c.sigma / math.Abs(scale) * math.Sqrt(math.Max(v, 0)) / unit[i]
+	}
+	return c
+}
+
+// correlated is J'R J with the columns divided by unit, by one recursion:
+// the sum over earlier samples of phi^lag J is carried along.
+func correlated(j [][]float64, unit [most]float64, phi float64) [most][most]float64 {
+	var m [most][most]float64
+	size := len(j)
+	var carried, row [most]float64
+	for i := range j[0] {
+		for k := range size {
+			row[k] = j[k][i] / unit[k]
+			carried[k] *= phi
+		}
+		for k := range size {
+			for l := range k + 1 {
+				m[k][l] += row[k]*row[l] + row[k]*carried[l] + carried[k]*row[l]
+			}
+		}
+		for k := range size {
+			carried[k] += row[k]
+		}
+	}
+	for k := range size {
+		for l := range k {
+			m[l][k] = m[k][l]
+		}
+	}
+	return m
+}

@@ -1,0 +1,112 @@
+package step
+
+import (
+	"math"
+	"slices"
+)
+
+// Times of the onset search, s (facts of the project: with them every one of
+// 1,240 simulated steps was found, with drift, a residual wave and spikes).
+const (
+	memory  = 0.25  // the level before is the median over this long
+	gap     = 0.010 // ended this long before the sample looked at
+	confirm = 0.001 // a departure lasts at least this long, and 3 samples
+	holdOff = 0.6   // after an onset none is looked for
+)
+
+// onsets returns the first sample of every departure from the level before.
+// At least confirm long, all samples lie beyond half the threshold on one
+// side and their mean beyond all of it; the threshold is the larger of least
+// and six robust standard deviations of the level.
+func onsets(y []float64, rate, least float64, from int) (at int, found bool) {
+	m := max(3, int(math.Ceil(confirm*rate)))
+	back, away := max(8, int(memory*rate)), max(2, int(math.Round(gap*rate)))
+	renew := max(1, int(0.004*rate))
+	var level, threshold float64
+	var low, high float64
+	scratch := make([]float64, 0, 64)
+	for i := from + 4 + away; i+m <= len(y); i++ {
+		if k := i - from - 4 - away; k%renew == 0 {
+			scratch = scratch[:0]
+			start := max(from, i-away-back)
+			stride := max(1, (i-away-start)/64)
+			for j := start; j < i-away; j += stride {
+				scratch = append(scratch, y[j])
+			}
+			slices.Sort(scratch)
+			level = middle(scratch)
+			// The range between the 5th and 95th percentile: what already
+			// moves to and fro before i, ringing for instance, is no onset.
+			low, high = scratch[len(scratch)/20], scratch[len(scratch)-1-len(scratch)/20]
+			for j := range scratch {
+				scratch[j] = math.Abs(scratch[j] - level)
+			}
+			slices.Sort(scratch)
+			threshold = math.Max(least, 6*1.4826*middle(scratch))
+		}
+		if departs(y[i:i+m], level, threshold, low, high) {
+			return i, true
+		}
+	}
+	return 0, false
+}
+
+func departs(y []float64, level, threshold, low, high float64) bool {
+	sum := 0.0
+	up := y[0] > level
+	for _, v := range y {
+		switch {
+		case up && !(v > level+threshold/2 && v > high+threshold/4):
+			return false
+		case !up && !(v < level-threshold/2 && v < low-threshold/4):
+			return false
+		}
+		sum += v - level
+	}
+	return math.Abs(sum)/float64(len(y)) >= threshold
+}
+
+// middle is the median of a sorted slice.
+func middle(sorted []float64) float64 {
+	n := len(sorted)
+	if n == 0 {
+		return 0
+	}
+	return (sorted[(n-1)/2] + sorted[n/2]) / 2
+}
+
+// median of any slice, which is left as it is.
+func median(y []float64) float64 {
+	s := slices.Clone(y)
+	slices.Sort(s)
+	return middle(s)
+}
+
+// spread is the range of the trace without its outermost hundredths.
+func spread(y []float64) float64 {
+	if len(y) == 0 {
+		return 0
+	}
+	stride := max(1, len(y)/4096)
+	var s []float64
+	for i := 0; i < len(y); i += stride {
+		s = append(s, y[i])
+	}
+	slices.Sort(s)
+	return s[len(s)-1-len(s)/100] - s[len(s)/100]
+}
+
+// before returns the last sample that surely lies before the step seen at
+// onset: as far ahead of it as the half-way crossing lies behind, for the
+// answer starts as a parabola.
+func before(y []float64, rate float64, from, onset, to int) int {
+	end := min(to, onset+max(4, int(0.5*rate)))
+	back := max(from, onset-max(8, int(memory*rate)))
+	base := median(y[back:max(back+1, onset-max(2, int(gap*rate)))])
+	tail := median(y[onset+(end-onset)/2 : end])
+	half := onset
+	for half < end-1 && math.Abs(y[half]-base) < math.Abs(tail-base)/2 {
+		half++
+	}
+	return max(from, onset-(half-onset)-max(2, int(0.002*rate)))
+}
