@@ -12,25 +12,30 @@ import (
 type quality struct {
 	fitted
 	step    *Step
+	trace   []float64
 	quantum float64
 	rate    float64
 }
+
+// leastDamping: a swing that does not decay is no answer to a step.
+const leastDamping = 0.01
 
 // isStep tells a lasting change of level from whatever else set off the
 // onset: the model must explain the movement and the change exceed the noise.
 func (q *quality) isStep() bool {
 	h := math.Abs(q.step.Height)
-	if !(h > q.threshold/2) || !(h > 3*q.step.Noise) {
+	if !(h > q.threshold/2) || !(h > 3*q.step.Noise) || q.theta[lnZeta] < math.Log(leastDamping) {
 		return false
 	}
 	var miss, all float64
 	mean := 0.0
 	y := q.problem.y
+	clean := q.withoutSpikes(q.step.Residuals)
 	for _, v := range y {
 		mean += v / float64(len(y))
 	}
 	for i, v := range y {
-		r := q.step.Residuals[i] / q.scale
+		r := clean[i] / q.scale
 		miss += r * r
 		all += (v - mean) * (v - mean)
 	}
@@ -50,8 +55,8 @@ func (q *quality) rivals(fn float64, c covariance) bool {
 
 // clipped looks for a flat top: a run of equal extreme values entered or left
 // at a pace that a rounded top or a plateau approached by itself cannot have.
-func (q *quality) clipped(pressure []float64) bool {
-	y := pressure[q.from:q.to]
+func (q *quality) clipped() bool {
+	y := q.trace[q.from:q.to]
 	response := y[max(0, q.post-q.from-1):]
 	if len(response) < 4 {
 		return false
@@ -86,7 +91,7 @@ func (q *quality) flat(y []float64, extreme float64) bool {
 			if i+run < len(y) {
 				jump = math.Max(jump, math.Abs(y[i+run]-extreme))
 			}
-			if jump > math.Max(4*q.quantum, 0.02*h) {
+			if jump > math.Max(4*q.quantum, 1e-6*h) {
 				return true
 			}
 		}
@@ -99,6 +104,9 @@ func (q *quality) flat(y []float64, extreme float64) bool {
 func (q *quality) reserve(fn, zeta float64) {
 	s := q.step
 	n := float64(len(s.Residuals))
+	if k := len(q.spikes); k > 0 {
+		s.reserve(Misfit, fmt.Sprintf("%d single samples stand far out of the rest and were left out", k))
+	}
 	if phi := s.Autocorrelation; phi > 0.2 && phi*math.Sqrt(n) > 5 && s.Noise > 1e-6*math.Abs(s.Height) {
 		s.reserve(ColouredNoise, fmt.Sprintf("the noise is correlated from sample to sample (%.2f); the intervals allow for it", phi))
 	}
@@ -121,6 +129,7 @@ func (q *quality) reserve(fn, zeta float64) {
 // leaves and takes the noise away.
 func (q *quality) misfit(fn, zeta float64) (string, bool) {
 	s := q.step
+	residuals := q.withoutSpikes(s.Residuals)
 	length := max(1, int(math.Round(q.rate/(8*fn))))
 	tau := settling(2*math.Pi*fn, zeta)
 	split := q.post - q.from - 1
@@ -129,13 +138,13 @@ func (q *quality) misfit(fn, zeta float64) (string, bool) {
 	}
 	split = max(0, min(split, len(s.Residuals)))
 	end := min(len(s.Residuals), split+int(math.Max(10*tau, 2/fn)*q.rate)+2)
-	answer, peak, answerCells := smoothed(s.Residuals[split:end], length)
-	rest, _, restCells := smoothed(s.Residuals[:split], length)
+	answer, peak, answerCells := smoothed(residuals[split:end], length)
+	// The noise is taken from the trace about its own line, for a wrong model
+	// is wrong before the step as well.
+	before := detrended(q.quiet(min(q.pre-q.from, split)))
+	rest, _, restCells := smoothed(before, length)
 	loss := (1 - s.Autocorrelation) / (1 + s.Autocorrelation)
 	answerCells, restCells = math.Max(1, answerCells*loss), restCells*loss
-	if !(peak > 0.005*math.Abs(s.Height)) {
-		return "", false
-	}
 	floor := q.quantum * q.quantum / 12 / float64(length)
 	ratio := answer / math.Max(rest, floor)
 	limit := 2.5
@@ -144,10 +153,22 @@ func (q *quality) misfit(fn, zeta float64) (string, bool) {
 	} else {
 		ratio = 0
 	}
-	if !(ratio > limit) {
+	share := peak / math.Abs(s.Height)
+	if !(share > 0.005 && ratio > limit || share > 0.001 && ratio > 4*limit) {
 		return "", false
 	}
-	return fmt.Sprintf("the fit leaves up to %.2g %% of the step unexplained, beyond the noise before it; the line may not be a second-order system, or the step not single", 100*peak/math.Abs(s.Height)), true
+	return fmt.Sprintf("the fit leaves up to %.2g %% of the step unexplained, beyond the noise before it; the line may not be a second-order system, or the step not single", 100*share), true
+}
+
+// quiet is the trace before the step, n samples, without the spikes.
+func (q *quality) quiet(n int) []float64 {
+	y := slices.Clone(q.trace[q.from : q.from+max(0, n)])
+	for _, i := range q.spikes {
+		if i < len(y) {
+			y[i] = q.step.Fitted[i]
+		}
+	}
+	return y
 }
 
 // smoothed returns the mean square and the largest magnitude of r averaged
@@ -175,11 +196,17 @@ func smoothed(r []float64, length int) (energy, peak, cells float64) {
 
 // lineScatter is the standard deviation about a straight line.
 func lineScatter(y []float64) float64 {
-	n := float64(len(y))
-	if n < 4 {
+	if len(y) < 4 {
 		return 0
 	}
-	var mean, xy, xx, sum float64
+	r := detrended(y)
+	return math.Sqrt(dot(r, r) / float64(len(r)-2))
+}
+
+// detrended is y less its least-squares line.
+func detrended(y []float64) []float64 {
+	n := float64(len(y))
+	var mean, xy, xx float64
 	for _, v := range y {
 		mean += v / n
 	}
@@ -188,11 +215,14 @@ func lineScatter(y []float64) float64 {
 		xy += x * (v - mean)
 		xx += x * x
 	}
+	r := make([]float64, len(y))
 	for i, v := range y {
-		r := v - mean - xy/xx*(float64(i)-(n-1)/2)
-		sum += r * r
+		r[i] = v - mean
+		if xx > 0 {
+			r[i] -= xy / xx * (float64(i) - (n-1)/2)
+		}
 	}
-	return math.Sqrt(sum / (n - 2))
+	return r
 }
 
 // quantum finds the step of the digits in a trace: the smallest difference

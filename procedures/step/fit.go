@@ -191,15 +191,17 @@ func (p *problem) fill(theta *[most]float64, start, k int) bool {
 // fillTimes does the same for block means, each at its own time and scaled
 // by the root of its weight.
 func (p *problem) fillTimes(theta *[most]float64, w, zeta, width float64, start, k int) {
+	narrow := width < smallWidth
 	for i := range k {
 		x := w * (p.times[start+i] - theta[delay])
+		if narrow {
+			p.a.single(i, x, zeta)
+			continue
+		}
 		p.a.single(i, x+width/2, zeta)
 		p.b.single(i, x-width/2, zeta)
 	}
-	if width < smallWidth {
-		for i := range k {
-			p.a.single(i, w*(p.times[start+i]-theta[delay]), zeta)
-		}
+	if narrow {
 		p.narrow(w, zeta, width, k)
 	} else {
 		p.wide(w, zeta, width, k)

@@ -4,7 +4,6 @@ import (
 	"math"
 	"math/cmplx"
 	"math/rand/v2"
-	"testing"
 )
 
 // The generator of these tests is written from the poles of the system with
@@ -90,22 +89,4 @@ func slowest(fn, zeta float64) float64 {
 		return 1 / (zeta * w)
 	}
 	return (zeta + math.Sqrt(zeta*zeta-1)) / w
-}
-
-func TestSmoke(t *testing.T) {
-	for _, zeta := range []float64{0.1, 0.2, 0.64, 0.9, 1, 1.1, 1.5} {
-		for _, fn := range []float64{5, 8, 24, 60, 200} {
-			for _, sigma := range []float64{0, 0.5} {
-				p := plan{fn: fn, zeta: zeta, rate: math.Max(1000, 20*fn), before: 0.5, spacing: 1.5 + 20*slowest(fn, zeta), heights: []float64{100}, sigma: sigma, phase: 0.3}
-				steps, c, res, err := Analyse(p.make(rand.New(rand.NewPCG(1, 2))), Settings{EdgeStated: true, MinimumStep: 8})
-				if err != nil || len(steps) != 1 {
-					t.Errorf("fn %g zeta %g sigma %g: %v %d steps", fn, zeta, sigma, err, len(steps))
-					continue
-				}
-				s := steps[0]
-				t.Logf("fn %g zeta %g sigma %g: %v fn %.6g (%.3g) zeta %.6g (%.3g) at %.6f h %.5g noise %.3g dof %.0f phi %.2f %v", fn, zeta, sigma, s.Reasons,
-					c.Frequency.Value, c.Frequency.StandardUncertainty, c.Damping.Value, c.Damping.StandardUncertainty, s.At, s.Height, s.Noise, s.DegreesOfFreedom, s.Autocorrelation, res)
-			}
-		}
-	}
 }

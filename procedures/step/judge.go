@@ -3,6 +3,7 @@ package step
 import (
 	"fmt"
 	"math"
+	"slices"
 )
 
 // Limits of what can be said (facts of the project, measured on simulations).
@@ -35,13 +36,17 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	s.Residuals = f.residuals(j)
 	s.Fitted = make([]float64, len(s.Residuals))
 	for i := range s.Residuals {
-		s.Residuals[i] *= f.scale
-		s.Fitted[i] = a.trace.Pressure[f.from+i] - s.Residuals[i]
+		v := a.trace.Pressure[f.from+i]
+		s.Fitted[i] = v - s.Residuals[i]*f.scale
+		if slices.Contains(f.spikes, i) {
+			s.Fitted[i] = f.base + f.scale*f.problem.y[i]
+		}
+		s.Residuals[i] = v - s.Fitted[i]
 	}
 	s.Noise = lineScatter(a.trace.Pressure[f.from:f.pre])
-	c := sandwich(j, s.Residuals, f.scale)
+	c := sandwich(j, f.withoutSpikes(s.Residuals), f.scale)
 	s.DegreesOfFreedom, s.Autocorrelation = c.freedom, c.correlation
-	q := quality{fitted: f, step: &s, quantum: a.quantum, rate: a.trace.Rate}
+	q := quality{fitted: f, step: &s, trace: a.trace.Pressure, quantum: a.quantum, rate: a.trace.Rate}
 	if !q.isStep() {
 		return s, false
 	}
@@ -49,7 +54,7 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	zeta := math.Exp(f.theta[lnZeta])
 	uLog, uZeta := c.deviation[linear+lnOmega], zeta*c.deviation[linear+lnZeta]
 	add := func(code string) { s.Reasons = append(s.Reasons, code) }
-	if q.clipped(a.trace.Pressure) {
+	if q.clipped() {
 		add(Clipped)
 	}
 	rate := a.trace.Rate
@@ -63,7 +68,9 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	if p.applied == nil && f.width()*fn > widestEdge {
 		add(EdgeTooSlow)
 	}
-	if !(uLog <= largestUncertainty) {
+	// With less than one time constant of answer the uncertainty is not to be
+	// trusted either.
+	if !(uLog <= largestUncertainty) || float64(f.to-f.post)*a.dt < settling(2*math.Pi*fn, zeta) {
 		add(UncertaintyTooLarge)
 	}
 	q.reserve(fn, zeta)
@@ -130,6 +137,18 @@ func (f *fitted) residuals(j [][]float64) []float64 {
 	r := make([]float64, len(f.problem.y))
 	for i, y := range f.problem.y {
 		r[i] = y - f.beta[0] - f.beta[1]*j[1][i] - f.beta[response]*j[response][i]
+	}
+	return r
+}
+
+// withoutSpikes is r with the samples left out at nothing.
+func (f *fitted) withoutSpikes(r []float64) []float64 {
+	if len(f.spikes) == 0 {
+		return r
+	}
+	r = slices.Clone(r)
+	for _, i := range f.spikes {
+		r[i] = 0
 	}
 	return r
 }

@@ -1,6 +1,9 @@
 package step
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // analysis is one call of Analyse.
 type analysis struct {
@@ -82,14 +85,14 @@ func (a *analysis) settledAt(f fitted, ok bool, onset, to int) int {
 type fitted struct {
 	found
 	window
-	second   found // another minimum, if rival
-	rival    bool
-	problem  *problem
-	base     float64 // level and height that the samples were scaled with
-	scale    float64
-	origin   int // sample at which time is 0
-	appliedH float64
-	post     int // first sample after the edge's middle
+	second  found // another minimum, if rival
+	rival   bool
+	problem *problem
+	base    float64 // level and height that the samples were scaled with
+	scale   float64
+	origin  int   // sample at which time is 0
+	post    int   // first sample after the edge's middle
+	spikes  []int // samples left out, from f.from
 }
 
 func (f *fitted) width() float64 {
@@ -119,20 +122,86 @@ func (a *analysis) fit(w window) (fitted, bool) {
 	cut := w
 	cut.to = min(w.to, f.post+reach)
 	cut.from = max(w.from, min(f.post-reach, w.pre-int(memory*a.trace.Rate)))
-	if cut.to-cut.from > (w.to-w.from)*9/10 {
-		return f, true
+	if cut.to-cut.from <= (w.to-w.from)*9/10 {
+		if g, _, ok := a.set(cut); ok {
+			g.second, g.rival = f.second, false
+			g.found = polish(g.problem, f.theta)
+			if !math.IsInf(g.at.cost, 1) {
+				f = g
+			}
+		}
 	}
-	g, _, ok := a.set(cut)
-	if !ok {
-		return f, true
+	f.leaveOutSpikes()
+	f.place(a)
+	return f, true
+}
+
+// leaveOutSpikes puts the model's value in place of single samples, or two
+// in a row, that stand out by more than seven robust standard deviations,
+// and searches again, until none is left. A crowd of them is no spikes but a
+// wrong model, and stays.
+func (f *fitted) leaveOutSpikes() {
+	p := f.problem
+	original := slices.Clone(p.y)
+	for range 4 {
+		r := f.residuals(f.jacobian()[:linear])
+		for i := range r {
+			r[i] += original[i] - p.y[i]
+		}
+		spikes := standingOut(r)
+		if len(spikes) == len(f.spikes) && (len(spikes) == 0 || slices.Equal(spikes, f.spikes)) && f.replaced(spikes, r, original) {
+			return
+		}
+		f.spikes = spikes
+		copy(p.y, original)
+		for _, i := range spikes {
+			p.y[i] = original[i] - r[i]
+		}
+		p.prepare()
+		again := polish(p, f.theta)
+		if math.IsInf(again.at.cost, 1) {
+			return
+		}
+		f.found = again
 	}
-	g.second, g.rival = f.second, false
-	g.found = polish(g.problem, f.theta)
-	if math.IsInf(g.at.cost, 1) {
-		return f, true
+}
+
+// replaced tells whether the values standing in for spikes already agree
+// with the model, to a hundredth of the noise.
+func (f *fitted) replaced(spikes []int, r, original []float64) bool {
+	noise := math.Sqrt(f.at.cost / float64(len(r)))
+	for _, i := range spikes {
+		if math.Abs(original[i]-r[i]-f.problem.y[i]) > 0.01*noise {
+			return false
+		}
 	}
-	g.place(a)
-	return g, true
+	return true
+}
+
+// standingOut lists the spikes among residuals in the scaled unit.
+func standingOut(r []float64) []int {
+	sizes := make([]float64, len(r))
+	for i, v := range r {
+		sizes[i] = math.Abs(v)
+	}
+	slices.Sort(sizes)
+	limit := math.Max(7*1.4826*middle(sizes), 1e-3)
+	var spikes []int
+	run := 0
+	for i, v := range r {
+		if math.Abs(v) <= limit {
+			run = 0
+			continue
+		}
+		if run++; run > 2 {
+			return nil
+		}
+		spikes = append(spikes, i)
+	}
+	if len(spikes) > max(2, len(r)/100) {
+		return nil
+	}
+	return spikes
 }
 
 // place finds the first sample after the middle of the edge.
@@ -152,9 +221,7 @@ func (a *analysis) set(w window) (f fitted, half float64, ok bool) {
 	if w.to-w.onset < 4 || w.pre-w.from < 2 {
 		return f, 0, false
 	}
-	for _, v := range y[w.from:w.pre] {
-		f.base += v / float64(w.pre-w.from)
-	}
+	f.base = median(y[w.from:w.pre])
 	f.scale = median(y[w.onset+(w.to-w.onset)*3/4:w.to]) - f.base
 	if !(math.Abs(f.scale) > w.threshold/4) {
 		return f, 0, false
