@@ -2,13 +2,138 @@ package step
 
 import "math"
 
+// The figures of a second-order system that follow from its damping ratio
+// alone. Frequencies are multiples of fn, times are in radians of it (divide
+// by 2 pi fn for seconds). zeta > 0 throughout. Source unless told otherwise:
+// textbook formulas, checked in testdata/sources/second-order-table.
+
 // Amplitude is the gain of the line at frequency f (Hz) for natural frequency
 // fn (Hz) and damping ratio zeta:
 //
 //	1/sqrt((1 - u^2)^2 + (2 zeta u)^2),  u = f/fn
 //
-// 1 at f = 0; infinite for zeta = 0 at f = fn. Source: textbook.
+// 1 at f = 0; infinite for zeta = 0 at f = fn.
 func Amplitude(fn, zeta, f float64) float64 {
 	u := f / fn
 	return 1 / math.Hypot(1-u*u, 2*zeta*u)
+}
+
+// Phase is the phase of the line at frequency f in radians, 0 to -pi:
+// -atan2(2 zeta u, 1 - u^2), u = f/fn.
+func Phase(fn, zeta, f float64) float64 {
+	u := f / fn
+	return -math.Atan2(2*zeta*u, 1-u*u)
+}
+
+// DampedFrequency is fd/fn = sqrt(1 - zeta^2), 0 for zeta >= 1.
+func DampedFrequency(zeta float64) float64 {
+	return math.Sqrt(math.Max(0, 1-zeta*zeta))
+}
+
+// Overshoot is the first overshoot as a part of the step, which is also the
+// ratio of successive opposite extrema: exp(-pi zeta/sqrt(1 - zeta^2)); 0
+// for zeta >= 1. Successive peaks on the same side have its square.
+func Overshoot(zeta float64) float64 {
+	if zeta >= 1 {
+		return 0
+	}
+	return math.Exp(-math.Pi * zeta / DampedFrequency(zeta))
+}
+
+// Resonance is where the gain is largest, as a multiple of fn, and how large:
+// sqrt(1 - 2 zeta^2) and 1/(2 zeta sqrt(1 - zeta^2)). 0 and 1 where there is
+// no peak, zeta >= 1/sqrt 2.
+func Resonance(zeta float64) (frequency, gain float64) {
+	if 2*zeta*zeta >= 1 {
+		return 0, 1
+	}
+	return math.Sqrt(1 - 2*zeta*zeta), 1 / (2 * zeta * math.Sqrt(1-zeta*zeta))
+}
+
+// Bandwidth is f/fn at which the gain is 1/sqrt 2 (-3 dB):
+// sqrt(a + sqrt(a^2 + 1)), a = 1 - 2 zeta^2.
+func Bandwidth(zeta float64) float64 {
+	a := 1 - 2*zeta*zeta
+	return root(a, math.Hypot(a, 1), -1)
+}
+
+// FlatBand is the largest f/fn up to which the gain stays within 1 - part and
+// 1 + part, 0 < part < 1. It jumps where the resonance peak is exactly
+// 1 + part (for 5 % at zeta 0.58953), so an uncertainty of zeta must be
+// carried through it by sampling. Source: solution of the gain for u^2.
+func FlatBand(zeta, part float64) float64 {
+	a := 1 - 2*zeta*zeta
+	c := 1 - 1/((1+part)*(1+part))
+	if a > 0 && a*a >= c {
+		return math.Sqrt(c / (a + math.Sqrt(a*a-c)))
+	}
+	d := 1/((1-part)*(1-part)) - 1
+	return root(a, math.Sqrt(a*a+d), -d)
+}
+
+// root is sqrt(a + r) with r = sqrt(a^2 - product), without cancellation for
+// negative a.
+func root(a, r, product float64) float64 {
+	if a < 0 {
+		return math.Sqrt(product / (a - r))
+	}
+	return math.Sqrt(a + r)
+}
+
+// PeakTime is when the first overshoot peaks: pi/sqrt(1 - zeta^2); infinite
+// for zeta >= 1.
+func PeakTime(zeta float64) float64 {
+	if zeta >= 1 {
+		return math.Inf(1)
+	}
+	return math.Pi / DampedFrequency(zeta)
+}
+
+// RiseTime is the time from 10 to 90 % of the step on the first rise, by
+// bisection of Response.
+func RiseTime(zeta float64) float64 {
+	end := riseEnd(zeta)
+	return crossing(zeta, 0, end, 0.9) - crossing(zeta, 0, end, 0.1)
+}
+
+// riseEnd is a time by which the first rise is over.
+func riseEnd(zeta float64) float64 {
+	if zeta < 1 {
+		return math.Min(PeakTime(zeta), 50)
+	}
+	return 50 * settling(1, zeta)
+}
+
+// SettlingTime is when the answer enters the band of 1 - part to 1 + part for
+// good, counted from the (ideal) step, 0 < part < 1. It jumps where an
+// extremum just touches the band. Found from the extrema, which lie
+// exp(-zeta x) from the end at multiples of PeakTime, and bisection.
+func SettlingTime(zeta, part float64) float64 {
+	if zeta >= 1 {
+		return crossing(zeta, 0, riseEnd(zeta), 1-part)
+	}
+	half := PeakTime(zeta)
+	n := math.Max(0, math.Ceil(-math.Log(part)/(zeta*half))-1) // the last extremum outside
+	if math.Mod(n, 2) == 0 {
+		return crossing(zeta, n*half, (n+1)*half, 1-part)
+	}
+	return crossing(zeta, n*half, (n+1)*half, 1+part)
+}
+
+// crossing bisects for the level between two times at which Response lies on
+// either side of it.
+func crossing(zeta, low, high, level float64) float64 {
+	rising := Response(low, zeta) < level
+	for range 200 {
+		mid := (low + high) / 2
+		if mid <= low || mid >= high {
+			break
+		}
+		if (Response(mid, zeta) < level) == rising {
+			low = mid
+		} else {
+			high = mid
+		}
+	}
+	return (low + high) / 2
 }

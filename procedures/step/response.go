@@ -123,20 +123,6 @@ func (v *waves) fill(x0, d, zeta, cd, sd float64, n int) {
 	}
 }
 
-// halfway returns x at which Response reaches one half, by bisection to the
-// precision a starting value needs.
-func halfway(zeta float64) float64 {
-	low, high := 0.5, 2+3*zeta
-	for range 30 {
-		if mid := (low + high) / 2; Response(mid, zeta) < 0.5 {
-			low = mid
-		} else {
-			high = mid
-		}
-	}
-	return (low + high) / 2
-}
-
 // settling returns the longest time constant of the response in seconds:
 // 1/(zeta w) when it oscillates, (zeta + sqrt(zeta^2-1))/w when it does not.
 func settling(w, zeta float64) float64 {

@@ -25,7 +25,7 @@ func gridZeta(i int) float64 {
 // scan tries the grid on coarse and returns at most five starting points, the
 // lowest first, no two of them neighbours. half is the time at which the
 // trace is half way: it ties t0 to w and zeta, so that only two dimensions
-// need to be searched. fullPass is for an applied pressure: t0 starts at 0.
+// need to be searched. With an applied pressure the delay starts at 0.
 func scan(coarse *problem, half float64) []start {
 	var grid []start
 	var n normal
@@ -33,7 +33,7 @@ func scan(coarse *problem, half float64) []start {
 	count := int(math.Ceil(span / math.Log(gridFactor)))
 	for i := range gridZetas {
 		zeta := gridZeta(i)
-		x50 := halfway(zeta)
+		x50 := crossing(zeta, 0, riseEnd(zeta), 0.5)
 		for j := range count {
 			s := start{i: i, j: j}
 			s.theta[lnOmega] = coarse.low[lnOmega] + (float64(j)+0.5)*span/float64(count)
