@@ -48,6 +48,7 @@ const mostWaiting = 64 << 20
 // comes as a durable event with Err, and from every call.
 type Disk struct {
 	inbox Poster
+	most  int // bytes that may wait
 	f     file
 	wake  chan struct{} // holds at most one
 	done  chan struct{}
@@ -61,7 +62,7 @@ type Disk struct {
 }
 
 // NewDisk returns a committer that posts to inbox.
-func NewDisk(inbox Poster) *Disk { return &Disk{inbox: inbox} }
+func NewDisk(inbox Poster) *Disk { return &Disk{inbox: inbox, most: mostWaiting} }
 
 func (c *Disk) begin(f file) error {
 	if c.f != nil {
@@ -118,7 +119,7 @@ func (c *Disk) ended(last int64, err error) {
 func (c *Disk) put(number int64, text []byte) error {
 	c.mu.Lock()
 	defer c.mu.Unlock()
-	if c.err == nil && len(c.waiting)+len(text) > mostWaiting {
+	if c.err == nil && len(c.waiting)+len(text) > c.most {
 		c.err = fmt.Errorf("write record: %w: %d bytes wait", ErrBehind, len(c.waiting))
 	}
 	if c.err != nil {

@@ -24,7 +24,6 @@ type files interface {
 	create(path string) (file, error)
 	// open opens a record for reading and appending, ErrInUse if it is written.
 	open(path string) (file, error)
-	read(path string) ([]byte, error)
 	remove(path string) error
 	// replace puts temporary in the place of path, which held is open on, and
 	// closes held.
@@ -75,15 +74,6 @@ func (osFiles) open(path string) (file, error) {
 		return nil, errors.Join(fmt.Errorf("%s: %w", path, ErrInUse), f.Close())
 	}
 	return f, nil
-}
-
-func (osFiles) read(path string) ([]byte, error) {
-	f, err := os.Open(path)
-	if err != nil {
-		return nil, err
-	}
-	defer f.Close()
-	return io.ReadAll(io.LimitReader(f, longestRecord+1))
 }
 
 func (osFiles) remove(path string) error { return os.Remove(path) }

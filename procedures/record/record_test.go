@@ -90,6 +90,8 @@ func somePayload(i int) (string, any) {
 		return KindPrompt, Prompt{Text: "open the valve <now> & wait\tµ\u2028\n\x01"}
 	case i%7 == 3:
 		return KindBlock, Block{Role: "uut", Start: line.Instant(i), Period: "1 ms", Samples: []string{"+0012.34", "+0012.35"}}
+	case i%4 != 2:
+		return KindReading, Reading{Role: "reference", Sent: line.Instant(i) * 1000, Text: fmt.Sprintf("%.2f", float64(i)*1.7)}
 	default:
 		return KindReading, Reading{Role: "reference", Sent: line.Instant(i) * 1000, Text: fmt.Sprintf("%.2f", float64(i)*1.7),
 			Watch: &Watch{N: i, Mean: float64(i) / 3, SD: 1e-7 * float64(i), Min: -1e21, Max: 5e-324}}

@@ -1,7 +1,6 @@
 package record
 
 import (
-	"bytes"
 	"crypto/sha256"
 	"encoding/hex"
 	"errors"
@@ -32,16 +31,15 @@ func Recover(path string, wall time.Time) (Run, error) {
 
 func recoverRecord(disk files, path string, wall time.Time) (Run, error) {
 	f, run, err := openRecord(disk, path)
-	if err != nil {
-		return Run{}, err
+	switch {
+	case err != nil:
+	case run.Closed:
+		err = errors.Join(ErrClosed, f.Close())
+	case len(run.Torn) == 0:
+		err = f.Close()
+	default:
+		run, err = setAside(disk, path, wall, f, run)
 	}
-	if run.Closed {
-		return Run{}, errors.Join(fmt.Errorf("recover %s: %w", path, ErrClosed), f.Close())
-	}
-	if len(run.Torn) == 0 {
-		return run, f.Close()
-	}
-	run, err = setAside(disk, path, wall, f, run)
 	if err != nil {
 		return Run{}, fmt.Errorf("recover %s: %w", path, err)
 	}
@@ -69,29 +67,33 @@ func setAside(disk files, path string, wall time.Time, f file, run Run) (Run, er
 	if err != nil {
 		return Run{}, errors.Join(err, f.Close())
 	}
-	temporary := path + ".recovering"
-	if err := disk.remove(temporary); err != nil && !errors.Is(err, fs.ErrNotExist) {
-		return Run{}, errors.Join(err, f.Close())
-	}
-	if err := writeWhole(disk, temporary, whole); err != nil {
-		return Run{}, errors.Join(err, f.Close())
-	}
-	if err := disk.replace(temporary, path, f); err != nil {
-		return Run{}, err
-	}
-	return again, disk.syncFolder(path)
+	return again, rewrite(disk, path, f, whole)
 }
 
-// keepTail writes a torn tail to a side file of its own, or finds the one that
-// an interrupted recovery left.
+// rewrite puts a file with these bytes, synced, in the place of path, which f
+// is open on, and closes f.
+func rewrite(disk files, path string, f file, whole []byte) error {
+	temporary := path + ".recovering"
+	if err := disk.remove(temporary); err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return errors.Join(err, f.Close())
+	}
+	if err := writeWhole(disk, temporary, whole); err != nil {
+		return errors.Join(err, f.Close())
+	}
+	if err := disk.replace(temporary, path, f); err != nil {
+		return err
+	}
+	return disk.syncFolder(path)
+}
+
+// keepTail writes a torn tail to a side file of its own. One that an
+// interrupted recovery left is not taken again even if it holds the same: its
+// bytes may be in the machine's memory only, after a sync that failed.
 func keepTail(disk files, path string, tail []byte) (string, error) {
 	for n := 1; n <= mostTails; n++ {
 		side := fmt.Sprintf("%s.tail-%d", path, n)
 		err := writeWhole(disk, side, tail)
 		if errors.Is(err, fs.ErrExist) {
-			if old, err := disk.read(side); err == nil && bytes.Equal(old, tail) {
-				return side, disk.syncFolder(side)
-			}
 			continue
 		}
 		if err != nil {
@@ -129,36 +131,46 @@ func encodeRun(run Run) []byte {
 
 // Reopen takes up an open record to append to it: a torn one is refused with
 // ErrTorn (Recover it first), a closed one with ErrClosed. It returns the run
-// so far. What a killed process left in the machine's memory is synced first,
-// so all lines there count as durable from then on.
+// so far. All lines of it count as durable from then on, and to make that true
+// the record is first put down anew, whole: what a killed process left is in
+// the machine's memory only, and after a sync that failed there a second sync
+// says yes without having written anything.
 func Reopen(path string, c Committer) (*Writer, Run, error) {
 	return reopen(osFiles{}, path, c)
 }
 
 func reopen(disk files, path string, c Committer) (*Writer, Run, error) {
+	w, run, err := takeUp(disk, path, c)
+	if err != nil {
+		return nil, Run{}, fmt.Errorf("resume record %s: %w", path, err)
+	}
+	return w, run, nil
+}
+
+func takeUp(disk files, path string, c Committer) (*Writer, Run, error) {
 	f, run, err := openRecord(disk, path)
+	switch {
+	case err != nil:
+		return nil, Run{}, err
+	case run.Closed:
+		return nil, Run{}, errors.Join(ErrClosed, f.Close())
+	case len(run.Torn) > 0:
+		return nil, Run{}, errors.Join(ErrTorn, f.Close())
+	}
+	if err := rewrite(disk, path, f, encodeRun(run)); err != nil {
+		return nil, Run{}, err
+	}
+	f, again, err := openRecord(disk, path)
 	if err != nil {
 		return nil, Run{}, err
 	}
-	switch {
-	case run.Closed:
-		err = ErrClosed
-	case len(run.Torn) > 0:
-		err = ErrTorn
-	default:
-		err = f.Sync()
+	if again.Head != run.Head { // somebody took it up between the two openings
+		return nil, Run{}, errors.Join(ErrInUse, f.Close())
 	}
-	if err == nil {
-		err = disk.syncFolder(path)
+	if err := c.begin(f); err != nil {
+		return nil, Run{}, errors.Join(err, f.Close())
 	}
-	if err == nil {
-		err = c.begin(f)
-	}
-	if err != nil {
-		return nil, Run{}, errors.Join(fmt.Errorf("resume record %s: %w", path, err), f.Close())
-	}
-	w := &Writer{path: path, files: disk, committer: c, head: run.Head, taken: run.Head.Lines}
-	return w, run, nil
+	return &Writer{path: path, files: disk, committer: c, head: run.Head, taken: run.Head.Lines}, run, nil
 }
 
 // openRecord opens a record for appending and reads it.
@@ -169,7 +181,7 @@ func openRecord(disk files, path string) (file, Run, error) {
 	}
 	run, err := Read(io.Reader(f), Limit{})
 	if err != nil {
-		return nil, Run{}, errors.Join(fmt.Errorf("%s: %w", path, err), f.Close())
+		return nil, Run{}, errors.Join(err, f.Close())
 	}
 	return f, run, nil
 }
