@@ -120,3 +120,79 @@ func (t *triple) advance(x *[3][2]float64, u0, u1 float64) [3][2]float64 {
 	}
 	return y
 }
+
+// betweenSamples tells by how much ln w and zeta could be wrong because the
+// applied pressure is not known between its samples: straight lines blur a
+// sharper edge by a triangle of variance dt^2/6, and the fit is made again
+// with that blur taken out to first order (u - second difference/12). The
+// shift is what a sharp edge costs on average over its place between two
+// samples, and is taken for a standard uncertainty.
+func (f *fitted) betweenSamples() (lnW, zeta float64) {
+	sharp := *f.problem
+	u := f.problem.applied.u
+	sharp.applied = &appliedInput{u: append([]float64{}, u...)}
+	for i := 1; i+1 < len(u); i++ {
+		// Only the edge: elsewhere the second difference is noise.
+		if i >= f.pre-f.from && math.Abs(u[i+1]-u[i-1]) > 0.05 {
+			sharp.applied.u[i] -= (u[i+1] - 2*u[i] + u[i-1]) / 12
+		}
+	}
+	g := polish(&sharp, f.theta)
+	if math.IsInf(g.at.cost, 1) {
+		return 0, 0
+	}
+	return math.Abs(g.theta[lnOmega] - f.theta[lnOmega]), math.Abs(math.Exp(g.theta[lnZeta]) - math.Exp(f.theta[lnZeta]))
+}
+
+// passed is noise of the applied pressure as it arrives in the fit, in the
+// scaled unit: J'(H H')J with H the line, times its variance, and the
+// variance it gives each sample.
+type passed struct {
+	meat     [most][most]float64
+	variance float64
+}
+
+// passThrough follows white noise of the applied pressure, estimated before
+// the step, through the line. H'J is the recursion run over each column
+// backwards.
+func (f *fitted) passThrough(j [][]float64, applied []float64) passed {
+	var out passed
+	u := applied[f.from:f.to]
+	height := median(u[len(u)-(f.to-f.onset)/4-1:]) - median(u[:f.pre-f.from])
+	sigma := lineScatter(u[:f.pre-f.from]) / height * f.beta[response]
+	n := len(u)
+	back := make([][]float64, len(j))
+	for k := range j {
+		reversed := make([]float64, n)
+		for i := range n {
+			reversed[i] = j[k][n-1-i]
+		}
+		back[k] = f.problem.run(reversed, &f.theta)
+	}
+	for k := range j {
+		for m := range j {
+			out.meat[k][m] = sigma * sigma * dot(back[k], back[m])
+		}
+	}
+	impulse := make([]float64, n)
+	impulse[1] = 1
+	answer := f.problem.run(impulse, &f.theta)
+	out.variance = sigma * sigma * dot(answer, answer)
+	return out
+}
+
+// run passes any input through the line at theta.
+func (p *problem) run(u []float64, theta *[most]float64) []float64 {
+	in := appliedInput{u: u}
+	var r recursor
+	r.start(&in, theta, p.dt)
+	out := make([]float64, len(u))
+	var g [blockSize]float64
+	var d [4][blockSize]float64
+	for start := 0; start < len(u); start += blockSize {
+		k := min(blockSize, len(u)-start)
+		r.fill(&in, start, k, &g, &d)
+		copy(out[start:], g[:k])
+	}
+	return out
+}

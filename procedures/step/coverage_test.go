@@ -84,7 +84,7 @@ func TestAppliedPressure(t *testing.T) {
 				p.spacing = 25*slowest(fn, zeta) + 12*tau
 				r := rand.New(rand.NewPCG(5, 5))
 				var sum tally
-				for range trials(20, 300) {
+				for range trials(60, 300) {
 					p.phase = r.Float64()
 					_, c, reservations, err := Analyse(appliedTrace(p, tau, 0.1, r), Settings{MinimumStep: 8})
 					if err != nil {

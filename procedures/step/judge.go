@@ -36,23 +36,32 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	s.Residuals = f.residuals(j)
 	s.Fitted = make([]float64, len(s.Residuals))
 	for i := range s.Residuals {
-		v := a.trace.Pressure[f.from+i]
-		s.Fitted[i] = v - s.Residuals[i]*f.scale
+		v := a.y[f.from+i]
+		model := v - s.Residuals[i]*f.scale
 		if slices.Contains(f.spikes, i) {
-			s.Fitted[i] = f.base + f.scale*f.problem.y[i]
+			model = f.base + f.scale*f.problem.y[i]
 		}
-		s.Residuals[i] = v - s.Fitted[i]
+		s.Residuals[i] = v - model
+		s.Fitted[i] = a.trace.Pressure[f.from+i] - s.Residuals[i]
 	}
-	s.Noise = lineScatter(a.trace.Pressure[f.from:f.pre])
-	c := sandwich(j, f.withoutSpikes(s.Residuals), f.scale)
+	s.Noise = lineScatter(a.y[f.from:f.pre])
+	var through passed
+	if p.applied != nil {
+		through = f.passThrough(j, a.trace.Applied)
+	}
+	c := sandwich(j, f.withoutSpikes(s.Residuals), f.scale, through)
 	s.DegreesOfFreedom, s.Autocorrelation = c.freedom, c.correlation
-	q := quality{fitted: f, step: &s, trace: a.trace.Pressure, quantum: a.quantum, rate: a.trace.Rate}
+	q := quality{fitted: f, step: &s, trace: a.y, quantum: a.quantum, rate: a.trace.Rate}
 	if !q.isStep() {
 		return s, false
 	}
 	fn := math.Exp(f.theta[lnOmega]) / (2 * math.Pi)
 	zeta := math.Exp(f.theta[lnZeta])
 	uLog, uZeta := c.deviation[linear+lnOmega], zeta*c.deviation[linear+lnZeta]
+	if p.applied != nil {
+		shiftLog, shiftZeta := f.betweenSamples()
+		uLog, uZeta = math.Hypot(uLog, shiftLog), math.Hypot(uZeta, shiftZeta)
+	}
 	add := func(code string) { s.Reasons = append(s.Reasons, code) }
 	if q.clipped() {
 		add(Clipped)
@@ -171,8 +180,9 @@ type covariance struct {
 // phi is the lag-one correlation of the residuals, corrected for what the
 // fit took out of it (the same trace over n) and not below 0. Degrees of
 // freedom of s: n (1 - phi^2)/(1 + phi^2) less the number of parameters.
+// Noise of a measured applied pressure, passed on by the line, is added.
 // Source: generalised least squares; correction by hand.
-func sandwich(j [][]float64, residuals []float64, scale float64) covariance {
+func sandwich(j [][]float64, residuals []float64, scale float64, through passed) covariance {
 	n, size := len(residuals), len(j)
 	var c covariance
 	var gram, inverse [most][most]float64
@@ -235,14 +245,16 @@ func sandwich(j [][]float64, residuals []float64, scale float64) covariance {
 	variance := sum / math.Max(float64(n)-taken, 1)
 	// Rounding keeps even a perfect trace from being known exactly.
 	c.sigma = math.Max(math.Sqrt(variance), 1e-9*math.Abs(scale))
+	own := math.Max(c.sigma*c.sigma-through.variance*scale*scale, 0)
 	for i := range size {
 		v := 0.0
 		for k := range size {
 			for m := range size {
-				v += inverse[i][k] * meat[k][m] * inverse[m][i]
+				middle := own*meat[k][m] + scale*scale*through.meat[k][m]/unit[k]/unit[m]
+				v += inverse[i][k] * middle * inverse[m][i]
 			}
 		}
-		c.deviation[i] = c.sigma / math.Abs(scale) * math.Sqrt(math.Max(v, 0)) / unit[i]
+		c.deviation[i] = math.Sqrt(math.Max(v, 0)) / math.Abs(scale) / unit[i]
 	}
 	return c
 }

@@ -11,6 +11,9 @@ type analysis struct {
 	settings Settings
 	dt       float64
 	quantum  float64 // step of the readout's digits, 0 if none is seen
+	// y is the pressure less what the steps already fitted still move, so
+	// that a step need not wait for the one before to settle.
+	y []float64
 }
 
 // window is the part of a trace in which one step is fitted.
@@ -30,55 +33,125 @@ const (
 
 // steps walks along the trace from onset to onset.
 func (a *analysis) steps() []Step {
-	y, rate := a.trace.Pressure, a.trace.Rate
+	rate := a.trace.Rate
 	least := a.settings.MinimumStep
 	if least == 0 {
-		least = spread(y) / 20
+		least = spread(a.trace.Pressure) / 20
 	}
 	if !(least > 0) {
 		return nil
 	}
+	a.y = slices.Clone(a.trace.Pressure)
 	var steps []Step
+	hold := int(holdOff * rate)
 	from := 0
-	onset, ok := onsets(y, rate, least, 0)
+	onset, ok := onsets(a.y, rate, least, 0)
 	for ok {
-		look := onset + int(holdOff*rate)
-		next, more := onsets(y, rate, least, look)
-		w := window{from: from, onset: onset, to: len(y), threshold: least}
-		if more {
-			w.to = before(y, rate, onset, next, len(y))
-		}
-		w.pre = before(y, rate, from, onset, w.to)
-		f, fitted := a.fit(w)
-		for more && fitted && a.explains(f, onset, next) {
+		next, more := onsets(a.y, rate, least, onset+hold)
+		w := a.window(from, onset, next, more, least)
+		f, fits := a.fit(w)
+		for more && fits && a.explains(f, onset, next) {
 			// What looked like a further step is this one still ringing.
-			next, more = onsets(y, rate, least, next+int(holdOff*rate))
-			w.to = len(y)
-			if more {
-				w.to = before(y, rate, onset, next, len(y))
-			}
-			f, fitted = a.fit(w)
+			next, more = onsets(a.y, rate, least, next+hold)
+			w = a.window(from, onset, next, more, least)
+			f, fits = a.fit(w)
 		}
-		if fitted {
-			if s, is := a.judge(f); is {
+		if earlier, hidden := a.hidden(w, f, fits); hidden {
+			next, more = earlier, true
+			w = a.window(from, onset, next, more, least)
+			f, fits = a.fit(w)
+		}
+		from = onset + (w.to-onset)*7/10
+		if fits {
+			s, is := a.judge(f)
+			if is {
 				steps = append(steps, s)
 			}
+			if s.Determined {
+				from = a.settle(f, from)
+			}
 		}
-		from = a.settledAt(f, fitted, onset, w.to)
 		onset, ok = next, more
 	}
 	return steps
 }
 
-// settledAt is where the baseline of the next step may begin.
-func (a *analysis) settledAt(f fitted, ok bool, onset, to int) int {
-	latest := onset + (to-onset)*7/10
-	if !ok {
-		return latest
+// window lays the window of a step between the end of the one before and the
+// beginning of the next.
+func (a *analysis) window(from, onset, next int, more bool, least float64) window {
+	w := window{from: from, onset: onset, to: len(a.y), threshold: least}
+	if more {
+		w.to = before(a.y, a.trace.Rate, onset, next, len(a.y))
 	}
+	w.pre = before(a.y, a.trace.Rate, from, onset, w.to)
+	return w
+}
+
+// hidden looks for a further step that came before the hold-off was over. It
+// is tried only where the fit is far worse than the noise: the window is
+// halved until a fit is good, and the onset is where the trace leaves what
+// that fit foretells.
+func (a *analysis) hidden(w window, f fitted, fits bool) (onset int, found bool) {
+	noise := lineScatter(a.y[w.from:w.pre])
+	good := func(f fitted) bool {
+		miss := math.Abs(f.scale) * math.Sqrt(f.at.cost/float64(f.to-f.from))
+		return miss < math.Max(2*noise, 0.003*math.Abs(f.scale))
+	}
+	if fits && good(f) {
+		return 0, false
+	}
+	threshold := math.Max(w.threshold, 6*noise)
+	m := max(3, int(math.Ceil(confirm*a.trace.Rate)))
+	for to := w.onset + (w.to-w.onset)/2; to-w.onset >= 16; to = w.onset + (to-w.onset)*3/5 {
+		part := w
+		part.to = to
+		g, ok := a.fit(part)
+		if !ok || !good(g) || g.at.cost == 0 {
+			continue
+		}
+		if reach := 4 * settling(math.Exp(g.theta[lnOmega]), math.Exp(g.theta[lnZeta])); float64(to-g.post)*a.dt < reach {
+			return 0, false
+		}
+		rest := make([]float64, w.to-to)
+		for i := range rest {
+			rest[i] = a.y[to+i] - g.foretell(a, to+i)
+		}
+		for i := 0; i+m <= len(rest); i++ {
+			if departs(rest[i:i+m], 0, threshold, 0, 0) {
+				return to + i, true
+			}
+		}
+		return 0, false
+	}
+	return 0, false
+}
+
+// foretell is the model at sample i, which may lie beyond its window.
+func (f *fitted) foretell(a *analysis, i int) float64 {
+	level := f.beta[0] + f.beta[1]*(2*float64(i-f.from)/float64(f.to-f.from-1)-1)
+	return f.base + f.scale*(level+f.beta[response]*f.answer(a, i))
+}
+
+// answer is g at sample i for a step whose edge is ideal or a ramp.
+func (f *fitted) answer(a *analysis, i int) float64 {
+	if f.problem.applied != nil {
+		return 1
+	}
+	w := math.Exp(f.theta[lnOmega])
+	return Ramp(w*(float64(i-f.origin)*a.dt-f.theta[delay]), w*f.width(), math.Exp(f.theta[lnZeta]))
+}
+
+// settle takes what a determined step still moves out of the samples after
+// it and returns where the baseline of the next step may begin.
+func (a *analysis) settle(f fitted, latest int) int {
 	tau := settling(math.Exp(f.theta[lnOmega]), math.Exp(f.theta[lnZeta]))
-	end := float64(onset) + (settled*tau+f.width())*a.trace.Rate
-	return int(math.Min(end, float64(latest)))
+	begin := min(latest, f.post+int((settled*tau+f.width())*a.trace.Rate))
+	end := min(len(a.y), f.post+int((3*settled*tau+f.width())*a.trace.Rate))
+	height := f.scale * f.beta[response]
+	for i := begin; i < end; i++ {
+		a.y[i] -= height * (f.answer(a, i) - 1)
+	}
+	return begin
 }
 
 // fitted is a window with the model found in it.
@@ -217,7 +290,7 @@ func (f *fitted) place(a *analysis) {
 // half, from the origin at the onset) and prepares the problem.
 func (a *analysis) set(w window) (f fitted, half float64, ok bool) {
 	f.window = w
-	y := a.trace.Pressure
+	y := a.y
 	if w.to-w.onset < 4 || w.pre-w.from < 2 {
 		return f, 0, false
 	}
@@ -257,7 +330,7 @@ func (a *analysis) problem(w window, base, scale float64, origin int) *problem {
 	for i := range n {
 		p.one[i] = 1
 		p.tau[i] = 2*float64(i)/float64(n-1) - 1
-		p.y[i] = (a.trace.Pressure[w.from+i] - base) / scale
+		p.y[i] = (a.y[w.from+i] - base) / scale
 	}
 	switch {
 	case a.trace.Applied != nil:
@@ -346,20 +419,15 @@ func (a *analysis) coarse(full *problem, w window, origin int) *problem {
 // explains tells whether the model, carried on past its window, foretells
 // what was taken for a further onset.
 func (a *analysis) explains(f fitted, onset, next int) bool {
-	y := a.trace.Pressure
-	end := min(len(y), next+max(8, (next-onset)/4))
-	w, zeta := math.Exp(f.theta[lnOmega]), math.Exp(f.theta[lnZeta])
 	if f.problem.applied != nil {
 		return false
 	}
-	n := float64(f.to - f.from - 1)
 	var miss, swing float64
-	for i := next; i < end; i++ {
-		x := w * (float64(i-f.origin)*a.dt - f.theta[delay])
-		level := f.beta[0] + f.beta[1]*(2*float64(i-f.from)/n-1)
-		v := (y[i] - f.base) / f.scale
-		miss += math.Pow(v-level-f.beta[response]*Ramp(x, w*f.width(), zeta), 2)
-		swing += math.Pow(v-level-f.beta[response], 2)
+	for i := next; i < min(len(a.y), next+max(8, (next-onset)/4)); i++ {
+		foretold := f.foretell(a, i)
+		settled := foretold + f.scale*f.beta[response]*(1-f.answer(a, i))
+		miss += math.Pow(a.y[i]-foretold, 2)
+		swing += math.Pow(a.y[i]-settled, 2)
 	}
 	return miss < 0.1*swing
 }
