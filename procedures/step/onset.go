@@ -98,14 +98,23 @@ func spread(y []float64) float64 {
 
 // before returns the last sample that surely lies before the step seen at
 // onset: as far ahead of it as the half-way crossing lies behind, for the
-// answer starts as a parabola.
+// answer starts as a parabola. Half way to what is found by looking twice as
+// far each time, until the departure stops growing or is many times what it
+// was at the onset: a further step may follow at once.
 func before(y []float64, rate float64, from, onset, to int) int {
-	end := min(to, onset+max(4, int(0.5*rate)))
 	back := max(from, onset-max(8, int(memory*rate)))
 	base := median(y[back:max(back+1, onset-max(2, int(gap*rate)))])
-	tail := median(y[onset+(end-onset)/2 : end])
+	first, reached := math.Abs(y[onset]-base), 0.0
+	for reach := max(4, int(gap*rate)); onset+reach/2 < to && reach < int(2*rate)+5; reach *= 2 {
+		departure := math.Abs(median(y[onset+reach/2:min(to, onset+reach)]) - base)
+		stalled := departure < 1.2*reached
+		reached = math.Max(reached, departure)
+		if stalled || reached > 8*first {
+			break
+		}
+	}
 	half := onset
-	for half < end-1 && math.Abs(y[half]-base) < math.Abs(tail-base)/2 {
+	for half < to-1 && math.Abs(y[half]-base) < reached/2 {
 		half++
 	}
 	return max(from, onset-(half-onset)-max(2, int(0.002*rate)))

@@ -109,7 +109,7 @@ func (a *analysis) hidden(w window, f fitted, fits bool) (onset int, found bool)
 		if !ok || !good(g) || g.at.cost == 0 {
 			continue
 		}
-		if reach := 4 * settling(math.Exp(g.theta[lnOmega]), math.Exp(g.theta[lnZeta])); float64(to-g.post)*a.dt < reach {
+		if reach := 2 * settling(math.Exp(g.theta[lnOmega]), math.Exp(g.theta[lnZeta])); float64(to-g.post)*a.dt < reach {
 			return 0, false
 		}
 		rest := make([]float64, w.to-to)
