@@ -73,7 +73,8 @@ func newTriple(delta, zeta float64) triple {
 type recursor struct {
 	whole, part triple
 	omega       float64
-	lag         int // sample i needs the state at node i - lag
+	fraction    float64 // of a sample that is left
+	lag         int     // sample i needs the state at node i - lag
 	state       [3][2]float64
 }
 
@@ -83,7 +84,8 @@ func (r *recursor) start(a *appliedInput, theta *[most]float64, dt float64) {
 	r.lag = int(lag)
 	r.omega = w
 	r.whole = newTriple(w*dt, zeta)
-	r.part = newTriple(w*(lag*dt-theta[delay]), zeta)
+	r.fraction = lag - theta[delay]/dt
+	r.part = newTriple(w*dt*r.fraction, zeta)
 	r.state = [3][2]float64{}
 	// With a negative delay the first sample needs a later node.
 	for node := 0; node < -r.lag; node++ {
@@ -96,8 +98,9 @@ func (r *recursor) fill(a *appliedInput, start, k int, g *[blockSize]float64, d 
 		node := start + i - r.lag
 		out := r.state
 		if node >= 0 {
-			out = r.part.advance(&r.state, a.at(node), a.at(node+1))
-			r.state = r.whole.advance(&r.state, a.at(node), a.at(node+1))
+			u0, u1 := a.at(node), a.at(node+1)
+			out = r.part.advance(&r.state, u0, u0+r.fraction*(u1-u0))
+			r.state = r.whole.advance(&r.state, u0, u1)
 		}
 		g[i] = out[0][0]
 		d[lnOmega][i] = out[1][0]

@@ -100,6 +100,10 @@ func (s *Step) reserve(code, text string) {
 	s.Reservations = append(s.Reservations, Reservation{code, text})
 }
 
+func (s *Step) has(code string) bool {
+	return slices.ContainsFunc(s.Reservations, func(r Reservation) bool { return r.Code == code })
+}
+
 // appliedMiddle is the time, from the origin, at which the applied pressure
 // is half way.
 func (a *analysis) appliedMiddle(f fitted) float64 {

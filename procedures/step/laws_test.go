@@ -144,16 +144,25 @@ func TestRefusedTraces(t *testing.T) {
 	}
 }
 
+// Steps up and down, near together and far apart, are all found.
 func TestManySteps(t *testing.T) {
 	r := rand.New(rand.NewPCG(9, 9))
-	for _, spacing := range []float64{0.15, 0.3, 0.7, 2} {
+	for _, spacing := range []float64{0.15, 0.3, 0.6, 0.7, 2} {
 		for _, zeta := range []float64{0.1, 0.64, 1.1} {
 			p := plan{fn: 30, zeta: zeta, rate: 1000, before: 0.5, spacing: spacing, heights: []float64{100, -100, 150, 50, -200, 300}, sigma: 0.2, phase: 0.2}
-			steps, c, res, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
+			steps, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
 			if err != nil {
 				t.Fatal(err)
 			}
-			t.Logf("spacing %g zeta %g: %d steps, %d determined, fn %.4g zeta %.4g %v", spacing, zeta, len(steps), c.Steps, c.Frequency.Value, c.Damping.Value, res)
+			if len(steps) != 6 || c.Steps != 6 || len(reservations) > 0 || !near(c.Frequency.Value, 30, 0.02) || !near(c.Damping.Value, zeta, 0.02) {
+				t.Errorf("spacing %g zeta %g: %d steps, %d determined, fn %.4g zeta %.4g %v", spacing, zeta, len(steps), c.Steps, c.Frequency.Value, c.Damping.Value, reservations)
+				continue
+			}
+			for k, s := range steps {
+				if !near(s.Height, p.heights[k], 0.01) || math.Abs(s.At-p.at(k)) > 0.001 {
+					t.Errorf("spacing %g zeta %g: step %d of %g at %g, want %g at %g", spacing, zeta, k, s.Height, s.At, p.heights[k], p.at(k))
+				}
+			}
 		}
 	}
 }

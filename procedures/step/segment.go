@@ -109,7 +109,8 @@ func (a *analysis) hidden(w window, f fitted, fits bool) (onset int, found bool)
 		if !ok || !good(g) || g.at.cost == 0 {
 			continue
 		}
-		if reach := 2 * settling(math.Exp(g.theta[lnOmega]), math.Exp(g.theta[lnZeta])); float64(to-g.post)*a.dt < reach {
+		reach := 2 * settling(math.Exp(g.theta[lnOmega]), math.Exp(g.theta[lnZeta]))
+		if s, is := a.judge(g); !is || !s.Determined || s.has(Misfit) || float64(to-g.post)*a.dt < reach {
 			return 0, false
 		}
 		rest := make([]float64, w.to-to)
@@ -118,7 +119,9 @@ func (a *analysis) hidden(w window, f fitted, fits bool) (onset int, found bool)
 		}
 		for i := 0; i+m <= len(rest); i++ {
 			if departs(rest[i:i+m], 0, threshold, 0, 0) {
-				return to + i, true
+				// A second mode swings about the level, a step moves it.
+				lasts := median(rest[i:min(len(rest), i+m+int(reach*a.trace.Rate))])
+				return to + i, math.Abs(lasts) > math.Max(threshold, 0.1*math.Abs(g.scale))
 			}
 		}
 		return 0, false
