@@ -1,0 +1,144 @@
+package simulated
+
+import (
+	"bytes"
+	"fmt"
+	"strings"
+)
+
+// BenchFile writes the bench file that describes this bench to whoever is to
+// use it, with the reference's certificate as drawn. ports names the port of
+// each role; a role without one is named after itself, as an in-memory bench
+// does. It tells nothing of the truth.
+func (b *Bench) BenchFile(ports map[string]string) []byte {
+	port := func(role string) string {
+		if p, ok := ports[role]; ok {
+			return quoted(p)
+		}
+		return quoted(role)
+	}
+	var w bytes.Buffer
+	fmt.Fprintf(&w, `# A simulated bench. Everybody and everything named here is invented.
+schema = "kymobench/bench/1"
+department = "Clinical engineering, Hollerbrook Infirmary"
+bench = "Pressure bench 2"
+simulated = true
+keys = "trust"
+
+[pressure]
+highest = "330 mmHg"
+lowest = "-30 mmHg"
+volume = "60 mL"
+
+[reference]
+name = "reference manometer"
+family = "scpi"
+port = %s
+baud = 9600
+identify = "*IDN?"
+identity = %s
+uptime = "SYST:UPT?"
+clear = "*CLS"
+errors = "SYST:ERR?"
+read = "MEAS:PRES?"
+unit = "mmHg"
+zero = "CAL:ZERO"
+resolution = "%g mmHg"
+response_time = "0.3 s"
+response_time_tolerance = "0.1 s"
+range_low = "%g mmHg"
+range_high = "%g mmHg"
+height = "0 mm"
+answer_within = "1 s"
+
+[reference.certificate]
+number = "HI-2026-0117"
+laboratory = "Pressure laboratory, Hollerbrook Infirmary"
+date = "2026-03-02"
+due = "2027-03-01"
+coverage_factor = %.1f
+uncertainty = "%g mmHg"
+uncertainty_of_reading = "%g %%"
+`, port(RoleReference), quoted(identityReference), referenceResolution, sourceLow, sourceHigh,
+		certificateK, certificatePoint, certificateShare*100)
+	for i, c := range b.drawn.correction {
+		fmt.Fprintf(&w, "\n[[reference.certificate.correction]]\nat = \"%g mmHg\"\ncorrection = \"%.2f mmHg\"\n", nodeLow+nodeStep*float64(i), c)
+	}
+	fmt.Fprintf(&w, `
+[uut]
+family = "lines"
+mode = "free-running"
+port = %s
+baud = 230400
+unit = "uV/V"
+width = %d
+resolution = "%g uV/V"
+sample_period = "1 ms"
+sample_period_tolerance = "%g %%"
+excitation = "5 V"
+nominal_sensitivity = "%g uV/V/mmHg"
+height = "0 mm"
+height_uncertainty = "%g mm"
+fluid = "water"
+delay = "9 ms"
+delay_uncertainty = "8 ms"
+
+[readout]
+name = "bridge converter"
+family = "scpi"
+port = %s
+identify = "*IDN?"
+identity = %s
+uptime = "SYST:UPT?"
+gain_uncertainty = "%g %%"
+zero_uncertainty = "%g uV/V"
+coverage_factor = %.1f
+certificate = "HI-2026-0118"
+due = "2027-03-01"
+
+[source]
+family = "scpi"
+port = %s
+baud = 9600
+identify = "*IDN?"
+identity = %s
+uptime = "SYST:UPT?"
+set = "SOUR:PRES {mmHg}"
+hold = "SOUR:HOLD"
+vent = "SOUR:VENT"
+
+[valve]
+family = "scpi"
+port = %s
+baud = 9600
+identify = "*IDN?"
+identity = %s
+release = "ROUT:OPEN"
+shut = "ROUT:CLOS"
+edge_time = "%g ms"
+edge_time_tolerance = "%g %%"
+`, port(RoleUUT), lineLength-2, converterResolution, clockTolerance*100, nominal, heightSD,
+		port(RoleReadout), quoted(identityReadout), readoutGain*100, readoutZero, readoutK,
+		port(RoleSource), quoted(identitySource),
+		port(RoleValve), quoted(identityValve), edge*1000, edgeTolerance*100)
+	return w.Bytes()
+}
+
+// quoted writes a TOML basic string.
+func quoted(s string) string {
+	var w strings.Builder
+	w.WriteByte('"')
+	for _, r := range s {
+		switch {
+		case r == '"' || r == '\\':
+			w.WriteByte('\\')
+			w.WriteRune(r)
+		case r < ' ' || r == 0x7f:
+			fmt.Fprintf(&w, "\\u%04X", r)
+		default:
+			w.WriteRune(r)
+		}
+	}
+	w.WriteByte('"')
+	return w.String()
+}
