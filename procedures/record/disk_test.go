@@ -33,6 +33,7 @@ type memoryDisk struct {
 	failed   bool
 	before   func(op string, n *memoryNode) // called before a write or sync takes effect, locked
 	gate     chan struct{}                  // if not nil, a write waits for it
+	arrived  chan struct{}                  // and says so here, if there is room
 }
 
 type memoryNode struct {
@@ -131,6 +132,10 @@ func (f *memoryFile) Read(p []byte) (int, error) {
 // Write fails half-way when it fails, as a disk that fills up does.
 func (f *memoryFile) Write(p []byte) (int, error) {
 	if f.disk.gate != nil {
+		select {
+		case f.disk.arrived <- struct{}{}:
+		default:
+		}
 		<-f.disk.gate
 	}
 	f.disk.mu.Lock()
