@@ -27,6 +27,12 @@ func (q *quality) isStep() bool {
 	if !(h > q.threshold/2) || !(h > 3*q.step.Noise) || q.theta[lnZeta] < math.Log(leastDamping) {
 		return false
 	}
+	// A pulse comes back by itself: to the fit a step that drift takes away.
+	w, zeta := math.Exp(q.theta[lnOmega]), math.Exp(q.theta[lnZeta])
+	soon := math.Min(float64(q.to-q.post)/q.rate, 20*settling(w, zeta))
+	if math.Abs(q.step.Height+q.step.Drift*soon) < h/4 {
+		return false
+	}
 	var miss, all float64
 	mean := 0.0
 	y := q.problem.y
@@ -67,8 +73,9 @@ func (q *quality) clipped() bool {
 
 // flat looks for the run at one extreme. Noise: where the samples before the
 // step scatter over several digits, four equal extreme values in a row do not
-// happen by chance. Without noise: within a rounded top or plateau that shows
-// L equal samples the next one differs by at most about (1 + 4/L) digits.
+// happen by chance. Otherwise: within a rounded top or plateau that shows L
+// equal samples the next one differs by at most about (1 + 4/L) digits, and
+// the noise.
 func (q *quality) flat(y []float64, extreme float64) bool {
 	h := math.Abs(q.step.Height)
 	noisy := q.step.Noise > q.quantum/2 && q.step.Noise > 1e-6*h
@@ -83,7 +90,7 @@ func (q *quality) flat(y []float64, extreme float64) bool {
 		if noisy && run >= 4 && (q.step.Noise > q.quantum || run >= 8) {
 			return true
 		}
-		if !noisy && run >= 3 {
+		if run >= 3 {
 			jump := 0.0
 			if i > 0 {
 				jump = math.Abs(y[i-1] - extreme)
@@ -91,7 +98,7 @@ func (q *quality) flat(y []float64, extreme float64) bool {
 			if i+run < len(y) {
 				jump = math.Max(jump, math.Abs(y[i+run]-extreme))
 			}
-			if jump > math.Max(4*q.quantum, 1e-6*h) {
+			if jump > math.Max(math.Max(4*q.quantum, 8*q.step.Noise), 1e-6*h) {
 				return true
 			}
 		}
@@ -229,9 +236,7 @@ func detrended(y []float64) []float64 {
 // between values, if all differences are whole multiples of it. 0 when the
 // values follow no such grid or too few differ.
 func quantum(y []float64) float64 {
-	s := slices.Clone(y)
-	slices.Sort(s)
-	s = slices.Compact(s)
+	s := slices.Compact(sorted(y))
 	if len(s) < 2 {
 		return 0
 	}

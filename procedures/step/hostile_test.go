@@ -205,6 +205,9 @@ func TestHostileTraces(t *testing.T) {
 				t.Logf("%s: silent fn %.3g (%.2g) zeta %.3g in %d steps, %s", class, c.Frequency.Value, c.Frequency.StandardUncertainty, c.Damping.Value, len(steps), note)
 			case wrong:
 				wrongSaid++
+				if fn == 0 {
+					t.Logf("%s: fn %.3g zeta %.3g in %d steps, %s %v", class, c.Frequency.Value, c.Damping.Value, len(steps), note, reservations)
+				}
 			case len(reservations) > 0:
 				reserved++
 			default:

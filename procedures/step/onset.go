@@ -67,32 +67,35 @@ func departs(y []float64, level, threshold, low, high float64) bool {
 }
 
 // middle is the median of a sorted slice.
-func middle(sorted []float64) float64 {
-	n := len(sorted)
+func middle(s []float64) float64 {
+	n := len(s)
 	if n == 0 {
 		return 0
 	}
-	return (sorted[(n-1)/2] + sorted[n/2]) / 2
+	return (s[(n-1)/2] + s[n/2]) / 2
+}
+
+// sorted returns the values in order, of a long slice a few thousand evenly
+// taken ones: enough for the robust figures they are for.
+func sorted(y []float64) []float64 {
+	stride := max(1, len(y)/4096)
+	s := make([]float64, 0, len(y)/stride+1)
+	for i := 0; i < len(y); i += stride {
+		s = append(s, y[i])
+	}
+	slices.Sort(s)
+	return s
 }
 
 // median of any slice, which is left as it is.
-func median(y []float64) float64 {
-	s := slices.Clone(y)
-	slices.Sort(s)
-	return middle(s)
-}
+func median(y []float64) float64 { return middle(sorted(y)) }
 
 // spread is the range of the trace without its outermost hundredths.
 func spread(y []float64) float64 {
 	if len(y) == 0 {
 		return 0
 	}
-	stride := max(1, len(y)/4096)
-	var s []float64
-	for i := 0; i < len(y); i += stride {
-		s = append(s, y[i])
-	}
-	slices.Sort(s)
+	s := sorted(y)
 	return s[len(s)-1-len(s)/100] - s[len(s)/100]
 }
 

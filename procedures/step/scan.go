@@ -46,8 +46,7 @@ func scan(coarse *problem, half float64) []start {
 				// A width that small is felt by the search without shaping the scan.
 				s.theta[squared] = math.Pow(0.3/w, 2)
 			}
-			coarse.normalAt(&s.theta, &n)
-			s.cost = n.cost
+			s.cost = coarse.costAt(&s.theta, &n)
 			if !math.IsInf(s.cost, 1) {
 				grid = append(grid, s)
 			}
@@ -75,6 +74,42 @@ func scan(coarse *problem, half float64) []start {
 		}
 	}
 	return best
+}
+
+// costAt is the cost alone, which on block means needs no derivatives.
+func (p *problem) costAt(theta *[most]float64, n *normal) float64 {
+	if p.times == nil {
+		p.normalAt(theta, n)
+		return n.cost
+	}
+	w, zeta := math.Exp(theta[lnOmega]), math.Exp(theta[lnZeta])
+	width := p.width
+	if p.fitWidth {
+		width = math.Sqrt(theta[squared])
+	}
+	var m [most][most]float64
+	for i := range p.fixed {
+		copy(m[i][:], p.fixed[i][:])
+	}
+	m[linear][0], m[linear][1], m[linear][linear] = m[2][0], m[2][1], m[2][2]
+	m[2] = [most]float64{}
+	for i, t := range p.times {
+		x := w * (t - theta[delay])
+		if x+w*width/2 <= 0 {
+			continue
+		}
+		g := Ramp(x, w*width, zeta) * p.one[i]
+		m[2][0] += g * p.one[i]
+		m[2][1] += g * p.tau[i]
+		m[2][2] += g * g
+		m[linear][2] += g * p.y[i]
+	}
+	held := p.nonlinear
+	p.nonlinear = 0
+	n.cost = math.Inf(1)
+	p.eliminate(&m, linear, n)
+	p.nonlinear = held
+	return n.cost
 }
 
 func abs(i int) int { return max(i, -i) }

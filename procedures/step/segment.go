@@ -44,7 +44,7 @@ func (a *analysis) steps() []Step {
 	a.y = slices.Clone(a.trace.Pressure)
 	var steps []Step
 	hold := int(holdOff * rate)
-	from := 0
+	from, split := 0, false // split: the step before was cut short by a hidden onset
 	onset, ok := onsets(a.y, rate, least, 0)
 	for ok {
 		next, more := onsets(a.y, rate, least, onset+hold)
@@ -56,21 +56,28 @@ func (a *analysis) steps() []Step {
 			w = a.window(from, onset, next, more, least)
 			f, fits = a.fit(w)
 		}
-		if earlier, hidden := a.hidden(w, f, fits); hidden {
+		earlier, hidden := a.hidden(w, f, fits)
+		if hidden {
 			next, more = earlier, true
 			w = a.window(from, onset, next, more, least)
 			f, fits = a.fit(w)
 		}
 		from = onset + (w.to-onset)*7/10
+		var s Step
+		is := false
 		if fits {
-			s, is := a.judge(f)
-			if is {
-				steps = append(steps, s)
-			}
-			if s.Determined {
-				from = a.settle(f, from)
-			}
+			s, is = a.judge(f)
 		}
+		if split && !s.Determined {
+			steps[len(steps)-1].reserve(Misfit, "the trace leaves the fit soon after the step, and not by another step")
+		}
+		if is {
+			steps = append(steps, s)
+		}
+		if s.Determined {
+			from = a.settle(f, from)
+		}
+		split = hidden && s.Determined
 		onset, ok = next, more
 	}
 	return steps
@@ -219,7 +226,7 @@ func (a *analysis) fit(w window) (fitted, bool) {
 func (f *fitted) leaveOutSpikes() {
 	p := f.problem
 	original := slices.Clone(p.y)
-	for range 4 {
+	for range 6 {
 		r := f.residuals(f.jacobian()[:linear])
 		for i := range r {
 			r[i] += original[i] - p.y[i]
@@ -254,25 +261,32 @@ func (f *fitted) replaced(spikes []int, r, original []float64) bool {
 	return true
 }
 
-// standingOut lists the spikes among residuals in the scaled unit.
+// standingOut lists the spikes among residuals in the scaled unit: what
+// differs from the median of itself and its four neighbours, so that the
+// broad residuals of a fit that spikes have pulled aside do not hide them.
 func standingOut(r []float64) []int {
+	sharp := make([]float64, len(r))
 	sizes := make([]float64, len(r))
 	for i, v := range r {
-		sizes[i] = math.Abs(v)
+		var near [5]float64
+		k := copy(near[:], r[max(0, i-2):min(len(r), i+3)])
+		slices.Sort(near[:k])
+		sharp[i] = math.Abs(v - middle(near[:k]))
+		sizes[i] = sharp[i]
 	}
-	slices.Sort(sizes)
-	limit := math.Max(7*1.4826*middle(sizes), 1e-3)
+	limit := math.Max(7*1.4826*median(sizes), 1e-3)
 	var spikes []int
-	run := 0
-	for i, v := range r {
-		if math.Abs(v) <= limit {
-			run = 0
-			continue
+	for i := 0; i < len(r); i++ {
+		run := 0
+		for i+run < len(r) && sharp[i+run] > limit {
+			run++
 		}
-		if run++; run > 2 {
-			return nil
+		for k := range run {
+			if run <= 2 {
+				spikes = append(spikes, i+k)
+			}
 		}
-		spikes = append(spikes, i)
+		i += run
 	}
 	if len(spikes) > max(2, len(r)/100) {
 		return nil
