@@ -161,8 +161,8 @@ type passed struct {
 func (f *fitted) passThrough(j [][]float64, applied []float64) passed {
 	var out passed
 	u := applied[f.from:f.to]
-	height := median(u[len(u)-(f.to-f.onset)/4-1:]) - median(u[:f.pre-f.from])
-	sigma := lineScatter(u[:f.pre-f.from]) / height * f.beta[response]
+	_, height := appliedLevels(u, f.window)
+	sigma := lineScatter(u[:(f.pre-f.from)*3/4]) / height * f.beta[response]
 	n := len(u)
 	back := make([][]float64, len(j))
 	for k := range j {
