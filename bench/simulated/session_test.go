@@ -111,7 +111,7 @@ func (s *session) samples(n int) []float64 {
 	return xs
 }
 
-// usual is what a run does with a bench, about 180 s.
+// usual is what a run does with a bench, 200 s.
 func (s *session) usual() {
 	s.send(RoleSource, "SOUR:VENT")
 	s.reading(50)
@@ -141,7 +141,7 @@ func (s *session) usual() {
 		s.send(RoleValve, "ROUT:CLOS")
 	}
 	s.send(RoleSource, "SOUR:VENT")
-	s.run(time.Second)
+	s.run(40 * time.Second)
 }
 
 // reading asks the reference n times, ten times a second.
