@@ -138,6 +138,8 @@ func TestZeroing(t *testing.T) {
 		within(t, "before zeroing", average(), s.b.drawn.zeroShift, 0.01)
 		s.send(RoleReference, "CAL:ZERO")
 		within(t, "after zeroing", average(), 0, 0.015)
+		s.send(RoleReference, "CAL:ZERO")
+		within(t, "after zeroing twice", average(), 0, 0.015)
 		s.send(RoleSource, "SOUR:PRES 20")
 		s.run(4 * time.Second)
 		s.send(RoleReference, "CAL:ZERO")
@@ -190,7 +192,7 @@ func certificate(t *testing.T, b *Bench) func(reading float64) float64 {
 // misses the true pressure by a normal error with the stated uncertainty.
 func TestReferenceIsAsCertified(t *testing.T) {
 	const benches = 150
-	for _, p := range []float64{100, 300} {
+	for _, p := range []float64{50, 100, 300} {
 		var squares, beyond float64
 		for seed := range uint64(benches) {
 			s := start(t, Settings{Seed: seed})
