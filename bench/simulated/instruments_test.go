@@ -271,3 +271,28 @@ func TestStreamRate(t *testing.T) {
 		t.Errorf("bursts every %v", next.Sub(due))
 	}
 }
+
+// Whatever comes in, an instrument answers in whole lines, at most one for
+// each question mark, and afterwards still says who it is.
+func FuzzDialogue(f *testing.F) {
+	for _, seed := range []string{"*IDN?\n", "SOUR:PRES 1e3\r\n", "MEAS:PRES?\nCAL:ZERO\n", ":::?\n", "\x00\xff?\n", "SOUR:PRES  -5 \nSOUR:HOLD\n"} {
+		f.Add([]byte(seed))
+	}
+	f.Fuzz(func(t *testing.T, data []byte) {
+		for _, role := range []string{RoleReference, RoleSource, RoleValve} {
+			s := start(t, Settings{})
+			s.b.machines[RoleUUT].(*transducer).burst = 1 << 62 // not needed here
+			s.b.Machine(role).Receive(s.now, data)
+			s.run(time.Duration(1+len(data)) * 100 * time.Millisecond)
+			out := string(s.out[role])
+			if n := strings.Count(out, "\n"); n > strings.Count(string(data), "?") || out != "" && !strings.HasSuffix(out, "\n") {
+				t.Fatalf("%s answers %q with %q", role, data, out)
+			}
+			s.seen[role] = len(out)
+			s.b.Machine(role).Receive(s.now, []byte("\n*CLS\n"))
+			if got := s.ask(role, "*IDN?"); !strings.HasPrefix(got, "Kymobench simulation,") {
+				t.Fatalf("%s, after %q: %q", role, data, got)
+			}
+		}
+	})
+}
