@@ -282,14 +282,14 @@ func FuzzDialogue(f *testing.F) {
 		for _, role := range []string{RoleReference, RoleSource, RoleValve} {
 			s := start(t, Settings{})
 			s.b.machines[RoleUUT].(*transducer).burst = 1 << 62 // not needed here
-			s.b.Machine(role).Receive(s.now, data)
+			s.b.Machine(role).Receive(s.now, append(data[:len(data):len(data)], '\n')) // ends a message left open
 			s.run(time.Duration(1+len(data)) * 100 * time.Millisecond)
 			out := string(s.out[role])
 			if n := strings.Count(out, "\n"); n > strings.Count(string(data), "?") || out != "" && !strings.HasSuffix(out, "\n") {
 				t.Fatalf("%s answers %q with %q", role, data, out)
 			}
 			s.seen[role] = len(out)
-			s.b.Machine(role).Receive(s.now, []byte("\n*CLS\n"))
+			s.b.Machine(role).Receive(s.now, []byte("*CLS\n"))
 			if got := s.ask(role, "*IDN?"); !strings.HasPrefix(got, "Kymobench simulation,") {
 				t.Fatalf("%s, after %q: %q", role, data, got)
 			}
