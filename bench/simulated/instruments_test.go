@@ -281,7 +281,7 @@ func FuzzDialogue(f *testing.F) {
 	f.Fuzz(func(t *testing.T, data []byte) {
 		for _, role := range []string{RoleReference, RoleSource, RoleValve} {
 			s := start(t, Settings{})
-			s.b.machines[RoleUUT].(*transducer).burst = 1 << 62 // not needed here
+			s.b.machines[RoleUUT].(*transducer).burst = 1 << 62                        // not needed here
 			s.b.Machine(role).Receive(s.now, append(data[:len(data):len(data)], '\n')) // ends a message left open
 			s.run(time.Duration(1+len(data)) * 100 * time.Millisecond)
 			out := string(s.out[role])
