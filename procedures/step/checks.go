@@ -63,7 +63,11 @@ func (q *quality) rivals(fn float64, c covariance) bool {
 // at a pace that a rounded top or a plateau approached by itself cannot have.
 func (q *quality) clipped() bool {
 	y := q.trace[q.from:q.to]
-	response := y[max(0, q.post-q.from-1):]
+	start := max(0, q.post-q.from-1)
+	for start < len(y) && (y[start]-q.base)/q.scale < 0.5 {
+		start++ // the level before the step is no rail
+	}
+	response := y[start:]
 	if len(response) < 4 {
 		return false
 	}
@@ -71,38 +75,40 @@ func (q *quality) clipped() bool {
 	return q.flat(response, low) || q.flat(response, high)
 }
 
-// flat looks for the run at one extreme. Noise: where the samples before the
-// step scatter over several digits, four equal extreme values in a row do not
-// happen by chance. Otherwise: within a rounded top or plateau that shows L
-// equal samples the next one differs by at most about (1 + 4/L) digits, and
-// the noise.
+// flat looks for the run at one extreme. Noise: a sample falls on one given
+// digit with a chance of at most 0.4 digits/noise, so that a run long enough
+// (1 in 10,000, four at least) does not happen by chance. Shape: a rounded
+// top that shows L equal samples, half = (L - 1)/2, falls by at most a digit
+// over half, so by ((half + k)/half)^2 digits k samples beyond it; a plateau
+// approached by ten samples a period by 1.9 and 3.5 digits. A digit is added
+// for rounding, and six times the noise.
 func (q *quality) flat(y []float64, extreme float64) bool {
-	h := math.Abs(q.step.Height)
-	noisy := q.step.Noise > q.quantum/2 && q.step.Noise > 1e-6*h
+	h, noise := math.Abs(q.step.Height), q.step.Noise
+	long := math.MaxInt
+	if noise > q.quantum/2 && noise > 1e-6*h {
+		chance := math.Min(0.4*q.quantum/noise, 0.63)
+		long = max(4, int(math.Ceil(4/-math.Log10(chance))))
+	}
 	for i := 0; i < len(y); i++ {
-		run := 0
-		for i+run < len(y) && y[i+run] == extreme {
-			run++
+		end := i
+		for end < len(y) && y[end] == extreme {
+			end++
 		}
-		if run == 0 {
-			continue
-		}
-		if noisy && run >= 4 && (q.step.Noise > q.quantum || run >= 8) {
+		if end-i >= long {
 			return true
 		}
-		if run >= 3 {
-			jump := 0.0
-			if i > 0 {
-				jump = math.Abs(y[i-1] - extreme)
-			}
-			if i+run < len(y) {
-				jump = math.Max(jump, math.Abs(y[i+run]-extreme))
-			}
-			if jump > math.Max(math.Max(4*q.quantum, 8*q.step.Noise), 1e-6*h) {
-				return true
+		if end-i >= 3 {
+			half := float64(end-i-1) / 2
+			for k, plateau := range []float64{1.9, 3.5} {
+				limit := 1e-6*h + 6*noise + q.quantum*(1+math.Max(math.Pow((half+float64(k+1))/half, 2), plateau))
+				for _, at := range []int{i - 1 - k, end + k} {
+					if at >= 0 && at < len(y) && math.Abs(y[at]-extreme) > limit {
+						return true
+					}
+				}
 			}
 		}
-		i += run
+		i = max(i, end)
 	}
 	return false
 }

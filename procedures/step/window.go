@@ -1,0 +1,199 @@
+package step
+
+import "math"
+
+// fitted is a window with the model found in it.
+type fitted struct {
+	found
+	window
+	second  found // another minimum, if rival
+	rival   bool
+	problem *problem
+	base    float64 // level and height that the samples were scaled with
+	scale   float64
+	origin  int   // sample at which time is 0
+	post    int   // first sample after the edge's middle
+	spikes  []int // samples left out, from f.from
+}
+
+func (f *fitted) width() float64 {
+	if f.problem.fitWidth {
+		return math.Sqrt(f.theta[squared])
+	}
+	return f.problem.width
+}
+
+// fit searches the model in w. It fails when the window holds no lasting
+// change of level.
+func (a *analysis) fit(w window) (fitted, bool) {
+	f, half, ok := a.set(w)
+	if !ok {
+		return f, false
+	}
+	coarse := a.coarse(f.problem, w, f.origin)
+	var found1 bool
+	f.found, f.second, found1, f.rival = searchAll(coarse, f.problem, half)
+	if !found1 {
+		return f, false
+	}
+	f.place(a)
+	// Cut a window that is far longer than the answer, and fit again.
+	tau := settling(math.Exp(f.theta[lnOmega]), math.Exp(f.theta[lnZeta]))
+	reach := int(math.Max((longWindow*tau+f.width())*a.trace.Rate, 256))
+	cut := w
+	cut.to = min(w.to, f.post+reach)
+	cut.from = max(w.from, min(f.post-reach, w.pre-int(memory*a.trace.Rate)))
+	if cut.to-cut.from <= (w.to-w.from)*9/10 {
+		if g, _, ok := a.set(cut); ok {
+			g.second, g.rival = f.second, false
+			g.found = polish(g.problem, f.theta)
+			if !math.IsInf(g.at.cost, 1) {
+				f = g
+			}
+		}
+	}
+	f.leaveOutSpikes()
+	f.place(a)
+	return f, true
+}
+
+// place finds the first sample after the middle of the edge.
+func (f *fitted) place(a *analysis) {
+	at := float64(f.origin)
+	if f.problem.applied == nil {
+		at += f.theta[delay] * a.trace.Rate
+	}
+	f.post = max(f.from, min(int(math.Ceil(at)), f.to))
+}
+
+// set scales the samples of w, finds the half-way crossing (its time is
+// half, from the origin at the onset) and prepares the problem.
+func (a *analysis) set(w window) (f fitted, half float64, ok bool) {
+	f.window = w
+	y := a.y
+	if w.to-w.onset < 4 || w.pre-w.from < 2 {
+		return f, 0, false
+	}
+	f.base = median(y[w.from:w.pre])
+	f.scale = median(y[w.onset+(w.to-w.onset)*3/4:w.to]) - f.base
+	if !(math.Abs(f.scale) > w.threshold/4) {
+		return f, 0, false
+	}
+	f.origin = w.onset
+	crossing := w.pre
+	for crossing < w.to && (y[crossing]-f.base)/f.scale < 0.5 {
+		crossing++
+	}
+	if crossing == w.to || crossing == 0 {
+		return f, 0, false
+	}
+	here, there := (y[crossing-1]-f.base)/f.scale, (y[crossing]-f.base)/f.scale
+	part := 1.0
+	if there > here {
+		part = math.Min((0.5-here)/(there-here), 1)
+	}
+	half = (float64(crossing-1-f.origin) + part) * a.dt
+	f.problem = a.problem(w, f.base, f.scale, f.origin)
+	if a.trace.Applied != nil && f.problem.applied == nil {
+		return f, 0, false
+	}
+	return f, half, true
+}
+
+// problem makes the least-squares problem of the samples of w.
+func (a *analysis) problem(w window, base, scale float64, origin int) *problem {
+	n := w.to - w.from
+	p := &problem{
+		one: make([]float64, n), tau: make([]float64, n), y: make([]float64, n),
+		first: float64(w.from-origin) * a.dt, dt: a.dt,
+	}
+	for i := range n {
+		p.one[i] = 1
+		p.tau[i] = 2*float64(i)/float64(n-1) - 1
+		p.y[i] = (a.y[w.from+i] - base) / scale
+	}
+	switch {
+	case a.trace.Applied != nil:
+		p.applied = a.appliedIn(w)
+	case a.settings.EdgeStated:
+		p.width = a.settings.EdgeTime / 0.8
+	default:
+		p.fitWidth = true
+	}
+	after := float64(w.to-w.onset) * a.dt
+	p.low = [2]float64{math.Log(2 * math.Pi * 0.15 / after), math.Log(0.005)}
+	p.high = [2]float64{math.Log(2 * math.Pi * 2 * a.trace.Rate), math.Log(20)}
+	p.prepare()
+	return p
+}
+
+// appliedIn scales the applied pressure of w, nil when it does not move.
+func (a *analysis) appliedIn(w window) *appliedInput {
+	u := a.trace.Applied[w.from:w.to]
+	base, height := appliedLevels(u, w)
+	if !(math.Abs(height) > 0) {
+		return nil
+	}
+	in := &appliedInput{u: make([]float64, len(u))}
+	for i, v := range u {
+		in.u[i] = (v - base) / height
+	}
+	return in
+}
+
+// appliedLevels are the level and height of an applied pressure in w. It may
+// begin to move before the answer is seen: the level is a median.
+func appliedLevels(u []float64, w window) (base, height float64) {
+	base = median(u[:w.pre-w.from])
+	return base, median(u[len(u)-(w.to-w.onset)/4-1:]) - base
+}
+
+// mostCoarse bounds the samples of a scan with an applied pressure.
+const mostCoarse = 4096
+
+// coarse makes the problem the grid is scanned on: block means whose length
+// grows with the distance from the onset (a fiftieth of it), so that a fast
+// answer keeps its samples and a long trace costs little. With an applied
+// pressure the recursion needs every sample, and the window is cut instead.
+func (a *analysis) coarse(full *problem, w window, origin int) *problem {
+	if full.applied != nil {
+		cut := w
+		cut.from = max(w.from, w.pre-mostCoarse/4)
+		cut.to = min(w.to, cut.from+mostCoarse)
+		if cut.to-cut.from == w.to-w.from {
+			return full
+		}
+		offset, n := cut.from-w.from, cut.to-cut.from
+		p := &problem{
+			one: full.one[offset : offset+n], tau: full.tau[offset : offset+n], y: full.y[offset : offset+n],
+			first: full.first + float64(offset)*a.dt, dt: a.dt,
+			applied: &appliedInput{u: full.applied.u[offset : offset+n]},
+			low:     full.low, high: full.high,
+		}
+		p.prepare()
+		return p
+	}
+	p := &problem{width: full.width, fitWidth: full.fitWidth, low: full.low, high: full.high}
+	centre := w.onset - w.from
+	for i := 0; i < len(full.y); {
+		distance := max(i-centre, centre-i)
+		length := max(1, distance/50)
+		if i < centre {
+			length = max(1, distance/20)
+		}
+		length = min(length, len(full.y)-i)
+		var sum, tau float64
+		for j := i; j < i+length; j++ {
+			sum += full.y[j]
+			tau += full.tau[j]
+		}
+		root := math.Sqrt(float64(length))
+		p.one = append(p.one, root)
+		p.tau = append(p.tau, tau/root)
+		p.y = append(p.y, sum/root)
+		p.times = append(p.times, full.first+(float64(i)+float64(length-1)/2)*a.dt)
+		i += length
+	}
+	p.prepare()
+	return p
+}
