@@ -58,6 +58,7 @@ func TestCoverage(t *testing.T) {
 			rows = append(rows, row{"quantised, sigma/LSB 0.4", p, known, 400})
 		}
 	}
+	var pooled, inside float64
 	for _, row := range rows {
 		sum := simulate(t, row.plan, row.s, trials(row.count/8, 4*row.count), 3)
 		n := float64(sum.count - sum.refused)
@@ -70,11 +71,19 @@ func TestCoverage(t *testing.T) {
 		if row.plan.width == 0 && !row.s.EdgeStated {
 			most = 0.985 // the width is held at 0 in half of the trials
 		}
+		pooled += 2 * n
+		inside += float64(sum.coverFn + sum.coverZeta)
 		checkCoverage(t, row.name, float64(sum.coverFn)/n, float64(sum.coverZeta)/n, int(n), most)
 		if float64(sum.refused) > 0.02*float64(sum.count) {
 			t.Errorf("%s: %d refused of %d", row.name, sum.refused, sum.count)
 		}
 		t.Logf("%-25s fn %2g zeta %.2f cover %.3f %.3f  rmse/bound(white) %.3f %.3f refused %d of %d reserved %d", row.name, row.plan.fn, row.plan.zeta, float64(sum.coverFn)/n, float64(sum.coverZeta)/n, root*rmseFn/b, root*rmseZeta/z, sum.refused, sum.count, sum.reserved)
+	}
+	// A row of a daily test is too short to find intervals too wide; all
+	// rows together are not.
+	t.Logf("all rows: cover %.4f", inside/pooled)
+	if inside/pooled < 0.935 || inside/pooled > 0.97 {
+		t.Errorf("over all rows the 95 %% intervals cover %.4f", inside/pooled)
 	}
 }
 

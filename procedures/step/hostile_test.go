@@ -215,6 +215,11 @@ func TestHostileTraces(t *testing.T) {
 			}
 		}
 		bad += silent
+		// A wrong model must mostly be told, and no step hardly ever be one.
+		count := refused + reserved + right + wrongSaid + silent
+		if class == "second mode" && right > count/10 || class == "no step" && wrongSaid > count/200 {
+			t.Errorf("%s: right without a word %d, wrong %d of %d", class, right, wrongSaid, count)
+		}
 		t.Logf("%-14s silent wrong %d, wrong with reservation %d, refused %d, right with reservation %d, right %d", class, silent, wrongSaid, refused, reserved, right)
 	}
 	if bad > max(1, all/500) {

@@ -11,7 +11,7 @@ import (
 // or with coarse digits, at any damping.
 func TestNotClipped(t *testing.T) {
 	r := rand.New(rand.NewPCG(21, 1))
-	flat, all := 0, trials(400, 4000)
+	flat, all := 0, trials(250, 4000)
 	for range all {
 		p := plan{
 			fn: 5 * math.Pow(12, r.Float64()), zeta: 0.1 * math.Pow(20, r.Float64()), before: 0.5, phase: r.Float64(),
@@ -57,13 +57,13 @@ func TestNotClipped(t *testing.T) {
 // without noise: refused as clipped.
 func TestClipped(t *testing.T) {
 	r := rand.New(rand.NewPCG(22, 1))
-	missed, all := 0, trials(300, 3000)
+	missed, all := 0, trials(150, 3000)
 	for range all {
 		p := plan{
 			fn: 6 + 40*r.Float64(), zeta: 0.1 + 0.5*r.Float64(), before: 0.5, phase: r.Float64(),
 			heights: []float64{100}, sigma: []float64{0, 0.1, 0.5}[r.IntN(3)], quantum: []float64{0, 0.1}[r.IntN(2)],
 		}
-		p.rate, p.spacing = p.fn*(20+50*r.Float64()), 0.5+20*slowest(p.fn, p.zeta)
+		p.rate, p.spacing = p.fn*(20+150*r.Float64()), 0.5+20*slowest(p.fn, p.zeta)
 		trace := p.make(r)
 		top := 100 + 100*math.Exp(-math.Pi*p.zeta/math.Sqrt(1-p.zeta*p.zeta))
 		rail := math.Round(70 + (0.3+0.6*r.Float64())*(top-70))
@@ -239,5 +239,30 @@ func TestOnsets(t *testing.T) {
 	t.Logf("%d steps, %d traces with a step missed or made up", steps, wrong)
 	if wrong > steps/200 {
 		t.Errorf("%d traces of %d with a step missed or made up", wrong, steps/4)
+	}
+}
+
+// A second mode is told as misfit, a plain answer in the same noise is not,
+// nor is noise correlated from sample to sample.
+func TestMisfitTold(t *testing.T) {
+	r := rand.New(rand.NewPCG(28, 1))
+	told, falsely, n := 0, 0, trials(40, 1000)
+	for range n {
+		p := plan{fn: 20, zeta: 0.3, rate: 1000, before: 0.5, spacing: 1.5, heights: []float64{100}, sigma: 0.5, phase: r.Float64(), phi: 0.5}
+		trace := p.make(r)
+		if s := one(t, trace, Settings{EdgeStated: true, MinimumStep: 8}); s.has(Misfit) {
+			falsely++
+		}
+		for i := range trace.Pressure {
+			since := float64(i)/p.rate - p.at(0)
+			trace.Pressure[i] += 8 * (trueEdge(since, 0, 50, 0.1) - trueEdge(since, 0, p.fn, p.zeta))
+		}
+		if s := one(t, trace, Settings{EdgeStated: true, MinimumStep: 8}); s.has(Misfit) {
+			told++
+		}
+	}
+	t.Logf("told %d of %d, falsely %d", told, n, falsely)
+	if told < n*95/100 || falsely > n/50 {
+		t.Errorf("misfit told %d times of %d, falsely %d", told, n, falsely)
 	}
 }
