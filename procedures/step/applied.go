@@ -14,7 +14,7 @@ func (a *appliedInput) at(i int) float64 {
 }
 
 // hold is the exact step over delta = w dt radians of the state (p, q = p'/w)
-// of p” + 2 zeta w p' + w^2 p = w^2 u with u straight between its samples
+// of d2p/dt2 + 2 zeta w dp/dt + w^2 p = w^2 u with u straight between its samples
 // (first-order hold): (p, q) becomes phi (p, q) + b0 u0 + b1 u1.
 type hold struct {
 	phi    [2][2]float64

@@ -30,7 +30,7 @@ func (q *quality) isStep() bool {
 	// A pulse comes back by itself: to the fit a step that drift takes away.
 	w, zeta := math.Exp(q.theta[lnOmega]), math.Exp(q.theta[lnZeta])
 	soon := math.Min(float64(q.to-q.post)/q.rate, 20*settling(w, zeta))
-	if math.Abs(q.step.Height+q.step.Drift*soon) < h/4 {
+	if math.Abs(q.step.Height+q.step.Drift*soon) < h/2 {
 		return false
 	}
 	var miss, all float64

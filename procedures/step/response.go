@@ -11,7 +11,7 @@ import "math"
 // x = 2 pi fn (t - t0) is time in radians of the undamped natural frequency
 // and zeta > 0 the damping ratio (both without unit). It is 0 for x <= 0 and
 // tends to 1. For z < 0 the hyperbolic functions are circular ones. Source:
-// the textbook solution of p” + 2 zeta w p' + w^2 p = w^2 u, written with
+// the textbook solution of d2p/dt2 + 2 zeta w dp/dt + w^2 p = w^2 u, with
 // one set of symbols so that nothing is singular at zeta = 1.
 func Response(x, zeta float64) float64 {
 	if !(x > 0) {

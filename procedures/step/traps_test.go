@@ -266,3 +266,21 @@ func TestMisfitTold(t *testing.T) {
 		t.Errorf("misfit told %d times of %d, falsely %d", told, n, falsely)
 	}
 }
+
+// Where the bound of fn is over 5 % no figure is given, below 3 % one is.
+func TestUncertaintyTooLarge(t *testing.T) {
+	for _, c := range []struct {
+		sigma   float64
+		refused bool
+	}{{1, true}, {0.2, false}} {
+		p := plan{fn: 60, zeta: 1.5, rate: 1200, before: 0.5, spacing: 1, heights: []float64{100}, sigma: c.sigma, phase: 0.3}
+		bound, _ := p.bound(false)
+		if c.refused != (bound > 0.07) || !c.refused && bound > 0.03 {
+			t.Fatalf("sigma %g: bound %g", c.sigma, bound)
+		}
+		s := one(t, p.make(rand.New(rand.NewPCG(29, 1))), Settings{EdgeStated: true, MinimumStep: 8})
+		if s.Determined == c.refused || slices.Contains(s.Reasons, UncertaintyTooLarge) != c.refused || c.refused && s.Frequency != (Estimate{}) {
+			t.Errorf("sigma %g: %v %+v", c.sigma, s.Reasons, s.Frequency)
+		}
+	}
+}

@@ -31,9 +31,9 @@ func (a *analysis) fit(w window) (fitted, bool) {
 		return f, false
 	}
 	coarse := a.coarse(f.problem, w, f.origin)
-	var found1 bool
-	f.found, f.second, found1, f.rival = searchAll(coarse, f.problem, half)
-	if !found1 {
+	var any bool
+	f.found, f.second, any, f.rival = searchAll(coarse, f.problem, half)
+	if !any {
 		return f, false
 	}
 	f.place(a)
@@ -45,8 +45,10 @@ func (a *analysis) fit(w window) (fitted, bool) {
 	cut.from = max(w.from, min(f.post-reach, w.pre-int(memory*a.trace.Rate)))
 	if cut.to-cut.from <= (w.to-w.from)*9/10 {
 		if g, _, ok := a.set(cut); ok {
-			g.second, g.rival = f.second, false
 			g.found = polish(g.problem, f.theta)
+			if g.rival = f.rival; g.rival {
+				g.second = polish(g.problem, f.second.theta)
+			}
 			if !math.IsInf(g.at.cost, 1) {
 				f = g
 			}
