@@ -1,0 +1,127 @@
+package results
+
+import (
+	"fmt"
+
+	"kymobench/bench/line"
+	"kymobench/bench/quantity"
+	"kymobench/procedures"
+	"kymobench/procedures/record"
+)
+
+// gathered is what the events of a record say, sorted by kind, before anything
+// is computed.
+type gathered struct {
+	opened       *record.Opened
+	definition   *procedures.Definition
+	reference    *record.Reference
+	uut          *record.UUT
+	readout      *record.Readout
+	valve        *record.Valve
+	readings     map[int64]reading
+	blocks       map[int64]record.Block
+	points       []record.Point
+	holds        []record.Hold
+	captures     []record.Capture
+	faults       []Reason
+	reservations []Reason
+	finished     *record.Finished
+}
+
+// reading is an asked reading with the time of its line.
+type reading struct {
+	record.Reading
+	at line.Instant
+}
+
+// middle is half way between question and answer, in seconds.
+func (r reading) middle() float64 { return (r.Sent + (r.at-r.Sent)/2).Seconds() }
+
+// gather sorts the events. A payload that does not decode is an error with its
+// line; kinds that say nothing about a result are passed over.
+func gather(events []record.Event) (*gathered, error) {
+	g := &gathered{readings: map[int64]reading{}, blocks: map[int64]record.Block{}}
+	for _, e := range events {
+		if err := g.take(e); err != nil {
+			return nil, fmt.Errorf("record line %d (%s): %w", e.Line, e.Kind, err)
+		}
+	}
+	return g, nil
+}
+
+func (g *gathered) take(e record.Event) error {
+	switch e.Kind {
+	case record.KindOpened:
+		return keep(e, &g.opened)
+	case record.KindProcedure:
+		file, err := record.Decode[record.File](e)
+		if err != nil {
+			return err
+		}
+		g.definition, err = procedures.Load(file.Name, []byte(file.Text))
+		return err
+	case record.KindReference:
+		return keep(e, &g.reference)
+	case record.KindUUT:
+		return keep(e, &g.uut)
+	case record.KindReadout:
+		return keep(e, &g.readout)
+	case record.KindValve:
+		return keep(e, &g.valve)
+	case record.KindReading:
+		r, err := record.Decode[record.Reading](e)
+		g.readings[e.Line] = reading{Reading: r, at: e.At}
+		return err
+	case record.KindBlock:
+		b, err := record.Decode[record.Block](e)
+		g.blocks[e.Line] = b
+		return err
+	case record.KindPoint:
+		return add(e, &g.points)
+	case record.KindHold:
+		return add(e, &g.holds)
+	case record.KindCapture:
+		return add(e, &g.captures)
+	case record.KindFault:
+		f, err := record.Decode[record.Fault](e)
+		g.faults = append(g.faults, Reason{Code: f.Code, Text: f.Text})
+		return err
+	case record.KindReservation:
+		r, err := record.Decode[record.Reservation](e)
+		g.reservations = append(g.reservations, Reason{Code: r.Code, Text: r.Text})
+		return err
+	case record.KindFinished:
+		return keep(e, &g.finished)
+	}
+	return nil
+}
+
+func keep[T any](e record.Event, into **T) error {
+	v, err := record.Decode[T](e)
+	if err != nil {
+		return err
+	}
+	*into = &v
+	return nil
+}
+
+func add[T any](e record.Event, into *[]T) error {
+	v, err := record.Decode[T](e)
+	if err != nil {
+		return err
+	}
+	*into = append(*into, v)
+	return nil
+}
+
+// parsed reads a quantity that a record states as text; an empty text is zero.
+func parsed(text string, d quantity.Dimension) (float64, error) {
+	if text == "" {
+		return 0, nil
+	}
+	v, err := quantity.ParseAs(text, d)
+	if err != nil {
+		return 0, err
+	}
+	return v.SI, nil
+}

@@ -1,0 +1,223 @@
+package results
+
+import (
+	"fmt"
+	"math"
+
+	"kymobench/bench/quantity"
+	"kymobench/procedures/record"
+)
+
+// blockMean is how many samples of a stream are averaged before their scatter
+// is taken for noise, so that correlation between neighbours does not make the
+// mean look better known than it is.
+const blockMean = 50
+
+// taken is one point: means, and what is known of their noise.
+type taken struct {
+	record.Point
+	set    float64 // in the scale's unit
+	hasSet bool
+	p      float64 // corrected reference
+	y      float64 // UUT
+	beyond bool    // outside the certificate's corrections
+
+	nP, nY int
+	vP     float64 // variance of one reading of the reference about its slope
+	dofP   float64
+	vY     float64 // variance of one block mean of the UUT
+	kY     int     // block means
+	dofY   float64
+	slope  float64 // of the reference, per second
+}
+
+// takePoint reads the texts of a point.
+func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
+	t := taken{Point: pt}
+	if pt.Set != "" {
+		r := reader{}
+		t.set, t.hasSet = r.stated(pt.Set, s.unit), true
+		if r.err != nil {
+			return t, r.err
+		}
+	}
+	var times, ps []float64
+	for _, n := range pt.Readings {
+		r, ok := g.readings[n]
+		if !ok {
+			return t, fmt.Errorf("point names line %d, which is no reading", n)
+		}
+		p, beyond, err := s.reference(r.Text)
+		if err != nil {
+			return t, fmt.Errorf("reference reading in line %d: %w", n, err)
+		}
+		t.beyond = t.beyond || beyond
+		times, ps = append(times, r.middle()), append(ps, p)
+	}
+	if len(ps) == 0 {
+		return t, fmt.Errorf("point without a reading of the reference")
+	}
+	t.nP = len(ps)
+	t.p, t.slope, t.vP, t.dofP = line(times, ps)
+	if pt.UUT != "" {
+		y, err := s.uut(pt.UUT, pt.Excitation)
+		t.y, t.nY = y, 1
+		return t, err
+	}
+	ys, err := g.samples(s, pt.Blocks)
+	if err != nil {
+		return t, err
+	}
+	if len(ys) == 0 {
+		return t, fmt.Errorf("point without a reading of the UUT")
+	}
+	t.nY = len(ys)
+	t.y = mean(ys)
+	means := blockMeans(ys, blockMean)
+	t.kY = len(means)
+	if t.kY > 1 {
+		m := mean(means)
+		for _, x := range means {
+			t.vY += (x - m) * (x - m) / float64(t.kY-1)
+		}
+		t.dofY = float64(t.kY - 1)
+	}
+	return t, nil
+}
+
+// samples reads the texts of blocks, in order.
+func (g *gathered) samples(s *scale, lines []int64) ([]float64, error) {
+	var ys []float64
+	for _, n := range lines {
+		b, ok := g.blocks[n]
+		if !ok {
+			return nil, fmt.Errorf("line %d is no block of samples", n)
+		}
+		for i, text := range b.Samples {
+			y, err := s.uut(text, "")
+			if err != nil {
+				return nil, fmt.Errorf("sample %d of line %d: %w", i+1, n, err)
+			}
+			ys = append(ys, y)
+		}
+	}
+	return ys, nil
+}
+
+// line returns the mean of p, its least-squares slope over t, and the variance
+// of one value about that line with its degrees of freedom. Fewer than three
+// values give no slope and no variance.
+func line(t, p []float64) (m, slope, variance, dof float64) {
+	m = mean(p)
+	n := float64(len(p))
+	if len(p) < 3 {
+		return m, 0, 0, 0
+	}
+	mt := mean(t)
+	var stt, stp float64
+	for i := range t {
+		stt += (t[i] - mt) * (t[i] - mt)
+		stp += (t[i] - mt) * (p[i] - m)
+	}
+	if stt > 0 {
+		slope = stp / stt
+	}
+	for i := range t {
+		r := p[i] - m - slope*(t[i]-mt)
+		variance += r * r / (n - 2)
+	}
+	return m, slope, variance, n - 2
+}
+
+// mean is the two-pass arithmetic mean; one value is returned exactly.
+func mean(x []float64) float64 {
+	if len(x) == 1 {
+		return x[0]
+	}
+	n := float64(len(x))
+	var m, rest float64
+	for _, v := range x {
+		m += v / n
+	}
+	for _, v := range x {
+		rest += (v - m) / n
+	}
+	return m + rest
+}
+
+func blockMeans(x []float64, size int) []float64 {
+	var means []float64
+	if len(x) < 4*size {
+		return append(means, x...)
+	}
+	for i := 0; i+size <= len(x); i += size {
+		means = append(means, mean(x[i:i+size]))
+	}
+	return means
+}
+
+// noise is what the points of a run say together about the scatter of their
+// means: the variances pooled over points, for the scatter at one point alone
+// has few degrees of freedom.
+type noise struct {
+	vP, dofP float64 // of one reading of the reference
+	vY, dofY float64 // of one block mean of the UUT
+}
+
+func pool(points []taken) noise {
+	var n noise
+	for _, t := range points {
+		n.vP += t.vP * t.dofP
+		n.dofP += t.dofP
+		n.vY += t.vY * t.dofY
+		n.dofY += t.dofY
+	}
+	if n.dofP > 0 {
+		n.vP /= n.dofP
+	}
+	if n.dofY > 0 {
+		n.vY /= n.dofY
+	}
+	return n
+}
+
+// of returns the standard uncertainty that noise leaves in the point's UUT
+// minus reference.
+func (n noise) of(t taken) float64 {
+	v := 0.0
+	if t.nP > 0 {
+		v += n.vP / float64(t.nP)
+	}
+	if t.kY > 0 {
+		v += n.vY / float64(t.kY)
+	}
+	return math.Sqrt(v)
+}
+
+// dof is that of the mean's noise by Welch and Satterthwaite.
+func (n noise) dof(t taken) float64 {
+	var a, b float64
+	if t.nP > 0 {
+		a = n.vP / float64(t.nP)
+	}
+	if t.kY > 0 {
+		b = n.vY / float64(t.kY)
+	}
+	var d float64
+	if a > 0 && n.dofP > 0 {
+		d += a * a / n.dofP
+	}
+	if b > 0 && n.dofY > 0 {
+		d += b * b / n.dofY
+	}
+	if d == 0 {
+		return 0
+	}
+	return (a + b) * (a + b) / d
+}
+
+// mmHg is the unit in which limits on pressures are compared.
+func mmHg() quantity.Unit {
+	u, _ := quantity.UnitNamed("mmHg")
+	return u
+}

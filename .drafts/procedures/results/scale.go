@@ -1,0 +1,217 @@
+package results
+
+import (
+	"fmt"
+	"math"
+
+	"kymobench/bench/quantity"
+	"kymobench/procedures/fit"
+	"kymobench/procedures/record"
+)
+
+// AssumedSensitivity is taken for an electrical output whose nominal
+// sensitivity nobody stated, with a reservation: 5 uV/V/mmHg.
+const AssumedSensitivity = "5 uV/V/mmHg"
+
+// standardGravity in m/s2, exact by convention; airDensity in kg/m3 at about
+// 20 degC and 1013 hPa, from memory.
+const (
+	standardGravity = 9.80665
+	airDensity      = 1.2
+)
+
+// scale turns texts as received into pressures in the reference's unit and
+// knows what the bench states about them. All its fields are in that unit
+// unless they say otherwise.
+type scale struct {
+	unit       quantity.Unit // the reference's
+	referenceF quantity.Field
+	uutField   quantity.Field
+	uutUnit    quantity.Unit
+	excitation float64 // V, 0 when not stated
+	nominal    float64 // V/V/Pa, 0 for a pressure output
+	assumed    bool    // nominal is AssumedSensitivity
+	head       float64 // added to the reference's reading
+	curve      fit.Curve
+	corrected  bool // there is a curve
+
+	// standard uncertainties
+	uReference float64 // at each set pressure
+	uShare     float64 // of the reading, common
+	uDrift     float64 // of the reading
+	uGain      float64 // of the reading, the readout's
+	uZero      float64 // the readout's zero
+	uHead      float64
+
+	resolutionReference float64
+	resolutionUUT       float64
+	delay               float64 // s: response time, its tolerance and the skew, for slopes
+	periodTolerance     float64 // share, half-width
+	edge                string
+	edgeTolerance       float64 // share, half-width
+}
+
+// perMmHg is how many of the scale's unit make one mmHg.
+func (s *scale) perMmHg() float64 {
+	return s.unit.FromSI(float64(quantity.MmHg(1)))
+}
+
+// newScale reads what the record states about reference, UUT, readout, valve.
+func newScale(g *gathered) (*scale, error) {
+	if g.reference == nil || g.uut == nil {
+		return nil, fmt.Errorf("the record names no reference and UUT")
+	}
+	s := &scale{referenceF: g.reference.Field, uutField: g.uut.Field}
+	var ok bool
+	if s.unit, ok = quantity.UnitNamed(g.reference.Field.Unit); !ok || s.unit.Dimension != quantity.DimPressure {
+		return nil, fmt.Errorf("the reference's unit %q is no unit of pressure", g.reference.Field.Unit)
+	}
+	if s.uutUnit, ok = quantity.UnitNamed(g.uut.Field.Unit); !ok {
+		return nil, fmt.Errorf("the UUT's unit %q is not known", g.uut.Field.Unit)
+	}
+	r := reader{}
+	if s.uutUnit.Dimension != quantity.DimPressure {
+		nominal := g.uut.NominalSensitivity
+		if nominal == "" {
+			nominal, s.assumed = AssumedSensitivity, true
+		}
+		s.nominal = r.si(nominal, quantity.DimSensitivity)
+		s.excitation = r.si(g.uut.Excitation, quantity.DimVoltage)
+		s.resolutionUUT = s.output(r.si(g.uut.Resolution, s.uutUnit.Dimension), s.excitation)
+	} else {
+		s.resolutionUUT = s.unit.FromSI(r.si(g.uut.Resolution, quantity.DimPressure))
+	}
+	s.certificate(g.reference, &r)
+	s.heads(g, &r)
+	if g.readout != nil && g.readout.CoverageFactor > 0 {
+		k := g.readout.CoverageFactor
+		s.uGain = r.si(g.readout.GainUncertainty, quantity.DimNone) / k
+		if s.nominal > 0 {
+			s.uZero = s.output(r.si(g.readout.ZeroUncertainty, s.uutUnit.Dimension), s.excitation) / k
+		}
+	}
+	s.delay = r.si(g.reference.ResponseTime, quantity.DimSpan) + r.si(g.reference.ResponseTimeTolerance, quantity.DimSpan) +
+		r.si(g.uut.Delay, quantity.DimSpan) + r.si(g.uut.DelayUncertainty, quantity.DimSpan)
+	s.periodTolerance = r.si(g.uut.SamplePeriodTolerance, quantity.DimNone)
+	if g.valve != nil {
+		s.edge = g.valve.EdgeTime
+		s.edgeTolerance = r.si(g.valve.EdgeTimeTolerance, quantity.DimNone)
+	}
+	return s, r.err
+}
+
+func (s *scale) certificate(ref *record.Reference, r *reader) {
+	c := ref.Certificate
+	if c.CoverageFactor > 0 {
+		s.uReference = s.unit.FromSI(r.si(c.Uncertainty, quantity.DimPressure)) / c.CoverageFactor
+		s.uShare = r.si(c.UncertaintyOfReading, quantity.DimNone) / c.CoverageFactor
+	}
+	s.uDrift = r.si(c.DriftOfReading, quantity.DimNone) / math.Sqrt(3)
+	s.resolutionReference = s.unit.FromSI(r.si(ref.Resolution, quantity.DimPressure))
+	var at, add []float64
+	for _, p := range c.Corrections {
+		at = append(at, r.stated(p.At, s.unit))
+		add = append(add, r.stated(p.Correction, s.unit))
+	}
+	if len(at) > 0 {
+		curve, err := fit.NewCurve(at, add)
+		if err != nil && r.err == nil {
+			r.err = err
+		}
+		s.curve, s.corrected = curve, err == nil
+	}
+}
+
+// heads works out the head of the line's fluid between the reference's port
+// and the diaphragm: (rho - rho_air) g (z_reference - z_uut).
+func (s *scale) heads(g *gathered, r *reader) {
+	if g.uut.FluidDensity <= 0 {
+		return
+	}
+	perMetre := s.unit.FromSI((g.uut.FluidDensity - airDensity) * standardGravity)
+	s.head = perMetre * (r.si(g.reference.Height, quantity.DimLength) - r.si(g.uut.Height, quantity.DimLength))
+	s.uHead = math.Abs(perMetre) * r.si(g.uut.HeightUncertainty, quantity.DimLength)
+}
+
+// output turns an electrical output in SI into pressure in the scale's unit.
+func (s *scale) output(si, excitation float64) float64 {
+	if s.nominal == 0 {
+		return s.unit.FromSI(si)
+	}
+	if s.uutUnit.Dimension == quantity.DimVoltage {
+		si /= excitation
+	}
+	return s.unit.FromSI(si / s.nominal)
+}
+
+// uut reads one of the UUT's texts, in the scale's unit. A pressure output in
+// the same unit as the reference keeps its digits exactly.
+func (s *scale) uut(text, excitation string) (float64, error) {
+	x, err := s.uutField.Number(text)
+	if err != nil {
+		return 0, err
+	}
+	if s.uutUnit == s.unit {
+		return x, nil
+	}
+	e := s.excitation
+	if excitation != "" {
+		v, err := quantity.ParseAs(excitation, quantity.DimVoltage)
+		if err != nil {
+			return 0, err
+		}
+		e = v.SI
+	}
+	if s.uutUnit.Dimension == quantity.DimVoltage && !(e > 0) {
+		return 0, fmt.Errorf("a voltage needs the excitation, which nobody stated")
+	}
+	return s.output(s.uutUnit.ToSI(x), e), nil
+}
+
+// reference reads one of the reference's texts and corrects it: reading +
+// correction(reading) + head. beyond says that the certificate's corrections
+// end before this reading.
+func (s *scale) reference(text string) (p float64, beyond bool, err error) {
+	x, err := s.referenceF.Number(text)
+	if err != nil {
+		return 0, false, err
+	}
+	return s.correct(x)
+}
+
+func (s *scale) correct(x float64) (p float64, beyond bool, err error) {
+	p = x
+	if s.corrected {
+		var c float64
+		c, beyond = s.curve.At(x)
+		p += c
+	}
+	return p + s.head, beyond, nil
+}
+
+// reader parses stated quantities and keeps the first error.
+type reader struct{ err error }
+
+func (r *reader) si(text string, d quantity.Dimension) float64 {
+	v, err := parsed(text, d)
+	if err != nil && r.err == nil {
+		r.err = err
+	}
+	return v
+}
+
+// stated reads a pressure in the given unit, keeping its digits when it is
+// stated in that unit.
+func (r *reader) stated(text string, u quantity.Unit) float64 {
+	v, err := quantity.ParseAs(text, quantity.DimPressure)
+	if err == nil {
+		var x float64
+		if x, err = v.In(u); err == nil {
+			return x
+		}
+	}
+	if r.err == nil {
+		r.err = err
+	}
+	return 0
+}

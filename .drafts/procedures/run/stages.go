@@ -1,0 +1,282 @@
+package run
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"time"
+
+	"kymobench/bench/quantity"
+	"kymobench/procedures"
+	"kymobench/procedures/ready"
+	"kymobench/procedures/record"
+	"kymobench/procedures/results"
+)
+
+// ventedWithin is how far from zero the reference may read when vented, before
+// it is zeroed; beyond it the volume is not open or the reference is not well.
+const ventedWithin = 5.0 // mmHg
+
+// reachWindow is the window for pressures that are not judged.
+const reachWindow = 3.0 // mmHg
+
+func isStop(err error) bool {
+	return errors.Is(err, ErrStopped) || errors.Is(err, ErrInputEnded) || errors.Is(err, ErrUnanswered) || errors.Is(err, context.Canceled)
+}
+
+// zero vents, zeroes the reference, reads the UUT as it stands and takes that
+// reading for its zero, by arithmetic.
+func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
+	if err := s.Rig.Source.Vent(ctx); err != nil {
+		return s.sourceFault(ctx, err)
+	}
+	rule := s.rule(procedures.Static{ShareOfLimit: 0.05, StandardUncertainty: quantity.MmHg(0.2), LeastReadings: 8})
+	readings, _, err := s.settle(ctx, 0, 0, rule, stage.LongestWait)
+	if err != nil {
+		return err
+	}
+	if p := readings[len(readings)-1].p.MmHg(); math.Abs(p) > ventedWithin {
+		return &Fault{Code: "not_vented", Text: fmt.Sprintf("the reference reads %.1f mmHg with the vent open: is the volume open to atmosphere?", p)}
+	}
+	if err := s.Rig.Reference.Zero(ctx); err != nil {
+		if isStop(err) || ctx.Err() != nil {
+			return err
+		}
+		return &Fault{Code: "reference_zero", Text: "the reference could not be zeroed", Err: err}
+	}
+	if err := s.append(record.KindZeroing, record.Zeroing{Role: "reference", How: "device"}); err != nil {
+		return err
+	}
+	rule.LeastReadings = max(rule.LeastReadings, int(math.Ceil(stage.For.Seconds()/readEvery.Seconds())))
+	readings, state, err := s.settle(ctx, 0, 0, rule, stage.LongestWait)
+	if err != nil {
+		return err
+	}
+	samples, err := s.keep(ctx, readings, record.Point{Purpose: "zero", Set: "0 mmHg", Ready: inReady(state)})
+	if err != nil {
+		return err
+	}
+	var sum summary
+	for _, x := range samples {
+		sum.add(x.p)
+	}
+	s.zeroUUT, s.zeroed = sum.mean, true
+	s.Operator.Tell(fmt.Sprintf("  zero offset as read %+.2f mmHg", quantity.Pressure(sum.mean).MmHg()))
+	return s.append(record.KindZeroing, record.Zeroing{Role: "uut", How: "arithmetic"})
+}
+
+func inReady(state ready.State) string {
+	return fmt.Sprintf("difference steady: slope %+.3f mmHg/s, mean of the difference known to %.3f mmHg", state.Slope, state.Standard)
+}
+
+// exercise takes the UUT up and down, unjudged.
+func (s *session) exercise(ctx context.Context, stage procedures.Exercise) error {
+	for cycle := 1; cycle <= stage.Cycles; cycle++ {
+		for _, p := range []quantity.Pressure{stage.To, 0} {
+			if _, err := s.reach(ctx, p, quantity.MmHg(reachWindow), stage.LongestWait); err != nil {
+				return err
+			}
+			if err := s.readFor(ctx, stage.Dwell, nil); err != nil {
+				return err
+			}
+		}
+	}
+	return nil
+}
+
+// readFor reads the reference for a time; every reading goes to take.
+func (s *session) readFor(ctx context.Context, d time.Duration, take func(asked)) error {
+	until := s.now().Add(d)
+	for s.now() < until {
+		a, err := s.read(ctx)
+		if err != nil {
+			return err
+		}
+		if take != nil {
+			take(a)
+		}
+		if err := s.next(ctx, a); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// leak shuts the source off at a pressure and watches the reference. A rate
+// over the procedure's ends the run: rig and UUT cannot be told apart.
+func (s *session) leak(ctx context.Context, stage procedures.Leak) error {
+	if _, err := s.reach(ctx, stage.At, quantity.MmHg(reachWindow), stage.LongestWait); err != nil {
+		return err
+	}
+	if err := s.Rig.Source.Hold(ctx); err != nil {
+		return s.sourceFault(ctx, err)
+	}
+	if err := s.readFor(ctx, stage.Settle, nil); err != nil {
+		return err
+	}
+	hold := record.Hold{Stage: s.stage, Set: inMmHg(stage.At)}
+	if err := s.readFor(ctx, stage.For, func(a asked) { hold.Readings = append(hold.Readings, a.line) }); err != nil {
+		return err
+	}
+	if err := s.append(record.KindHold, hold); err != nil {
+		return err
+	}
+	if err := s.durable(ctx); err != nil {
+		return err
+	}
+	res, err := results.Compute(s.events)
+	if err != nil {
+		return fmt.Errorf("judge the leak: %w", err)
+	}
+	if l := res.Leak; l == nil || !l.Within {
+		return &Fault{Code: "leak", Text: leakText(res)}
+	}
+	s.Operator.Tell(fmt.Sprintf("  loss %.4f mmHg/s", *res.Leak.Rate))
+	return nil
+}
+
+func leakText(res results.Results) string {
+	if res.Leak == nil {
+		return "the leak test gave no result"
+	}
+	return res.Leak.Reason
+}
+
+// inMmHg writes a pressure as the record states it.
+func inMmHg(p quantity.Pressure) string {
+	return fmt.Sprintf("%v mmHg", math.Round(p.MmHg()*1e6)/1e6)
+}
+
+// static takes the points of every cycle, each as soon as it is ready.
+func (s *session) static(ctx context.Context, stage procedures.Static) error {
+	rule := s.rule(stage)
+	for i, point := range stage.Points() {
+		if _, err := s.approach(ctx, stage, point); err != nil {
+			return err
+		}
+		readings, state, err := s.settle(ctx, point.Set, stage.Window, rule, stage.LongestWait)
+		if err != nil {
+			return err
+		}
+		_, err = s.keep(ctx, readings, record.Point{
+			Purpose: "static", Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(state),
+		})
+		if err != nil {
+			return err
+		}
+		s.Operator.Tell(fmt.Sprintf("  point %d of %d: %s at %.0f mmHg taken, reference %.2f mmHg",
+			i+1, len(stage.Points()), point.Leg, point.Set.MmHg(), readings[len(readings)-1].p.MmHg()))
+	}
+	return nil
+}
+
+// approach goes to the set pressure and notices a wrong-side approach beyond
+// the procedure's threshold.
+func (s *session) approach(ctx context.Context, stage procedures.Static, point procedures.Point) (asked, error) {
+	a, err := s.reach(ctx, point.Set, stage.Window, stage.LongestWait)
+	if err != nil {
+		return a, err
+	}
+	over := a.p - point.Set
+	if point.Leg == procedures.Down {
+		over = -over
+	}
+	if stage.Overshoot > 0 && over > stage.Overshoot {
+		text := fmt.Sprintf("cycle %d, %s at %.0f mmHg was approached from the wrong side by %.2f mmHg; its hysteresis is not the UUT's alone",
+			point.Cycle, point.Leg, point.Set.MmHg(), over.MmHg())
+		if err := s.append(record.KindReservation, record.Reservation{Code: "wrong_side", Text: text}); err != nil {
+			return a, err
+		}
+	}
+	return a, nil
+}
+
+// captureTries is how often one step is taken again when a line of the UUT was
+// refused during it.
+const captureTries = 3
+
+// step releases the pressure to atmosphere and keeps the UUT's answer.
+func (s *session) step(ctx context.Context, stage procedures.Step) error {
+	if err := s.closeValve(ctx); err != nil {
+		return err
+	}
+	for number := 1; number <= stage.Count; number++ {
+		done := false
+		for try := 0; try < captureTries && !done; try++ {
+			var err error
+			if done, err = s.release(ctx, stage, number); err != nil {
+				return err
+			}
+		}
+		if !done {
+			return &Fault{Code: "capture", Text: fmt.Sprintf("step %d could not be captured whole in %d tries: lines of the UUT were refused", number, captureTries)}
+		}
+		s.Operator.Tell(fmt.Sprintf("  step %d of %d captured", number, stage.Count))
+	}
+	if err := s.Rig.Source.Vent(ctx); err != nil {
+		return s.sourceFault(ctx, err)
+	}
+	return s.durable(ctx)
+}
+
+// release makes one step; false when the capture has a gap.
+func (s *session) release(ctx context.Context, stage procedures.Step, number int) (bool, error) {
+	if _, err := s.reach(ctx, stage.Size, quantity.MmHg(reachWindow), stage.LongestWait); err != nil {
+		return false, err
+	}
+	if err := s.readFor(ctx, stage.Settle, nil); err != nil {
+		return false, err
+	}
+	if err := s.Rig.Source.Hold(ctx); err != nil {
+		return false, s.sourceFault(ctx, err)
+	}
+	if err := s.pause(ctx, s.now().Add(stage.Before)); err != nil {
+		return false, err
+	}
+	commanded := s.now()
+	if err := s.Rig.Valve.Release(ctx); err != nil {
+		return false, s.valveFault(ctx, err)
+	}
+	until := commanded.Add(stage.After)
+	if err := s.pause(ctx, until); err != nil {
+		return false, err
+	}
+	from, end := s.stream.from(commanded.Add(-stage.Before)), s.stream.from(until)
+	samples, ok := s.stream.between(from, end)
+	if !ok || len(samples) == 0 {
+		return false, &Fault{Code: "uut_silent", Text: "the UUT sent nothing during the step"}
+	}
+	whole := s.stream.whole(from, end)
+	if whole {
+		lines, err := s.blocks(samples)
+		if err != nil {
+			return false, err
+		}
+		err = s.append(record.KindCapture, record.Capture{
+			Stage: s.stage, Number: number, Direction: string(stage.Direction), Size: inMmHg(stage.Size), Commanded: commanded, Blocks: lines,
+		})
+		if err != nil {
+			return false, err
+		}
+	}
+	if err := s.closeValve(ctx); err != nil {
+		return false, err
+	}
+	return whole, s.durable(ctx)
+}
+
+func (s *session) closeValve(ctx context.Context) error {
+	if err := s.Rig.Valve.Shut(ctx); err != nil {
+		return s.valveFault(ctx, err)
+	}
+	return nil
+}
+
+func (s *session) valveFault(ctx context.Context, err error) error {
+	if ctx.Err() != nil || isStop(err) {
+		return err
+	}
+	return &Fault{Code: "valve", Text: "the valve did not do as asked", Err: err}
+}
+

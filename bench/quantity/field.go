@@ -1,0 +1,96 @@
+// Package quantity holds what a number with a unit is, as instruments and
+// files state it. It is a leaf; it measures and judges nothing.
+//
+// Only Field, the place of one number in a line of text, and the strict
+// decimal grammar stand here yet.
+package quantity
+
+import (
+	"fmt"
+	"strconv"
+	"strings"
+)
+
+// Field says how one number stands in a line of text received from an
+// instrument. Zero value: the whole line is the number.
+type Field struct {
+	Separator  string `json:"separator,omitempty"`
+	Column     int    `json:"column,omitempty"`
+	Prefix     string `json:"prefix,omitempty"`
+	Suffix     string `json:"suffix,omitempty"`
+	Width      int    `json:"width,omitempty"`
+	Unit       string `json:"unit"`
+	UnitInText bool   `json:"unit_in_text,omitempty"`
+}
+
+// Number returns the number in the text, or an error that quotes the text.
+func (f Field) Number(text string) (float64, error) {
+	s := text
+	if f.Separator != "" {
+		parts := strings.Split(s, f.Separator)
+		if f.Column < 0 || f.Column >= len(parts) {
+			return 0, fmt.Errorf("%q has no column %d", text, f.Column)
+		}
+		s = parts[f.Column]
+	}
+	s, ok := strings.CutPrefix(s, f.Prefix)
+	if !ok {
+		return 0, fmt.Errorf("%q lacks %q before the number", text, f.Prefix)
+	}
+	if s, ok = strings.CutSuffix(s, f.Suffix); !ok {
+		return 0, fmt.Errorf("%q lacks %q after the number", text, f.Suffix)
+	}
+	if f.UnitInText {
+		if s, ok = strings.CutSuffix(s, f.Unit); !ok {
+			return 0, fmt.Errorf("%q lacks the unit %s", text, f.Unit)
+		}
+		s = strings.TrimRight(s, " ")
+	}
+	if f.Width > 0 && len(s) != f.Width {
+		return 0, fmt.Errorf("%q: the number has %d characters, %d are stated", text, len(s), f.Width)
+	}
+	return ParseDecimal(strings.TrimLeft(s, " "))
+}
+
+// ParseDecimal reads [+-]digits[.digits][(e|E)[+-]digits] and nothing else: no
+// nan, inf, hexadecimal, underscore or blank, and no number that overflows.
+func ParseDecimal(s string) (float64, error) {
+	rest, ok := digits(sign(s))
+	if !ok {
+		return 0, fmt.Errorf("%q is no decimal number", s)
+	}
+	if strings.HasPrefix(rest, ".") {
+		if rest, ok = digits(rest[1:]); !ok {
+			return 0, fmt.Errorf("%q is no decimal number", s)
+		}
+	}
+	if rest != "" && (rest[0] == 'e' || rest[0] == 'E') {
+		if rest, ok = digits(sign(rest[1:])); !ok {
+			return 0, fmt.Errorf("%q is no decimal number", s)
+		}
+	}
+	if rest != "" {
+		return 0, fmt.Errorf("%q is no decimal number", s)
+	}
+	x, err := strconv.ParseFloat(s, 64)
+	if err != nil {
+		return 0, fmt.Errorf("%q is out of range", s)
+	}
+	return x, nil
+}
+
+func sign(s string) string {
+	if s != "" && (s[0] == '+' || s[0] == '-') {
+		return s[1:]
+	}
+	return s
+}
+
+// digits cuts off one or more leading digits.
+func digits(s string) (rest string, ok bool) {
+	i := 0
+	for i < len(s) && s[i] >= '0' && s[i] <= '9' {
+		i++
+	}
+	return s[i:], i > 0
+}
