@@ -17,13 +17,12 @@ type Leak struct {
 }
 
 // LeakRate fits p(t) = a - Rate t + A exp(-t/tau) to readings p at times t
-// (seconds, ascending, same length, at least 8), tau the best of a grid from
-// 0.5 s to a third of the time held; the exponential is what warming or
+// (seconds, ascending, same length, at least 8), tau the best between
+// 0.5 s and a third of the time held (grid, then golden section); the exponential is what warming or
 // cooling gas does after the pressure was made, and it is fitted always, so
 // that warming is not taken for a leak. Standard is from the residuals with
-// n - 4 degrees of freedom, widened by the spread that the choice of tau
-// leaves among all tau whose residuals are within an F-like factor 1 + 4/(n-4)
-// of the best.
+// n - 4 degrees of freedom, with tau counted among the parameters (the column
+// d/dtau, proportional to t exp(-t/tau), stands in the normal matrix).
 //
 // Source: linear least squares, textbook; the model and its inflation of the
 // uncertainty for short holds: from memory of thermal relaxation of a gas
@@ -52,13 +51,23 @@ func LeakRate(t, p []float64) (Leak, error) {
 		return Leak{}, ErrFewReadings
 	}
 	dof := float64(n - 4)
-	spread := 0.0
-	for _, f := range all {
-		if f.rss <= best.rss*(1+4/dof) {
-			spread = math.Max(spread, math.Abs(f.rate-best.rate))
+	low, high := best.tau/1.25, best.tau*1.25
+	for range 50 {
+		a, b := low+(high-low)*0.382, low+(high-low)*0.618
+		_, _, ra, _ := leakAt(t, p, a)
+		_, _, rb, _ := leakAt(t, p, b)
+		if ra < rb {
+			high = b
+		} else {
+			low = a
 		}
 	}
-	return Leak{Rate: best.rate, Standard: math.Hypot(best.se, spread/2), DoF: dof, Tau: best.tau}, nil
+	tau := (low + high) / 2
+	if rate, se, rss, ok := leakAt(t, p, tau); ok && rss <= best.rss {
+		best = fitted{rate, se, rss, tau}
+	}
+	free := freeTau(t, best.tau) * math.Sqrt(best.rss/dof)
+	return Leak{Rate: best.rate, Standard: math.Max(best.se, free), DoF: dof, Tau: best.tau}, nil
 }
 
 // leakAt solves the three linear parameters for one tau by normal equations on
@@ -95,4 +104,37 @@ func leakAt(t, p []float64, tau float64) (rate, se, rss float64, ok bool) {
 	}
 	se = math.Sqrt(rss/(n-4)*s22/det) / held
 	return -b1 / held, se, rss, true
+}
+
+// freeTau returns the standard uncertainty of the slope for unit noise when
+// the columns 1, t, exp(-t/tau) and t exp(-t/tau) are all fitted: the slope's
+// column is swept of the others (Gram-Schmidt), what is left has that length.
+func freeTau(t []float64, tau float64) float64 {
+	n := len(t)
+	columns := make([][]float64, 4)
+	for k := range columns {
+		columns[k] = make([]float64, n)
+	}
+	for i, x := range t {
+		x -= t[0]
+		e := math.Exp(-x / tau)
+		columns[0][i], columns[1][i], columns[2][i], columns[3][i] = 1, e, x*e, x
+	}
+	dot := func(a, b []float64) (sum float64) {
+		for i := range a {
+			sum += a[i] * b[i]
+		}
+		return sum
+	}
+	for pass := 0; pass < 2; pass++ { // twice is enough against cancellation
+		for k := range columns {
+			for j := range k {
+				f := dot(columns[k], columns[j]) / dot(columns[j], columns[j])
+				for i := range columns[k] {
+					columns[k][i] -= f * columns[j][i]
+				}
+			}
+		}
+	}
+	return 1 / math.Sqrt(dot(columns[3], columns[3]))
 }
