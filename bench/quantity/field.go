@@ -1,8 +1,7 @@
 // Package quantity holds what a number with a unit is, as instruments and
 // files state it. It is a leaf; it measures and judges nothing.
 //
-// Only Field, the place of one number in a line of text, and the strict
-// decimal grammar stand here yet.
+// Field is the place of one number in a line of text; Parse reads "300 mmHg".
 package quantity
 
 import (
