@@ -77,6 +77,9 @@ type Event struct {
 // ErrDeadline is what a wait ends with when its instant came first.
 var ErrDeadline = errors.New("no answer in time")
 
+// ErrNoPort is how a write to a port ends that was never connected.
+var ErrNoPort = errors.New("no such port")
+
 // Inbox is where every event waits until the engine takes it.
 type Inbox interface {
 	// Now is the present instant.
