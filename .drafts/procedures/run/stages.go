@@ -279,4 +279,3 @@ func (s *session) valveFault(ctx context.Context, err error) error {
 	}
 	return &Fault{Code: "valve", Text: "the valve did not do as asked", Err: err}
 }
-
