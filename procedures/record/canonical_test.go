@@ -59,7 +59,7 @@ func FuzzRead(f *testing.F) {
 	var bodies []string
 	for i := 1; i <= 8; i++ {
 		kind, payload := somePayload(i)
-		body, err := encodeEvent(nil, Event{Line: int64(i), Durable: int64(i / 2), Wall: testWall(), Kind: kind}, payload, testRun)
+		body, err := encodeEvent(nil, &Event{Line: int64(i), Durable: int64(i / 2), Wall: testWall(), Kind: kind}, payload, testRun)
 		if err != nil {
 			f.Fatal(err)
 		}

@@ -110,3 +110,13 @@ func Decode[T any](e Event) (T, error) {
 	}
 	return v, nil
 }
+
+// NewEvent makes an event that stands in no record, for data that come from
+// elsewhere; its payload is encoded as a record's would be.
+func NewEvent(number int64, at line.Instant, kind string, payload any) (Event, error) {
+	encoded, err := encodePayload(payload)
+	if err != nil {
+		return Event{}, fmt.Errorf("%s: %w", kind, err)
+	}
+	return Event{Line: number, At: at, Kind: kind, Payload: encoded}, nil
+}

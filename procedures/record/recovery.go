@@ -57,7 +57,7 @@ func setAside(disk files, path string, wall time.Time, f file, run Run) (Run, er
 	// The line may say that all lines before it are durable, for it becomes
 	// part of the record only when the new file, synced whole, takes its place.
 	e := Event{Line: run.Head.Lines + 1, Durable: run.Head.Lines, At: last.At, Wall: wall, Kind: KindRecovered}
-	body, err := encodeEvent(nil, e, Recovered{Bytes: int64(len(run.Torn)), SHA256: hex.EncodeToString(sum[:]), File: filepath.Base(side)}, run.Head.Run)
+	body, err := encodeEvent(nil, &e, Recovered{Bytes: int64(len(run.Torn)), SHA256: hex.EncodeToString(sum[:]), File: filepath.Base(side)}, run.Head.Run)
 	if err != nil {
 		return Run{}, errors.Join(err, f.Close())
 	}

@@ -404,7 +404,7 @@ func BenchmarkRead(b *testing.B) {
 	var bodies []string
 	for i := 1; i <= 5000; i++ {
 		kind, payload := somePayload(i)
-		body, err := encodeEvent(nil, Event{Line: int64(i), Durable: int64(i - 1), Wall: testWall(), Kind: kind}, payload, testRun)
+		body, err := encodeEvent(nil, &Event{Line: int64(i), Durable: int64(i - 1), Wall: testWall(), Kind: kind}, payload, testRun)
 		if err != nil {
 			b.Fatal(err)
 		}

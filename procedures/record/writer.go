@@ -72,41 +72,49 @@ func create(disk files, path, run string, c Committer) (*Writer, error) {
 // an object, a number that is not finite, text that is not UTF-8, a line over
 // 1 MiB) is refused and leaves the record as it was.
 func (w *Writer) Append(at line.Instant, wall time.Time, kind string, payload any) (int64, error) {
+	e, err := w.AppendEvent(at, wall, kind, payload)
+	return e.Line, err
+}
+
+// AppendEvent is Append for a caller who goes on working with the event: it
+// returns the line as a reader of the record would have it.
+func (w *Writer) AppendEvent(at line.Instant, wall time.Time, kind string, payload any) (Event, error) {
 	if kind == KindClosed || kind == KindRecovered {
-		return 0, fmt.Errorf("append to record: a line of kind %s is not the caller's", kind)
+		return Event{}, fmt.Errorf("append to record: a line of kind %s is not the caller's", kind)
 	}
 	return w.append(at, wall, kind, payload)
 }
 
-func (w *Writer) append(at line.Instant, wall time.Time, kind string, payload any) (int64, error) {
+func (w *Writer) append(at line.Instant, wall time.Time, kind string, payload any) (Event, error) {
 	if err := w.usable(); err != nil {
-		return 0, err
+		return Event{}, err
 	}
-	e := Event{Line: w.head.Lines + 1, Durable: w.taken, At: at, Wall: wall, Kind: kind}
+	e := Event{Line: w.head.Lines + 1, Durable: w.taken, At: at, Wall: wall.UTC(), Kind: kind}
 	var err error
-	w.body, err = encodeEvent(w.body[:0], e, payload, w.head.Run)
+	w.body, err = encodeEvent(w.body[:0], &e, payload, w.head.Run)
 	if err != nil {
-		return 0, fmt.Errorf("append to record: %s: %w", kind, err)
+		return Event{}, fmt.Errorf("append to record: %s: %w", kind, err)
 	}
 	hash := chainNext(w.head.Hash, w.body)
 	w.text = appendLine(w.text[:0], w.body, hash)
 	size := int64(len(w.text))
 	if size > longestLine || w.head.Bytes+size > longestRecord {
-		return 0, fmt.Errorf("append to record: %s: line of %d bytes is too long for a line or a record", kind, size)
+		return Event{}, fmt.Errorf("append to record: %s: line of %d bytes is too long for a line or a record", kind, size)
 	}
 	if err := w.committer.put(e.Line, w.text); err != nil {
 		w.failed = err
-		return 0, err
+		return Event{}, err
 	}
 	w.head.Lines, w.head.Hash = e.Line, hash
 	w.head.Bytes += size
 	w.stamps = append(w.stamps, stamp{e.Line, at})
-	return e.Line, nil
+	return e, nil
 }
 
 // encodeEvent writes the body of an event with this payload, held to what the
-// reader asks of it, so that no writer makes what no reader takes.
-func encodeEvent(dst []byte, e Event, payload any, run string) ([]byte, error) {
+// reader asks of it, so that no writer makes what no reader takes. It leaves
+// the encoded payload in the event.
+func encodeEvent(dst []byte, e *Event, payload any, run string) ([]byte, error) {
 	if e.At < 0 {
 		return nil, fmt.Errorf("instant %d is before the start", e.At)
 	}
@@ -123,7 +131,7 @@ func encodeEvent(dst []byte, e Event, payload any, run string) ([]byte, error) {
 	if e.Payload, err = encodePayload(payload); err != nil {
 		return nil, err
 	}
-	dst = appendBody(dst, e)
+	dst = appendBody(dst, *e)
 	if e.Line == 1 {
 		id, err := openedRun(dst)
 		if err != nil {
