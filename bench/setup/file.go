@@ -1,0 +1,121 @@
+// Package setup turns a bench file into a rig: it reads the file strictly,
+// finds its contradictions before a port is opened, and opens the instruments.
+//
+// It measures nothing and knows no procedure. Order of use: Load, then
+// File.Open with the ports of this machine or of the simulated bench.
+package setup
+
+import (
+	"time"
+
+	"kymobench/bench/quantity"
+)
+
+// File is a bench file, read and found free of contradictions. Stated values
+// are kept as the text they were stated in, which goes into the record; each
+// was parsed once, so that it cannot fail later.
+type File struct {
+	Name   string // as given to Load
+	Source []byte
+	SHA256 string
+
+	Department string
+	Bench      string
+	Simulated  bool
+	Keys       string // folder of keys, relative to the file; "" when none is named
+
+	Highest, Lowest quantity.Pressure // never to be exceeded
+	Volume          string
+
+	Reference Reference
+	UUT       UUT
+	Readout   *Readout // nil when the UUT puts out pressure
+	Pressure  Source
+	Valve     Valve
+}
+
+// Dialogue is what every asked instrument has.
+type Dialogue struct {
+	Name     string
+	Family   string
+	Port     string
+	Baud     int
+	Identify string // question
+	Identity string // the answer expected
+	Uptime   string // question, "" when it cannot be asked
+	Clear    string
+	Errors   string
+	Within   time.Duration
+}
+
+// Reference is the reference manometer.
+type Reference struct {
+	Dialogue
+	Read  string
+	Zero  string
+	Field quantity.Field
+
+	Resolution, ResponseTime, ResponseTimeTolerance, RangeLow, RangeHigh, Height string
+
+	Certificate Certificate
+}
+
+// Certificate of the reference; Uncertainty and UncertaintyOfReading are
+// expanded with CoverageFactor.
+type Certificate struct {
+	Number, Laboratory, Date, Due                   string
+	CoverageFactor                                  float64
+	Uncertainty, UncertaintyOfReading, DriftPercent string
+	Corrections                                     []Correction
+}
+
+// Correction is what to add to a reading at a pressure.
+type Correction struct{ At, Correction string }
+
+// UUT is how the output of the unit under test is read.
+type UUT struct {
+	Family string
+	Port   string
+	Baud   int
+	Field  quantity.Field
+
+	Resolution, SamplePeriod, SamplePeriodTolerance, Excitation, NominalSensitivity string
+	Height, HeightUncertainty, Fluid, Delay, DelayUncertainty                       string
+
+	FluidDensity float64 // kg/m3, 0 when no fluid is named
+}
+
+// Readout turns the bridge into numbers. Port is "" when it cannot be asked.
+type Readout struct {
+	Dialogue
+	GainUncertainty, ZeroUncertainty string // expanded
+	CoverageFactor                   float64
+	Certificate, Due                 string
+}
+
+// Source makes the pressure.
+type Source struct {
+	Dialogue
+	Set, Hold, Vent string
+}
+
+// Valve makes the step.
+type Valve struct {
+	Dialogue
+	Release, Shut               string
+	EdgeTime, EdgeTimeTolerance string
+}
+
+// fluidDensity in kg/m3 at about 20 degC: water 998.2071 (as conventional
+// tables have it), saline 0.9 % 1004.6 (from memory), air 1.2 (from memory).
+func fluidDensity(name string) float64 {
+	switch name {
+	case "water":
+		return 998.2071
+	case "saline":
+		return 1004.6
+	case "air":
+		return 1.2
+	}
+	return 0
+}

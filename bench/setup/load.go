@@ -1,0 +1,276 @@
+package setup
+
+import (
+	"bytes"
+	"crypto/sha256"
+	"encoding/hex"
+	"fmt"
+	"strings"
+	"time"
+
+	"kymobench/bench/quantity"
+	"kymobench/bench/tomlfile"
+)
+
+// Schema is the form of bench file that Load reads.
+const Schema = "kymobench/bench/1"
+
+type benchFile struct {
+	Schema     string         `toml:"schema"`
+	Department string         `toml:"department"`
+	Bench      string         `toml:"bench"`
+	Simulated  bool           `toml:"simulated"`
+	Keys       string         `toml:"keys"`
+	Pressure   *pressureTable `toml:"pressure"`
+	Reference  *instrument    `toml:"reference"`
+	UUT        *uutTable      `toml:"uut"`
+	Readout    *readoutTable  `toml:"readout"`
+	Source     *instrument    `toml:"source"`
+	Valve      *instrument    `toml:"valve"`
+}
+
+type pressureTable struct {
+	Highest string `toml:"highest"`
+	Lowest  string `toml:"lowest"`
+	Volume  string `toml:"volume"`
+}
+
+// instrument holds the keys of every asked instrument; keysOf says which of
+// them a role has.
+type instrument struct {
+	Name         string `toml:"name"`
+	Family       string `toml:"family"`
+	Port         string `toml:"port"`
+	Baud         int    `toml:"baud"`
+	Identify     string `toml:"identify"`
+	Identity     string `toml:"identity"`
+	Uptime       string `toml:"uptime"`
+	Clear        string `toml:"clear"`
+	Errors       string `toml:"errors"`
+	AnswerWithin string `toml:"answer_within"`
+
+	Read                  string            `toml:"read"`
+	Unit                  string            `toml:"unit"`
+	UnitInText            bool              `toml:"unit_in_text"`
+	Zero                  string            `toml:"zero"`
+	Resolution            string            `toml:"resolution"`
+	ResponseTime          string            `toml:"response_time"`
+	ResponseTimeTolerance string            `toml:"response_time_tolerance"`
+	RangeLow              string            `toml:"range_low"`
+	RangeHigh             string            `toml:"range_high"`
+	Height                string            `toml:"height"`
+	Certificate           *certificateTable `toml:"certificate"`
+
+	Set  string `toml:"set"`
+	Hold string `toml:"hold"`
+	Vent string `toml:"vent"`
+
+	Release           string `toml:"release"`
+	Shut              string `toml:"shut"`
+	EdgeTime          string `toml:"edge_time"`
+	EdgeTimeTolerance string `toml:"edge_time_tolerance"`
+}
+
+type readoutTable struct {
+	Name            string  `toml:"name"`
+	Family          string  `toml:"family"`
+	Port            string  `toml:"port"`
+	Baud            int     `toml:"baud"`
+	Identify        string  `toml:"identify"`
+	Identity        string  `toml:"identity"`
+	Uptime          string  `toml:"uptime"`
+	Clear           string  `toml:"clear"`
+	Errors          string  `toml:"errors"`
+	AnswerWithin    string  `toml:"answer_within"`
+	GainUncertainty string  `toml:"gain_uncertainty"`
+	ZeroUncertainty string  `toml:"zero_uncertainty"`
+	CoverageFactor  float64 `toml:"coverage_factor"`
+	Certificate     string  `toml:"certificate"`
+	Due             string  `toml:"due"`
+}
+
+// dialogue is the part that every asked instrument has.
+func (r *readoutTable) dialogue() *instrument {
+	return &instrument{Name: r.Name, Family: r.Family, Port: r.Port, Baud: r.Baud, Identify: r.Identify, Identity: r.Identity,
+		Uptime: r.Uptime, Clear: r.Clear, Errors: r.Errors, AnswerWithin: r.AnswerWithin}
+}
+
+type certificateTable struct {
+	Number               string            `toml:"number"`
+	Laboratory           string            `toml:"laboratory"`
+	Date                 string            `toml:"date"`
+	Due                  string            `toml:"due"`
+	CoverageFactor       float64           `toml:"coverage_factor"`
+	Uncertainty          string            `toml:"uncertainty"`
+	UncertaintyOfReading string            `toml:"uncertainty_of_reading"`
+	DriftOfReading       string            `toml:"drift_of_reading"`
+	Corrections          []correctionTable `toml:"correction"`
+}
+
+type correctionTable struct {
+	At         string `toml:"at"`
+	Correction string `toml:"correction"`
+}
+
+type uutTable struct {
+	Family                string `toml:"family"`
+	Mode                  string `toml:"mode"`
+	Port                  string `toml:"port"`
+	Baud                  int    `toml:"baud"`
+	Unit                  string `toml:"unit"`
+	Width                 int    `toml:"width"`
+	Separator             string `toml:"separator"`
+	Column                int    `toml:"column"`
+	Prefix                string `toml:"prefix"`
+	Suffix                string `toml:"suffix"`
+	UnitInText            bool   `toml:"unit_in_text"`
+	Resolution            string `toml:"resolution"`
+	SamplePeriod          string `toml:"sample_period"`
+	SamplePeriodTolerance string `toml:"sample_period_tolerance"`
+	Excitation            string `toml:"excitation"`
+	NominalSensitivity    string `toml:"nominal_sensitivity"`
+	Height                string `toml:"height"`
+	HeightUncertainty     string `toml:"height_uncertainty"`
+	Fluid                 string `toml:"fluid"`
+	Delay                 string `toml:"delay"`
+	DelayUncertainty      string `toml:"delay_uncertainty"`
+}
+
+type loader struct {
+	doc  *tomlfile.Document
+	file benchFile
+	err  error
+}
+
+// Load reads a bench file. Every error is a *tomlfile.Error with its place.
+func Load(name string, data []byte) (*File, error) {
+	l := &loader{}
+	doc, err := tomlfile.Read(name, data, &l.file)
+	if err != nil {
+		return nil, err
+	}
+	l.doc = doc
+	sum := sha256.Sum256(data)
+	f := &File{Name: name, Source: bytes.Clone(data), SHA256: hex.EncodeToString(sum[:])}
+	tomlfile.TakeWord(doc, &l.err, []string{Schema}, "schema")
+	f.Department = l.text("department")
+	f.Bench = l.text("bench")
+	f.Simulated, f.Keys = l.file.Simulated, l.file.Keys
+	l.tables()
+	if l.err != nil {
+		return nil, l.err
+	}
+	f.Highest = tomlfile.Take(doc, &l.err, quantity.ParsePressure, "pressure", "highest")
+	f.Lowest = tomlfile.Take(doc, &l.err, quantity.ParsePressure, "pressure", "lowest")
+	l.demand(f.Lowest <= 0 && f.Highest > 0, "lowest to highest does not hold atmosphere, where every run begins", "", "pressure", "lowest")
+	f.Volume = l.file.Pressure.Volume
+	l.reference(f)
+	l.uut(f)
+	l.readout(f)
+	l.source(f)
+	l.valve(f)
+	l.together(f)
+	if l.err != nil {
+		return nil, l.err
+	}
+	return f, nil
+}
+
+// tables refuses a file that lacks one, and keys that a role does not have.
+func (l *loader) tables() {
+	for _, name := range []string{"pressure", "reference", "uut", "source", "valve"} {
+		if l.err == nil && !l.doc.Has(name) {
+			l.refuse(l.doc.Missing("a table ["+name+"]", name))
+		}
+	}
+	common := "name family port baud identify identity uptime clear errors answer_within "
+	for _, of := range []struct{ role, keys string }{
+		{"reference", "read unit unit_in_text zero resolution response_time response_time_tolerance range_low range_high height certificate"},
+		{"source", "set hold vent"},
+		{"valve", "release shut edge_time edge_time_tolerance"},
+	} {
+		role, known := of.role, strings.Fields(common+of.keys)
+		for _, key := range l.doc.Keys(role) {
+			found := false
+			for _, k := range known {
+				found = found || k == key
+			}
+			if !found && l.err == nil {
+				l.refuse(l.doc.RefuseKey(fmt.Sprintf("the %s has no key %q", role, key), tomlfile.DidYouMean(key, known), role, key))
+			}
+		}
+	}
+}
+
+func (l *loader) dialogue(role string, in *instrument, d *Dialogue) {
+	*d = Dialogue{Name: in.Name, Port: in.Port, Baud: in.Baud, Identify: in.Identify, Identity: in.Identity, Uptime: in.Uptime, Clear: in.Clear, Errors: in.Errors}
+	if d.Name == "" {
+		d.Name = role
+	}
+	d.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"scpi"}, role, "family")
+	if role != "readout" || in.Port != "" {
+		d.Port = tomlfile.TakeText(l.doc, &l.err, 256, role, "port")
+		d.Identify = l.text(role, "identify")
+		d.Identity = tomlfile.TakeText(l.doc, &l.err, 200, role, "identity")
+	}
+	if d.Baud == 0 {
+		d.Baud = 9600
+	}
+	l.demand(d.Baud >= 50 && d.Baud <= 12_000_000, "no serial port has that rate", "", role, "baud")
+	within := l.optional(quantity.DimSpan, role, "answer_within")
+	d.Within = 2 * time.Second
+	if within > 0 {
+		d.Within = quantity.Span(within).Duration()
+	}
+}
+
+func (l *loader) reference(f *File) {
+	in, r := l.file.Reference, &f.Reference
+	l.dialogue("reference", in, &r.Dialogue)
+	r.Read = l.text("reference", "read")
+	r.Zero = l.text("reference", "zero")
+	r.Field = quantity.Field{Unit: l.unit(quantity.DimPressure, "reference", "unit"), UnitInText: in.UnitInText}
+	r.Resolution = l.stated(quantity.DimPressure, "reference", "resolution")
+	r.ResponseTime = l.stated(quantity.DimSpan, "reference", "response_time")
+	r.ResponseTimeTolerance = in.ResponseTimeTolerance
+	l.optional(quantity.DimSpan, "reference", "response_time_tolerance")
+	r.RangeLow = l.stated(quantity.DimPressure, "reference", "range_low")
+	r.RangeHigh = l.stated(quantity.DimPressure, "reference", "range_high")
+	r.Height = l.stated(quantity.DimLength, "reference", "height")
+	if l.err != nil {
+		return
+	}
+	if in.Certificate == nil {
+		l.refuse(l.doc.Missing("a table [reference.certificate]: without it nothing can be judged", "reference", "certificate"))
+		return
+	}
+	c := in.Certificate
+	out := &r.Certificate
+	at := func(key string) []any { return []any{"reference", "certificate", key} }
+	out.Number, out.Laboratory = l.text(at("number")...), tomlfile.TakeText(l.doc, &l.err, 200, at("laboratory")...)
+	out.Date, out.Due = tomlfile.Take(l.doc, &l.err, day, at("date")...), tomlfile.Take(l.doc, &l.err, day, at("due")...)
+	l.demand(out.Date < out.Due, "the certificate is due before its date", "", at("due")...)
+	out.CoverageFactor = c.CoverageFactor
+	l.demand(c.CoverageFactor >= 1 && c.CoverageFactor <= 4, "a coverage factor is 1 to 4, usually 2", "", at("coverage_factor")...)
+	out.Uncertainty = l.stated(quantity.DimPressure, at("uncertainty")...)
+	out.UncertaintyOfReading = l.stated(quantity.DimNone, at("uncertainty_of_reading")...)
+	out.DriftPercent = c.DriftOfReading
+	l.optional(quantity.DimNone, at("drift_of_reading")...)
+	var before quantity.Pressure
+	for i, p := range c.Corrections {
+		path := []any{"reference", "certificate", "correction", i}
+		here := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, append(path, "at")...)
+		tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, append(path, "correction")...)
+		l.demand(i == 0 || here > before, "corrections stand in the order of rising pressure", "", append(path, "at")...)
+		before = here
+		out.Corrections = append(out.Corrections, Correction{p.At, p.Correction})
+	}
+}
+
+// day takes a date as 2026-03-02.
+func day(s string) (string, error) {
+	if _, err := time.Parse(time.DateOnly, s); err != nil {
+		return "", fmt.Errorf("%q is no date like 2026-03-02", s)
+	}
+	return s, nil
+}

@@ -1,0 +1,81 @@
+package setup
+
+import (
+	"errors"
+	"strings"
+	"testing"
+
+	"kymobench/bench/simulated"
+	"kymobench/bench/tomlfile"
+)
+
+func simulatedFile(t *testing.T, seed uint64) string {
+	b, err := simulated.New(simulated.Settings{Seed: seed})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return string(b.BenchFile(nil))
+}
+
+func TestLoadSimulatedBench(t *testing.T) {
+	for seed := range uint64(20) {
+		f, err := Load("bench.toml", []byte(simulatedFile(t, seed)))
+		if err != nil {
+			t.Fatal(err)
+		}
+		if f.Highest.MmHg() < 329.999 || f.Highest.MmHg() > 330.001 || f.Reference.Field.Unit != "mmHg" || f.UUT.Field.Width != 8 ||
+			f.Readout == nil || f.Pressure.Set != "SOUR:PRES {mmHg}" || len(f.Reference.Certificate.Corrections) != 10 {
+			t.Fatalf("seed %d read as %+v", seed, f)
+		}
+	}
+}
+
+// Each change to a good file is refused at the line that was changed.
+func TestLoadRefuses(t *testing.T) {
+	good := simulatedFile(t, 1)
+	for _, c := range []struct{ from, to, want string }{
+		{`highest = "330 mmHg"`, `highest = "330"`, "unit"},
+		{`highest = "330 mmHg"`, `highest = "900 mmHg"`, "above the reference's range"},
+		{`read = "MEAS:PRES?"`, `raed = "MEAS:PRES?"`, "raed"},
+		{`unit = "mmHg"`, `unit = "mmhg"`, "unit"},
+		{`due = "2027-03-01"`, `due = "2025-03-01"`, "before its date"},
+		{`baud = 230400`, `baud = 9600`, "do not fit"},
+		{`set = "SOUR:PRES {mmHg}"`, `set = "SOUR:PRES"`, "no place for the pressure"},
+		{`coverage_factor = 2.0`, `coverage_factor = 0.5`, "coverage factor"},
+		{`mode = "free-running"`, `mode = "asked"`, "asked"},
+		{`fluid = "water"`, `fluid = "watr"`, "watr"},
+		{`port = "valve"`, `port = "source"`, "port"},
+		{`edge_time = "2 ms"`, `edge_time = "2 mmHg"`, "2 mmHg"},
+	} {
+		if strings.Count(good, c.from) == 0 {
+			t.Fatalf("the simulated bench file has no %s", c.from)
+		}
+		at := strings.Index(good, c.from)
+		line := 1 + strings.Count(good[:at], "\n")
+		f, err := Load("bench.toml", []byte(strings.Replace(good, c.from, c.to, 1)))
+		var e *tomlfile.Error
+		if !errors.As(err, &e) {
+			t.Errorf("%s: taken as %v, %v", c.to, f, err)
+			continue
+		}
+		// A rate is refused where the samples are stated, below the baud rate.
+		if e.Line != line && !strings.Contains(c.from, "baud") || e.Column < 1 || !strings.Contains(e.Error(), c.want) {
+			t.Errorf("%s: refused as %v, wanted line %d and %q", c.to, e, line, c.want)
+		}
+	}
+}
+
+func FuzzLoad(f *testing.F) {
+	b, err := simulated.New(simulated.Settings{Seed: 1})
+	if err != nil {
+		f.Fatal(err)
+	}
+	f.Add(b.BenchFile(nil))
+	f.Fuzz(func(t *testing.T, data []byte) {
+		file, err := Load("bench.toml", data)
+		var e *tomlfile.Error
+		if err != nil && (!errors.As(err, &e) || file != nil) {
+			t.Fatalf("refused as %v with %v", err, file)
+		}
+	})
+}
