@@ -1,47 +1,60 @@
 package line
 
-import "bytes"
-
-// LongestLine is how many bytes a line of text may have.
+// LongestLine is how many bytes a line of text may have unless Settings say
+// otherwise.
 const LongestLine = 256
 
-// Framer cuts bytes into lines ended by CR, LF or CRLF. A line longer than
-// LongestLine is dropped up to its end and counted; empty lines are no frames.
-type Framer struct {
-	part    []byte
-	over    bool  // the present line is too long already
-	Dropped int64 // lines dropped for their length
+// framer cuts bytes into lines ended by CR, LF or CRLF. A line longer than its
+// cap is dropped up to its end, which is told; empty lines are no lines.
+type framer struct {
+	cap  int
+	part []byte
+	over bool // the present line is too long already
+	skip bool // the present line lost its beginning; it is passed over untold
 }
 
-// Take hands every whole line to frame, which may use it until it returns, and
-// stops at frame's first error; what follows in data is then lost.
-func (f *Framer) Take(data []byte, frame func([]byte) error) error {
-	for len(data) > 0 {
-		end := bytes.IndexAny(data, "\r\n")
-		if end < 0 {
-			f.keep(data)
-			return nil
+// take hands every whole line to line, which may use it until it returns; a
+// line that was too long comes as (nil, true).
+func (f *framer) take(data []byte, line func(text []byte, long bool)) {
+	from := 0
+	for i, c := range data {
+		if c != '\r' && c != '\n' {
+			continue
 		}
-		f.keep(data[:end])
-		data = data[end+1:]
-		whole, over := f.part, f.over
-		f.part, f.over = f.part[:0], false
+		text := data[from:i]
+		from = i + 1
+		if f.partial() {
+			f.keep(text)
+			text = f.part
+		}
+		over, skip := f.over || len(text) > f.cap, f.skip
+		f.part, f.over, f.skip = f.part[:0], false, false
 		switch {
+		case skip:
 		case over:
-			f.Dropped++
-		case len(whole) > 0:
-			if err := frame(whole); err != nil {
-				return err
-			}
+			line(nil, true)
+		case len(text) > 0:
+			line(text, false)
 		}
 	}
-	return nil
+	f.keep(data[from:])
 }
 
-func (f *Framer) keep(data []byte) {
-	if f.over || len(f.part)+len(data) > LongestLine {
+// partial says that a line has begun and not ended.
+func (f *framer) partial() bool { return len(f.part) > 0 || f.over || f.skip }
+
+// lose drops what has begun, up to the next terminator.
+func (f *framer) lose() { f.part, f.over, f.skip = f.part[:0], false, true }
+
+// reset forgets what has begun; the next byte begins a line.
+func (f *framer) reset() { f.part, f.over, f.skip = f.part[:0], false, false }
+
+func (f *framer) keep(data []byte) {
+	switch {
+	case f.skip || f.over:
+	case len(f.part)+len(data) > f.cap:
 		f.over, f.part = true, f.part[:0]
-		return
+	default:
+		f.part = append(f.part, data...)
 	}
-	f.part = append(f.part, data...)
 }

@@ -15,21 +15,41 @@ type Memory struct {
 	queue    eventHeap
 	sequence int64
 	writes   int64
-	ports    []PortID // in the order of Connect, which breaks ties
-	machines map[PortID]Machine
+	wires    []*wire // in the order of Connect, which breaks ties
+}
+
+// MemoryOptions of one port; the zero value is a wire without delay.
+type MemoryOptions struct {
+	// Transit is the time from Send until the machine has the bytes.
+	Transit time.Duration
+}
+
+type wire struct {
+	port    PortID
+	machine Machine
+	transit time.Duration
 }
 
 // NewMemory makes an inbox whose instant 0 is start on the wall clock.
-func NewMemory(start time.Time) *Memory {
-	return &Memory{start: start, machines: map[PortID]Machine{}}
+func NewMemory(start time.Time) *Memory { return &Memory{start: start} }
+
+// Connect puts a machine at the far end of a port, in place of an earlier one.
+func (m *Memory) Connect(port PortID, machine Machine, o MemoryOptions) {
+	w := m.wire(port)
+	if w == nil {
+		w = &wire{port: port}
+		m.wires = append(m.wires, w)
+	}
+	w.machine, w.transit = machine, max(o.Transit, 0)
 }
 
-// Connect puts a machine at the far end of a port.
-func (m *Memory) Connect(port PortID, machine Machine) {
-	if _, there := m.machines[port]; !there {
-		m.ports = append(m.ports, port)
+func (m *Memory) wire(port PortID) *wire {
+	for _, w := range m.wires {
+		if w.port == port {
+			return w
+		}
 	}
-	m.machines[port] = machine
+	return nil
 }
 
 // Now is the present virtual instant.
@@ -45,60 +65,75 @@ func (m *Memory) Next(ctx context.Context, until Instant) (Event, error) {
 		if err := ctx.Err(); err != nil {
 			return Event{}, err
 		}
-		at, port, machine := m.due()
-		if len(m.queue) > 0 && (machine == nil || m.queue[0].event.At <= at) {
+		at, w := m.due()
+		if len(m.queue) > 0 && (w == nil || m.queue[0].event.At <= at) {
 			if m.queue[0].event.At > until {
 				break
 			}
-			e := heap.Pop(&m.queue).(queued).event
-			m.now = max(m.now, e.At)
-			return e, nil
+			q := heap.Pop(&m.queue).(queued)
+			m.now = max(m.now, q.event.At)
+			if q.arrives != nil {
+				q.arrives.Receive(m.now, q.event.Data)
+				continue
+			}
+			return q.event, nil
 		}
-		if machine == nil || at > until {
+		if w == nil || at > until {
 			break
 		}
 		m.now = max(m.now, at)
-		if data := machine.Emit(at); len(data) > 0 {
-			return Event{At: m.now, Kind: KindBytes, Port: port, Data: data}, nil
+		if data := w.machine.Emit(at); len(data) > 0 {
+			return Event{At: m.now, Kind: KindBytes, Port: w.port, Data: data}, nil
 		}
 	}
 	m.now = max(m.now, until)
 	return Event{}, ErrDeadline
 }
 
-// due finds the machine whose output comes next.
-func (m *Memory) due() (at Instant, port PortID, machine Machine) {
-	for _, p := range m.ports {
-		if t, ok := m.machines[p].Due(); ok && (machine == nil || t < at) {
-			at, port, machine = t, p, m.machines[p]
+// due finds the wire whose machine puts out next.
+func (m *Memory) due() (at Instant, first *wire) {
+	for _, w := range m.wires {
+		if t, ok := w.machine.Due(); ok && (first == nil || t < at) {
+			at, first = t, w
 		}
 	}
-	return at, port, machine
+	return at, first
 }
 
-// Send gives the bytes to the machine at once.
+// Send gives the bytes to the machine, after the wire's transit time; the
+// write ends then.
 func (m *Memory) Send(port PortID, data []byte) int64 {
 	m.writes++
-	e := Event{Kind: KindWritten, Port: port, Number: m.writes}
-	if machine, ok := m.machines[port]; ok {
-		machine.Receive(m.now, append([]byte(nil), data...))
-	} else {
-		e.Err = ErrNoPort
+	written := Event{Kind: KindWritten, Port: port, Number: m.writes}
+	w := m.wire(port)
+	if w == nil {
+		written.Err = ErrNoPort
+		m.Post(0, written)
+		return m.writes
 	}
-	m.Post(0, e)
+	data = append([]byte(nil), data...)
+	if w.transit == 0 {
+		w.machine.Receive(m.now, data)
+	} else {
+		m.push(w.transit, Event{Data: data}, w.machine)
+	}
+	m.Post(w.transit, written)
 	return m.writes
 }
 
 // Post puts an event into the inbox after a delay of virtual time.
-func (m *Memory) Post(delay time.Duration, e Event) {
-	e.At = m.now.Add(max(delay, 0))
+func (m *Memory) Post(delay time.Duration, e Event) { m.push(max(delay, 0), e, nil) }
+
+func (m *Memory) push(delay time.Duration, e Event, arrives Machine) {
+	e.At = m.now.Add(delay)
 	m.sequence++
-	heap.Push(&m.queue, queued{e, m.sequence})
+	heap.Push(&m.queue, queued{e, m.sequence, arrives})
 }
 
 type queued struct {
 	event    Event
 	sequence int64
+	arrives  Machine // the event is bytes for it, and nobody else's
 }
 
 type eventHeap []queued

@@ -32,7 +32,7 @@ func (m *echo) Emit(Instant) []byte {
 
 func TestMemoryOrderAndDeadline(t *testing.T) {
 	m := NewMemory(time.Date(2026, 1, 1, 0, 0, 0, 0, time.UTC))
-	m.Connect(1, &echo{after: 30 * time.Millisecond})
+	m.Connect(1, &echo{after: 30 * time.Millisecond}, MemoryOptions{})
 	ctx := context.Background()
 	m.Post(20*time.Millisecond, Event{Kind: KindAnswer, Text: "second"})
 	m.Post(20*time.Millisecond, Event{Kind: KindAnswer, Text: "third"})
