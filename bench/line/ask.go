@@ -133,6 +133,7 @@ func (l *Line) Resync(ctx context.Context, question string, accept func(string) 
 		answer, err := l.ask(ctx, question, l.settings.Latency)
 		switch {
 		case err == nil && accept(answer.Text):
+			l.doubtful = false
 			return nil
 		case err == nil:
 			l.doubtful = true
