@@ -11,6 +11,7 @@ package bench
 
 import (
 	"context"
+	"errors"
 	"time"
 
 	"kymobench/bench/line"
@@ -29,11 +30,16 @@ type Reading struct {
 // stamp of an asked reading.
 func (r Reading) Middle() line.Instant { return r.Sent + (r.At-r.Sent)/2 }
 
+// ErrNotStated: the bench file states no question or command for what was
+// asked of an instrument.
+var ErrNotStated = errors.New("the bench file states no way to ask for it")
+
 // Identified is an instrument that can say who it is.
 type Identified interface {
 	// Identify asks for the identity and refuses one that is not expected.
 	Identify(ctx context.Context) (string, error)
-	// Uptime asks how long the instrument has been switched on.
+	// Uptime asks how long the instrument has been switched on; ErrNotStated
+	// when it cannot be asked.
 	Uptime(ctx context.Context) (time.Duration, error)
 }
 
