@@ -1,0 +1,131 @@
+package scpi
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"strings"
+
+	"kymobench/bench"
+	"kymobench/bench/quantity"
+)
+
+// overflow is what SCPI puts out for a value beyond the range: 9.9E37 for plus
+// infinity, -9.9E37 for minus infinity, 9.91E37 for not a number. Source:
+// SCPI-99 volume 1, 7.2.1.4 and 7.2.1.5, from memory.
+const overflow = 9.9e37
+
+// OverRangeError is an instrument's statement that it cannot measure what is
+// there.
+type OverRangeError struct{ Name, Text string }
+
+func (e *OverRangeError) Error() string {
+	return fmt.Sprintf("read %s: out of its range, it answered %q", e.Name, e.Text)
+}
+
+// saysOverRange knows the words that instruments put in a number's place
+// (common practice, no source).
+func saysOverRange(text string) bool {
+	word := strings.ToUpper(strings.Trim(text, " +-.\""))
+	switch word {
+	case "OL", "OVL", "OVLD", "OVFL", "OFL", "OVER", "OVERLOAD", "OVERFLOW", "OVERRANGE", "UNDER", "UNDERRANGE", "INF", "NAN":
+		return true
+	case "":
+		return strings.ContainsAny(text, "-") && len(strings.Trim(text, " ")) > 2 // "-----"
+	}
+	return false
+}
+
+// Read asks for one reading.
+func (i *Instrument) Read(ctx context.Context) (bench.Reading, error) {
+	if i.s.Read == "" {
+		return bench.Reading{}, fmt.Errorf("read %s: %w", i.line.Name(), bench.ErrNotStated)
+	}
+	if i.unit.Name == "" {
+		return bench.Reading{}, fmt.Errorf("read %s: %q is no unit known here", i.line.Name(), i.s.Field.Unit)
+	}
+	var x float64
+	a, err := i.ask(ctx, i.s.Read, func(text string) (err error) {
+		x, err = i.s.Field.Number(text)
+		if err == nil && math.Abs(x) >= overflow || err != nil && saysOverRange(text) {
+			return &OverRangeError{i.line.Name(), text}
+		}
+		return err
+	})
+	if err != nil {
+		return bench.Reading{}, err
+	}
+	return bench.Reading{
+		Sent: a.Sent, At: a.At, Text: a.Text,
+		Value: quantity.Value{SI: i.unit.ToSI(x), Stated: x, Unit: i.unit},
+	}, nil
+}
+
+// Zero makes the instrument take the present pressure for zero.
+func (i *Instrument) Zero(ctx context.Context) error {
+	if i.s.Zero == "" {
+		return fmt.Errorf("zero %s: %w", i.line.Name(), bench.ErrNotStated)
+	}
+	return i.set(ctx, i.s.Zero)
+}
+
+// RefusedError is a command that the instrument put errors in its queue for.
+type RefusedError struct {
+	Name, Command string
+	Errors        []string // as received
+}
+
+func (e *RefusedError) Error() string {
+	return fmt.Sprintf("%s refused %q: %s", e.Name, e.Command, strings.Join(e.Errors, "; "))
+}
+
+// ErrEndless: an error queue that had no end.
+var ErrEndless = errors.New("the error queue has no end")
+
+// longestQueue is how many errors are asked for before the queue is called
+// endless.
+const longestQueue = 64
+
+// set sends a command and asks what the instrument has against it.
+func (i *Instrument) set(ctx context.Context, command string) error {
+	if err := i.line.Send(ctx, command, i.s.Within); err != nil {
+		return err
+	}
+	if i.s.Errors == "" {
+		return nil
+	}
+	refused := &RefusedError{Name: i.line.Name(), Command: command}
+	for range longestQueue {
+		clean := false
+		a, err := i.ask(ctx, i.s.Errors, func(text string) (err error) {
+			clean, err = isNoError(text)
+			return err
+		})
+		switch {
+		case err != nil:
+			return err
+		case !clean:
+			refused.Errors = append(refused.Errors, a.Text)
+		case len(refused.Errors) > 0:
+			return refused
+		default:
+			return nil
+		}
+	}
+	return fmt.Errorf("read %s: %w after %q: %w", i.line.Name(), ErrEndless, command, refused)
+}
+
+// isNoError reads the whole number that leads an answer to the errors
+// question, as in 0,"No error" and -113,"Undefined header".
+func isNoError(text string) (bool, error) {
+	number, _, _ := strings.Cut(text, ",")
+	digits := strings.TrimLeft(number, " ")
+	if digits != "" && (digits[0] == '+' || digits[0] == '-') {
+		digits = digits[1:]
+	}
+	if digits == "" || strings.Trim(digits, "0123456789") != "" {
+		return false, fmt.Errorf("%q does not begin with the number of an error", text)
+	}
+	return strings.Trim(digits, "0") == "", nil
+}
