@@ -88,8 +88,7 @@ func (i *Instrument) Identify(ctx context.Context) (string, error) {
 	return i.s.Identity, nil
 }
 
-// known says that a text is the identity. The bench file may not state one;
-// then any text that could be one is taken.
+// known says that a text is the identity.
 func (i *Instrument) known(text string) bool { return text == i.s.Identity }
 
 // mayHelp says that resynchronising may help against err.
@@ -130,8 +129,8 @@ const (
 	lateTries    = 2
 )
 
-// ask asks until parse takes the answer. An error of parse that is no garbling
-// is wrapped in *finalError by it and ends the asking.
+// ask asks until parse takes the answer. An *OverRangeError of parse is an
+// answer too, and ends the asking.
 func (i *Instrument) ask(ctx context.Context, question string, parse func(text string) error) (line.Answer, error) {
 	var texts []string
 	late := 0
@@ -141,8 +140,8 @@ func (i *Instrument) ask(ctx context.Context, question string, parse func(text s
 			if err = parse(a.Text); err == nil {
 				return a, nil
 			}
-			var final *OverRangeError
-			if errors.As(err, &final) {
+			var over *OverRangeError
+			if errors.As(err, &over) {
 				return line.Answer{}, err
 			}
 			texts = append(texts, a.Text)
@@ -187,7 +186,7 @@ func (i *Instrument) Uptime(ctx context.Context) (time.Duration, error) {
 // longestUptime is a hundred years; more is no uptime.
 const longestUptime = 100 * 365 * 24 * time.Hour
 
-// Identified, Manometer and the others are what the rig wants.
+// What the rig wants.
 var (
 	_ bench.Manometer      = (*Instrument)(nil)
 	_ bench.PressureSource = (*Source)(nil)
