@@ -1,80 +1,134 @@
 // Package verdict is the only place where a result is compared with a limit.
 //
-// It computes no result. Order of use: Judge each result against its limit.
+// It computes no result. Order of use: Judge each result against its limit,
+// then Overall for the run.
 package verdict
 
 import (
+	"fmt"
 	"math"
 
 	"gonum.org/v1/gonum/stat/distuv"
+
+	"kymobench/bench/quantity"
 )
 
-// Outcome of one limit; the zero Outcome is Undetermined.
-type Outcome uint8
-
-// The outcomes (terms of ILAC-G8, and undetermined).
-const (
-	Undetermined Outcome = iota
-	Pass
-	ConditionalPass
-	ConditionalFail
-	Fail
-)
-
-// String gives the word of the JSON contract.
-func (o Outcome) String() string {
-	switch o {
-	case Pass:
-		return "pass"
-	case ConditionalPass:
-		return "conditional_pass"
-	case ConditionalFail:
-		return "conditional_fail"
-	case Fail:
-		return "fail"
-	}
-	return "undetermined"
+// Limit has two sides; a nil side is no limit. Results are rounded to
+// Resolution before they are compared; 0 does not round.
+type Limit struct {
+	Low, High  *float64
+	Resolution float64
 }
 
-// MarshalText is String.
-func (o Outcome) MarshalText() ([]byte, error) { return []byte(o.String()), nil }
+// Rule is how an uncertainty counts against a limit.
+type Rule string
 
-// Limit has two sides; a nil side is no limit.
-type Limit struct{ Low, High *float64 }
+// The decision rules (ILAC-G8:09/2019, 4.2.1 to 4.2.3).
+const (
+	Simple      Rule = "simple"       // pass inside the limit, fail outside
+	Guarded     Rule = "guarded"      // pass inside by the guard band, fail otherwise
+	FourOutcome Rule = "four_outcome" // pass, conditional pass, conditional fail, fail
+)
 
-// Judge holds value, with standard uncertainty u > 0, against l with a guard
-// band w >= 0, by ILAC-G8:09/2019 4.2.3 (non-binary): pass inside the limit by
-// w or more, conditional pass inside it, conditional fail within w outside,
-// fail beyond; w = 0 leaves pass and fail (4.2.1). The value must be rounded
-// by the caller as the procedure states. Undetermined: value, u or w is not a
-// finite number, there is no side, or a two-sided limit leaves no room between
-// its guard bands.
+// Decision is how one result came out.
+type Decision struct {
+	Outcome     Outcome
+	FalseAccept *float64 // only of pass and conditional pass
+	GuardBand   float64
+	Reason      string // why undetermined
+}
+
+// Judge holds value, with its standard uncertainty, degrees of freedom (0 or
+// +Inf: infinite) and 95 % half-width expanded, against l. The guard band is
+// w = factor x expanded, 0 under the simple rule.
 //
-// falseAccept is P(the true value lies outside l), normal, flat prior:
-// Phi((Low-value)/u) + 1 - Phi((High-value)/u) (JCGM 106); it is meant for
-// pass and conditional pass.
-func Judge(value, u, w float64, l Limit) (o Outcome, falseAccept float64) {
-	if !(u > 0) || !(w >= 0) || math.IsInf(u+w, 0) || math.IsNaN(value) || math.IsInf(value, 0) || l.Low == nil && l.High == nil {
-		return Undetermined, 0
-	}
-	room := math.Inf(1) // how far inside the limit; negative outside
-	if l.Low != nil {
-		room = value - *l.Low
-		falseAccept += distuv.UnitNormal.CDF((*l.Low - value) / u)
-	}
-	if l.High != nil {
-		room = math.Min(room, *l.High-value)
-		falseAccept += distuv.UnitNormal.Survival((*l.High - value) / u)
+//	room = how far the rounded value lies inside the nearest side
+//	simple:       pass room >= 0; fail otherwise
+//	guarded:      pass room >= w; fail otherwise
+//	four_outcome: pass room >= w; conditional pass room >= 0;
+//	              conditional fail room >= -w; fail otherwise
+//
+// Undetermined, with the reason: a value or an uncertainty that is no number,
+// an uncertainty of zero or less, no side to compare with, an unknown rule, or
+// a two-sided limit that leaves no room between its guard bands.
+//
+// FalseAccept is the probability that the true value lies outside l, flat
+// prior: F((Low-value)/u) + 1 - F((High-value)/u), F Student's t with the
+// degrees of freedom, normal when they are infinite. Source: JCGM 106; from
+// memory for t.
+func Judge(value, expanded, standard, dof float64, l Limit, rule Rule, factor float64) Decision {
+	w := factor * expanded
+	if rule == Simple {
+		w = 0
 	}
 	switch {
-	case l.Low != nil && l.High != nil && *l.High-*l.Low < 2*w:
-		return Undetermined, 0
-	case room >= w:
-		return Pass, falseAccept
-	case room >= 0:
-		return ConditionalPass, falseAccept
-	case room >= -w:
-		return ConditionalFail, falseAccept
+	case math.IsNaN(value) || math.IsInf(value, 0):
+		return Decision{Reason: "there is no value"}
+	case !(standard > 0) || !(expanded > 0) || math.IsInf(standard, 0) || math.IsInf(expanded, 0) || !(w >= 0):
+		return Decision{Reason: "its uncertainty is not known"}
+	case l.Low == nil && l.High == nil:
+		return Decision{Reason: "there is no limit to hold it against"}
+	case rule != Simple && rule != Guarded && rule != FourOutcome:
+		return Decision{Reason: fmt.Sprintf("the decision rule %q is not known", rule)}
 	}
-	return Fail, falseAccept
+	d := Decision{GuardBand: w}
+	if l.Low != nil && l.High != nil && *l.High-*l.Low < 2*w {
+		d.Reason = fmt.Sprintf("its uncertainty of %.3g leaves no room between the guard bands of a limit %.3g wide: a better reference, more readings or a wider limit would", expanded, *l.High-*l.Low)
+		return d
+	}
+	rounded := value
+	if l.Resolution > 0 {
+		rounded = quantity.RoundTo(value, l.Resolution)
+	}
+	d.Outcome = outcome(room(rounded, l), w, rule)
+	if d.Outcome == Pass || d.Outcome == ConditionalPass {
+		p := falseAccept(value, standard, dof, l)
+		d.FalseAccept = &p
+	}
+	return d
+}
+
+func room(x float64, l Limit) float64 {
+	r := math.Inf(1)
+	if l.Low != nil {
+		r = x - *l.Low
+	}
+	if l.High != nil {
+		r = math.Min(r, *l.High-x)
+	}
+	return r
+}
+
+// outcome allows for the last bits of decimals: a rounded value that stands on
+// a limit is inside it.
+func outcome(room, w float64, rule Rule) Outcome {
+	const bits = 1e-12
+	inside := func(x float64) bool { return x >= -bits*(1+math.Abs(room)+w) }
+	switch {
+	case inside(room - w):
+		return Pass
+	case rule == Simple || rule == Guarded:
+		return Fail
+	case inside(room):
+		return ConditionalPass
+	case inside(room + w):
+		return ConditionalFail
+	}
+	return Fail
+}
+
+func falseAccept(value, u, dof float64, l Limit) float64 {
+	below := func(z float64) float64 { return distuv.UnitNormal.CDF(z) }
+	if dof > 0 && !math.IsInf(dof, 1) {
+		t := distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}
+		below = t.CDF
+	}
+	p := 0.0
+	if l.Low != nil {
+		p += below((*l.Low - value) / u)
+	}
+	if l.High != nil {
+		p += below((value - *l.High) / u)
+	}
+	return p
 }
