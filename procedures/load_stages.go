@@ -1,0 +1,245 @@
+package procedures
+
+import (
+	"fmt"
+	"slices"
+	"strings"
+	"time"
+
+	"kymobench/bench/quantity"
+	"kymobench/bench/tomlfile"
+)
+
+// stageFile holds the keys of all kinds of stage; stageKeys says which of them
+// a kind has.
+type stageFile struct {
+	Kind                string   `toml:"kind"`
+	Minimum             string   `toml:"minimum"`
+	LongestWait         string   `toml:"longest_wait"`
+	For                 string   `toml:"for"`
+	Cycles              int      `toml:"cycles"`
+	To                  string   `toml:"to"`
+	Dwell               string   `toml:"dwell"`
+	At                  string   `toml:"at"`
+	Settle              string   `toml:"settle"`
+	HighestRate         string   `toml:"highest_rate"`
+	SetPressures        []string `toml:"set_pressures"`
+	Window              string   `toml:"window"`
+	Overshoot           string   `toml:"overshoot"`
+	ShareOfLimit        string   `toml:"share_of_limit"`
+	StandardUncertainty string   `toml:"standard_uncertainty"`
+	LeastReadings       int      `toml:"least_readings"`
+	Count               int      `toml:"count"`
+	Size                string   `toml:"size"`
+	Direction           string   `toml:"direction"`
+	Before              string   `toml:"before"`
+	After               string   `toml:"after"`
+	Place               string   `toml:"place"`
+	LineLength          string   `toml:"line_length"`
+	Bore                string   `toml:"bore"`
+	Fluid               string   `toml:"fluid"`
+	FlushDevice         string   `toml:"flush_device"`
+}
+
+// stageKeys lists the keys of each kind of stage, all of them required.
+func stageKeys(kind string) []string {
+	keys := map[string]string{
+		"warm_up":  "minimum longest_wait",
+		"zero":     "for longest_wait",
+		"exercise": "cycles to dwell longest_wait",
+		"leak":     "at settle for highest_rate longest_wait",
+		"static": "set_pressures cycles window overshoot share_of_limit standard_uncertainty least_readings " +
+			"longest_wait",
+		"step": "count size direction settle before after longest_wait place line_length bore fluid flush_device",
+	}
+	return strings.Fields(keys[kind])
+}
+
+func (l *loader) stages(d *Definition) {
+	kinds := []string{"warm_up", "zero", "exercise", "leak", "static", "step"}
+	l.demand(len(l.file.Stages) > 0, "the procedure has no stages, so nothing would be done", "", "stage")
+	for i := range l.file.Stages {
+		kind := tomlfile.TakeWord(l.doc, &l.err, kinds, "stage", i, "kind")
+		if l.err != nil {
+			return
+		}
+		l.keysOf(kind, i)
+		var stage Stage
+		switch kind {
+		case "warm_up":
+			stage = WarmUp{Minimum: l.span(i, "minimum"), LongestWait: l.span(i, "longest_wait")}
+		case "zero":
+			stage = Zero{For: l.span(i, "for"), LongestWait: l.span(i, "longest_wait")}
+		case "exercise":
+			stage = Exercise{
+				Cycles: l.count(i, "cycles", l.file.Stages[i].Cycles, 100), To: l.setPressure(d, i, "to"),
+				Dwell: l.span(i, "dwell"), LongestWait: l.span(i, "longest_wait"),
+			}
+		case "leak":
+			stage = l.leak(d, i)
+		case "static":
+			stage = l.static(d, i)
+		case "step":
+			stage = l.step(d, i)
+		}
+		d.Stages = append(d.Stages, stage)
+	}
+}
+
+// keysOf refuses keys that another kind of stage has and asks for all of its own.
+func (l *loader) keysOf(kind string, i int) {
+	own := stageKeys(kind)
+	for _, key := range l.doc.Keys("stage", i) {
+		if key != "kind" && !slices.Contains(own, key) {
+			l.refuse(l.doc.RefuseKey(fmt.Sprintf("a %s stage has no key %q", kind, key),
+				"it has: "+strings.Join(own, ", "), "stage", i, key))
+		}
+	}
+	for _, key := range own {
+		if !l.doc.Has("stage", i, key) {
+			l.refuse(l.doc.Missing("", "stage", i, key))
+		}
+	}
+}
+
+func (l *loader) leak(d *Definition, i int) Leak {
+	s := Leak{
+		At: l.setPressure(d, i, "at"), Settle: l.span(i, "settle"), For: l.span(i, "for"),
+		HighestRate: tomlfile.Take(l.doc, &l.err, parseRate, "stage", i, "highest_rate"),
+		LongestWait: l.span(i, "longest_wait"),
+	}
+	l.demand(s.At > 0, "a leak test needs a pressure above atmosphere", "", "stage", i, "at")
+	l.demand(s.HighestRate > 0, "the highest rate is the fall that is allowed, above zero", "", "stage", i, "highest_rate")
+	l.demand(s.For >= 10*time.Second, "a leak test of less than 10 s cannot tell a leak from noise", "", "stage", i, "for")
+	return s
+}
+
+func (l *loader) static(d *Definition, i int) Static {
+	f := l.file.Stages[i]
+	s := Static{
+		Cycles:              l.count(i, "cycles", f.Cycles, 20),
+		Window:              l.above(i, "window"),
+		Overshoot:           l.above(i, "overshoot"),
+		ShareOfLimit:        tomlfile.Take(l.doc, &l.err, parseShare, "stage", i, "share_of_limit"),
+		StandardUncertainty: l.above(i, "standard_uncertainty"),
+		LeastReadings:       l.count(i, "least_readings", f.LeastReadings, 1000),
+		LongestWait:         l.span(i, "longest_wait"),
+	}
+	for j := range f.SetPressures {
+		p := l.pressure("stage", i, "set_pressures", j)
+		l.inside(d, p, "stage", i, "set_pressures", j)
+		s.SetPressures = append(s.SetPressures, p)
+	}
+	if l.err != nil {
+		return s
+	}
+	l.demand(len(s.SetPressures) >= 3, "fewer than three set pressures cannot show linearity", "", "stage", i, "set_pressures")
+	l.demand(s.ShareOfLimit > 0 && s.ShareOfLimit <= 0.5, "the share is above 0 % and at most 50 %", "", "stage", i, "share_of_limit")
+	l.demand(s.LeastReadings >= 5, "a mean of fewer than five readings says nothing of its noise", "", "stage", i, "least_readings")
+	l.demand(s.StandardUncertainty < s.Window, "the standard uncertainty asked is not below the window", "", "stage", i, "standard_uncertainty")
+	falling := false
+	for j := 1; j < len(s.SetPressures); j++ {
+		step := s.SetPressures[j] - s.SetPressures[j-1]
+		l.demand(step != 0, "the same set pressure as the one before", "", "stage", i, "set_pressures", j)
+		l.demand(step < 0 || !falling, "the set pressures rise once more after falling",
+			"one cycle goes up to its top and down again; repeat it with cycles", "stage", i, "set_pressures", j)
+		falling = falling || step < 0
+		if step < 0 {
+			step = -step
+		}
+		l.demand(2*s.Window < step, "nearer to the one before than two windows", "", "stage", i, "set_pressures", j)
+	}
+	if l.err == nil {
+		l.demand(s.SetPressures[1] > s.SetPressures[0], "the first leg does not go up", "", "stage", i, "set_pressures", 1)
+		top := slices.Max(s.SetPressures)
+		l.demand(top+s.Window <= d.Highest, "the window at the top reaches beyond the highest pressure", "", "stage", i, "window")
+	}
+	return s
+}
+
+func (l *loader) step(d *Definition, i int) Step {
+	s := Step{
+		Count:       l.count(i, "count", l.file.Stages[i].Count, 100),
+		Size:        l.setPressure(d, i, "size"),
+		Direction:   tomlfile.TakeWord(l.doc, &l.err, []Direction{Release}, "stage", i, "direction"),
+		Settle:      l.span(i, "settle"),
+		Before:      l.span(i, "before"),
+		After:       l.span(i, "after"),
+		LongestWait: l.span(i, "longest_wait"),
+		Place:       l.text(longestText, "stage", i, "place"),
+		LineLength:  l.text(tomlfile.LongestIdentity, "stage", i, "line_length"),
+		Bore:        l.text(tomlfile.LongestIdentity, "stage", i, "bore"),
+		Fluid:       l.text(tomlfile.LongestIdentity, "stage", i, "fluid"),
+		FlushDevice: l.text(longestText, "stage", i, "flush_device"),
+	}
+	l.demand(s.Size > 0, "a release begins above atmosphere", "", "stage", i, "size")
+	l.demand(s.Before+s.After <= time.Minute, "a capture of more than a minute", "", "stage", i, "after")
+	return s
+}
+
+// together looks for what no single stage or limit shows: order, and limits
+// that nothing measures.
+func (l *loader) together(d *Definition) {
+	at := map[string]int{}
+	for i, s := range d.Stages {
+		if l.err != nil {
+			return
+		}
+		_, twice := at[s.Kind()]
+		l.demand(!twice, fmt.Sprintf("a second %s stage", s.Kind()), "a procedure has one of each kind; use cycles or count", "stage", i, "kind")
+		_, zeroed := at["zero"]
+		_, judged := at["static"]
+		l.demand(s.Kind() != "warm_up" || i == 0, "warming up comes first", "", "stage", i, "kind")
+		l.demand(s.Kind() != "static" || zeroed, "a static stage before the zero stage", "errors are counted from the zero: put zero first", "stage", i, "kind")
+		l.demand(s.Kind() != "exercise" || !judged, "exercise after the static stage", "exercising comes before the first judged cycle", "stage", i, "kind")
+		at[s.Kind()] = i
+	}
+	needs := map[LimitName]string{
+		ZeroOffset: "zero", Sensitivity: "static", Accuracy: "static", Hysteresis: "static",
+		NaturalFrequency: "step", DampingRatio: "step",
+	}
+	for i, lim := range d.Limits {
+		stage, there := at[needs[lim.Name]]
+		l.demand(there, fmt.Sprintf("no %s stage, which the limit for %s needs", needs[lim.Name], lim.Name), "", "limit", i, "name")
+		if l.err != nil {
+			return
+		}
+		if s, ok := d.Stages[stage].(Static); ok && lim.Name == Hysteresis {
+			points := s.Points()
+			l.demand(points[len(points)-1].Leg == Down, "no down leg, which the limit for hysteresis needs", "", "stage", stage, "set_pressures")
+		}
+	}
+}
+
+// longestSpan is longer than any wait that makes sense on a bench.
+const longestSpan = 24 * time.Hour
+
+func (l *loader) span(i int, key string) time.Duration {
+	s := tomlfile.Take(l.doc, &l.err, parseSpan, "stage", i, key)
+	l.demand(s > 0 && s <= longestSpan, "a time is above 0 s and at most 24 h", "", "stage", i, key)
+	return s
+}
+
+func (l *loader) count(i int, key string, n, most int) int {
+	l.demand(n >= 1 && n <= most, fmt.Sprintf("%s is from 1 to %d", key, most), "", "stage", i, key)
+	return n
+}
+
+// above takes a pressure that is a width, so above zero.
+func (l *loader) above(i int, key string) quantity.Pressure {
+	p := l.pressure("stage", i, key)
+	l.demand(p > 0, fmt.Sprintf("%s is not above zero", key), "", "stage", i, key)
+	return p
+}
+
+// setPressure takes a pressure that a stage goes to.
+func (l *loader) setPressure(d *Definition, i int, key string) quantity.Pressure {
+	p := l.pressure("stage", i, key)
+	l.inside(d, p, "stage", i, key)
+	return p
+}
+
+func (l *loader) inside(d *Definition, p quantity.Pressure, path ...any) {
+	l.demand(p <= d.Highest, "above the highest pressure of this procedure", "", path...)
+	l.demand(p >= d.Lowest, "below the lowest pressure of this procedure", "", path...)
+}

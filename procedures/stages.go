@@ -1,0 +1,160 @@
+package procedures
+
+import (
+	"time"
+
+	"kymobench/bench/quantity"
+)
+
+// Stage is one step of a procedure: WarmUp, Zero, Exercise, Leak, Static or
+// Step. The one who carries it out switches on the type.
+type Stage interface {
+	// Kind is the word that names the stage in files and records.
+	Kind() string
+}
+
+// WarmUp waits until every instrument has been on for Minimum.
+type WarmUp struct {
+	Minimum     time.Duration // since power-on, as each instrument states it
+	LongestWait time.Duration // a longer wait ends the run instead
+}
+
+// Zero vents, zeroes the reference, reads the UUT as it stands (that is its
+// zero offset) and only then takes that reading for its zero, by arithmetic.
+type Zero struct {
+	For         time.Duration // how long the UUT is averaged
+	LongestWait time.Duration // for the vented pressure to be still
+}
+
+// Exercise takes the UUT up and down, unjudged, before the first cycle.
+type Exercise struct {
+	Cycles      int
+	To          quantity.Pressure
+	Dwell       time.Duration // at the top and at the bottom
+	LongestWait time.Duration // for one pressure to be reached
+}
+
+// Leak holds a pressure with the source shut off and watches it fall.
+type Leak struct {
+	At          quantity.Pressure
+	Settle      time.Duration // unjudged, after the source is shut off
+	For         time.Duration
+	HighestRate quantity.Pressure // of fall, per second
+	LongestWait time.Duration     // for the pressure to be reached
+}
+
+// Static takes points up and down. SetPressures is one whole cycle, up leg
+// first: 0-50-100-200-300-200-100-50-0; the turning point stands once and
+// belongs to the up leg.
+type Static struct {
+	SetPressures []quantity.Pressure
+	Cycles       int
+	Window       quantity.Pressure // a point is taken within set pressure +- Window
+	Overshoot    quantity.Pressure // a wrong-side approach beyond this is told and kept out of hysteresis
+
+	// A point is ready by the difference rule (package ready).
+	ShareOfLimit        float64           // slope times lag may be this fraction of the accuracy limit
+	StandardUncertainty quantity.Pressure // asked of the mean difference
+	LeastReadings       int               // of the reference
+	LongestWait         time.Duration     // for one point
+}
+
+// Step releases a pressure to atmosphere and keeps the UUT's answer.
+type Step struct {
+	Count       int
+	Size        quantity.Pressure
+	Direction   Direction
+	Settle      time.Duration // at Size, before the capture begins
+	Before      time.Duration // captured before the valve is told to open
+	After       time.Duration // captured after it
+	LongestWait time.Duration // for Size to be reached
+
+	// Printed in the report; the program does not check them.
+	Place       string // where the step enters
+	LineLength  string
+	Bore        string
+	Fluid       string
+	FlushDevice string
+}
+
+// Direction is which way a step goes.
+type Direction string
+
+// Release is a step from Size down to atmosphere.
+const Release Direction = "release"
+
+// Kind returns "warm_up".
+func (WarmUp) Kind() string { return "warm_up" }
+
+// Kind returns "zero".
+func (Zero) Kind() string { return "zero" }
+
+// Kind returns "exercise".
+func (Exercise) Kind() string { return "exercise" }
+
+// Kind returns "leak".
+func (Leak) Kind() string { return "leak" }
+
+// Kind returns "static".
+func (Static) Kind() string { return "static" }
+
+// Kind returns "step".
+func (Step) Kind() string { return "step" }
+
+// Leg is the direction in which a set pressure is approached.
+type Leg string
+
+// The legs of a cycle.
+const (
+	Up   Leg = "up"
+	Down Leg = "down"
+)
+
+// Point is one set pressure of a Static stage in its place.
+type Point struct {
+	Cycle int // 1 ... Cycles
+	Leg   Leg
+	Set   quantity.Pressure
+}
+
+// Points returns every point of the stage in the order in which they are
+// taken. The up leg ends with the highest set pressure.
+func (s Static) Points() []Point {
+	top := 0
+	for i, p := range s.SetPressures {
+		if p > s.SetPressures[top] {
+			top = i
+		}
+	}
+	points := make([]Point, 0, s.Cycles*len(s.SetPressures))
+	for cycle := 1; cycle <= s.Cycles; cycle++ {
+		for i, p := range s.SetPressures {
+			leg := Up
+			if i > top {
+				leg = Down
+			}
+			points = append(points, Point{Cycle: cycle, Leg: leg, Set: p})
+		}
+	}
+	return points
+}
+
+// HighestPressure returns the highest pressure that any stage asks for.
+func (d *Definition) HighestPressure() quantity.Pressure {
+	var highest quantity.Pressure
+	for _, s := range d.Stages {
+		switch s := s.(type) {
+		case Exercise:
+			highest = max(highest, s.To)
+		case Leak:
+			highest = max(highest, s.At)
+		case Static:
+			for _, p := range s.SetPressures {
+				highest = max(highest, p)
+			}
+		case Step:
+			highest = max(highest, s.Size)
+		}
+	}
+	return highest
+}
