@@ -5,6 +5,8 @@ import (
 	"crypto/sha256"
 	"encoding/hex"
 	"fmt"
+	"path/filepath"
+	"slices"
 	"strings"
 	"time"
 
@@ -155,7 +157,8 @@ func Load(name string, data []byte) (*File, error) {
 	tomlfile.TakeWord(doc, &l.err, []string{Schema}, "schema")
 	f.Department = l.text("department")
 	f.Bench = l.text("bench")
-	f.Simulated, f.Keys = l.file.Simulated, l.file.Keys
+	f.Simulated = l.file.Simulated
+	f.Keys = tomlfile.TakeIf(doc, &l.err, inside, "keys")
 	l.tables()
 	if l.err != nil {
 		return nil, l.err
@@ -163,7 +166,7 @@ func Load(name string, data []byte) (*File, error) {
 	f.Highest = tomlfile.Take(doc, &l.err, quantity.ParsePressure, "pressure", "highest")
 	f.Lowest = tomlfile.Take(doc, &l.err, quantity.ParsePressure, "pressure", "lowest")
 	l.demand(f.Lowest <= 0 && f.Highest > 0, "lowest to highest does not hold atmosphere, where every run begins", "", "pressure", "lowest")
-	f.Volume = l.file.Pressure.Volume
+	f.Volume = tomlfile.TakeIf(doc, &l.err, millilitres, "pressure", "volume")
 	l.reference(f)
 	l.uut(f)
 	l.readout(f)
@@ -174,6 +177,15 @@ func Load(name string, data []byte) (*File, error) {
 		return nil, l.err
 	}
 	return f, nil
+}
+
+// inside takes the name of a folder beside the file: never one elsewhere, for
+// a bench file may come from elsewhere itself.
+func inside(s string) (string, error) {
+	if !filepath.IsLocal(s) {
+		return "", fmt.Errorf("%q is no folder beside this file", s)
+	}
+	return s, nil
 }
 
 // tables refuses a file that lacks one, and keys that a role does not have.
@@ -191,86 +203,138 @@ func (l *loader) tables() {
 	} {
 		role, known := of.role, strings.Fields(common+of.keys)
 		for _, key := range l.doc.Keys(role) {
-			found := false
-			for _, k := range known {
-				found = found || k == key
-			}
-			if !found && l.err == nil {
+			if l.err == nil && !slices.Contains(known, key) {
 				l.refuse(l.doc.RefuseKey(fmt.Sprintf("the %s has no key %q", role, key), tomlfile.DidYouMean(key, known), role, key))
 			}
 		}
 	}
 }
 
+// dialogue takes what every asked instrument has. A readout without a port
+// cannot be asked, so it has no questions either.
 func (l *loader) dialogue(role string, in *instrument, d *Dialogue) {
-	*d = Dialogue{Name: in.Name, Port: in.Port, Baud: in.Baud, Identify: in.Identify, Identity: in.Identity, Uptime: in.Uptime, Clear: in.Clear, Errors: in.Errors}
+	*d = Dialogue{Name: in.Name, Baud: in.Baud}
 	if d.Name == "" {
 		d.Name = role
+	} else {
+		l.check(tomlfile.LongestIdentity, role, "name")
+	}
+	if role == "readout" && !l.doc.Has(role, "port") {
+		for _, key := range []string{"family", "baud", "identify", "identity", "uptime", "clear", "errors", "answer_within"} {
+			l.demand(!l.doc.Has(role, key), fmt.Sprintf("%s of a readout that has no port", key), "state its port, or leave this out", role, key)
+		}
+		return
 	}
 	d.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"scpi"}, role, "family")
-	if role != "readout" || in.Port != "" {
-		d.Port = tomlfile.TakeText(l.doc, &l.err, 256, role, "port")
-		d.Identify = l.text(role, "identify")
-		d.Identity = tomlfile.TakeText(l.doc, &l.err, 200, role, "identity")
-	}
-	if d.Baud == 0 {
-		d.Baud = 9600
-	}
-	l.demand(d.Baud >= 50 && d.Baud <= 12_000_000, "no serial port has that rate", "", role, "baud")
-	within := l.optional(quantity.DimSpan, role, "answer_within")
+	d.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, role, "port")
+	d.Identify = tomlfile.TakeText(l.doc, &l.err, longestCommand, role, "identify")
+	d.Identity = tomlfile.TakeText(l.doc, &l.err, longestCommand, role, "identity")
+	d.Uptime = l.command(role, "uptime")
+	d.Clear = l.command(role, "clear")
+	d.Errors = l.command(role, "errors")
+	d.Baud = l.baud(in.Baud, role)
 	d.Within = 2 * time.Second
-	if within > 0 {
-		d.Within = quantity.Span(within).Duration()
+	if l.doc.Has(role, "answer_within") {
+		within := quantity.Span(l.optional(quantity.DimSpan, role, "answer_within"))
+		l.demand(within >= 1e-3 && within <= 60, "an answer is waited for between 1 ms and 60 s", "", role, "answer_within")
+		if l.err == nil {
+			d.Within = within.Duration()
+		}
 	}
+}
+
+const (
+	longestPort    = 256 // characters: a path of the operating system
+	longestCommand = 200 // characters: a line of a dialogue holds 256 bytes
+)
+
+// command takes a line to be sent that may be absent.
+func (l *loader) command(path ...any) string {
+	if !l.doc.Has(path...) {
+		return ""
+	}
+	return tomlfile.TakeText(l.doc, &l.err, longestCommand, path...)
+}
+
+// baud gives 9600 where none is stated.
+func (l *loader) baud(stated int, role string) int {
+	if !l.doc.Has(role, "baud") {
+		return 9600
+	}
+	l.demand(stated >= 50 && stated <= 12_000_000, "no serial port has that rate", "usual rates are 9600 and 115200", role, "baud")
+	return stated
 }
 
 func (l *loader) reference(f *File) {
 	in, r := l.file.Reference, &f.Reference
 	l.dialogue("reference", in, &r.Dialogue)
-	r.Read = l.text("reference", "read")
-	r.Zero = l.text("reference", "zero")
+	r.Read = tomlfile.TakeText(l.doc, &l.err, longestCommand, "reference", "read")
+	r.Zero = l.command("reference", "zero")
 	r.Field = quantity.Field{Unit: l.unit(quantity.DimPressure, "reference", "unit"), UnitInText: in.UnitInText}
-	r.Resolution = l.stated(quantity.DimPressure, "reference", "resolution")
-	r.ResponseTime = l.stated(quantity.DimSpan, "reference", "response_time")
-	r.ResponseTimeTolerance = in.ResponseTimeTolerance
-	l.optional(quantity.DimSpan, "reference", "response_time_tolerance")
+	r.Resolution = l.above(quantity.DimPressure, "reference", "resolution")
+	r.ResponseTime = l.width(quantity.DimSpan, "reference", "response_time")
+	r.ResponseTimeTolerance = l.widthIf(quantity.DimSpan, "reference", "response_time_tolerance")
 	r.RangeLow = l.stated(quantity.DimPressure, "reference", "range_low")
 	r.RangeHigh = l.stated(quantity.DimPressure, "reference", "range_high")
+	low := l.optional(quantity.DimPressure, "reference", "range_low")
+	high := l.optional(quantity.DimPressure, "reference", "range_high")
+	l.demand(low < high, "the lowest pressure of the range is not below the highest", "", "reference", "range_low")
 	r.Height = l.stated(quantity.DimLength, "reference", "height")
-	if l.err != nil {
-		return
-	}
-	if in.Certificate == nil {
+	if l.err == nil && in.Certificate == nil {
 		l.refuse(l.doc.Missing("a table [reference.certificate]: without it nothing can be judged", "reference", "certificate"))
-		return
 	}
-	c := in.Certificate
-	out := &r.Certificate
+	if l.err == nil {
+		l.certificate(in.Certificate, &r.Certificate)
+	}
+}
+
+func (l *loader) certificate(in *certificateTable, out *Certificate) {
 	at := func(key string) []any { return []any{"reference", "certificate", key} }
-	out.Number, out.Laboratory = l.text(at("number")...), tomlfile.TakeText(l.doc, &l.err, 200, at("laboratory")...)
-	out.Date, out.Due = tomlfile.Take(l.doc, &l.err, day, at("date")...), tomlfile.Take(l.doc, &l.err, day, at("due")...)
+	out.Number = l.text(at("number")...)
+	out.Laboratory = tomlfile.TakeText(l.doc, &l.err, longestCommand, at("laboratory")...)
+	out.Date = tomlfile.Take(l.doc, &l.err, day, at("date")...)
+	out.Due = tomlfile.Take(l.doc, &l.err, day, at("due")...)
 	l.demand(out.Date < out.Due, "the certificate is due before its date", "", at("due")...)
-	out.CoverageFactor = c.CoverageFactor
-	l.demand(c.CoverageFactor >= 1 && c.CoverageFactor <= 4, "a coverage factor is 1 to 4, usually 2", "", at("coverage_factor")...)
-	out.Uncertainty = l.stated(quantity.DimPressure, at("uncertainty")...)
-	out.UncertaintyOfReading = l.stated(quantity.DimNone, at("uncertainty_of_reading")...)
-	out.DriftPercent = c.DriftOfReading
-	l.optional(quantity.DimNone, at("drift_of_reading")...)
+	out.CoverageFactor = l.coverage(in.CoverageFactor, at("coverage_factor")...)
+	out.Uncertainty = l.width(quantity.DimPressure, at("uncertainty")...)
+	out.UncertaintyOfReading = l.width(quantity.DimNone, at("uncertainty_of_reading")...)
+	out.DriftPercent = l.widthIf(quantity.DimNone, at("drift_of_reading")...)
+	nothing := l.optional(quantity.DimPressure, at("uncertainty")...) == 0 && l.optional(quantity.DimNone, at("uncertainty_of_reading")...) == 0
+	l.demand(!nothing, "a certificate without any uncertainty", "", at("uncertainty")...)
 	var before quantity.Pressure
-	for i, p := range c.Corrections {
-		path := []any{"reference", "certificate", "correction", i}
-		here := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, append(path, "at")...)
-		tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, append(path, "correction")...)
-		l.demand(i == 0 || here > before, "corrections stand in the order of rising pressure", "", append(path, "at")...)
+	for i, p := range in.Corrections {
+		point := func(key string) []any { return []any{"reference", "certificate", "correction", i, key} }
+		here := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, point("at")...)
+		tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, point("correction")...)
+		l.demand(i == 0 || here > before, "corrections stand in the order of rising pressure", "", point("at")...)
 		before = here
 		out.Corrections = append(out.Corrections, Correction{p.At, p.Correction})
 	}
+}
+
+// coverage takes a coverage factor, which is not absent.
+func (l *loader) coverage(k float64, path ...any) float64 {
+	if l.err == nil && !l.doc.Has(path...) {
+		l.refuse(l.doc.Missing("coverage_factor = 2.0", path...))
+	}
+	l.demand(k >= 1 && k <= 4, "a coverage factor is 1 to 4, usually 2", "", path...)
+	return k
 }
 
 // day takes a date as 2026-03-02.
 func day(s string) (string, error) {
 	if _, err := time.Parse(time.DateOnly, s); err != nil {
 		return "", fmt.Errorf("%q is no date like 2026-03-02", s)
+	}
+	return s, nil
+}
+
+// millilitres takes a volume such as "60 mL"; it is told beside a leak and
+// enters no arithmetic, so its unit is known here alone.
+func millilitres(s string) (string, error) {
+	number, ok := strings.CutSuffix(s, " mL")
+	if x, err := quantity.ParseDecimal(number); !ok || err != nil || x <= 0 {
+		return "", fmt.Errorf("%q is no volume like \"60 mL\"", s)
 	}
 	return s, nil
 }

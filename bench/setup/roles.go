@@ -2,6 +2,7 @@ package setup
 
 import (
 	"fmt"
+	"strings"
 
 	"kymobench/bench/quantity"
 	"kymobench/bench/tomlfile"
@@ -9,60 +10,64 @@ import (
 
 func (l *loader) uut(f *File) {
 	in, u := l.file.UUT, &f.UUT
+	u.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"lines"}, "uut", "family")
 	tomlfile.TakeWord(l.doc, &l.err, []string{"free-running"}, "uut", "mode")
-	*u = UUT{
-		Family: tomlfile.TakeWord(l.doc, &l.err, []string{"lines"}, "uut", "family"),
-		Port:   tomlfile.TakeText(l.doc, &l.err, 256, "uut", "port"), Baud: in.Baud,
-		Excitation: in.Excitation, NominalSensitivity: in.NominalSensitivity,
-		SamplePeriodTolerance: in.SamplePeriodTolerance, HeightUncertainty: in.HeightUncertainty,
-		Fluid: in.Fluid, Delay: in.Delay, DelayUncertainty: in.DelayUncertainty,
-	}
+	u.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, "uut", "port")
+	u.Baud = l.baud(in.Baud, "uut")
+	unit := tomlfile.Take(l.doc, &l.err, output, "uut", "unit")
 	u.Field = quantity.Field{
 		Separator: in.Separator, Column: in.Column, Prefix: in.Prefix, Suffix: in.Suffix, Width: in.Width, UnitInText: in.UnitInText, Unit: in.Unit,
 	}
-	if l.err != nil {
-		return
-	}
-	unit, ok := quantity.UnitNamed(in.Unit)
-	l.demand(ok && (unit.Dimension == quantity.DimPressure || unit.Dimension == quantity.DimRatio || unit.Dimension == quantity.DimVoltage),
-		fmt.Sprintf("%q is no unit of pressure, voltage or bridge output", in.Unit), "mmHg, kPa, mV, uV, uV/V", "uut", "unit")
-	if u.Baud == 0 {
-		u.Baud = 9600
-	}
-	u.Resolution = l.stated(unit.Dimension, "uut", "resolution")
-	u.SamplePeriod = l.stated(quantity.DimSpan, "uut", "sample_period")
+	l.demand(in.Width >= 0 && in.Width <= 32, "a number has 1 to 32 characters", "leave width out if it varies", "uut", "width")
+	l.demand(in.Column >= 0 && in.Column <= 64, "columns are counted from 0 to 64", "", "uut", "column")
+	l.demand(in.Column == 0 || in.Separator != "", "a column without a separator", `separator = ","`, "uut", "column")
+	u.Resolution = l.above(unit.Dimension, "uut", "resolution")
+	u.SamplePeriod = l.above(quantity.DimSpan, "uut", "sample_period")
+	u.SamplePeriodTolerance = l.widthIf(quantity.DimNone, "uut", "sample_period_tolerance")
 	u.Height = l.stated(quantity.DimLength, "uut", "height")
-	l.optional(quantity.DimNone, "uut", "sample_period_tolerance")
-	l.optional(quantity.DimLength, "uut", "height_uncertainty")
-	l.optional(quantity.DimSpan, "uut", "delay")
-	l.optional(quantity.DimSpan, "uut", "delay_uncertainty")
-	if unit.Dimension != quantity.DimPressure {
-		l.stated(quantity.DimSensitivity, "uut", "nominal_sensitivity")
+	u.HeightUncertainty = l.widthIf(quantity.DimLength, "uut", "height_uncertainty")
+	u.Delay = l.widthIf(quantity.DimSpan, "uut", "delay")
+	u.DelayUncertainty = l.widthIf(quantity.DimSpan, "uut", "delay_uncertainty")
+	if unit.Dimension != quantity.DimPressure || l.doc.Has("uut", "nominal_sensitivity") {
+		u.NominalSensitivity = l.above(quantity.DimSensitivity, "uut", "nominal_sensitivity")
 	}
-	if unit.Dimension == quantity.DimVoltage {
-		l.stated(quantity.DimVoltage, "uut", "excitation")
-	} else {
-		l.optional(quantity.DimVoltage, "uut", "excitation")
+	if unit.Dimension == quantity.DimVoltage || l.doc.Has("uut", "excitation") {
+		u.Excitation = l.above(quantity.DimVoltage, "uut", "excitation")
 	}
-	if in.Fluid != "" {
-		u.FluidDensity = fluidDensity(tomlfile.TakeWord(l.doc, &l.err, []string{"water", "saline", "air"}, "uut", "fluid"))
+	if l.doc.Has("uut", "fluid") {
+		u.Fluid = tomlfile.TakeWord(l.doc, &l.err, []string{"water", "saline", "air"}, "uut", "fluid")
+		u.FluidDensity = fluidDensity(u.Fluid)
 	}
+	level := l.optional(quantity.DimLength, "uut", "height") == l.optional(quantity.DimLength, "reference", "height")
+	l.demand(level || u.Fluid != "", "the UUT is not level with the reference, and no fluid is named", `fluid = "water"`, "uut", "height")
 	l.rate(u)
 }
 
+// output takes a unit that a UUT can put out.
+func output(s string) (quantity.Unit, error) {
+	u, ok := quantity.UnitNamed(s)
+	if !ok || u.Dimension != quantity.DimPressure && u.Dimension != quantity.DimRatio && u.Dimension != quantity.DimVoltage {
+		return quantity.Unit{}, fmt.Errorf("%q is no unit of pressure, voltage or bridge output, such as mmHg, kPa, mV or uV/V", s)
+	}
+	return u, nil
+}
+
 // rate refuses a stream that the line cannot carry at 80 % duty: ten bits a
-// byte, the number's width and a terminator of two bytes.
+// byte, the number's width and a terminator of two bytes. Source: 8N1 has ten
+// bits; the share is the program's own margin.
 func (l *loader) rate(u *UUT) {
-	period := tomlfile.Take(l.doc, &l.err, quantity.ParseSpan, "uut", "sample_period")
-	l.demand(period > 0, "the sample period is not above zero", "", "uut", "sample_period")
+	period := l.optional(quantity.DimSpan, "uut", "sample_period")
 	if l.err != nil || u.Field.Width == 0 {
 		return
 	}
 	bytes := float64(u.Field.Width + len(u.Field.Prefix) + len(u.Field.Suffix) + 2)
+	if u.Field.UnitInText {
+		bytes += float64(len(u.Field.Unit))
+	}
 	most := 0.8 * float64(u.Baud) / 10 / bytes
-	if 1/float64(period) > most {
+	if 1/period > most {
 		l.refuse(l.doc.Refuse(fmt.Sprintf("%.0f samples a second of %.0f bytes do not fit %d baud: %.0f at most, at 80 %% of the line",
-			1/float64(period), bytes, u.Baud, most), "a higher baud rate or a longer sample period", "uut", "sample_period"))
+			1/period, bytes, u.Baud, most), "a higher baud rate or a longer sample period", "uut", "sample_period"))
 	}
 }
 
@@ -73,34 +78,31 @@ func (l *loader) readout(f *File) {
 		l.demand(unit.Dimension == quantity.DimPressure, "a UUT that puts out a voltage or a ratio needs a table [readout]: its error is not the UUT's", "", "uut", "unit")
 		return
 	}
-	r := &Readout{CoverageFactor: in.CoverageFactor, Due: in.Due}
+	l.demand(unit.Dimension != quantity.DimPressure, "a UUT that puts out pressure has no readout of the bench's", "leave out [readout]", "readout")
+	r := &Readout{}
 	l.dialogue("readout", in.dialogue(), &r.Dialogue)
-	r.GainUncertainty = l.stated(quantity.DimNone, "readout", "gain_uncertainty")
-	r.ZeroUncertainty = l.stated(unit.Dimension, "readout", "zero_uncertainty")
-	l.demand(in.CoverageFactor >= 1 && in.CoverageFactor <= 4, "a coverage factor is 1 to 4, usually 2", "", "readout", "coverage_factor")
-	r.Certificate = in.Certificate
+	r.GainUncertainty = l.width(quantity.DimNone, "readout", "gain_uncertainty")
+	r.ZeroUncertainty = l.width(unit.Dimension, "readout", "zero_uncertainty")
+	r.CoverageFactor = l.coverage(in.CoverageFactor, "readout", "coverage_factor")
+	r.Certificate = l.text("readout", "certificate")
+	r.Due = tomlfile.Take(l.doc, &l.err, day, "readout", "due")
 	f.Readout = r
 }
 
 func (l *loader) source(f *File) {
 	l.dialogue("source", l.file.Source, &f.Pressure.Dialogue)
-	f.Pressure.Set = l.text("source", "set")
-	f.Pressure.Hold = l.text("source", "hold")
-	f.Pressure.Vent = l.text("source", "vent")
-	if l.err == nil {
-		if _, err := placeholder(f.Pressure.Set); err != nil {
-			l.refuse(l.doc.Refuse(err.Error(), `set = "SOUR:PRES {mmHg}"`, "source", "set"))
-		}
-	}
+	f.Pressure.Set = tomlfile.Take(l.doc, &l.err, placeholder, "source", "set")
+	f.Pressure.Hold = tomlfile.TakeText(l.doc, &l.err, longestCommand, "source", "hold")
+	f.Pressure.Vent = tomlfile.TakeText(l.doc, &l.err, longestCommand, "source", "vent")
 }
 
 func (l *loader) valve(f *File) {
 	l.dialogue("valve", l.file.Valve, &f.Valve.Dialogue)
-	f.Valve.Release = l.text("valve", "release")
-	f.Valve.Shut = l.text("valve", "shut")
-	f.Valve.EdgeTime = l.stated(quantity.DimSpan, "valve", "edge_time")
-	f.Valve.EdgeTimeTolerance = l.file.Valve.EdgeTimeTolerance
-	l.optional(quantity.DimNone, "valve", "edge_time_tolerance")
+	f.Valve.Release = tomlfile.TakeText(l.doc, &l.err, longestCommand, "valve", "release")
+	f.Valve.Shut = tomlfile.TakeText(l.doc, &l.err, longestCommand, "valve", "shut")
+	l.demand(f.Valve.Release != f.Valve.Shut, "the valve is shut by the command that opens it", "", "valve", "shut")
+	f.Valve.EdgeTime = l.width(quantity.DimSpan, "valve", "edge_time")
+	f.Valve.EdgeTimeTolerance = l.widthIf(quantity.DimNone, "valve", "edge_time_tolerance")
 }
 
 // together looks for contradictions between tables.
@@ -112,16 +114,26 @@ func (l *loader) together(f *File) {
 	low := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, "reference", "range_low")
 	l.demand(f.Highest <= high, "the highest pressure is above the reference's range: nobody would see it", "", "pressure", "highest")
 	l.demand(f.Lowest >= low, "the lowest pressure is below the reference's range: nobody would see it", "", "pressure", "lowest")
-	ports := map[string]string{f.Reference.Port: "reference"}
-	for _, p := range []struct{ role, port string }{{"uut", f.UUT.Port}, {"source", f.Pressure.Port}, {"valve", f.Valve.Port}} {
-		other, used := ports[p.port]
-		l.demand(!used, fmt.Sprintf("the port of the %s is that of the %s", p.role, other), "one port, one instrument", p.role, "port")
-		ports[p.port] = p.role
+	ports := map[string]string{}
+	for _, p := range []struct{ role, port string }{
+		{"reference", f.Reference.Port}, {"uut", f.UUT.Port}, {"source", f.Pressure.Port}, {"valve", f.Valve.Port}, {"readout", l.readoutPort()},
+	} {
+		name := p.port
+		if strings.HasPrefix(strings.ToUpper(name), "COM") {
+			name = strings.ToUpper(name) // com3 is COM3
+		}
+		if other, used := ports[name]; used && name != "" {
+			l.refuse(l.doc.Refuse(fmt.Sprintf("the port of the %s is that of the %s", p.role, other), "one port, one instrument", p.role, "port"))
+		}
+		ports[name] = p.role
 	}
-	if f.Readout != nil && f.Readout.Port != "" {
-		other, used := ports[f.Readout.Port]
-		l.demand(!used, fmt.Sprintf("the port of the readout is that of the %s", other), "one port, one instrument", "readout", "port")
+}
+
+func (l *loader) readoutPort() string {
+	if l.file.Readout == nil {
+		return ""
 	}
+	return l.file.Readout.Port
 }
 
 // text takes a text that names something.
@@ -137,12 +149,40 @@ func (l *loader) stated(d quantity.Dimension, path ...any) string {
 	}, path...)
 }
 
+// above is stated for a value above zero, width for one of zero or more.
+func (l *loader) above(d quantity.Dimension, path ...any) string {
+	text := l.stated(d, path...)
+	l.demand(l.optional(d, path...) > 0, fmt.Sprintf("%v is not above zero", path[len(path)-1]), "", path...)
+	return text
+}
+
+func (l *loader) width(d quantity.Dimension, path ...any) string {
+	text := l.stated(d, path...)
+	l.demand(l.optional(d, path...) >= 0, fmt.Sprintf("%v is below zero", path[len(path)-1]), "", path...)
+	return text
+}
+
+// widthIf is width for a value that may be absent.
+func (l *loader) widthIf(d quantity.Dimension, path ...any) string {
+	if !l.doc.Has(path...) {
+		return ""
+	}
+	return l.width(d, path...)
+}
+
 // optional parses a value that may be absent, which gives 0.
 func (l *loader) optional(d quantity.Dimension, path ...any) float64 {
 	return tomlfile.TakeIf(l.doc, &l.err, func(s string) (float64, error) {
 		v, err := quantity.ParseAs(s, d)
 		return v.SI, err
 	}, path...)
+}
+
+// check refuses a text that is empty, framed by blanks or too long.
+func (l *loader) check(most int, path ...any) {
+	if l.err == nil {
+		l.err = l.doc.CheckText(most, path...)
+	}
 }
 
 func (l *loader) unit(d quantity.Dimension, path ...any) string {
@@ -166,23 +206,17 @@ func (l *loader) refuse(e *tomlfile.Error) {
 	}
 }
 
-// placeholder finds the unit in braces that stands for the set pressure.
-func placeholder(command string) (quantity.Unit, error) {
-	open, end := -1, -1
-	for i, r := range command {
-		switch {
-		case r == '{' && open < 0:
-			open = i
-		case r == '}' && open >= 0 && end < 0:
-			end = i
-		}
+// placeholder takes a command with one unit of pressure in braces, which stands
+// for the set pressure in that unit.
+func placeholder(command string) (string, error) {
+	before, rest, open := strings.Cut(command, "{")
+	name, after, closed := strings.Cut(rest, "}")
+	u, known := quantity.UnitNamed(name)
+	switch {
+	case !open || !closed || strings.ContainsAny(before+name+after, "{}"):
+		return "", fmt.Errorf("%q needs one place for the pressure, as in \"SOUR:PRES {mmHg}\"", command)
+	case !known || u.Dimension != quantity.DimPressure:
+		return "", fmt.Errorf("%q in %q is no unit of pressure", name, command)
 	}
-	if open < 0 || end < 0 {
-		return quantity.Unit{}, fmt.Errorf("the command %q has no place for the pressure", command)
-	}
-	u, ok := quantity.UnitNamed(command[open+1 : end])
-	if !ok || u.Dimension != quantity.DimPressure {
-		return quantity.Unit{}, fmt.Errorf("%q is no unit of pressure", command[open+1:end])
-	}
-	return u, nil
+	return command, nil
 }

@@ -40,7 +40,7 @@ func TestLoadRefuses(t *testing.T) {
 		{`unit = "mmHg"`, `unit = "mmhg"`, "unit"},
 		{`due = "2027-03-01"`, `due = "2025-03-01"`, "before its date"},
 		{`baud = 230400`, `baud = 9600`, "do not fit"},
-		{`set = "SOUR:PRES {mmHg}"`, `set = "SOUR:PRES"`, "no place for the pressure"},
+		{`set = "SOUR:PRES {mmHg}"`, `set = "SOUR:PRES"`, "one place for the pressure"},
 		{`coverage_factor = 2.0`, `coverage_factor = 0.5`, "coverage factor"},
 		{`mode = "free-running"`, `mode = "asked"`, "asked"},
 		{`fluid = "water"`, `fluid = "watr"`, "watr"},
