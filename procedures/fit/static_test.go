@@ -1,0 +1,227 @@
+package fit
+
+import (
+	"encoding/csv"
+	"math"
+	"math/rand/v2"
+	"os"
+	"strconv"
+	"testing"
+)
+
+// Source: testdata/sources/nist-strd-linear, certified values of NIST.
+func TestNorris(t *testing.T) {
+	file, err := os.Open("../../testdata/sources/nist-strd-linear/norris.csv")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer file.Close()
+	rows, err := csv.NewReader(file).ReadAll()
+	if err != nil {
+		t.Fatal(err)
+	}
+	var d Data
+	for _, row := range rows[1:] {
+		y, err1 := strconv.ParseFloat(row[0], 64)
+		x, err2 := strconv.ParseFloat(row[1], 64)
+		if err1 != nil || err2 != nil {
+			t.Fatal(row)
+		}
+		d.Reference, d.UUT, d.Cycle, d.Down = append(d.Reference, x), append(d.UUT, y), append(d.Cycle, 1), append(d.Down, false)
+	}
+	if len(d.Reference) != 36 {
+		t.Fatalf("%d readings", len(d.Reference))
+	}
+	f, err := Static(d)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, c := range []struct {
+		name      string
+		got, want float64
+	}{
+		{"intercept", f.Line.Intercept, -0.262323073774029}, {"its sd", f.Line.UIntercept, 0.232818234301152},
+		{"slope", f.Line.Slope, 1.00211681802045}, {"its sd", f.Line.USlope, 0.429796848199937e-3},
+		{"residual sd", f.Line.Residual, 0.884796396144373},
+	} {
+		digits := -math.Log10(math.Abs(c.got-c.want) / math.Abs(c.want))
+		t.Logf("%s: %.1f certified digits", c.name, digits)
+		if digits < 12 {
+			t.Errorf("%s: %.15g, certified %.15g", c.name, c.got, c.want)
+		}
+	}
+}
+
+// worked is a small set whose four lines were computed exactly by hand:
+// terminal 1.15, least squares 0.698..., independent 23/40, zero-based 23/30.
+func worked() Data {
+	up := []float64{0.2, 50.1, 100.3, 150.2, 199.9, 249.4, 298.6}
+	down := []float64{0.4, 50.7, 101.1, 151.0, 200.6, 249.8, 298.6}
+	var d Data
+	for i := range up {
+		for _, leg := range []bool{false, true} {
+			x := float64(50 * i)
+			y := up[i]
+			if leg {
+				y = down[i]
+			}
+			d.Reference, d.UUT, d.Set = append(d.Reference, x), append(d.UUT, y), append(d.Set, x)
+			d.Cycle, d.Down = append(d.Cycle, 1), append(d.Down, leg)
+		}
+	}
+	return d
+}
+
+func TestWorkedLinearities(t *testing.T) {
+	for _, set := range []bool{true, false} {
+		d := worked()
+		if !set {
+			d.Set = nil
+		}
+		f, err := Static(d)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, c := range []struct {
+			name      string
+			got       *float64
+			want, tol float64
+		}{
+			{"terminal", f.Linearity.Terminal, 1.15, 1e-12}, {"least squares", f.Linearity.LeastSquares, 0.6982142857142857, 1e-12},
+			{"independent", f.Linearity.Independent, 0.575, 1e-12}, {"zero-based", f.Linearity.ZeroBased, 23.0 / 30, 1e-12},
+			{"hysteresis", &f.Hysteresis.Value, 0.8, 1e-12}, {"zero offset", f.ZeroOffset, 0.2, 1e-12},
+			{"zero return", f.ZeroReturn[0], 0.2, 1e-12}, {"largest error", &f.LargestError.Value, -1.4, 1e-12},
+			{"after zero", &f.ErrorAfterZero.Value, -1.6, 1e-12},
+		} {
+			if c.got == nil || math.Abs(*c.got-c.want) > c.tol {
+				t.Errorf("set %v, %s: %v, want %v", set, c.name, *c.got, c.want)
+			}
+		}
+		if f.Repeatability.PooledSD != nil || len(f.Reservations) != 1 || f.Reservations[0].Code != "one_cycle" {
+			t.Errorf("one cycle: %+v, %v", f.Repeatability, f.Reservations)
+		}
+	}
+}
+
+// Repeatability by hand: two cycles of one point, residuals apart by 0.3 up
+// and 0.1 down, none at zero: largest range 0.3, pooled SD sqrt((0.045+0.005+0)/3).
+func TestRepeatability(t *testing.T) {
+	d := Data{
+		Reference: []float64{0, 100, 100, 0, 100, 100}, UUT: []float64{0, 100, 100, 0, 100.3, 100.1},
+		Cycle: []int{1, 1, 1, 2, 2, 2}, Down: []bool{false, false, true, false, false, true}, Set: []float64{0, 100, 100, 0, 100, 100},
+	}
+	f, err := Static(d)
+	if err != nil {
+		t.Fatal(err)
+	}
+	r := f.Repeatability
+	if r.DoF == nil || *r.DoF != 3 || math.Abs(*r.LargestRange-0.3) > 1e-12 || math.Abs(*r.PooledSD-math.Sqrt(0.05/3)) > 1e-12 {
+		t.Errorf("%v %v %v", *r.LargestRange, *r.PooledSD, *r.DoF)
+	}
+	d.Set = nil
+	d.Down = []bool{false, false, false, false, true, true}
+	d.Cycle = []int{1, 1, 1, 1, 1, 1}
+	if f, err = Static(d); err != nil || f.Hysteresis != nil || f.Linearity.Independent != nil || !math.IsNaN(f.LargestError.At) {
+		t.Errorf("four up and two down were grouped: %+v, %v", f, err)
+	}
+}
+
+// Laws: a line added to the UUT's output moves no linearity and no hysteresis;
+// everything scales with the unit; the order of the rows does not matter.
+func TestLaws(t *testing.T) {
+	r := rand.New(rand.NewPCG(3, 4))
+	for range 200 {
+		var d Data
+		for cycle := 1; cycle <= 1+r.IntN(3); cycle++ {
+			for _, down := range []bool{false, true} {
+				for i := range 6 {
+					set := float64(60 * i)
+					p := set + r.NormFloat64()
+					d.Reference, d.Set = append(d.Reference, p), append(d.Set, set)
+					d.UUT = append(d.UUT, 1+1.01*p+0.3*r.NormFloat64())
+					d.Cycle, d.Down = append(d.Cycle, cycle), append(d.Down, down)
+				}
+			}
+		}
+		a, err := Static(d)
+		if err != nil {
+			t.Fatal(err)
+		}
+		moved, scaled := d, d
+		moved.UUT = append([]float64(nil), d.UUT...)
+		scaled.Reference, scaled.UUT, scaled.Set = nil, nil, nil
+		for i := range d.UUT {
+			moved.UUT[i] += 7 + 0.02*d.Reference[i]
+			scaled.Reference = append(scaled.Reference, d.Reference[i]*0.133322387415)
+			scaled.UUT, scaled.Set = append(scaled.UUT, d.UUT[i]*0.133322387415), append(scaled.Set, d.Set[i]*0.133322387415)
+		}
+		order := r.Perm(len(d.UUT))
+		var mixed Data
+		for _, i := range order {
+			mixed.Reference, mixed.UUT, mixed.Set = append(mixed.Reference, d.Reference[i]), append(mixed.UUT, d.UUT[i]), append(mixed.Set, d.Set[i])
+			mixed.Cycle, mixed.Down = append(mixed.Cycle, d.Cycle[i]), append(mixed.Down, d.Down[i])
+		}
+		for name, c := range map[string]struct {
+			d  Data
+			by float64
+		}{"line added": {moved, 1}, "unit changed": {scaled, 0.133322387415}, "rows mixed": {mixed, 1}} {
+			b, err := Static(c.d)
+			if err != nil {
+				t.Fatal(err)
+			}
+			for what, pair := range map[string][2]float64{
+				"independent": {*a.Linearity.Independent, *b.Linearity.Independent}, "terminal": {*a.Linearity.Terminal, *b.Linearity.Terminal},
+				"zero-based": {*a.Linearity.ZeroBased, *b.Linearity.ZeroBased}, "least squares": {*a.Linearity.LeastSquares, *b.Linearity.LeastSquares},
+				"hysteresis": {a.Hysteresis.Value, b.Hysteresis.Value},
+			} {
+				if name == "line added" && what != "hysteresis" && math.Abs(pair[0]-pair[1]) > 300e-9 ||
+					math.Abs(pair[0]*c.by-pair[1]) > 300e-9 {
+					t.Errorf("%s, %s: %v and %v", name, what, pair[0], pair[1])
+				}
+			}
+		}
+	}
+}
+
+// The independent line by brute force: half the largest deviation from a chord
+// over all triples.
+func TestIndependentByTriples(t *testing.T) {
+	r := rand.New(rand.NewPCG(5, 6))
+	for range 500 {
+		n := 3 + r.IntN(8)
+		x, y := make([]float64, n), make([]float64, n)
+		for i := range x {
+			x[i], y[i] = float64(i)+0.9*r.Float64(), r.NormFloat64()
+		}
+		var want float64
+		for i := range n {
+			for j := i + 1; j < n; j++ {
+				for k := j + 1; k < n; k++ {
+					on := y[i] + (y[k]-y[i])*(x[j]-x[i])/(x[k]-x[i])
+					want = math.Max(want, math.Abs(y[j]-on)/2)
+				}
+			}
+		}
+		if got := Lines(x, y).Independent; math.Abs(*got-want) > 1e-12 {
+			t.Fatalf("%v, by triples %v", *got, want)
+		}
+	}
+}
+
+func TestCurve(t *testing.T) {
+	c, err := NewCurve([]float64{0, 100, 200}, []float64{0, 0.04, 0.02})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, w := range []struct {
+		x, add float64
+		beyond bool
+	}{{0, 0, false}, {50, 0.02, false}, {150, 0.03, false}, {200, 0.02, false}, {250, 0.02, true}, {-1, 0, true}} {
+		if add, beyond := c.At(w.x); math.Abs(add-w.add) > 1e-15 || beyond != w.beyond {
+			t.Errorf("at %v: %v, %v", w.x, add, beyond)
+		}
+	}
+	if c, err := NewCurve([]float64{0, 0}, []float64{1, 2}); err == nil {
+		t.Errorf("equal points taken: %v", c)
+	}
+}
