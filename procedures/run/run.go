@@ -116,6 +116,10 @@ func (s *session) work(ctx context.Context) error {
 	if err := s.warn(ctx); err != nil {
 		return err
 	}
+	// An earlier run may have ended by opening the fast valve.
+	if err := s.closeValve(ctx); err != nil {
+		return err
+	}
 	for i, stage := range s.Definition.Stages {
 		number := i + 1
 		s.stage = number
@@ -178,14 +182,14 @@ func (s *session) end(ctx context.Context, err error) (Outcome, error) {
 	var fault *Fault
 	switch {
 	case s.broken != nil:
-		return Outcome{}, errors.Join(fmt.Errorf("the record is broken, nothing more is judged: %w", s.broken), s.writer.Leave())
+		return Outcome{}, errors.Join(fmt.Errorf("the record is broken, nothing more is judged: %w", s.broken), s.writer.Leave(ctx))
 	case err == nil:
 	case errors.As(err, &fault):
 		if e := s.append(record.KindFault, record.Fault{Code: fault.Code, Text: fault.Error()}); e != nil {
 			return Outcome{}, e
 		}
 	case errors.Is(err, ErrStopped), errors.Is(err, ErrInputEnded), errors.Is(err, ErrUnanswered), errors.Is(err, context.Canceled):
-		return Outcome{Stopped: true, Why: err.Error()}, s.writer.Leave()
+		return Outcome{Stopped: true, Why: err.Error()}, s.writer.Leave(ctx)
 	default:
 		if e := s.append(record.KindFault, record.Fault{Code: "bench_fault", Text: err.Error()}); e != nil {
 			return Outcome{}, e
@@ -226,9 +230,8 @@ func (s *session) close(ctx context.Context, err error) (Outcome, error) {
 	if e := s.append(record.KindResults, stored); e != nil {
 		return Outcome{}, e
 	}
-	head, e := s.writer.Close(s.now(), s.wall())
-	if e != nil {
+	if e := s.writer.Close(ctx, s.now(), s.wall()); e != nil {
 		return Outcome{}, e
 	}
-	return Outcome{Closed: true, Results: res, Head: head}, nil
+	return Outcome{Closed: true, Results: res, Head: s.writer.Head()}, nil
 }

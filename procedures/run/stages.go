@@ -198,9 +198,6 @@ const captureTries = 3
 
 // step releases the pressure to atmosphere and keeps the UUT's answer.
 func (s *session) step(ctx context.Context, stage procedures.Step) error {
-	if err := s.closeValve(ctx); err != nil {
-		return err
-	}
 	for number := 1; number <= stage.Count; number++ {
 		done := false
 		for try := 0; try < captureTries && !done; try++ {
@@ -235,6 +232,8 @@ func (s *session) release(ctx context.Context, stage procedures.Step, number int
 		return false, err
 	}
 	commanded := s.now()
+	s.releasing = true
+	defer func() { s.releasing = false }()
 	if err := s.Rig.Valve.Release(ctx); err != nil {
 		return false, s.valveFault(ctx, err)
 	}

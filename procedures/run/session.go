@@ -29,6 +29,7 @@ type session struct {
 	nominal    float64 // V/V/Pa, 0 for a pressure output
 	excitation float64 // V
 	zeroed     bool
+	releasing  bool    // a good line rings below zero after a release; only the reference is watched
 	zeroUUT    float64 // Pa: the UUT's reading at the one zeroing
 	last       quantity.Pressure
 }
@@ -167,7 +168,7 @@ func (s *session) tookSample(r bench.Reading, err error) error {
 		return &Fault{Code: "unit", Text: err.Error()}
 	}
 	s.stream.add(r.At, r.Text, p)
-	if s.zeroed {
+	if s.zeroed && !s.releasing {
 		return s.watchPressure("UUT", quantity.Pressure(p-s.zeroUUT), r.Text)
 	}
 	return nil

@@ -58,7 +58,7 @@ func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
 		return t, fmt.Errorf("point without a reading of the reference")
 	}
 	t.nP = len(ps)
-	t.p, t.slope, t.vP, t.dofP = line(times, ps)
+	t.p, t.slope, t.vP, t.dofP = trend(times, ps)
 	if pt.UUT != "" {
 		y, err := s.uut(pt.UUT, pt.Excitation)
 		t.y, t.nY = y, 1
@@ -104,10 +104,10 @@ func (g *gathered) samples(s *scale, lines []int64) ([]float64, error) {
 	return ys, nil
 }
 
-// line returns the mean of p, its least-squares slope over t, and the variance
+// trend returns the mean of p, its least-squares slope over t, and the variance
 // of one value about that line with its degrees of freedom. Fewer than three
 // values give no slope and no variance.
-func line(t, p []float64) (m, slope, variance, dof float64) {
+func trend(t, p []float64) (m, slope, variance, dof float64) {
 	m = mean(p)
 	n := float64(len(p))
 	if len(p) < 3 {

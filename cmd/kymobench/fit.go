@@ -1,0 +1,235 @@
+package main
+
+import (
+	"encoding/json"
+	"fmt"
+	"io"
+	"os"
+	"text/tabwriter"
+
+	"github.com/spf13/cobra"
+
+	"kymobench/procedures/recorded"
+	"kymobench/procedures/results"
+)
+
+func newFitCommand(io streams) *cobra.Command {
+	cmd := &cobra.Command{Use: "fit", Short: "Fit recorded readings in a CSV file", Args: cobra.NoArgs,
+		RunE: func(*cobra.Command, []string) error {
+			return usagef("fit what? fit static FILE.csv or fit step FILE.csv")
+		}}
+	cmd.AddCommand(newFitStaticCommand(io), newFitStepCommand(io))
+	return cmd
+}
+
+// fitStatic and fitStep are the public JSON of the figures.
+type fitStatic struct {
+	Schema string `json:"schema"`
+	*results.Static
+}
+
+type fitStep struct {
+	Schema string `json:"schema"`
+	*results.Step
+}
+
+type fitStaticOptions struct {
+	recorded.StaticOptions
+	json bool
+}
+
+func newFitStaticCommand(io streams) *cobra.Command {
+	var o fitStaticOptions
+	cmd := &cobra.Command{
+		Use:   "static FILE.csv",
+		Short: "Offset, sensitivity, linearity, hysteresis, repeatability",
+		Long: `Reads columns cycle, leg (up or down), set_UNIT (optional), reference_UNIT and
+uut_UNIT, or uut_mV (uut_uV) with excitation_V, in any order. Figures are in
+the reference column's unit; a figure the data cannot carry is "undetermined".`,
+		Example: `  kymobench fit static readings.csv --nominal-sensitivity "5 uV/V/mmHg"`,
+		Args:    oneFile,
+		RunE: func(cmd *cobra.Command, args []string) error {
+			if cmd.Flags().Changed("nominal-sensitivity") && o.NominalSensitivity == "" {
+				return usagef("--nominal-sensitivity is empty")
+			}
+			return runFitStatic(args[0], o, io)
+		},
+	}
+	cmd.Flags().StringVar(&o.NominalSensitivity, "nominal-sensitivity", "", `of an electrical output, as "5 uV/V/mmHg"`)
+	cmd.Flags().StringVar(&o.Corrections, "reference-corrections", "", `reading:correction pairs in the reference's unit, as "0:0.02,100:0.04"`)
+	cmd.Flags().BoolVar(&o.json, "json", false, "one JSON document on stdout")
+	return cmd
+}
+
+func oneFile(_ *cobra.Command, args []string) error {
+	if len(args) != 1 {
+		return usagef("one file is expected, %d were given", len(args))
+	}
+	return nil
+}
+
+func runFitStatic(path string, o fitStaticOptions, io streams) error {
+	file, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	events, err := recorded.Static(path, file, o.StaticOptions)
+	if err != nil {
+		return usageError{err}
+	}
+	r, err := results.Compute(events)
+	if err != nil {
+		return usageError{fmt.Errorf("%s: %w", path, err)}
+	}
+	r.Static.Reservations = append(r.Static.Reservations, r.Reservations...)
+	if o.json {
+		return encode(io.out, fitStatic{"kymobench/fit-static/1", r.Static})
+	}
+	return printStatic(io.out, r.Static)
+}
+
+type fitStepOptions struct {
+	edge string
+	json bool
+}
+
+func newFitStepCommand(io streams) *cobra.Command {
+	var o fitStepOptions
+	cmd := &cobra.Command{
+		Use:   "step FILE.csv",
+		Short: "Natural frequency and damping ratio from step responses",
+		Long: `Reads columns time_s, pressure_UNIT and an optional applied_UNIT; one or more
+steps in a file. Without --edge-time and without an applied column the width of
+the edge is fitted. Exit 4 when natural frequency and damping are undetermined.`,
+		Example: `  kymobench fit step release.csv --edge-time "2 ms"`,
+		Args:    oneFile,
+		RunE: func(cmd *cobra.Command, args []string) error {
+			if cmd.Flags().Changed("edge-time") && o.edge == "" {
+				return usagef("--edge-time is empty")
+			}
+			return runFitStep(args[0], o, io)
+		},
+	}
+	cmd.Flags().StringVar(&o.edge, "edge-time", "", `10-90 % time of the step itself, as "2 ms"; 0 for an ideal step`)
+	cmd.Flags().BoolVar(&o.json, "json", false, "one JSON document on stdout")
+	return cmd
+}
+
+func runFitStep(path string, o fitStepOptions, io streams) error {
+	file, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	events, err := recorded.Step(path, file, o.edge)
+	if err != nil {
+		return usageError{err}
+	}
+	r, err := results.Compute(events)
+	if err != nil {
+		return usageError{fmt.Errorf("%s: %w", path, err)}
+	}
+	r.Step.Reservations = append(r.Step.Reservations, r.Reservations...)
+	if o.json {
+		err = encode(io.out, fitStep{"kymobench/fit-step/1", r.Step})
+	} else {
+		err = printStep(io.out, r.Step)
+	}
+	if err == nil && !r.Step.Combined.Determined {
+		return ended{exitInconclusive}
+	}
+	return err
+}
+
+// encode writes one JSON document.
+func encode(w io.Writer, v any) error {
+	e := json.NewEncoder(w)
+	e.SetEscapeHTML(false)
+	return e.Encode(v)
+}
+
+func printStatic(w io.Writer, s *results.Static) error {
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+	u := s.Unit
+	row := func(name string, v *float64, unit string) {
+		if v == nil {
+			fmt.Fprintf(t, "%s\tundetermined\t\n", name)
+			return
+		}
+		fmt.Fprintf(t, "%s\t%.6g\t%s\n", name, *v, unit)
+	}
+	figure := func(name string, f *results.Figure, unit string) {
+		if f == nil {
+			row(name, nil, unit)
+			return
+		}
+		fmt.Fprintf(t, "%s\t%.6g\t%s\tstandard uncertainty %.2g\n", name, f.Value, unit, f.Standard)
+	}
+	fmt.Fprintf(t, "readings\t%d\tin %d cycles\n", s.Readings, s.Cycles)
+	figure("intercept", s.Intercept, u)
+	figure("slope", s.Slope, "1")
+	row("residual standard deviation", s.ResidualSD, u)
+	if s.Sensitivity != nil {
+		figure("sensitivity", &results.Figure{Value: s.Sensitivity.Value, Standard: s.Sensitivity.Standard}, s.Sensitivity.Unit)
+	}
+	if s.ZeroOffset != nil {
+		row("zero offset", &s.ZeroOffset.Value, u)
+	}
+	for i, z := range s.ZeroReturn {
+		row(fmt.Sprintf("zero return, cycle %d", i+1), z, u)
+	}
+	row("linearity, independent", s.Linearity.Independent, u)
+	row("linearity, terminal-based", s.Linearity.Terminal, u)
+	row("linearity, zero-based", s.Linearity.ZeroBased, u)
+	row("linearity, least squares", s.Linearity.LeastSquares, u)
+	if s.Hysteresis != nil {
+		fmt.Fprintf(t, "hysteresis, largest\t%.6g\t%s\tat %.6g %s\n", s.Hysteresis.Largest, u, s.Hysteresis.At, u)
+	} else {
+		row("hysteresis, largest", nil, u)
+	}
+	row("repeatability, largest range", s.Repeatability.LargestRange, u)
+	row("repeatability, pooled SD", s.Repeatability.PooledSD, u)
+	for _, e := range []struct {
+		name string
+		at   *results.ErrorAt
+	}{{"largest error", s.LargestError}, {"largest error after zero", s.ErrorAfterZero}} {
+		if e.at == nil {
+			row(e.name, nil, u)
+			continue
+		}
+		where := fmt.Sprintf("cycle %d, %s", e.at.Cycle, e.at.Leg)
+		if e.at.At != nil {
+			where = fmt.Sprintf("at %.6g %s, %s", *e.at.At, u, where)
+		}
+		fmt.Fprintf(t, "%s\t%.6g\t%s\t%s\n", e.name, e.at.Value, u, where)
+	}
+	reservations(t, s.Reservations)
+	return t.Flush()
+}
+
+func reservations(w io.Writer, all []results.Reason) {
+	for _, r := range all {
+		fmt.Fprintf(w, "reservation: %s (%s)\n", r.Text, r.Code)
+	}
+}
+
+func printStep(w io.Writer, s *results.Step) error {
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+	fmt.Fprintf(t, "sample rate\t%.6g Hz\n", s.SampleRate)
+	for i, st := range s.Steps {
+		estimates(t, fmt.Sprintf("step %d at %.4f s, height %.4g %s", i+1, st.At, *st.Height, s.Unit), st.Determined, st.Reasons, st.Frequency, st.Damping)
+	}
+	estimates(t, "all steps", s.Combined.Determined, s.Combined.Reasons, s.Combined.Frequency, s.Combined.Damping)
+	reservations(t, s.Reservations)
+	return t.Flush()
+}
+
+func estimates(w io.Writer, name string, determined bool, reasons []string, f, d *results.Estimate) {
+	if !determined {
+		fmt.Fprintf(w, "%s\tundetermined: %v\n", name, reasons)
+		return
+	}
+	fmt.Fprintf(w, "%s\tnatural frequency %.4g Hz\t95 %% interval %.4g to %.4g\n", name, f.Value, f.Interval[0], f.Interval[1])
+	fmt.Fprintf(w, "\tdamping ratio %.4g\t95 %% interval %.4g to %.4g\n", d.Value, d.Interval[0], d.Interval[1])
+}

@@ -1,0 +1,210 @@
+package results
+
+import (
+	"fmt"
+	"math"
+
+	"kymobench/bench/quantity"
+	"kymobench/procedures/record"
+	"kymobench/procedures/step"
+)
+
+// minimumStep is the least departure taken for a step (facts of practice here,
+// common practice, no source).
+const minimumStep = 8 // mmHg
+
+// captured is a capture turned into a trace, with what was found in it.
+type captured struct {
+	record.Capture
+	trace    step.Trace
+	settings step.Settings
+	steps    []step.Step
+}
+
+// stepResults analyses every capture. The second value is nil when there is none.
+func (g *gathered) stepResults(s *scale) ([]captured, *Step, error) {
+	if len(g.captures) == 0 {
+		return nil, nil, nil
+	}
+	out := &Step{Unit: s.unit.Name, Steps: []StepFigure{}, Reservations: []Reason{}}
+	var all []captured
+	var steps []step.Step
+	for _, c := range g.captures {
+		one, reservations, err := g.analyse(s, c)
+		if err != nil {
+			return nil, nil, fmt.Errorf("capture %d: %w", c.Number, err)
+		}
+		out.SampleRate = one.trace.Rate
+		for _, st := range one.steps {
+			out.Steps = append(out.Steps, figureOf(st))
+		}
+		for _, r := range reservations {
+			out.Reservations = addReason(out.Reservations, Reason{r.Code, r.Text})
+		}
+		steps = append(steps, one.steps...)
+		all = append(all, one)
+	}
+	combined := step.Combine(steps)
+	out.Combined = Combined{Determined: combined.Determined, Reasons: notNil(combined.Reasons)}
+	if combined.Determined {
+		out.Combined.Frequency, out.Combined.Damping = estimateOf(combined.Frequency), estimateOf(combined.Damping)
+	}
+	return all, out, nil
+}
+
+// analyse reads the samples of a capture and fits the steps in them.
+func (g *gathered) analyse(s *scale, c record.Capture) (captured, []step.Reservation, error) {
+	one := captured{Capture: c}
+	if len(c.Blocks) == 0 {
+		return one, nil, fmt.Errorf("it names no block of samples")
+	}
+	first := g.blocks[c.Blocks[0]]
+	period, err := quantity.ParseSpan(first.Period)
+	if err != nil {
+		return one, nil, fmt.Errorf("sample period: %w", err)
+	}
+	if !(period > 0) {
+		return one, nil, fmt.Errorf("the sample period %q is not above zero", first.Period)
+	}
+	one.trace = step.Trace{Rate: 1 / float64(period), Start: first.Start.Seconds()}
+	if one.trace.Pressure, err = g.samples(s, c.Blocks); err != nil {
+		return one, nil, err
+	}
+	if len(c.Applied) > 0 {
+		if one.trace.Applied, err = g.samples(s, c.Applied); err != nil {
+			return one, nil, err
+		}
+	}
+	one.settings = step.Settings{MinimumStep: minimumStep * s.perMmHg()}
+	edge := c.Edge
+	if edge == "" {
+		edge = s.edge
+	}
+	if edge != "" {
+		span, err := quantity.ParseSpan(edge)
+		if err != nil {
+			return one, nil, fmt.Errorf("edge time: %w", err)
+		}
+		one.settings.EdgeStated, one.settings.EdgeTime = true, float64(span)
+	}
+	var reservations []step.Reservation
+	one.steps, _, reservations, err = step.Analyse(one.trace, one.settings)
+	return one, reservations, err
+}
+
+func figureOf(st step.Step) StepFigure {
+	f := StepFigure{At: st.At, Determined: st.Determined, Reasons: notNil(st.Reasons), Height: &st.Height, Noise: &st.Noise}
+	if st.Determined {
+		f.Frequency, f.Damping = estimateOf(st.Frequency), estimateOf(st.Damping)
+	}
+	return f
+}
+
+func estimateOf(e step.Estimate) *Estimate {
+	return &Estimate{Value: e.Value, Standard: e.StandardUncertainty, Interval: [2]float64{e.Low, e.High}}
+}
+
+func notNil(s []string) []string {
+	if s == nil {
+		return []string{}
+	}
+	return s
+}
+
+// addReason keeps one reservation for each code.
+func addReason(all []Reason, r Reason) []Reason {
+	for _, have := range all {
+		if have.Code == r.Code {
+			return all
+		}
+	}
+	return append(all, r)
+}
+
+// edgeShift is how far the combined figures move when the edge is as much
+// slower as its tolerance allows: the half-widths of what the edge can do, as
+// a share of fn and in zeta.
+func edgeShift(s *scale, all []captured, combined step.Combined) (share, zeta float64, err error) {
+	if s.edgeTolerance == 0 || !combined.Determined {
+		return 0, 0, nil
+	}
+	var moved []step.Step
+	for _, c := range all {
+		if !c.settings.EdgeStated || c.Edge != "" {
+			return 0, 0, nil
+		}
+		settings := c.settings
+		settings.EdgeTime *= 1 + s.edgeTolerance
+		steps, _, _, err := step.Analyse(c.trace, settings)
+		if err != nil {
+			return 0, 0, err
+		}
+		moved = append(moved, steps...)
+	}
+	other := step.Combine(moved)
+	if !other.Determined {
+		return 0, 0, nil
+	}
+	return math.Abs(other.Frequency.Value/combined.Frequency.Value - 1), math.Abs(other.Damping.Value - combined.Damping.Value), nil
+}
+
+// dynamicBudgets are the uncertainties of natural frequency (Hz) and damping
+// ratio over all steps.
+func dynamicBudgets(s *scale, all []captured) (step.Combined, *budget, *budget, error) {
+	var steps []step.Step
+	for _, c := range all {
+		steps = append(steps, c.steps...)
+	}
+	combined := step.Combine(steps)
+	frequency, damping := &budget{}, &budget{}
+	if !combined.Determined {
+		return combined, frequency, damping, nil
+	}
+	share, zeta, err := edgeShift(s, all, combined)
+	if err != nil {
+		return combined, frequency, damping, err
+	}
+	fn := combined.Frequency.Value
+	name := fmt.Sprintf("the fits and the spread of %d steps", combined.Steps)
+	frequency.add(name, fromRun, studentT, "Hz", combined.Frequency.StandardUncertainty, 1, combined.DegreesOfFreedom)
+	frequency.add("sample period, tolerance", fromBench, rectangular, "1", s.periodTolerance/math.Sqrt(3), fn, 0)
+	frequency.add("valve edge, tolerance", fromBench, rectangular, "1", share/math.Sqrt(3), fn, 0)
+	damping.add(name, fromRun, studentT, "1", combined.Damping.StandardUncertainty, 1, combined.DegreesOfFreedom)
+	damping.add("valve edge, tolerance", fromBench, rectangular, "1", zeta/math.Sqrt(3), 1, 0)
+	return combined, frequency, damping, nil
+}
+
+// traces cuts each capture down to what a chart shows: from a little before
+// the edge until the answer has settled.
+func traces(all []captured) []StepTrace {
+	out := []StepTrace{}
+	for _, c := range all {
+		for _, st := range c.steps {
+			rate := c.trace.Rate
+			edge := int(math.Round((st.At - c.trace.Start) * rate))
+			shown := 0.4
+			if st.Determined {
+				shown = math.Max(0.1, math.Min(1, 5/(st.Frequency.Value*math.Min(1, st.Damping.Value+0.15))))
+			}
+			from := max(0, edge-int(0.2*shown*rate))
+			to := min(len(c.trace.Pressure), edge+int(shown*rate))
+			if to-from > 2000 || to <= from {
+				to = min(len(c.trace.Pressure), from+2000)
+			}
+			t := StepTrace{Number: c.Number, Start: rounded(float64(from)/rate + c.trace.Start - st.At), Period: 1 / rate, Measured: []float64{}, Fitted: []float64{}}
+			for i := from; i < to; i++ {
+				t.Measured = append(t.Measured, rounded(c.trace.Pressure[i]))
+			}
+			if st.Determined && st.From <= from && st.To >= to {
+				for i := from; i < to; i++ {
+					t.Fitted = append(t.Fitted, rounded(st.Fitted[i-st.From]))
+				}
+			}
+			out = append(out, t)
+		}
+	}
+	return out
+}
+
+// rounded keeps four decimals, which is more than a chart shows.
+func rounded(x float64) float64 { return math.Round(x*1e4) / 1e4 }
