@@ -37,6 +37,8 @@ func TestRefusals(t *testing.T) {
 	corrections := "\n[[reference.certificate.correction]]\n"
 	firstCorrection := good[strings.Index(good, corrections):]
 	firstCorrection = firstCorrection[:strings.Index(firstCorrection[1:], corrections)+1]
+	uncertainties := good[strings.Index(good, "\nuncertainty = "):]
+	uncertainties = uncertainties[:strings.Index(uncertainties, "\n\n")+1]
 	resolution := "resolution = \"0.01 mmHg\"\n"
 	for _, c := range []struct{ from, to, text, hint string }{
 		{`schema = "kymobench/bench/1"`, `schema = «"kymobench/bench/2"`, `"kymobench/bench/2" is no schema`, `did you mean "kymobench/bench/1"?`},
@@ -63,6 +65,9 @@ func TestRefusals(t *testing.T) {
 		{`answer_within = "1 s"`, `answer_within = «"0 s"`, `an answer is waited for between 1 ms and 60 s`, ""},
 		{`unit = "mmHg"`, `unit = «"uV"`, `"uV" is no unit of the quantity wanted here`, ""},
 		{resolution, `resolution = «"0 mmHg"` + "\n", `resolution is not above zero`, ""},
+		{`range_low = "`, `range_low = «"1000 mmHg" # "`, `the lowest pressure of the range is not below the highest`, ""},
+		{uncertainties, "\nuncertainty = «\"0 mmHg\"\nuncertainty_of_reading = \"0 %\"\n", `a certificate without any uncertainty`, ""},
+		{`width = 8`, "separator = \";\"\ncolumn = «-1", `columns are counted from 0 to 64`, ""},
 		{`response_time = "0.3 s"`, `response_time = «"-0.3 s"`, `response_time is below zero`, ""},
 		{`response_time_tolerance = "0.1 s"`, `response_time_tolerance = «"-0.1 s"`, `response_time_tolerance is below zero`, ""},
 		{`date = "2026-03-02"`, `date = «2026-03-02`, `key "date" takes text in quotes, not a date or time`, `write the date in quotes: date = "2026-03-02"`},
