@@ -131,6 +131,38 @@ func TestStale(t *testing.T) {
 	if a, err := l.Ask(ctx, "B?", time.Second); err != nil || a.Text != "b" || l.Stale() != 3 {
 		t.Errorf("%+v, %v, %d stale", a, err, l.Stale())
 	}
+	inbox, _, l = table(&teller{script: map[string][]said{"B?": {{10 * ms, "lf\nb\n"}}}}, Settings{})
+	inbox.Post(0, Event{Kind: KindBytes, Port: 1, Data: []byte("ha")})
+	if err := l.Send(ctx, "X", time.Second); err != nil {
+		t.Fatal(err)
+	}
+	if a, err := l.Ask(ctx, "B?", time.Second); err != nil || a.Text != "b" || l.Stale() != 1 {
+		t.Errorf("both in one piece: %+v, %v, %d stale", a, err, l.Stale())
+	}
+}
+
+// The end of somebody else's write is not the end of the question's.
+func TestOtherWrite(t *testing.T) {
+	inbox, _, l := table(&teller{script: map[string][]said{"A?": {{10 * ms, "a\n"}}}}, Settings{})
+	inbox.Post(0, Event{Kind: KindWritten, Port: 1, Number: 1000, Err: ErrGone})
+	if a, err := l.Ask(context.Background(), "A?", time.Second); err != nil || a.Text != "a" {
+		t.Errorf("%+v, %v", a, err)
+	}
+}
+
+// Half a line that was left behind does not spoil what comes after a Resync,
+// which needs to ask only once.
+func TestResyncDropsHalfALine(t *testing.T) {
+	m := &teller{script: map[string][]said{"A?": {{10 * ms, "ha"}}, "WHO?": {{ms, "me\n"}}}}
+	_, _, l := table(m, Settings{})
+	ctx := context.Background()
+	if _, err := l.Ask(ctx, "A?", time.Second); !errors.Is(err, ErrDeadline) {
+		t.Fatal(err)
+	}
+	err := l.Resync(ctx, "WHO?", func(s string) bool { return s == "me" })
+	if want := []string{"A?", "WHO?"}; err != nil || l.Stale() != 1 || !reflect.DeepEqual(m.heard, want) {
+		t.Errorf("%v, %d stale, heard %q", err, l.Stale(), m.heard)
+	}
 }
 
 // Bytes that a real inbox posted before the question, and that are taken after
@@ -149,15 +181,17 @@ func TestEcho(t *testing.T) {
 		"SET 1": {{ms, "SET 1\r\n"}},
 		"A?":    {{ms, "A?\r\n"}, {5 * ms, "a\n"}},
 		"B?":    {{ms, "b\n"}},
+		"C?":    {{ms, "C?\r\nB?\n"}},
 	}
 	_, _, l := table(&teller{script: script}, Settings{Echo: true})
 	ctx := context.Background()
 	if err := l.Send(ctx, "SET 1", time.Second); err != nil {
 		t.Fatal(err)
 	}
-	for q, want := range map[string]string{"A?": "a", "B?": "b"} {
-		if a, err := l.Ask(ctx, q, time.Second); err != nil || a.Text != want || l.Stale() != 0 {
-			t.Errorf("%s: %+v, %v, %d stale", q, a, err, l.Stale())
+	// B? is not echoed, and C?'s answer looks like the echo that was missing.
+	for _, c := range []struct{ question, want string }{{"A?", "a"}, {"B?", "b"}, {"C?", "B?"}} {
+		if a, err := l.Ask(ctx, c.question, time.Second); err != nil || a.Text != c.want || l.Stale() != 0 {
+			t.Errorf("%s: %+v, %v, %d stale", c.question, a, err, l.Stale())
 		}
 	}
 	_, _, l = table(&teller{script: script}, Settings{})
@@ -174,7 +208,13 @@ func TestOtherPort(t *testing.T) {
 	l2 := e.Open(2, Settings{Name: "uut on port 2"})
 	count, over := 0, errors.New("over pressure")
 	var fail error
-	l2.OnFrame(func(f Frame) error { count++; return fail })
+	l2.OnFrame(func(f Frame) error {
+		count++
+		if fail != nil && string(f.Data) == "2" {
+			return errors.New("another")
+		}
+		return fail
+	})
 	ctx := context.Background()
 	if a, err := l.Ask(ctx, "A?", 2*time.Second); err != nil || a.Text != "a" {
 		t.Fatalf("%+v, %v", a, err)
@@ -215,6 +255,14 @@ func TestGone(t *testing.T) {
 		if !errors.Is(err, ErrGone) || inbox.Now() != Instant(100*ms) {
 			t.Errorf("%s: %v at %v", what, err, inbox.Now())
 		}
+	}
+}
+
+func TestGoneDuringSend(t *testing.T) {
+	inbox, _, l := table(&teller{}, Settings{})
+	inbox.Post(0, Event{Kind: KindGone, Port: 1})
+	if err := l.Send(context.Background(), "A", time.Second); !errors.Is(err, ErrGone) || inbox.Now() != 0 {
+		t.Errorf("%v at %v", err, inbox.Now())
 	}
 }
 
@@ -285,7 +333,8 @@ func TestOverflow(t *testing.T) {
 }
 
 func TestNoWaitInside(t *testing.T) {
-	inbox, e, l := table(&teller{}, Settings{})
+	m := &teller{}
+	inbox, e, l := table(m, Settings{})
 	ctx := context.Background()
 	e.Handle(KindStop, func(Event) error {
 		_, ask := l.Ask(ctx, "A?", time.Second)
@@ -295,6 +344,9 @@ func TestNoWaitInside(t *testing.T) {
 	err := e.Wait(ctx, Instant(time.Second), func() bool { return false })
 	if joined, ok := err.(interface{ Unwrap() []error }); !ok || len(joined.Unwrap()) != 3 || !errors.Is(err, ErrInside) {
 		t.Errorf("waited inside a handler: %v", err)
+	}
+	if err := e.Wait(ctx, Instant(time.Second), func() bool { return false }); !errors.Is(err, ErrDeadline) || len(m.heard) > 0 {
+		t.Errorf("%v, heard %q", err, m.heard)
 	}
 }
 

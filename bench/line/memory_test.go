@@ -75,3 +75,20 @@ func TestMemoryRefusals(t *testing.T) {
 		t.Errorf("cancelled: %+v, %v", e, err)
 	}
 }
+
+// At one instant a posted event comes before a machine's output, which may
+// then know of it; and a caller may use its bytes again after Send.
+func TestMemoryOneInstant(t *testing.T) {
+	m := NewMemory(time.Time{})
+	m.Connect(1, &echo{after: ms}, MemoryOptions{Transit: ms})
+	mine := []byte("hello")
+	m.Send(1, mine)
+	copy(mine, "spoil")
+	m.Post(2*ms, Event{Kind: KindAnswer})
+	for i, want := range []Kind{KindWritten, KindAnswer, KindBytes} {
+		e, err := m.Next(context.Background(), Instant(time.Second))
+		if err != nil || e.Kind != want || e.Kind == KindBytes && string(e.Data) != "hello" {
+			t.Errorf("event %d: %+v, %v", i, e, err)
+		}
+	}
+}

@@ -121,15 +121,14 @@ func (c *connection) leave(err error) {
 
 func (c *connection) write() {
 	defer close(c.writeEnded)
-	for {
+	for !c.stopped() { // which a select would weigh equally with a write
 		select {
 		case w := <-c.writes:
 			c.carryOut(w)
 		case <-c.quit:
-			c.finish()
-			return
 		}
 	}
+	c.finish()
 }
 
 // finish deals with the writes that still wait: of a port that is gone they

@@ -5,6 +5,7 @@ import (
 	"context"
 	"errors"
 	"io"
+	"strings"
 	"sync"
 	"testing"
 	"testing/synctest"
@@ -76,6 +77,15 @@ func closed(t *testing.T, r *Real) {
 	t.Helper()
 	if err := errors.Join(r.Close(), r.Close()); err != nil {
 		t.Error(err)
+	}
+	for {
+		e, err := r.Next(context.Background(), r.Now())
+		if err != nil {
+			return
+		}
+		if e.Kind == KindGone {
+			t.Errorf("a port that was closed is told to be gone: %+v", e)
+		}
 	}
 }
 
@@ -240,6 +250,56 @@ func TestRealGone(t *testing.T) {
 	})
 }
 
+// What waits to be written to a port that goes away is reported as not written.
+func TestRealGoneWithWrites(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		r, c := NewReal(), newCable()
+		c.block = make(chan struct{})
+		if err := r.Attach(1, c); err != nil {
+			t.Fatal(err)
+		}
+		for range 20 {
+			r.Send(1, []byte("x"))
+		}
+		close(c.in)
+		if e := next(t, r, time.Second); e.Kind != KindGone {
+			t.Errorf("%+v", e)
+		}
+		close(c.block)
+		for n := range 20 {
+			e := next(t, r, time.Second)
+			if e.Kind != KindWritten || e.Number != int64(n+1) || n > 0 && !errors.Is(e.Err, ErrGone) {
+				t.Errorf("%+v", e)
+			}
+		}
+		closed(t, r)
+	})
+}
+
+// Bytes wait in the inbox unchanged, and a caller may use its own again.
+func TestRealCopies(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		r, c := NewReal(), newCable()
+		defer closed(t, r)
+		if err := r.Attach(1, c); err != nil {
+			t.Fatal(err)
+		}
+		c.in <- []byte("one")
+		c.in <- []byte("two")
+		synctest.Wait()
+		if a, b := next(t, r, 0), next(t, r, 0); string(a.Data) != "one" || string(b.Data) != "two" {
+			t.Errorf("%q, %q", a.Data, b.Data)
+		}
+		mine := []byte("three")
+		r.Send(1, mine)
+		copy(mine, "spoil")
+		synctest.Wait()
+		if c.written() != "three" {
+			t.Errorf("%q", c.written())
+		}
+	})
+}
+
 // spinner is a port whose reads come back at once, as an unplugged one's may.
 type spinner struct {
 	*cable
@@ -290,7 +350,9 @@ func TestRealBlockedWrite(t *testing.T) {
 		if err := source.Send(ctx, "VENT", time.Second); !errors.Is(err, ErrCrowded) {
 			t.Errorf("%v", err)
 		}
-		other.Fire("OPEN AGAIN")
+		for range 20 {
+			other.Fire("AGAIN")
+		}
 		begun := r.Now()
 		if err := r.Close(); !errors.Is(err, ErrBlocked) {
 			t.Errorf("%v", err)
@@ -298,7 +360,7 @@ func TestRealBlockedWrite(t *testing.T) {
 		if took := r.Now().Sub(begun); took != writesWithin+endsWithin {
 			t.Errorf("closing took %v", took)
 		}
-		if got := valve.written(); got != "OPEN\nOPEN AGAIN\n" {
+		if got := valve.written(); got != "OPEN\n"+strings.Repeat("AGAIN\n", 20) {
 			t.Errorf("the valve heard %q", got)
 		}
 		if stuck.closes != 1 || valve.closes != 1 {

@@ -53,6 +53,7 @@ func TestWatch(t *testing.T) {
 		uvv  float64
 		at   time.Duration
 		bad  bool
+		long bool
 	}
 	var all []got
 	m := &stream{every: 16 * time.Millisecond, bursts: []string{
@@ -68,14 +69,14 @@ func TestWatch(t *testing.T) {
 		if r.Sent != r.At {
 			t.Errorf("sent at %v, came at %v", r.Sent, r.At)
 		}
-		all = append(all, got{r.Text, r.Value.Stated, time.Duration(r.At), err != nil})
+		all = append(all, got{r.Text, r.Value.Stated, time.Duration(r.At), err != nil, errors.Is(err, ErrLong)})
 		return nil
 	})
 	ms := time.Millisecond
 	want := []got{
-		{"+1500.02", 1500.02, 0, false}, {"-0000.50", -0.5, 16 * ms, false},
-		{"+150.02", 0, 16 * ms, true}, {"+15X0.02", 0, 16 * ms, true}, {"", 0, 32 * ms, true},
-		{"+0001.00", 1, 48 * ms, false},
+		{"+1500.02", 1500.02, 0, false, false}, {"-0000.50", -0.5, 16 * ms, false, false},
+		{"+150.02", 0, 16 * ms, true, false}, {"+15X0.02", 0, 16 * ms, true, false}, {"", 0, 32 * ms, true, true},
+		{"+0001.00", 1, 48 * ms, false, false},
 	}
 	if !errors.Is(err, line.ErrDeadline) || !reflect.DeepEqual(all, want) {
 		t.Errorf("%v\n got %v\nwant %v", err, all, want)
