@@ -152,7 +152,8 @@ func (l *loader) static(d *Definition, i int) Static {
 	if l.err == nil {
 		l.demand(s.SetPressures[1] > s.SetPressures[0], "the first leg does not go up", "", "stage", i, "set_pressures", 1)
 		top := slices.Max(s.SetPressures)
-		l.demand(top+s.Window <= d.Highest, "the window at the top reaches beyond the highest pressure", "", "stage", i, "window")
+		const bits = 1e-9 // sums of decimals in pascals: 300 + 2 mmHg is not quite 302 mmHg
+		l.demand(top+s.Window <= d.Highest*(1+bits), "the window at the top reaches beyond the highest pressure", "", "stage", i, "window")
 	}
 	return s
 }

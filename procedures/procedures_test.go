@@ -3,6 +3,7 @@ package procedures
 import (
 	"errors"
 	"math"
+	"reflect"
 	"strings"
 	"testing"
 
@@ -96,17 +97,50 @@ func TestLoadRefuses(t *testing.T) {
 	}
 }
 
+// No input makes Load panic; what it takes is finite, in order and judgeable,
+// and the same again from its own Source.
 func FuzzLoad(f *testing.F) {
 	d, err := Shipped("incoming")
 	if err != nil {
 		f.Fatal(err)
 	}
 	f.Add(d.Source)
+	f.Add([]byte(strings.Replace(string(d.Source), `"four_outcome"`+"\nguard_factor = 1.0", `"simple"`, 1)))
+	f.Add([]byte(strings.ReplaceAll(string(d.Source), `300 mmHg"`, `40 kPa"`)))
+	f.Add([]byte(strings.Replace(string(d.Source), `highest = "310 mmHg"`, `highest = "1e308 kPa"`, 1)))
 	f.Fuzz(func(t *testing.T, data []byte) {
 		d, err := Load("my.toml", data)
 		var e *tomlfile.Error
-		if err != nil && (!errors.As(err, &e) || d != nil) {
-			t.Fatalf("refused as %v with %v", err, d)
+		if err != nil {
+			if !errors.As(err, &e) || d != nil || e.Text == "" || len(e.Text) > 2000 {
+				t.Fatalf("refused as %v with %v", err, d)
+			}
+			return
+		}
+		again, err := Load("my.toml", d.Source)
+		if err != nil || !reflect.DeepEqual(d, again) {
+			t.Fatalf("another procedure from its own source: %v", err)
+		}
+		finite := func(x float64) {
+			if math.IsNaN(x) || math.IsInf(x, 0) {
+				t.Fatalf("%q holds %v", data, x)
+			}
+		}
+		finite(float64(d.Highest))
+		finite(float64(d.Lowest))
+		if len(d.Limits) == 0 || len(d.Stages) == 0 || d.HighestPressure() > d.Highest {
+			t.Fatalf("%q: %+v", data, d)
+		}
+		for _, l := range d.Limits {
+			low, high := l.At(d.Highest)
+			if low == nil && high == nil || low != nil && high != nil && *low >= *high || l.Origin == "" {
+				t.Fatalf("limit %+v", l)
+			}
+			for _, side := range []*float64{low, high, &l.Resolution} {
+				if side != nil {
+					finite(*side)
+				}
+			}
 		}
 	})
 }

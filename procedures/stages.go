@@ -53,7 +53,7 @@ type Static struct {
 	Overshoot    quantity.Pressure // a wrong-side approach beyond this is told and kept out of hysteresis
 
 	// A point is ready by the difference rule (package ready).
-	ShareOfLimit        float64           // slope times lag may be this fraction of the accuracy limit
+	ShareOfLimit        float64           // slope times lag may be this fraction of the accuracy limit where that is smallest
 	StandardUncertainty quantity.Pressure // asked of the mean difference
 	LeastReadings       int               // of the reference
 	LongestWait         time.Duration     // for one point

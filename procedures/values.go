@@ -1,17 +1,27 @@
 package procedures
 
 import (
+	"errors"
 	"fmt"
+	"math"
 	"time"
 
 	"kymobench/bench/quantity"
 )
 
-func parsePressure(s string) (quantity.Pressure, error) { return quantity.ParsePressure(s) }
+func parsePressure(s string) (quantity.Pressure, error) { return finite(quantity.ParsePressure(s)) }
+
+// finite refuses what is beyond every number once it is in SI: "1e308 kPa".
+func finite[Q ~float64](x Q, err error) (Q, error) {
+	if err == nil && math.IsInf(float64(x), 0) {
+		return 0, errors.New("a number that is too large")
+	}
+	return x, err
+}
 
 // parseRate takes a fall of pressure per second.
 func parseRate(s string) (quantity.Pressure, error) {
-	r, err := quantity.ParsePressureRate(s)
+	r, err := finite(quantity.ParsePressureRate(s))
 	return quantity.Pressure(r), err
 }
 
@@ -26,7 +36,7 @@ func parseSpan(s string) (time.Duration, error) {
 // parseShare takes "3 %" or "0.03 1" and gives 0.03.
 func parseShare(s string) (float64, error) {
 	v, err := quantity.ParseAs(s, quantity.DimNone)
-	return v.SI, err
+	return finite(v.SI, err)
 }
 
 // limitValue is the parser for values of a limit: in the limit's own unit
@@ -45,6 +55,6 @@ func limitValue(name LimitName) func(string) (float64, error) {
 		if err != nil {
 			return 0, err
 		}
-		return v.In(unit)
+		return finite(v.In(unit))
 	}
 }

@@ -163,8 +163,8 @@ func Load(name string, data []byte) (*File, error) {
 	if l.err != nil {
 		return nil, l.err
 	}
-	f.Highest = tomlfile.Take(doc, &l.err, quantity.ParsePressure, "pressure", "highest")
-	f.Lowest = tomlfile.Take(doc, &l.err, quantity.ParsePressure, "pressure", "lowest")
+	f.Highest = l.pressure("pressure", "highest")
+	f.Lowest = l.pressure("pressure", "lowest")
 	l.demand(f.Lowest <= 0 && f.Highest > 0, "lowest to highest does not hold atmosphere, where every run begins", "", "pressure", "lowest")
 	f.Volume = tomlfile.TakeIf(doc, &l.err, millilitres, "pressure", "volume")
 	l.reference(f)
@@ -276,9 +276,7 @@ func (l *loader) reference(f *File) {
 	r.ResponseTimeTolerance = l.widthIf(quantity.DimSpan, "reference", "response_time_tolerance")
 	r.RangeLow = l.stated(quantity.DimPressure, "reference", "range_low")
 	r.RangeHigh = l.stated(quantity.DimPressure, "reference", "range_high")
-	low := l.optional(quantity.DimPressure, "reference", "range_low")
-	high := l.optional(quantity.DimPressure, "reference", "range_high")
-	l.demand(low < high, "the lowest pressure of the range is not below the highest", "", "reference", "range_low")
+	l.demand(l.pressure("reference", "range_low") < l.pressure("reference", "range_high"), "the lowest pressure of the range is not below the highest", "", "reference", "range_low")
 	r.Height = l.stated(quantity.DimLength, "reference", "height")
 	if l.err == nil && in.Certificate == nil {
 		l.refuse(l.doc.Missing("a table [reference.certificate]: without it nothing can be judged", "reference", "certificate"))
@@ -304,8 +302,8 @@ func (l *loader) certificate(in *certificateTable, out *Certificate) {
 	var before quantity.Pressure
 	for i, p := range in.Corrections {
 		point := func(key string) []any { return []any{"reference", "certificate", "correction", i, key} }
-		here := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, point("at")...)
-		tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, point("correction")...)
+		here := l.pressure(point("at")...)
+		l.pressure(point("correction")...)
 		l.demand(i == 0 || here > before, "corrections stand in the order of rising pressure", "", point("at")...)
 		before = here
 		out.Corrections = append(out.Corrections, Correction{p.At, p.Correction})

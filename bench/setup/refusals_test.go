@@ -49,6 +49,7 @@ func TestRefusals(t *testing.T) {
 		{`[pressure]`, `[«presure]`, `unknown table "presure"`, `did you mean "pressure"?`},
 		{`highest = "330 mmHg"`, `highest = «330`, `key "highest" takes text in quotes, not a whole number`, `write it in quotes, with its unit if it has one: "330 mmHg"`},
 		{`highest = "330 mmHg"`, `highest = «"330 s"`, `"330 s": s is a unit of something else`, ""},
+		{`highest = "330 mmHg"`, `highest = «"1e308 kPa"`, `a number that is too large`, ""},
 		{`highest = "330 mmHg"`, `highest = «"900 mmHg"`, `the highest pressure is above the reference's range: nobody would see it`, ""},
 		{`lowest = "-30 mmHg"`, `lowest = «"5 mmHg"`, `lowest to highest does not hold atmosphere, where every run begins`, ""},
 		{`lowest = "-30 mmHg"`, `lowest = «"-300 mmHg"`, `the lowest pressure is below the reference's range: nobody would see it`, ""},

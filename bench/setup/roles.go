@@ -1,7 +1,9 @@
 package setup
 
 import (
+	"errors"
 	"fmt"
+	"math"
 	"strings"
 
 	"kymobench/bench/quantity"
@@ -110,8 +112,7 @@ func (l *loader) together(f *File) {
 	if l.err != nil {
 		return
 	}
-	high := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, "reference", "range_high")
-	low := tomlfile.Take(l.doc, &l.err, quantity.ParsePressure, "reference", "range_low")
+	high, low := l.pressure("reference", "range_high"), l.pressure("reference", "range_low")
 	l.demand(f.Highest <= high, "the highest pressure is above the reference's range: nobody would see it", "", "pressure", "highest")
 	l.demand(f.Lowest >= low, "the lowest pressure is below the reference's range: nobody would see it", "", "pressure", "lowest")
 	ports := map[string]string{}
@@ -144,7 +145,7 @@ func (l *loader) text(path ...any) string {
 // stated takes a value with a unit of the dimension, and keeps its text.
 func (l *loader) stated(d quantity.Dimension, path ...any) string {
 	return tomlfile.Take(l.doc, &l.err, func(s string) (string, error) {
-		_, err := quantity.ParseAs(s, d)
+		_, err := parsed(s, d)
 		return s, err
 	}, path...)
 }
@@ -172,10 +173,26 @@ func (l *loader) widthIf(d quantity.Dimension, path ...any) string {
 
 // optional parses a value that may be absent, which gives 0.
 func (l *loader) optional(d quantity.Dimension, path ...any) float64 {
-	return tomlfile.TakeIf(l.doc, &l.err, func(s string) (float64, error) {
-		v, err := quantity.ParseAs(s, d)
-		return v.SI, err
-	}, path...)
+	return tomlfile.TakeIf(l.doc, &l.err, func(s string) (float64, error) { return parsed(s, d) }, path...)
+}
+
+// parsed gives a value in SI, and refuses what is beyond every number there:
+// "1e308 kPa", which would never be exceeded.
+func parsed(s string, d quantity.Dimension) (float64, error) {
+	v, err := quantity.ParseAs(s, d)
+	if err != nil {
+		return 0, err
+	}
+	if math.IsInf(v.SI, 0) {
+		return 0, errors.New("a number that is too large")
+	}
+	return v.SI, nil
+}
+
+// pressure takes a pressure that is there.
+func (l *loader) pressure(path ...any) quantity.Pressure {
+	l.stated(quantity.DimPressure, path...)
+	return quantity.Pressure(l.optional(quantity.DimPressure, path...))
 }
 
 // check refuses a text that is empty, framed by blanks or too long.

@@ -1,7 +1,10 @@
 package setup
 
 import (
+	"bytes"
 	"errors"
+	"math"
+	"reflect"
 	"strings"
 	"testing"
 
@@ -65,17 +68,33 @@ func TestLoadRefuses(t *testing.T) {
 	}
 }
 
+// No input makes Load panic; what it takes can be watched and is the same again
+// from its own Source.
 func FuzzLoad(f *testing.F) {
 	b, err := simulated.New(simulated.Settings{Seed: 1})
 	if err != nil {
 		f.Fatal(err)
 	}
-	f.Add(b.BenchFile(nil))
+	good := b.BenchFile(nil)
+	f.Add(good)
+	f.Add(bytes.ReplaceAll(good, []byte(`"uV/V"`), []byte(`"mmHg"`)))
+	f.Add(bytes.ReplaceAll(good, []byte(`00 mmHg"`), []byte(`e306 kPa"`)))
+	f.Add(bytes.ReplaceAll(good, []byte("\n"), []byte("\r\n")))
 	f.Fuzz(func(t *testing.T, data []byte) {
 		file, err := Load("bench.toml", data)
 		var e *tomlfile.Error
-		if err != nil && (!errors.As(err, &e) || file != nil) {
-			t.Fatalf("refused as %v with %v", err, file)
+		if err != nil {
+			if !errors.As(err, &e) || file != nil || e.Text == "" || len(e.Text) > 2000 {
+				t.Fatalf("refused as %v with %v", err, file)
+			}
+			return
+		}
+		again, err := Load("bench.toml", file.Source)
+		if err != nil || !reflect.DeepEqual(file, again) {
+			t.Fatalf("another bench from its own source: %v", err)
+		}
+		if !(file.Lowest <= 0 && file.Highest > 0) || math.IsInf(float64(file.Highest-file.Lowest), 0) || file.Pressure.Vent == "" || file.Valve.Release == "" {
+			t.Fatalf("%q: %+v", data, file)
 		}
 	})
 }
