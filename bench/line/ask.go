@@ -94,6 +94,7 @@ func (l *Line) ask(ctx context.Context, question string, within time.Duration) (
 	case l.engine.inside || l.asked != nil:
 		return Answer{}, l.wrong("read", ErrInside)
 	}
+	l.settings.Latency = max(l.settings.Latency, within)
 	a := &asked{sent: l.engine.Now()}
 	a.number = l.write(question)
 	l.asked = a

@@ -176,6 +176,20 @@ func TestPostedBefore(t *testing.T) {
 	}
 }
 
+// An instrument that is given 8 s for an answer is given them by Resync too.
+func TestResyncIsAsPatientAsAsk(t *testing.T) {
+	m := &teller{script: map[string][]said{"SLOW?": {{11 * time.Second, "slow\n"}}, "WHO?": {{ms, "me\n"}}}}
+	_, _, l := table(m, Settings{})
+	ctx := context.Background()
+	if _, err := l.Ask(ctx, "SLOW?", 8*time.Second); !errors.Is(err, ErrDeadline) {
+		t.Fatal(err)
+	}
+	err := l.Resync(ctx, "WHO?", func(s string) bool { return s == "me" })
+	if want := []string{"SLOW?", "WHO?"}; err != nil || l.Stale() != 1 || !reflect.DeepEqual(m.heard, want) {
+		t.Errorf("%v, %d stale, heard %q", err, l.Stale(), m.heard)
+	}
+}
+
 func TestEcho(t *testing.T) {
 	script := map[string][]said{
 		"SET 1": {{ms, "SET 1\r\n"}},

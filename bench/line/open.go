@@ -14,8 +14,9 @@ type Settings struct {
 	// Echo: the far end sends back what it is sent, and only then is a line
 	// equal to the bytes sent passed over.
 	Echo bool
-	// Latency is the longest that an answer can be under way; 0 is 2 s. Resync
-	// waits for longer than that.
+	// Latency is the longest that an answer can be under way; 0 is 2 s, and it
+	// is never less than the longest time that Ask has waited. Resync waits for
+	// longer than that.
 	Latency time.Duration
 }
 
