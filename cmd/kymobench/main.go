@@ -10,12 +10,12 @@ import (
 )
 
 func main() {
-	os.Exit(run(os.Args[1:], streams{in: os.Stdin, out: os.Stdout, err: os.Stderr}))
+	os.Exit(command(os.Args[1:], streams{in: os.Stdin, out: os.Stdout, err: os.Stderr}))
 }
 
-// run carries the command out; a signal ends its context, and a second one the
+// command carries the command line out; a signal ends its context, and a second one the
 // process.
-func run(args []string, io streams) int {
+func command(args []string, io streams) int {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	context.AfterFunc(ctx, stop)
