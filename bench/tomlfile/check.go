@@ -6,7 +6,6 @@ import (
 	"reflect"
 	"strconv"
 	"strings"
-	"unicode/utf8"
 )
 
 // checkAgainst walks the file beside the struct it is meant for and refuses
@@ -89,10 +88,7 @@ func (d *Document) unknown(n *node, key string, known []string, path []any) *Err
 	if name := pathName(path); name != "" {
 		where = " in " + name
 	}
-	if utf8.RuneCountInString(key) > LongestIdentity {
-		key = string([]rune(key)[:LongestIdentity]) + "..."
-	}
-	return d.errorAt(n.key, fmt.Sprintf("unknown %s %q%s", what, key, where), DidYouMean(key, known))
+	return d.errorAt(n.key, fmt.Sprintf("unknown %s %q%s", what, short(key), where), DidYouMean(key, known))
 }
 
 func (d *Document) checkWhole(n *node, t reflect.Type, path []any) error {

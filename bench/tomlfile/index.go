@@ -207,9 +207,9 @@ func (d *Document) standsTwice(first *node, key string, offset int) *Error {
 	line, _ := d.position(place)
 	hint := ""
 	if first.kind == kindTable && first.named {
-		hint = fmt.Sprintf("put all its keys under one [%s]", key)
+		hint = fmt.Sprintf("put all its keys under one [%s]", short(key))
 	}
-	return d.errorAt(offset, fmt.Sprintf("key %q stands twice, first on line %d", key, line), hint)
+	return d.errorAt(offset, fmt.Sprintf("key %q stands twice, first on line %d", short(key), line), hint)
 }
 
 // find follows a path as far as it goes and tells whether that was all of it.

@@ -3,7 +3,12 @@ package tomlfile
 import (
 	"fmt"
 	"slices"
+	"unicode/utf8"
 )
+
+// longestValue is the most characters of any text that is taken, so that a
+// refusal may quote it.
+const longestValue = 400
 
 // Take parses the text at the path. A key that is missing and a text that parse
 // refuses become an *Error with its place, in *first, unless an earlier one
@@ -17,6 +22,10 @@ func Take[T any](d *Document, first *error, parse func(string) (T, error), path 
 	n, whole := d.find(path)
 	if !whole || n.kind != kindText {
 		*first = d.Missing("", path...)
+		return none
+	}
+	if count := utf8.RuneCountInString(n.text); count > longestValue {
+		*first = d.Refuse(fmt.Sprintf("key %q has %d characters, more than %d", lastKey(path), count, longestValue), "", path...)
 		return none
 	}
 	v, err := parse(n.text)
@@ -52,11 +61,7 @@ func TakeWord[T ~string](d *Document, first *error, known []T, path ...any) T {
 		for i, k := range known {
 			texts[i] = string(k)
 		}
-		text := []rune(string(word))
-		if len(text) > LongestIdentity {
-			text = append(text[:LongestIdentity:LongestIdentity], []rune("...")...)
-		}
-		*first = d.Refuse(fmt.Sprintf("%q is no %s", string(text), lastKey(path)), DidYouMean(string(word), texts), path...)
+		*first = d.Refuse(fmt.Sprintf("%q is no %s", short(string(word)), lastKey(path)), DidYouMean(string(word), texts), path...)
 	}
 	return word
 }

@@ -108,9 +108,20 @@ func (d *Document) syntaxHint(offset int, message string) string {
 	return ""
 }
 
+// short cuts a word that is quoted in a refusal.
+func short(word string) string {
+	if utf8.RuneCountInString(word) <= LongestIdentity {
+		return word
+	}
+	return string([]rune(word)[:LongestIdentity]) + "..."
+}
+
 // nearest returns the known word that a mistyped one was probably meant to be,
 // "" when none is near: at most one slip in three letters.
 func nearest(word string, known []string) string {
+	if utf8.RuneCountInString(word) > LongestIdentity {
+		return ""
+	}
 	best, least := "", max(1, utf8.RuneCountInString(word)/3)+1
 	for _, k := range known {
 		if n := slips(strings.ToLower(word), k); n < least {
