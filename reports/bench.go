@@ -66,12 +66,8 @@ func (g *gathered) instruments() []Instrument {
 		list = append(list, Instrument{Role: "Valve", Name: v.Name, Identity: identityText(v.Identity), Certificate: "needs none", Due: "\u2013"})
 	}
 	for i := range list {
-		if list[i].Name == "" {
-			list[i].Name = "not named"
-		}
-		if list[i].Certificate == "" {
-			list[i].Certificate = "none stated"
-		}
+		list[i].Name = capital(orNone(list[i].Name, "not named"))
+		list[i].Certificate = orNone(list[i].Certificate, "none stated")
 	}
 	return list
 }
@@ -121,8 +117,7 @@ func (g *gathered) overdue(date string) bool {
 func (g *gathered) conditions() []Row {
 	u, ref := g.uut, g.reference
 	var r rows
-	r.add("Ambient temperature", "not recorded in this run")
-	r.add("Barometric pressure", "not recorded; all pressures are gauge pressures against the vented zero")
+	r.add("Ambient temperature, barometer", "not recorded in this run; all pressures are gauge pressures against the vented zero")
 	if u.FluidDensity > 0 || u.Fluid != "" {
 		density := ""
 		if u.FluidDensity > 0 {
@@ -156,9 +151,18 @@ func (g *gathered) conditions() []Row {
 		r.add("Response time of the reference", quantityText(ref.ResponseTime))
 	}
 	r.add("Reference switched on", g.uptime())
+	var zeroed []string
 	for _, z := range g.zeroings {
-		r.add("Zeroed: "+roleText(z.Role), "by "+map[string]string{"device": "its own zero function", "arithmetic": "arithmetic, from the reading before zeroing"}[z.How])
+		how := z.How
+		switch how {
+		case "device":
+			how = "its own zero function"
+		case "arithmetic":
+			how = "arithmetic, from the reading before zeroing"
+		}
+		zeroed = append(zeroed, roleText(z.Role)+" by "+how)
 	}
+	r.add("Zeroed", strings.Join(zeroed, "; "))
 	return r
 }
 
@@ -275,9 +279,11 @@ func before(word, text string) string {
 	return word + quantityText(text)
 }
 
-func orUnknown(text string) string {
+func orUnknown(text string) string { return orNone(text, "not stated") }
+
+func orNone(text, none string) string {
 	if text == "" {
-		return "not stated"
+		return none
 	}
 	return text
 }

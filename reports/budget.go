@@ -41,10 +41,14 @@ func (d *Document) budgets(limits []results.Limit) {
 	}
 }
 
-// dof prints degrees of freedom; none stated are infinitely many.
+// dof prints degrees of freedom; none stated are infinitely many, and from ten
+// thousand on nobody can tell the difference.
 func dof(n *float64) string {
 	if n == nil {
 		return "∞"
+	}
+	if *n >= 1e4 {
+		return "> 9999"
 	}
 	return significant(*n, 3)
 }

@@ -4,13 +4,14 @@ import (
 	"fmt"
 	"math"
 	"strings"
+	"time"
 
 	"kymobench/procedures/results"
 )
 
 // reservations are all that weakens a result: of the run, of the static
 // figures, of the steps, and what the record itself shows. None is left out.
-func (g *gathered) reservations(res results.Results) []Reservation {
+func (g *gathered) reservations(res results.Results, signed time.Time) []Reservation {
 	var list []Reservation
 	seen := map[string]bool{}
 	add := func(about, text string) {
@@ -46,6 +47,9 @@ func (g *gathered) reservations(res results.Results) []Reservation {
 	}
 	if g.readout != nil && g.overdue(g.readout.Due) {
 		add("bench", "the certificate of the readout was due on "+g.readout.Due+", before this run")
+	}
+	if signed.Before(g.last.Truncate(time.Second)) {
+		add("signature", "by the clocks used, it was signed before the record was closed")
 	}
 	return list
 }

@@ -214,7 +214,7 @@ func New(events []record.Event, head record.Head, res results.Results, layout in
 	d.budgets(res.Limits)
 	d.Instruments, d.Conditions, d.Procedure = g.instruments(), g.conditions(), g.procedureRows()
 	d.Deviations = g.deviations()
-	d.Reservations = g.reservations(res)
+	d.Reservations = g.reservations(res, made)
 	d.NotTested = g.notTested(res)
 	d.Warnings, d.Scope = warnings(), scope(d.Simulated)
 	d.Signature = Signature{

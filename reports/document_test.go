@@ -157,6 +157,12 @@ func TestAllReservations(t *testing.T) {
 		"record: The record was taken up again after it had been left open; 17 bytes of an unfinished line were set aside.",
 		"bench: The certificate of the reference was due on 2025-12-31, before this run.",
 	}
+	late := signed(events)
+	late.Time = "2026-01-02T03:04:05Z"
+	d, err := New(events, headOf(events), results.Results{}, 1, late)
+	if err != nil || d.Reservations[len(d.Reservations)-1].About != "signature" {
+		t.Errorf("signed before the record was closed: %v, %v", err, d)
+	}
 	if strings.Join(got, "\n") != strings.Join(want, "\n") {
 		t.Errorf("reservations\n%s\nwant\n%s", strings.Join(got, "\n"), strings.Join(want, "\n"))
 	}

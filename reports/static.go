@@ -119,7 +119,7 @@ func (d *Document) leak(l *results.Leak) {
 		return
 	}
 	var r rows
-	r.add("Shut off at", withUnit(stated(l.Set), "mmHg")+" for "+withUnit(stated(l.Seconds), "s"))
+	r.add("Shut off at", withUnit(stated(l.Set), "mmHg")+" for "+withUnit(decimal(l.Seconds, -1), "s"))
 	if l.Rate != nil {
 		v, u := figure(*l.Rate, l.Expanded, 0.001)
 		text := plusMinus(v, u, "mmHg/s")

@@ -103,10 +103,8 @@ func (p *paper) back() {
 	p.need(14)
 	p.paragraph(left, width, "Additions to, deviations and exclusions from the procedure", bold, 8, ink())
 	p.bullets(d.Deviations, 8)
-	p.heading("Safety", 12)
-	p.bullets(d.Warnings, 7.2)
-	p.heading("Use of this report", 28)
-	p.bullets(d.Scope, 8)
+	p.running("Safety", d.Warnings, 7.5)
+	p.running("Use of this report", d.Scope, 8.2)
 	p.signature()
 }
 

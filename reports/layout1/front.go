@@ -33,10 +33,7 @@ func (p *paper) front() {
 		list = append(list, []string{r.About, r.Text})
 	}
 	table{size: 8.2, gap: 0.25, columns: []column{{w: 14}, {w: width - 14}}}.write(p, list)
-	p.font(sans, 8.2)
-	untested := strings.Join(d.NotTested, " ")
-	p.heading("Not tested", float64(len(p.wrap(untested, width)))*lead(8.2))
-	p.paragraph(left, width, untested, sans, 8.2, ink())
+	p.running("Not tested", d.NotTested, 8.2)
 }
 
 // verdict is what is read first: the word, its sign and the figure that

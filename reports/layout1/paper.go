@@ -183,11 +183,23 @@ func (p *paper) wrap(text string, w float64) []string {
 			if n < 1 {
 				break
 			}
+			n = breakBefore(runes, n)
 			lines = append(lines, string(runes[:n]))
 			current = string(runes[n:])
 		}
 	}
 	return append(lines, current)
+}
+
+// breakBefore looks for a better place than n to break a long word at: after
+// the last mark of punctuation in the second half.
+func breakBefore(runes []rune, n int) int {
+	for i := n; i > n/2; i-- {
+		if strings.ContainsRune(",;:/-_=", runes[i-1]) {
+			return i
+		}
+	}
+	return n
 }
 
 // lead is the distance of two lines of a size, in millimetres.
@@ -228,6 +240,14 @@ func (p *paper) heading(title string, room float64) {
 	p.colour(ink())
 	p.text(left+8, p.y+4.5, title)
 	p.y += 8
+}
+
+// running writes a section of sentences that run on, whole on one page.
+func (p *paper) running(title string, texts []string, size float64) {
+	text := strings.Join(texts, " ")
+	p.font(sans, size)
+	p.heading(title, min(float64(len(p.wrap(text, width)))*lead(size), bottom-top-15))
+	p.paragraph(left, width, text, sans, size, ink())
 }
 
 // bullets writes a list.

@@ -133,7 +133,7 @@ func (p *paper) mainStep(s *reports.Step, t reports.Trace) {
 		}
 	}
 	label := "Step " + strconv.Itoa(t.Number) + ", pressure in " + s.Unit
-	list := []plotted{{stepPlot(d, 7.5, 0.65), label, 54}}
+	list := []plotted{{stepPlot(d, 7.5, 0.65), label, 50}}
 	if len(d.fitted) > 0 {
 		rest := make([]float64, len(d.t))
 		for i := range rest {
@@ -146,7 +146,7 @@ func (p *paper) mainStep(s *reports.Step, t reports.Trace) {
 		pl.Add(grid(pl), plotter(func(c draw.Canvas, x, y func(float64) vg.Length) {
 			dots(c, ink(), 0.65, points(x, y, d.t, rest))
 		}))
-		list = append(list, plotted{pl, "Measured minus fitted in " + s.Unit, 23})
+		list = append(list, plotted{pl, "Measured minus fitted in " + s.Unit, 21})
 	}
 	list[len(list)-1].plot.X.Label.Text = "Time from the edge in ms"
 	p.charts(left, width, list...)
@@ -181,7 +181,7 @@ func ordinal(n int) string {
 
 // otherSteps draws the remaining steps small, four in a row.
 func (p *paper) otherSteps(s *reports.Step, first int) {
-	const gap, h, across = 4.0, 25.0, 4
+	const gap, h, across = 4.0, 22.0, 4
 	w := (width - gap*(across-1)) / across
 	n := 0
 	for i, t := range s.Traces {
@@ -228,8 +228,8 @@ func (p *paper) steps(s *reports.Step) {
 // plane draws the UUT among natural frequency and damping ratio: the limits
 // as thick lines, what they leave as a white field on grey.
 func (p *paper) plane(pl *reports.Plane) {
-	const h = 50.0
-	p.need(h + 14)
+	const h = 46.0
+	p.need(h + 9)
 	p.y += 2
 	c := pl.Combined
 	chart := newPlot(7.5)
