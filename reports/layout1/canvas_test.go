@@ -152,7 +152,7 @@ func TestImagesAreRefused(t *testing.T) {
 }
 
 func TestAppendNumber(t *testing.T) {
-	for x, want := range map[float64]string{0: "0", -0.0001: "0", 1.5: "1.5", 100: "100", -2.3456: "-2.346", 1e-9: "0", 12345.678: "12345.678"} {
+	for x, want := range map[float64]string{0: "0", -0.0001: "0", 1.5: "1.5", 100: "100", -2.3456: "-2.346", 1e-9: "0", 12345.678: "12345.678", math.Inf(1): "20000", math.NaN(): "0", -1e300: "-20000"} {
 		if got := string(appendNumber(nil, x)); got != want {
 			t.Errorf("%v: %s, want %s", x, got, want)
 		}

@@ -62,6 +62,9 @@ func (t ticks) Ticks(lo, hi float64) []plot.Tick {
 	slack := (hi - lo) * 1e-9
 	for i := math.Ceil((lo - slack) / step); i*step <= hi+slack; i++ {
 		label := strconv.FormatFloat(i*step, 'f', decimals, 64)
+		if math.Abs(i*step) >= 1e7 || decimals > 6 {
+			label = strconv.FormatFloat(i*step, 'g', 3, 64)
+		}
 		if rest, negative := strings.CutPrefix(label, "-"); negative {
 			label = "\u2212" + rest
 			if i == 0 {

@@ -88,8 +88,12 @@ func (p *paper) emit() {
 }
 
 // appendNumber writes a number as PDF wants it: no exponent, no more than
-// three decimals, no trailing zeros.
+// three decimals, no trailing zeros, nothing that is far off every page.
 func appendNumber(b []byte, x float64) []byte {
+	if x != x {
+		x = 0
+	}
+	x = min(max(x, -20000), 20000)
 	start := len(b)
 	b = strconv.AppendFloat(b, x, 'f', 3, 64)
 	end := len(b)

@@ -113,9 +113,9 @@ const (
 	limitValue   = 58.0 // the value ends here, its uncertainty begins
 	limitUnit    = 73.0
 	limitBound   = 92.0
-	limitStrip   = 115.0
+	limitStrip   = 113.0
 	stripWidth   = 15.0
-	limitOutcome = 133.0
+	limitOutcome = 130.0
 	limitRisk    = width
 )
 
@@ -167,7 +167,12 @@ func (p *paper) limit(l reports.LimitRow) {
 	names := p.wrap(l.Name, limitValue-12)
 	p.font(sans, 9)
 	bounds := p.wrap(l.Limit, limitStrip-limitBound-1)
-	words := p.wrap(l.Outcome, limitRisk-limitOutcome-11)
+	face := sans
+	if l.Outcome != "pass" {
+		face = bold
+	}
+	p.font(face, 9)
+	words := p.wrap(l.Outcome, limitRisk-limitOutcome-12.7)
 	n := max(len(names), len(bounds), len(words))
 	if l.At != "" {
 		n = max(n, len(names)+1)
@@ -192,21 +197,17 @@ func (p *paper) limit(l reports.LimitRow) {
 		p.font(sans, 9)
 		p.textRight(left+limitUnit-2, y, l.Value)
 	} else {
-		p.font(bold, 9)
+		p.fontFor(bold, 9, l.Value, 15.5)
 		p.textRight(left+limitValue-1.2, y, l.Value)
-		p.font(sans, 9)
 		if l.Expanded != "" {
+			p.fontFor(sans, 9, "± "+l.Expanded, limitUnit-limitValue-0.5)
 			p.text(left+limitValue, y, "± "+l.Expanded)
 		}
 	}
-	p.font(sans, 9)
+	p.fontFor(sans, 9, l.Unit, limitBound-limitUnit-0.5)
 	p.text(left+limitUnit, y, l.Unit)
 	for i, b := range bounds {
 		p.text(left+limitBound, y+float64(i)*lead(9), b)
-	}
-	face := sans
-	if l.Outcome != "pass" {
-		face = bold
 	}
 	p.font(face, 9)
 	for i, w := range words {

@@ -44,7 +44,11 @@ func Render(d *reports.Document, attachments []Attachment) ([]byte, error) {
 	pdf.SetCreationDate(d.Made)
 	pdf.SetModificationDate(d.Made)
 	pdf.SetTitle("Report "+d.Run, true)
-	pdf.SetAuthor(d.Department, true)
+	author := d.Department
+	if author == "" {
+		author = "Kymobench"
+	}
+	pdf.SetAuthor(author, true)
 	pdf.SetProducer("Kymobench, page layout 1", true)
 	pdf.SetAutoPageBreak(false, 0)
 	pdf.SetMargins(0, 0, 0)

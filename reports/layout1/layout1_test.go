@@ -217,6 +217,19 @@ func TestOddDocuments(t *testing.T) {
 		"long reservation": func(m *made) {
 			m.results.Reservations = []results.Reason{{Code: "x", Text: strings.Repeat("A reservation that goes on and on. ", 300)}}
 		},
+		"huge": func(m *made) {
+			for i := range m.results.Curve {
+				m.results.Curve[i].Error *= 1e306
+				m.results.Curve[i].Expanded *= 1e300
+			}
+			m.results.Limits[0].Value, m.results.Limits[0].Expanded = number(-1.5e300), number(1e299)
+			m.results.Limits[1].Value, m.results.Limits[1].Expanded = number(1.5e-300), number(1e-301)
+			m.results.Traces[0].Measured[3] = 1e308
+			m.results.Traces[0].Measured[4] = -1e308
+			m.results.Step.Combined.Frequency.Value = 1e308
+			m.results.Step.Combined.Frequency.Interval = [2]float64{-1e308, 1e308}
+		},
+		"empty department": func(m *made) { m.events = events(t, words{run: m.run, serial: "x", name: "y"}, "", nil) },
 		"words without blanks": func(m *made) {
 			m.results.Reasons = []results.Reason{{Code: "x", Text: strings.Repeat("W", 900)}}
 		},
@@ -224,7 +237,13 @@ func TestOddDocuments(t *testing.T) {
 	for name, change := range odd {
 		m := accepted(t)
 		change(&m)
-		pages := pagesOf(t, render(t, m))
+		pdf := render(t, m)
+		for i, content := range contentsOf(t, pdf) {
+			if bytes.Contains(content, []byte("NaN")) || bytes.Contains(content, []byte("Inf")) {
+				t.Errorf("%s, page %d: a number that is none", name, i+1)
+			}
+		}
+		pages := pagesOf(t, pdf)
 		boxes(t, name, pages)
 	}
 }

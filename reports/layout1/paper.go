@@ -137,6 +137,15 @@ func (p *paper) width(text string) float64 {
 func (p *paper) textRight(x, y float64, text string)  { p.text(x-p.width(text), y, text) }
 func (p *paper) textCentre(x, y float64, text string) { p.text(x-p.width(text)/2, y, text) }
 
+// fontFor sets a font in which a text is no wider than w: of the size given,
+// or smaller, down to half.
+func (p *paper) fontFor(family string, size float64, text string, w float64) {
+	p.font(family, size)
+	if wide := p.width(text); wide > w {
+		p.font(family, size*max(0.5, w/wide))
+	}
+}
+
 // fitted writes a line, cut to a width with an ellipsis; only for heads of
 // pages, where the whole text stands elsewhere.
 func (p *paper) fitted(x, y float64, text string, w float64) { p.text(x, y, p.clipped(text, w)) }
