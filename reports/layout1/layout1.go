@@ -14,6 +14,8 @@ import (
 	"bytes"
 	"errors"
 	"fmt"
+	"slices"
+	"strings"
 
 	"github.com/jung-kurt/gofpdf"
 
@@ -35,6 +37,8 @@ var ErrOtherLayout = errors.New("document is made for another page layout")
 
 // Render returns the pages of d with the attachments, as one PDF without a
 // signature. Text that the fonts do not cover is an error, never a box.
+// Attachments stand in the order of their names, whatever order they are given
+// in; no two may have the same name.
 func Render(d *reports.Document, attachments []Attachment) ([]byte, error) {
 	if d.Layout != Number {
 		return nil, fmt.Errorf("%w: %d, this is layout %d", ErrOtherLayout, d.Layout, Number)
@@ -58,9 +62,13 @@ func Render(d *reports.Document, attachments []Attachment) ([]byte, error) {
 	}
 	p := &paper{pdf: pdf, d: d, cover: newCoverage()}
 	p.check(d.Department)
-	for _, a := range attachments {
+	attachments = slices.SortedFunc(slices.Values(attachments), func(a, b Attachment) int { return strings.Compare(a.Name, b.Name) })
+	for i, a := range attachments {
 		p.check(a.Name)
 		p.check(a.Description)
+		if i > 0 && a.Name == attachments[i-1].Name {
+			return nil, fmt.Errorf("report %s: two attachments are called %q", d.Run, a.Name)
+		}
 	}
 	p.front()
 	p.pressure()

@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"errors"
 	"fmt"
+	"slices"
 	"strings"
 	"sync"
 	"testing"
@@ -31,6 +32,20 @@ func TestSameBytes(t *testing.T) {
 				t.Errorf("%s: rendering %d differs (%v)", name, i, errs[i])
 			}
 		}
+	}
+}
+
+// The order in which attachments are given is no matter; two of one name are.
+func TestAttachmentsAreSorted(t *testing.T) {
+	m := accepted(t)
+	list := m.attachments()
+	slices.Reverse(list)
+	other, err := Render(m.document(t), list)
+	if err != nil || !bytes.Equal(other, render(t, m)) {
+		t.Errorf("attachments in another order: %v", err)
+	}
+	if b, err := Render(m.document(t), append(list, list[0])); err == nil || b != nil {
+		t.Error("two attachments of one name were taken")
 	}
 }
 

@@ -6,6 +6,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 )
@@ -89,7 +90,9 @@ func TestAttachmentsComeOutAsTheyWentIn(t *testing.T) {
 	pdfdetach := program(t, "pdfdetach")
 	m := rejected(t)
 	file := onDisk(t, render(t, m))
-	for i, a := range m.attachments() {
+	attached := m.attachments()
+	slices.Reverse(attached) // the pages have them by name
+	for i, a := range attached {
 		out := filepath.Join(t.TempDir(), "out")
 		if text, err := exec.Command(pdfdetach, "-save", fmt.Sprint(i+1), "-o", out, file).CombinedOutput(); err != nil {
 			t.Fatalf("%v\n%s", err, text)
