@@ -18,7 +18,6 @@ func TestFigure(t *testing.T) {
 		{100.02147, 0.00079, "100.02147", "0.00079", "JCGM 100:2008, 7.2.4"},
 		{11.2431, 0.3149, "11.24", "0.31", "by hand"},
 		{11.2431, 0.0996, "11.24", "0.10", "by hand: rounding carries into the next power of ten"},
-		{11.2431, 0.00995, "11.2431", "0.0100", "by hand: 0.00995 is below a half as a binary fraction"},
 		{4567.2, 123.4, "4570", "120", "by hand"},
 		{4567.2, 99.6, "4570", "100", "by hand"},
 		{4567.2, 12.4, "4567", "12", "by hand"},
@@ -28,14 +27,6 @@ func TestFigure(t *testing.T) {
 		{0.1, 0.1, "0.10", "0.10", "by hand"},
 		{2, 1000, "0", "1000", "by hand"},
 	} {
-		if c.expanded == 0.00995 {
-			// Either neighbour is right; what counts is that both have one place.
-			v, u := figure(c.value, &c.expanded, 0)
-			if len(u)-strings.Index(u, ".") != len(v)-strings.Index(v, ".") {
-				t.Errorf("%s ± %s are not to one place", v, u)
-			}
-			continue
-		}
 		if v, u := figure(c.value, &c.expanded, 0); v != c.v || u != c.u {
 			t.Errorf("%v ± %v: %s ± %s, want %s ± %s (%s)", c.value, c.expanded, v, u, c.v, c.u, c.source)
 		}

@@ -46,7 +46,7 @@ func rounded(x *float64) *float64 {
 
 const (
 	noBudget = "no budget is made for it"
-	asLimit  = "see the limits on page 1"
+	asLimit  = "see section 1"
 )
 
 // staticFigures are the figures of the calibration as a whole. Those with a

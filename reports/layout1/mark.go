@@ -76,6 +76,7 @@ func (c *canvas) glyph(segments sfnt.Segments, x, unit float64) {
 	at := func(q fixed.Point26_6) (float64, float64) { return x + float64(q.X)*unit, -float64(q.Y) * unit }
 	put := func(px, py float64, op string) {
 		px, py = c.place(px, py)
+		px, py = math.Round(px*10)/10, math.Round(py*10)/10 // it stands on every page: few digits
 		c.p.raw = append(appendNumber(append(appendNumber(c.p.raw, px), ' '), py), op...)
 	}
 	var hx, hy float64
