@@ -52,12 +52,13 @@ func newRootCommand(io streams) *cobra.Command {
 	root := &cobra.Command{
 		Use:   "kymobench",
 		Short: "Test invasive blood-pressure transducers on the bench",
-		Long: `Kymobench fits recorded readings of an invasive blood-pressure transducer:
-static figures with uncertainty, and natural frequency and damping from steps.
+		Long: `Kymobench takes an invasive blood-pressure transducer through an inspection on
+the bench: zero, leak, set pressures up and down, step response; judges it
+against limits knowing its own uncertainty; and leaves a signed report.
 
 Exit codes: 0 done; 1 error; 2 usage or a refused file; 3 rejected;
 4 inconclusive or undetermined; 5 does not verify.`,
-		Example:       `  kymobench fit static readings.csv --json`,
+		Example:       `  kymobench demo`,
 		SilenceErrors: true,
 		SilenceUsage:  true,
 		Args:          cobra.NoArgs,
@@ -67,7 +68,7 @@ Exit codes: 0 done; 1 error; 2 usage or a refused file; 3 rejected;
 	root.SetOut(io.out)
 	root.SetErr(io.err)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(newFitCommand(io), newVersionCommand(io))
+	root.AddCommand(newDemoCommand(io), newRunCommand(io), newSimulateCommand(io), newReportCommand(io), newVerifyCommand(io), newFitCommand(io), newVersionCommand(io))
 	return root
 }
 

@@ -1,0 +1,121 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"os"
+	"path/filepath"
+	"slices"
+	"strings"
+
+	"github.com/spf13/cobra"
+
+	"kymobench/bench/line"
+	"kymobench/bench/setup"
+	"kymobench/procedures"
+	"kymobench/procedures/record"
+	"kymobench/procedures/run"
+	"kymobench/reports/layout1"
+)
+
+type runOptions struct {
+	bench, procedure, serial, out, operator, model, lot string
+	json                                                bool
+}
+
+func newRunCommand(io streams) *cobra.Command {
+	var o runOptions
+	cmd := &cobra.Command{
+		Use:   "run",
+		Short: "Carry out a procedure on a bench",
+		Long: `Opens the instruments of a bench file, leads through the procedure and leaves
+record and report in --out. A prompt takes one line; "stop" or the end of the
+input vents and leaves the record open (exit 4), and so does ^C.
+
+Exit codes: 0 accepted, 3 rejected, 4 inconclusive or stopped.`,
+		Example: `  kymobench run --bench bench.toml --procedure incoming --serial-number P-1234`,
+		Args:    noArguments,
+		RunE:    func(cmd *cobra.Command, _ []string) error { return runRun(cmd.Context(), o, io) },
+	}
+	f := cmd.Flags()
+	f.StringVar(&o.bench, "bench", "", "bench file")
+	f.StringVar(&o.procedure, "procedure", "", "a shipped procedure ("+strings.Join(procedures.ShippedNames(), ", ")+") or a file")
+	f.StringVar(&o.serial, "serial-number", "", "of the UUT")
+	f.StringVar(&o.model, "model", "", "of the UUT, as marked")
+	f.StringVar(&o.lot, "lot", "", "of the UUT, as marked")
+	f.StringVar(&o.operator, "operator", "", "who carries it out")
+	f.StringVar(&o.out, "out", ".", "folder for runs and reports")
+	f.BoolVar(&o.json, "json", false, "one JSON document on stdout")
+	return cmd
+}
+
+func runRun(ctx context.Context, o runOptions, io streams) error {
+	for _, need := range []struct{ flag, value string }{{"bench", o.bench}, {"procedure", o.procedure}, {"serial-number", o.serial}} {
+		if need.value == "" {
+			return usagef("--%s is needed", need.flag)
+		}
+	}
+	if strings.TrimSpace(o.serial) != o.serial || len([]rune(o.serial)) > 64 {
+		return usagef("the serial number has blanks around it or more than 64 characters")
+	}
+	d, err := definitionOf(o.procedure)
+	if err != nil {
+		return err
+	}
+	text, err := os.ReadFile(o.bench)
+	if err != nil {
+		return err
+	}
+	file, err := setup.Load(o.bench, text)
+	if err != nil {
+		return err
+	}
+	var keys signer
+	if file.Keys != "" {
+		if !file.Simulated {
+			return usagef("%s names keys, which only a simulated bench does so far", o.bench)
+		}
+		if keys, err = demonstrationKeys(filepath.Join(filepath.Dir(o.bench), file.Keys)); err != nil {
+			return err
+		}
+	}
+	operator := o.operator
+	if operator == "" {
+		operator = "not named"
+		if keys.key != nil {
+			operator = keys.key.Certificate.Subject.CommonName
+		}
+	}
+	absolute, err := filepath.Abs(o.out)
+	if err != nil {
+		return err
+	}
+	f := folder{absolute}
+	if err := f.make(); err != nil {
+		return err
+	}
+	return finish(ctx, job{
+		file: file, ports: newSerialPorts(), definition: d, folder: f, serial: o.serial, marks: marks{o.model, o.lot}, operator: operator,
+		layout: layout1.Number, covered: layout1.Covered,
+		committer: func(i line.Inbox) record.Committer { return record.NewDisk(i) },
+		console: func(i line.Inbox) run.Operator {
+			go listen(io.in, i)
+			return console{io.err}
+		},
+	}, keys, o.json, nil, io)
+}
+
+// definitionOf takes a shipped name or a file.
+func definitionOf(name string) (*procedures.Definition, error) {
+	if slices.Contains(procedures.ShippedNames(), name) {
+		return procedures.Shipped(name)
+	}
+	data, err := os.ReadFile(name)
+	if errors.Is(err, os.ErrNotExist) {
+		return nil, usagef("no procedure %q: shipped are %s, and there is no such file", name, strings.Join(procedures.ShippedNames(), ", "))
+	}
+	if err != nil {
+		return nil, err
+	}
+	return procedures.Load(name, data)
+}
