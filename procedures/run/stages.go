@@ -152,7 +152,7 @@ func inMmHg(p quantity.Pressure) string {
 func (s *session) static(ctx context.Context, stage procedures.Static) error {
 	rule := s.rule(stage)
 	for i, point := range stage.Points() {
-		if _, err := s.approach(ctx, stage, point); err != nil {
+		if _, err := s.approach(ctx, stage, point, first(stage, i)); err != nil {
 			return err
 		}
 		readings, state, err := s.settle(ctx, point.Set, stage.Window, rule, stage.LongestWait)
@@ -171,9 +171,13 @@ func (s *session) static(ctx context.Context, stage procedures.Static) error {
 	return nil
 }
 
+// first says that a point begins its cycle: it is come to from wherever the
+// pressure was, so no side is wrong.
+func first(stage procedures.Static, i int) bool { return i%len(stage.SetPressures) == 0 }
+
 // approach goes to the set pressure and notices a wrong-side approach beyond
 // the procedure's threshold.
-func (s *session) approach(ctx context.Context, stage procedures.Static, point procedures.Point) (asked, error) {
+func (s *session) approach(ctx context.Context, stage procedures.Static, point procedures.Point, begins bool) (asked, error) {
 	a, err := s.reach(ctx, point.Set, stage.Window, stage.LongestWait)
 	if err != nil {
 		return a, err
@@ -182,7 +186,7 @@ func (s *session) approach(ctx context.Context, stage procedures.Static, point p
 	if point.Leg == procedures.Down {
 		over = -over
 	}
-	if stage.Overshoot > 0 && over > stage.Overshoot {
+	if !begins && stage.Overshoot > 0 && over > stage.Overshoot {
 		text := fmt.Sprintf("cycle %d, %s at %.0f mmHg was approached from the wrong side by %.2f mmHg; its hysteresis is not the UUT's alone",
 			point.Cycle, point.Leg, point.Set.MmHg(), over.MmHg())
 		if err := s.append(record.KindReservation, record.Reservation{Code: "wrong_side", Text: text}); err != nil {
