@@ -1,7 +1,9 @@
 package quantity
 
 import (
+	"errors"
 	"fmt"
+	"math"
 	"strings"
 )
 
@@ -166,7 +168,11 @@ func Parse(s string) (Value, error) {
 	if !ok {
 		return Value{}, fmt.Errorf("%q: %q is no unit known here", s, name)
 	}
-	return Value{SI: u.ToSI(x), Stated: x, Unit: u}, nil
+	si := u.ToSI(x)
+	if math.IsInf(si, 0) {
+		return Value{}, errors.New("a number that is too large")
+	}
+	return Value{SI: si, Stated: x, Unit: u}, nil
 }
 
 // ParseAs is Parse for a value that must be of the dimension d.

@@ -28,7 +28,7 @@ func TestPressureUnits(t *testing.T) {
 }
 
 func TestParseRefuses(t *testing.T) {
-	for _, s := range []string{"300", "300mmHg", "mmHg", "nan mmHg", "300 mmhg", " 300 mmHg", "300 mmHg ", "1_0 mmHg", "300 "} {
+	for _, s := range []string{"300", "300mmHg", "mmHg", "nan mmHg", "300 mmhg", " 300 mmHg", "300 mmHg ", "1_0 mmHg", "300 ", "1e308 kPa", "-1e308 mmHg"} {
 		if v, err := Parse(s); err == nil {
 			t.Errorf("%q taken for %v", s, v)
 		}

@@ -93,7 +93,7 @@ func (p *paper) finish() {
 		if p.d.Mark != "" {
 			p.font(bold, 7.5)
 			p.colour(ink())
-			p.textCentre((left+right)/2, 285.5, p.d.Mark)
+			p.textCentre((left+right)/2, 285.5, p.d.Mark+" KEYS, NO ITEM TESTED")
 		}
 	}
 	p.pdf.SetPage(n)
