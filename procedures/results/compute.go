@@ -132,11 +132,12 @@ func (l Limit) told() string {
 	return fmt.Sprintf("%s %.4g +- %.2g %s against %s: %s", l.Name, *l.Value, *l.Expanded, l.Unit, l.Bounds, l.Outcome)
 }
 
-// String says the bounds in words.
+// String says the bounds in words. Neither side is that of a band, which has
+// its limits at each set pressure.
 func (b Bounds) String() string {
 	switch {
 	case b.Low == nil && b.High == nil:
-		return "no limit"
+		return "by set pressure"
 	case b.Low == nil:
 		return fmt.Sprintf("at most %.4g", *b.High)
 	case b.High == nil:
