@@ -306,7 +306,7 @@ func (l *loader) certificate(in *certificateTable, out *Certificate) {
 		l.pressure(point("correction")...)
 		l.demand(i == 0 || here > before, "corrections stand in the order of rising pressure", "", point("at")...)
 		before = here
-		out.Corrections = append(out.Corrections, Correction{p.At, p.Correction})
+		out.Corrections = append(out.Corrections, Correction(p))
 	}
 }
 

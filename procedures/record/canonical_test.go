@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"encoding/json"
 	"fmt"
+	"math"
 	"strings"
 	"testing"
 )
@@ -12,7 +13,7 @@ import (
 // encoding/json (Go's own, without HTML escaping), which writes the payloads.
 func TestCanonicalAgainstEncodingJSON(t *testing.T) {
 	for _, v := range []any{
-		0.0, -0.0, 1.0, 0.1, 1e20, 1e21, 1e-6, 9.999e-7, 1e-7, -1e-10, 5e-324, 1.7976931348623157e308, 123456789012345680000.0,
+		0.0, math.Copysign(0, -1), 1.0, 0.1, 1e20, 1e21, 1e-6, 9.999e-7, 1e-7, -1e-10, 5e-324, 1.7976931348623157e308, 123456789012345680000.0,
 		int64(-1 << 63), uint64(1<<64 - 1), float32(0.1), float32(3.4e38), float32(1e-7), "", "\x00\x1f\x7f\"\\/\b\f\n\r\t<>&", "\u2028\u2029\ufffd\U0001f4a7é",
 		true, false, nil, []int{}, []any{1, "a", nil}, map[string]any{"b": 1, "a": map[string]any{}},
 	} {

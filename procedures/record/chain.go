@@ -31,7 +31,7 @@ func checkRun(run string) error {
 	for i := range len(run) {
 		ch := run[i]
 		if !(ch >= 'a' && ch <= 'z' || ch >= 'A' && ch <= 'Z' || ch >= '0' && ch <= '9' || i > 0 && (ch == '-' || ch == '_' || ch == '.')) {
-			return fmt.Errorf("run id %q: only letters, digits and, after the first, - _ and .", run)
+			return fmt.Errorf("run id %q: only letters, digits and, after the first, dot, hyphen and underscore", run)
 		}
 	}
 	return nil
