@@ -24,22 +24,42 @@ func (s script) Prompt(text string) {
 	s.inbox.Post(s.after, line.Event{Kind: line.KindAnswer, Text: "yes"})
 }
 
-// console is a person at a terminal or behind a pipe.
-type console struct{ err io.Writer }
+// console is a person at a terminal or behind a pipe. It reads one line for
+// each prompt and no more, so that an input without end (yes | ...) cannot
+// crowd the inbox.
+type console struct {
+	err  io.Writer
+	want chan struct{} // one for each prompt
+}
+
+// newConsole starts listening. The goroutine blocks in reading, so it is left
+// behind at the end of the process.
+func newConsole(in io.Reader, err io.Writer, inbox line.Inbox) console {
+	c := console{err: err, want: make(chan struct{}, 16)}
+	go c.listen(in, inbox)
+	return c
+}
 
 func (c console) Tell(text string) { fmt.Fprintln(c.err, text) }
 
-func (c console) Prompt(text string) { fmt.Fprintln(c.err, "? "+text+":") }
-
-// listen posts the lines of the input, and its end, until the inbox is no
-// longer of use. It blocks in reading, so it is left behind at the end of the
-// process.
-func listen(in io.Reader, inbox line.Inbox) {
-	lines := bufio.NewScanner(io.LimitReader(in, 1<<20))
-	for lines.Scan() {
-		inbox.Post(0, line.Event{Kind: line.KindAnswer, Text: printable(lines.Text())})
+func (c console) Prompt(text string) {
+	fmt.Fprintln(c.err, "? "+text+":")
+	select {
+	case c.want <- struct{}{}:
+	default: // sixteen prompts wait already; the run will have given up on them
 	}
-	inbox.Post(0, line.Event{Kind: line.KindAnswerEnd})
+}
+
+// listen posts one line of the input, or its end, for each prompt.
+func (c console) listen(in io.Reader, inbox line.Inbox) {
+	lines := bufio.NewScanner(in)
+	for range c.want {
+		e := line.Event{Kind: line.KindAnswerEnd}
+		if lines.Scan() {
+			e = line.Event{Kind: line.KindAnswer, Text: printable(lines.Text())}
+		}
+		inbox.Post(0, e)
+	}
 }
 
 // printable keeps what a record and a terminal can show of a typed line, at

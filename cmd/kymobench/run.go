@@ -98,10 +98,7 @@ func runRun(ctx context.Context, o runOptions, io streams) error {
 		file: file, ports: newSerialPorts(), definition: d, folder: f, serial: o.serial, marks: marks{o.model, o.lot}, operator: operator,
 		layout: layout1.Number, covered: layout1.Covered,
 		committer: func(i line.Inbox) record.Committer { return record.NewDisk(i) },
-		console: func(i line.Inbox) run.Operator {
-			go listen(io.in, i)
-			return console{io.err}
-		},
+		console:   func(i line.Inbox) run.Operator { return newConsole(io.in, io.err, i) },
 	}, keys, o.json, nil, io)
 }
 
