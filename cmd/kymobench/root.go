@@ -61,9 +61,18 @@ Exit codes: 0 done; 1 error; 2 usage or a refused file; 3 rejected;
 		Example:       `  kymobench demo`,
 		SilenceErrors: true,
 		SilenceUsage:  true,
-		Args:          cobra.NoArgs,
-		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
+		Args:          cobra.ArbitraryArgs,
+		RunE: func(cmd *cobra.Command, args []string) error {
+			if len(args) == 0 {
+				return cmd.Help()
+			}
+			if like := cmd.SuggestionsFor(args[0]); len(like) > 0 {
+				return usagef("there is no command %q; did you mean %q?", args[0], like[0])
+			}
+			return usagef("there is no command %q; kymobench --help lists them", args[0])
+		},
 	}
+	root.SuggestionsMinimumDistance = 2
 	root.SetIn(io.in)
 	root.SetOut(io.out)
 	root.SetErr(io.err)
@@ -132,7 +141,10 @@ func classify(err error) (int, problem) {
 		p.Code = "record_damaged"
 		return exitNotVerified, p
 	case errors.Is(err, record.ErrNotClosed), errors.Is(err, record.ErrTorn):
-		p.Code = "record_open"
+		p.Code, p.Text = "record_open", p.Text+"; the run was stopped or is still going, and only a closed record has a report"
+		return exitUsage, p
+	case errors.Is(err, record.ErrNoOpening):
+		p.Code = "no_record"
 		return exitUsage, p
 	case errors.Is(err, fs.ErrNotExist):
 		p.Code = "file_missing"
