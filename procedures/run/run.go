@@ -103,7 +103,9 @@ func Carry(ctx context.Context, settings Settings) (Outcome, error) {
 		return Outcome{}, err
 	}
 	s.writer = writer
-	err = s.work(ctx)
+	if err = s.work(ctx); errors.Is(err, context.Canceled) {
+		err = fmt.Errorf("%w by ^C or by the system", ErrStopped)
+	}
 	s.vent(ventReason(err))
 	return s.end(ctx, err)
 }
@@ -188,7 +190,7 @@ func (s *session) end(ctx context.Context, err error) (Outcome, error) {
 		if e := s.append(record.KindFault, record.Fault{Code: fault.Code, Text: fault.Error()}); e != nil {
 			return Outcome{}, e
 		}
-	case errors.Is(err, ErrStopped), errors.Is(err, ErrInputEnded), errors.Is(err, ErrUnanswered), errors.Is(err, context.Canceled):
+	case errors.Is(err, ErrStopped), errors.Is(err, ErrInputEnded), errors.Is(err, ErrUnanswered):
 		return Outcome{Stopped: true, Why: err.Error()}, s.writer.Leave(ctx)
 	default:
 		if e := s.append(record.KindFault, record.Fault{Code: "bench_fault", Text: err.Error()}); e != nil {
