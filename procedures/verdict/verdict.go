@@ -39,8 +39,8 @@ type Decision struct {
 }
 
 // Judge holds value, with its standard uncertainty, degrees of freedom (0 or
-// +Inf: infinite) and 95 % half-width expanded, against l. The guard band is
-// w = factor x expanded, 0 under the simple rule.
+// +Inf: infinite) and 95 % half-width expanded, against l, all in one unit. The
+// guard band is w = factor x expanded, 0 under the simple rule.
 //
 //	room = how far the rounded value lies inside the nearest side
 //	simple:       pass room >= 0; fail otherwise
@@ -49,8 +49,10 @@ type Decision struct {
 //	              conditional fail room >= -w; fail otherwise
 //
 // Undetermined, with the reason: a value or an uncertainty that is no number,
-// an uncertainty of zero or less, no side to compare with, an unknown rule, or
-// a two-sided limit that leaves no room between its guard bands.
+// an uncertainty of zero or less, degrees of freedom below zero, no side to
+// compare with or one that is no number, an unknown rule, or a two-sided limit
+// that leaves no room between its guard bands. Comparisons allow 1e-12 of the
+// largest of the numbers compared, for the last bits of decimals.
 //
 // FalseAccept is the probability that the true value lies outside l, flat
 // prior: F((Low-value)/u) + 1 - F((High-value)/u), F Student's t with the
@@ -62,25 +64,24 @@ func Judge(value, expanded, standard, dof float64, l Limit, rule Rule, factor fl
 		w = 0
 	}
 	switch {
-	case math.IsNaN(value) || math.IsInf(value, 0):
+	case !finite(value):
 		return Decision{Reason: "there is no value"}
-	case !(standard > 0) || !(expanded > 0) || math.IsInf(standard, 0) || math.IsInf(expanded, 0) || !(w >= 0):
+	case !(standard > 0) || !(expanded > 0) || !finite(standard) || !finite(expanded) || !(w >= 0) || !finite(w) || !(dof >= 0):
 		return Decision{Reason: "its uncertainty is not known"}
 	case l.Low == nil && l.High == nil:
 		return Decision{Reason: "there is no limit to hold it against"}
+	case l.Low != nil && !finite(*l.Low) || l.High != nil && !finite(*l.High):
+		return Decision{Reason: "its limit is no number"}
 	case rule != Simple && rule != Guarded && rule != FourOutcome:
 		return Decision{Reason: fmt.Sprintf("the decision rule %q is not known", rule)}
 	}
 	d := Decision{GuardBand: w}
-	if l.Low != nil && l.High != nil && *l.High-*l.Low < 2*w {
+	bits := lastBits(value, w, l)
+	if l.Low != nil && l.High != nil && *l.High-*l.Low < 2*w-bits {
 		d.Reason = fmt.Sprintf("its uncertainty of %.3g leaves no room between the guard bands of a limit %.3g wide: a better reference, more readings or a wider limit would", expanded, *l.High-*l.Low)
 		return d
 	}
-	rounded := value
-	if l.Resolution > 0 {
-		rounded = quantity.RoundTo(value, l.Resolution)
-	}
-	d.Outcome = outcome(room(rounded, l), w, rule)
+	d.Outcome = outcome(room(quantity.RoundTo(value, l.Resolution), l)+bits, w, rule)
 	if d.Outcome == Pass || d.Outcome == ConditionalPass {
 		p := falseAccept(value, standard, dof, l)
 		d.FalseAccept = &p
@@ -88,6 +89,21 @@ func Judge(value, expanded, standard, dof float64, l Limit, rule Rule, factor fl
 	return d
 }
 
+func finite(x float64) bool { return !math.IsNaN(x) && !math.IsInf(x, 0) }
+
+// lastBits is what the comparison allows: a rounded value that stands on a
+// limit is inside it, in whatever unit.
+func lastBits(value, w float64, l Limit) float64 {
+	most := math.Max(math.Abs(value), w)
+	for _, side := range []*float64{l.Low, l.High} {
+		if side != nil {
+			most = math.Max(most, math.Abs(*side))
+		}
+	}
+	return 1e-12 * most
+}
+
+// room is how far x lies inside the nearest side.
 func room(x float64, l Limit) float64 {
 	r := math.Inf(1)
 	if l.Low != nil {
@@ -99,24 +115,21 @@ func room(x float64, l Limit) float64 {
 	return r
 }
 
-// outcome allows for the last bits of decimals: a rounded value that stands on
-// a limit is inside it.
 func outcome(room, w float64, rule Rule) Outcome {
-	const bits = 1e-12
-	inside := func(x float64) bool { return x >= -bits*(1+math.Abs(room)+w) }
 	switch {
-	case inside(room - w):
+	case room >= w:
 		return Pass
 	case rule == Simple || rule == Guarded:
 		return Fail
-	case inside(room):
+	case room >= 0:
 		return ConditionalPass
-	case inside(room + w):
+	case room >= -w:
 		return ConditionalFail
 	}
 	return Fail
 }
 
+// falseAccept is of the value as measured, not as rounded.
 func falseAccept(value, u, dof float64, l Limit) float64 {
 	below := func(z float64) float64 { return distuv.UnitNormal.CDF(z) }
 	if dof > 0 && !math.IsInf(dof, 1) {

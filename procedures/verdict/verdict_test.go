@@ -26,10 +26,21 @@ func TestConformance(t *testing.T) {
 		}
 	}
 	// At the limit by w = r U, k = 2: ILAC-G8 table, exact worst cases.
-	for r, want := range map[float64]float64{1: 0.0227501, 0.83: 0.0484572, 1.5: 0.00135} {
+	for r, want := range map[float64]float64{
+		0: 0.5, 0.82243: 0.05, 0.83: 0.0484572, 1: 0.0227501, 1.5: 0.00135, 3: 9.87e-10,
+	} {
 		d := Judge(2-r*0.5, 0.5, 0.25, math.Inf(1), Limit{High: side(2)}, Guarded, r)
-		if d.Outcome != Pass || math.Abs(*d.FalseAccept-want) > 1e-6 {
+		if d.Outcome != Pass || math.Abs(*d.FalseAccept-want) > 5e-4*want { // three digits are stated
 			t.Errorf("r = %v: %+v, want %v", r, d, want)
+		}
+	}
+	// Two sides, T the width, Cm = T/(4u): the value at the share of T.
+	for _, c := range []struct{ cm, share, conform float64 }{
+		{1, 0, 0.5}, {1, 0.25, 0.8400}, {1, 0.5, 0.9545}, {4, 0.05, 0.7881}, {4, 0.10, 0.9452},
+	} {
+		d := Judge(c.share, 0.5/c.cm, 0.25/c.cm, 0, Limit{Low: side(0), High: side(1)}, Simple, 0)
+		if math.Abs(1-*d.FalseAccept-c.conform) > 5e-5 {
+			t.Errorf("Cm %v at %v: %v, want %v", c.cm, c.share, 1-*d.FalseAccept, c.conform)
 		}
 	}
 	// Student's t, two degrees of freedom, P(T > 4.302652729749464) = 0.025.
@@ -65,6 +76,14 @@ func TestOutcomes(t *testing.T) {
 		"no uncertainty": Judge(0, 0, 0, 0, l, FourOutcome, 1),
 		"no side":        Judge(0, 1, 0.5, 0, Limit{}, FourOutcome, 1),
 		"no rule":        Judge(0, 1, 0.5, 0, l, "", 1),
+		"dof below zero": Judge(0, 1, 0.5, -1, l, Simple, 1),
+		"dof no number":  Judge(0, 1, 0.5, math.NaN(), l, Simple, 1),
+		"side -Inf":      Judge(0, 1, 0.5, 0, Limit{High: side(math.Inf(-1))}, Simple, 1),
+		"side NaN":       Judge(0, 1, 0.5, 0, Limit{Low: side(math.NaN())}, Simple, 1),
+		"reversed":       Judge(0, 1, 0.5, 0, Limit{Low: side(2), High: side(-2)}, Simple, 1),
+		"U infinite":     Judge(0, math.Inf(1), 0.5, 0, l, Simple, 1),
+		"U negative":     Judge(0, -1, 0.5, 0, l, Simple, 1),
+		"band negative":  Judge(0, 1, 0.5, 0, l, Guarded, -1),
 	} {
 		if d.Outcome != Undetermined || d.Reason == "" {
 			t.Errorf("%s: %+v", name, d)
@@ -76,6 +95,51 @@ func TestOutcomes(t *testing.T) {
 		if d := Judge(y, 0.2, 0.1, 0, l, Simple, 0); d.Outcome != want {
 			t.Errorf("%v rounded: %v, want %v", y, d.Outcome, want)
 		}
+	}
+}
+
+// Laws: neither the unit nor the sign of the axis moves an outcome, and
+// decimals that stand on a boundary stand on it in every unit.
+func TestUnitsAndSigns(t *testing.T) {
+	for _, unit := range []float64{1, 0.133322387415, 1e-9, 133322387.415, 1e-13} {
+		for tenths := -35; tenths <= 35; tenths++ {
+			y := float64(tenths) / 10
+			for _, rule := range []Rule{Simple, Guarded, FourOutcome} {
+				want := Judge(y, 0.7, 0.35, 5, Limit{Low: side(-2.1), High: side(2.1)}, rule, 1)
+				l := Limit{Low: side(-2.1 * unit), High: side(2.1 * unit)}
+				for _, sign := range []float64{1, -1} {
+					got := Judge(sign*y*unit, 0.7*unit, 0.35*unit, 5, l, rule, 1)
+					if got.Outcome != want.Outcome || got.FalseAccept != nil && math.Abs(*got.FalseAccept-*want.FalseAccept) > 1e-12 {
+						t.Errorf("%v x %v, %s: %+v, want %+v", y, sign*unit, rule, got, want)
+					}
+				}
+				by := tenths
+				if by < 0 {
+					by = -by
+				}
+				exact := [][3]Outcome{{Pass, Pass, Pass}, {Pass, Fail, ConditionalPass}, {Fail, Fail, ConditionalFail}, {Fail, Fail, Fail}}
+				column := map[Rule]int{Simple: 0, Guarded: 1, FourOutcome: 2}[rule]
+				row := 3
+				for k, edge := range []int{14, 21, 28} { // tenths: limit less band, limit, limit and band
+					if by <= edge {
+						row = k
+						break
+					}
+				}
+				if want.Outcome != exact[row][column] {
+					t.Errorf("%v under %s: %v, want %v", y, rule, want.Outcome, exact[row][column])
+				}
+			}
+		}
+	}
+	// Bands that just meet leave one point: 0.1 to 0.3 with a band of 0.1.
+	if d := Judge(0.2, 0.1, 0.05, 0, Limit{Low: side(0.1), High: side(0.3)}, Guarded, 1); d.Outcome != Pass {
+		t.Errorf("bands that meet: %+v", d)
+	}
+	// With many degrees of freedom t is the normal distribution.
+	d, n := Judge(1, 1, 0.5, 1e8, Limit{High: side(2)}, Simple, 0), Judge(1, 1, 0.5, 0, Limit{High: side(2)}, Simple, 0)
+	if math.Abs(*d.FalseAccept-*n.FalseAccept) > 1e-8 {
+		t.Errorf("t of 1e8 degrees of freedom %v, normal %v", *d.FalseAccept, *n.FalseAccept)
 	}
 }
 
@@ -94,8 +158,17 @@ func TestOverall(t *testing.T) {
 			t.Errorf("%v, fault %v: %v, want %v", c.outcomes, c.fault, got, c.want)
 		}
 	}
-	if got := Overall([]Outcome{ConditionalPass}, false, Accepted, Rejected); got != Accepted {
-		t.Errorf("conditional pass taken for a pass: %v", got)
+	for _, c := range []struct {
+		pass, fail, want Verdict // of a run with a conditional pass and a conditional fail
+	}{
+		{Accepted, Accepted, Accepted}, {Accepted, Inconclusive, Inconclusive}, {Inconclusive, Accepted, Inconclusive},
+		{Accepted, Rejected, Rejected}, {Rejected, Accepted, Rejected}, {Inconclusive, Rejected, Rejected}, {Verdict(9), Accepted, Inconclusive},
+	} {
+		for _, outcomes := range [][]Outcome{{ConditionalPass, Pass, ConditionalFail}, {ConditionalFail, ConditionalPass}} {
+			if got := Overall(outcomes, false, c.pass, c.fail); got != c.want {
+				t.Errorf("%v where they count as %v and %v: %v, want %v", outcomes, c.pass, c.fail, got, c.want)
+			}
+		}
 	}
 	var o Outcome
 	var v Verdict

@@ -100,10 +100,11 @@ func Overall(outcomes []Outcome, benchFault bool, conditionalPass, conditionalFa
 		case Fail:
 			v = Rejected
 		}
-		switch {
-		case v == Rejected:
+		switch v {
+		case Accepted:
+		case Rejected:
 			return Rejected
-		case v == Inconclusive:
+		default:
 			worst = Inconclusive
 		}
 	}
