@@ -12,6 +12,7 @@ import (
 	"io"
 	"slices"
 	"strings"
+	"unicode/utf8"
 
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
@@ -49,6 +50,9 @@ func open(file string, r io.Reader) (*table, error) {
 		return nil, fmt.Errorf("read %s: %w", file, err)
 	}
 	text := strings.TrimPrefix(string(data), "\ufeff")
+	if !utf8.ValidString(text) {
+		return nil, notUTF8(file, text)
+	}
 	t := &table{file: file, csv: csv.NewReader(strings.NewReader(text))}
 	first, _, _ := strings.Cut(text, "\n")
 	if strings.Contains(first, ";") && !strings.Contains(first, ",") {
@@ -70,6 +74,23 @@ func open(file string, r io.Reader) (*table, error) {
 		t.header = append(t.header, name)
 	}
 	return t, nil
+}
+
+// notUTF8 names the first byte that is not UTF-8.
+func notUTF8(file, text string) error {
+	line, column := 1, 1
+	for i, r := range text {
+		if r == utf8.RuneError {
+			if _, size := utf8.DecodeRuneInString(text[i:]); size == 1 {
+				break
+			}
+		}
+		column += utf8.RuneLen(r)
+		if r == '\n' {
+			line, column = line+1, 1
+		}
+	}
+	return &FileError{file, line, column, "the file is not text in UTF-8 from here on"}
 }
 
 // next reads a row; false at the end.
@@ -147,6 +168,14 @@ func (e *events) add(at line.Instant, kind string, payload any) int64 {
 	}
 	e.all = append(e.all, event)
 	return n
+}
+
+// done returns the events, or the first error and none of them.
+func (e *events) done() ([]record.Event, error) {
+	if e.err != nil {
+		return nil, e.err
+	}
+	return e.all, nil
 }
 
 // ignored reserves that columns were not understood.

@@ -122,7 +122,7 @@ func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 	if rows == 0 {
 		return nil, &FileError{file, 2, 1, "there are no readings below the header"}
 	}
-	return e.all, e.err
+	return e.done()
 }
 
 func (t *table) cycle(column int) (int, error) {

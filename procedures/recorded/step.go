@@ -87,7 +87,7 @@ func Step(file string, r io.Reader, edge string) ([]record.Event, error) {
 		capture.Applied = e.blocks(appliedTexts, start, period)
 	}
 	e.add(0, record.KindCapture, capture)
-	return e.all, e.err
+	return e.done()
 }
 
 func (e *events) blocks(texts []string, start line.Instant, period float64) []int64 {
