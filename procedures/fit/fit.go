@@ -1,13 +1,16 @@
 // Package fit draws straight lines through static readings. It knows no units
-// and judges nothing. Order of use: Line.
+// and judges nothing. Order of use: NewCurve to correct the reference, then
+// Static, which uses Line and Lines.
 package fit
 
 import (
 	"errors"
 	"math"
+	"slices"
 )
 
-// ErrNoLine: fewer than three readings, unequal lengths, or all x equal.
+// ErrNoLine: fewer than three readings, unequal lengths, all x equal, or
+// numbers so large or small that the line is none that a double can hold.
 var ErrNoLine = errors.New("no straight line can be fitted to these readings")
 
 // Straight is y = Intercept + Slope x with standard uncertainties from the
@@ -19,40 +22,69 @@ type Straight struct {
 }
 
 // Line is the ordinary least-squares line of y on x (same length, n >= 3):
-// slope = Sum (x-mx)(y-my) / Sum (x-mx)^2, by two-pass centred sums and one
-// refinement on the residuals. Source: textbook; GUM H.3.
+//
+//	slope     = Sum (x-mx)(y-my) / Sum (x-mx)^2
+//	intercept = my - slope mx
+//	residual  = sqrt(Sum r^2 / (n-2)), r = y - intercept - slope x
+//	u(slope) = residual / sqrt(Sxx), u(intercept) = residual sqrt(1/n + mx^2/Sxx)
+//	covariance = -residual^2 mx / Sxx, Sxx = Sum (x-mx)^2
+//
+// by two-pass centred sums and one refinement on the residuals; the sums are
+// taken of x and y scaled by powers of two, which changes no digit and lets no
+// square overflow. ErrNoLine where there is none. Source: textbook; GUM H.3.
 func Line(x, y []float64) (Straight, error) {
 	n := float64(len(x))
-	if len(x) < 3 || len(y) != len(x) {
+	if len(x) < 3 || len(y) != len(x) || slices.Min(x) == slices.Max(x) {
 		return Straight{}, ErrNoLine
 	}
 	mx, my := mean(x), mean(y)
+	fx, fy := scaleFor(x, mx), scaleFor(y, my)
+	dx := func(i int) float64 { return (x[i] - mx) * fx }
+	dy := func(i int) float64 { return (y[i] - my) * fy }
 	var sxx, sxy float64
 	for i := range x {
-		sxx += (x[i] - mx) * (x[i] - mx)
-		sxy += (x[i] - mx) * (y[i] - my)
+		sxx += dx(i) * dx(i)
+		sxy += dx(i) * dy(i)
 	}
-	if !(sxx > 0) {
-		return Straight{}, ErrNoLine
-	}
-	slope := sxy / sxx
+	b := sxy / sxx
 	var rest float64
 	for i := range x {
-		rest += (x[i] - mx) * ((y[i] - my) - slope*(x[i]-mx))
+		rest += dx(i) * (dy(i) - b*dx(i))
 	}
-	slope += rest / sxx
+	b += rest / sxx
 	var ss float64
 	for i := range x {
-		r := (y[i] - my) - slope*(x[i]-mx)
+		r := dy(i) - b*dx(i)
 		ss += r * r
 	}
-	s := math.Sqrt(ss / (n - 2))
-	return Straight{
-		Intercept: my - slope*mx, Slope: slope, Residual: s,
-		USlope: s / math.Sqrt(sxx), UIntercept: s * math.Sqrt(1/n+mx*mx/sxx), Covariance: -s * s * mx / sxx,
-	}, nil
+	s := math.Sqrt(ss / (n - 2)) // scaled by fy, as b is by fy/fx
+	scaled := mx * fx
+	slope := b / fy * fx
+	l := Straight{
+		Intercept: my - slope*mx, Slope: slope, Residual: s / fy,
+		USlope: s / math.Sqrt(sxx) / fy * fx, UIntercept: s * math.Sqrt(1/n+scaled*scaled/sxx) / fy,
+		Covariance: -s * s * scaled / sxx / fy * fx / fy,
+	}
+	for _, v := range []float64{l.Intercept, l.Slope, l.Residual, l.USlope, l.UIntercept, l.Covariance} {
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			return Straight{}, ErrNoLine
+		}
+	}
+	return l, nil
 }
 
+// scaleFor is a power of two that brings the largest distance of x from m to
+// about 1; 1 when there is none.
+func scaleFor(x []float64, m float64) float64 {
+	var most float64
+	for _, v := range x {
+		most = math.Max(most, math.Abs(v-m))
+	}
+	_, e := math.Frexp(most)
+	return math.Ldexp(1, -min(max(e, -1000), 1000))
+}
+
+// mean in two passes; not empty. Equal values give exactly that value.
 func mean(x []float64) float64 {
 	var m, rest float64
 	for _, v := range x {

@@ -1,18 +1,24 @@
 package fit
 
-import "math"
+import (
+	"math"
+	"sort"
+)
 
 // Lines returns the largest |deviation| of points (x rising, no x twice) from
 // four lines: least squares (at least three points, else nil), terminal-based
 // (through the end points), zero-based (through the first point, its slope
 // such that the largest deviation is least) and independent (both free). One
-// point gives nil for all, two give zero.
+// point gives nil for all, two give zero. O(n log n) but for the zero-based
+// line, whose passes are few on any curve met in practice.
 //
 // Independent: W(b) = max(y - bx) - min(y - bx) is convex and piecewise linear
 // with its breaks at the slopes of the edges of the convex hull, so the best
-// slope is one of them; the deviation is W/2. Zero-based: over pairs i < j of
-// points above the first, E = max |ri dj - rj di| / (di + dj), d = x - x0,
-// r = y - y0. The end chord is taken off first, against cancellation.
+// slope is one of them; the deviation is W/2. All edges are tried: halving
+// between them goes wrong where two are parallel, which whole numbers often
+// are. Zero-based: over pairs of points above the first, the largest
+// |ri dj - rj di| / (di + dj), d = x - x0, r = y - y0, found by exchange. The
+// end chord is taken off first, against cancellation.
 // Source: definitions of IEC 61298-2 from memory; the geometry is textbook.
 func Lines(x, y []float64) Linearities {
 	n := len(x)
@@ -46,33 +52,50 @@ func Lines(x, y []float64) Linearities {
 	return out
 }
 
+// zeroBased holds a pair of points, one above and one below the line through
+// the first, equally far: no line does better for that pair. The point that
+// lies farthest off takes the place of the one on its side, which makes the
+// distance grow, until no point lies farther off than the pair.
 func zeroBased(x, r []float64) float64 {
-	var e float64
-	for j := 2; j < len(x); j++ {
-		for i := 1; i < j; i++ {
-			di, dj := x[i]-x[0], x[j]-x[0]
-			e = math.Max(e, math.Abs((r[i]-r[0])*dj-(r[j]-r[0])*di)/(di+dj))
+	off := func(i int, slope float64) float64 { return r[i] - slope*(x[i]-x[0]) } // r[0] is 0
+	above, below := len(x)-1, len(x)-1
+	var slope, best float64
+	for {
+		far := above
+		for i := 1; i < len(x); i++ {
+			if math.Abs(off(i, slope)) > math.Abs(off(far, slope)) {
+				far = i
+			}
 		}
+		if off(far, slope) > 0 {
+			above = far
+		} else {
+			below = far
+		}
+		da, db := x[above]-x[0], x[below]-x[0]
+		e := (r[above]*db - r[below]*da) / (da + db)
+		if !(e > best) {
+			return best
+		}
+		slope, best = (r[above]+r[below])/(da+db), e
 	}
-	return e
 }
 
+// independent tries every edge of the hull against the opposite side.
 func independent(x, r []float64) float64 {
+	upper, lower := hull(x, r, 1), hull(x, r, -1)
+	slope := func(h []int, k int) float64 { return (r[h[k+1]] - r[h[k]]) / (x[h[k+1]] - x[h[k]]) }
 	best := math.Inf(1)
-	for _, upper := range []float64{1, -1} {
-		h := hull(x, r, upper)
-		for k := 1; k < len(h); k++ {
-			i, j := h[k-1], h[k]
-			b := (r[j] - r[i]) / (x[j] - x[i])
-			lo, hi := math.Inf(1), math.Inf(-1)
-			for m := range x {
-				d := r[m] - b*(x[m]-x[0])
-				lo, hi = math.Min(lo, d), math.Max(hi, d)
-			}
-			best = math.Min(best, (hi-lo)/2)
-		}
+	try := func(u, l int, b float64) { best = math.Min(best, ((r[u]-r[l])-b*(x[u]-x[l]))/2) }
+	for k := range len(upper) - 1 {
+		b := slope(upper, k)
+		try(upper[k], lower[sort.Search(len(lower)-1, func(m int) bool { return slope(lower, m) >= b })], b)
 	}
-	return best
+	for k := range len(lower) - 1 {
+		b := slope(lower, k)
+		try(upper[sort.Search(len(upper)-1, func(m int) bool { return slope(upper, m) <= b })], lower[k], b)
+	}
+	return math.Max(best, 0)
 }
 
 // hull returns the indices of the upper (sign 1) or lower (-1) convex hull.

@@ -73,8 +73,14 @@ var ErrData = errors.New("static readings not usable")
 //
 // First and last are by cycle, up before down, then in the order given.
 // Without set pressures the readings are ranked by p within cycle and leg, and
-// a rank's mean p is its set pressure; a down leg that lacks the top shares
-// that of the up leg. Legs that differ by more cannot be grouped.
+// a rank's mean p is its set pressure; a leg that lacks the top shares that of
+// the others. Legs that differ by more, or by another point than the top,
+// cannot be grouped: then hysteresis, repeatability, linearity and zero return
+// are nil, and the zero offset is that of the reading nearest zero. Fewer than
+// three readings, or all at one p, carry no line and nothing that needs one.
+//
+// ErrData for slices of unequal length, no reading, and values that are not
+// finite or beyond 1e150 in magnitude, whose squares no double holds.
 //
 // Definitions: facts of practice named in the program's guide (IEC 61298-2 and
 // ISA-51.1 terms, from memory).
@@ -92,14 +98,16 @@ func Static(d Data) (Figures, error) {
 	if line, err := Line(d.Reference, d.UUT); err == nil {
 		f.Line = &line
 	}
-	f.reserve(d, grouped)
 	w.zeros(&f, cycles)
 	if f.Line != nil && grouped {
 		w.residuals(*f.Line)
-		f.Linearity = w.linearities(*f.Line)
-		f.Hysteresis = w.hysteresis(cycles)
-		f.Repeatability = w.repeatability()
+		w.rank()
+		cells := w.inCells()
+		f.Linearity = w.linearities(f.Line.Slope)
+		f.Hysteresis = w.hysteresis(cells)
+		f.Repeatability = repeatability(cells)
 	}
+	f.reserve(d, grouped)
 	return f, nil
 }
 
@@ -110,33 +118,44 @@ func refuse(d Data) error {
 	}
 	for _, column := range [][]float64{d.Reference, d.UUT, d.Set} {
 		for i, x := range column {
-			if math.IsNaN(x) || math.IsInf(x, 0) {
-				return fmt.Errorf("%w: reading %d is not finite", ErrData, i+1)
+			if !(math.Abs(x) <= 1e150) {
+				return fmt.Errorf("%w: reading %d is not finite, or too large to compute with", ErrData, i+1)
 			}
 		}
 	}
 	return nil
 }
 
+// reserve says why figures are nil.
 func (f *Figures) reserve(d Data, grouped bool) {
+	add := func(code, text string) { f.Reservations = append(f.Reservations, Reservation{code, text}) }
+	oneLeg := !slices.Contains(d.Down, true) || !slices.Contains(d.Down, false)
 	if f.Cycles == 1 {
-		f.Reservations = append(f.Reservations, Reservation{"one_cycle", "one cycle shows no repeatability"})
+		add("one_cycle", "one cycle shows no repeatability")
 	}
-	if !slices.Contains(d.Down, true) || !slices.Contains(d.Down, false) {
-		f.Reservations = append(f.Reservations, Reservation{"one_leg", "one leg shows no hysteresis"})
+	if oneLeg {
+		add("one_leg", "one leg shows no hysteresis")
 	}
-	if !grouped {
-		f.Reservations = append(f.Reservations, Reservation{"points_not_grouped",
-			"without set pressures the readings of up and down legs cannot be matched by rank"})
+	switch {
+	case !grouped:
+		add("points_not_grouped", "without set pressures the readings of up and down legs cannot be matched by rank")
+	case f.Line == nil:
+		add("points_not_grouped", "fewer than three readings, or all at one pressure: they carry no line, and nothing that needs one")
+	case f.Hysteresis == nil && !oneLeg:
+		add("points_not_grouped", "no cycle has a set pressure in both legs: nothing shows hysteresis")
+	case f.Repeatability.DoF == nil && f.Cycles > 1:
+		add("points_not_grouped", "no set pressure was read in the same leg of two cycles: nothing shows repeatability")
 	}
 }
 
 // work is the data on their way to figures.
 type work struct {
 	Data
-	order []int     // of time: cycle, up before down, as given
-	sets  []float64 // set pressure of each reading, NaN when not grouped
-	r     []float64 // residuals about the line
+	order  []int     // of time: cycle, up before down, as given
+	sets   []float64 // set pressure of each reading, NaN when not grouped
+	levels []float64 // set pressures in rising order
+	level  []int     // of each reading, in levels
+	r      []float64 // residuals about the line
 }
 
 func order(d Data) []int {
@@ -170,41 +189,39 @@ func (w *work) largest(zero float64) *Located {
 	return best
 }
 
-// zeros fills in what is read at the set pressure nearest zero.
+// zeros fills in what is read at the set pressure nearest zero; of two as
+// near, the one read first.
 func (w *work) zeros(f *Figures, cycles []int) {
-	nearest := math.NaN()
-	key := func(i int) float64 {
-		if math.IsNaN(w.sets[i]) {
-			return w.Reference[i]
-		}
-		return w.sets[i]
+	key := w.sets
+	if math.IsNaN(key[0]) {
+		key = w.Reference
 	}
+	nearest := key[w.order[0]]
 	for _, i := range w.order {
-		if k := key(i); math.IsNaN(nearest) || math.Abs(k) < math.Abs(nearest) {
-			nearest = k
+		if math.Abs(key[i]) < math.Abs(nearest) {
+			nearest = key[i]
 		}
 	}
 	f.ZeroReturn = make([]*float64, len(cycles))
-	for c, cycle := range cycles {
-		first, last := -1, -1
-		for _, i := range w.order {
-			if key(i) != nearest {
-				continue
-			}
-			if f.ZeroOffset == nil {
-				e := w.UUT[i] - w.Reference[i]
-				f.ZeroOffset = &e
-			}
-			if w.Cycle[i] == cycle {
-				if first < 0 {
-					first = i
-				}
-				last = i
-			}
+	first, c := -1, 0
+	for _, i := range w.order {
+		if key[i] != nearest {
+			continue
 		}
-		if first >= 0 && last != first && f.Line != nil && !math.IsNaN(w.sets[first]) {
-			back := (w.UUT[last] - w.UUT[first]) - f.Line.Slope*(w.Reference[last]-w.Reference[first])
-			f.ZeroReturn[c] = &back
+		if f.ZeroOffset == nil {
+			e := w.UUT[i] - w.Reference[i]
+			f.ZeroOffset = &e
+		}
+		if first < 0 || w.Cycle[i] != w.Cycle[first] {
+			first = i
+			continue
+		}
+		for cycles[c] != w.Cycle[i] {
+			c++
+		}
+		if f.Line != nil && !math.IsNaN(w.sets[i]) {
+			back := (w.UUT[i] - w.UUT[first]) - f.Line.Slope*(w.Reference[i]-w.Reference[first])
+			f.ZeroReturn[c] = &back // the last one stays
 		}
 	}
 	f.ErrorAfterZero = w.largest(*f.ZeroOffset)

@@ -2,6 +2,7 @@ package fit
 
 import (
 	"encoding/csv"
+	"errors"
 	"math"
 	"math/rand/v2"
 	"os"
@@ -183,31 +184,6 @@ func TestLaws(t *testing.T) {
 	}
 }
 
-// The independent line by brute force: half the largest deviation from a chord
-// over all triples.
-func TestIndependentByTriples(t *testing.T) {
-	r := rand.New(rand.NewPCG(5, 6))
-	for range 500 {
-		n := 3 + r.IntN(8)
-		x, y := make([]float64, n), make([]float64, n)
-		for i := range x {
-			x[i], y[i] = float64(i)+0.9*r.Float64(), r.NormFloat64()
-		}
-		var want float64
-		for i := range n {
-			for j := i + 1; j < n; j++ {
-				for k := j + 1; k < n; k++ {
-					on := y[i] + (y[k]-y[i])*(x[j]-x[i])/(x[k]-x[i])
-					want = math.Max(want, math.Abs(y[j]-on)/2)
-				}
-			}
-		}
-		if got := Lines(x, y).Independent; math.Abs(*got-want) > 1e-12 {
-			t.Fatalf("%v, by triples %v", *got, want)
-		}
-	}
-}
-
 func TestCurve(t *testing.T) {
 	c, err := NewCurve([]float64{0, 100, 200}, []float64{0, 0.04, 0.02})
 	if err != nil {
@@ -221,7 +197,25 @@ func TestCurve(t *testing.T) {
 			t.Errorf("at %v: %v, %v", w.x, add, beyond)
 		}
 	}
-	if c, err := NewCurve([]float64{0, 0}, []float64{1, 2}); err == nil {
-		t.Errorf("equal points taken: %v", c)
+	for _, bad := range [][2][]float64{
+		{{0, 0}, {1, 2}}, {{1, 0}, {1, 2}}, {{}, {}}, {{0, 1}, {1}}, {{0, math.NaN()}, {1, 2}}, {{0, 1}, {1, math.Inf(1)}},
+	} {
+		if c, err := NewCurve(bad[0], bad[1]); !errors.Is(err, ErrData) {
+			t.Errorf("%v taken: %v, %v", bad, c, err)
+		}
+	}
+	if add, _ := c.At(math.NaN()); !math.IsNaN(add) {
+		t.Errorf("at no number: %v", add)
+	}
+	at, add := []float64{0, 0.1, 0.7}, []float64{0.3, 0.1, 0.7}
+	if c, err = NewCurve(at, add); err != nil {
+		t.Fatal(err)
+	}
+	at[1], add[1] = 9, 9 // the curve has its own
+	if got, beyond := c.At(0.1); got != 0.1 || beyond {
+		t.Errorf("at a stated point: %v, %v", got, beyond)
+	}
+	if got, beyond := (Curve{}).At(5); got != 0 || beyond {
+		t.Errorf("the zero curve: %v, %v", got, beyond)
 	}
 }
