@@ -89,8 +89,17 @@ func TestEdges(t *testing.T) {
 		"no zero, mixed rows": {[]reading{{2, "up", 20, 20, 21}, {1, "down", 20, 20, 24}, {1, "down", 80, 80, 82}, {1, "up", 80, 80, 82}, {1, "up", 20, 20, 22}}, true,
 			179.0 / 180, 2, 2, 20, 4, []float64{2, none}, nil},
 		// +5 and -5 are as near to zero: the one read first counts.
-		"two as near zero": {[]reading{{1, "up", -5, -5, -4}, {1, "up", 5, 5, 7}, {1, "down", 5, 5, 7}, {1, "down", -5, -5, -4}}, true,
-			1.1, 1, 0, -5, 2, []float64{0}, []string{"one_cycle"}},
+		"two as near zero": {[]reading{{1, "up", -5, -5, -4}, {1, "up", 5, 5, 7}, {1, "down", 5, 5, 7}}, true,
+			1.1, 1, 0, 5, 2, []float64{none}, []string{"one_cycle"}},
+		// A lowest set pressure below zero is not the zero.
+		"vacuum": {[]reading{{1, "up", -100, -100, -97}, {1, "up", 0, 0, 2}, {1, "up", 100, 100, 102}}, true,
+			0.995, 2, none, none, 3, []float64{none}, []string{"one_cycle", "one_leg"}},
+		// y = 2 p throughout: the second zero at p = 1 is a return to the line.
+		"zero off its set pressure": {[]reading{{1, "up", 0, 0, 0}, {1, "up", 100, 100, 200}, {1, "down", 100, 101, 202}, {1, "down", 0, 1, 2}}, true,
+			2, 0, 0, 0, 101, []float64{0}, []string{"one_cycle"}},
+		// 100 up in one cycle and down in the next are no pair.
+		"pair across cycles": {[]reading{{1, "up", 0, 0, 0}, {1, "up", 100, 100, 100}, {2, "down", 100, 100, 100}, {2, "down", 200, 200, 200}}, true,
+			1, 0, none, none, 0, []float64{none, none}, []string{"points_not_grouped"}},
 	} {
 		f, err := Static(dataOf(c.rows, c.stated))
 		if err != nil {

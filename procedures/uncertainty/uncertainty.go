@@ -1,11 +1,21 @@
 // Package uncertainty combines the contributions to one figure's uncertainty.
-// It knows no units and judges nothing. Order of use: Combine a budget.
+// It knows no units and judges nothing. Order of use: turn what is stated into
+// standard uncertainties (FromExpanded, FromHalfWidth, FromFullWidth), Combine
+// the budget; where Dominated says that one rectangle makes the interval,
+// Sample it.
 package uncertainty
 
 import (
 	"math"
 
 	"gonum.org/v1/gonum/stat/distuv"
+)
+
+// The distributions that an Input may name.
+const (
+	Normal      = "normal"      // Student's t when its degrees of freedom are finite
+	Rectangular = "rectangular" // half-width sqrt(3) x Standard
+	StudentT    = "t"           // scaled by Standard: its own SD is larger
 )
 
 // Input is one uncorrelated contribution.
@@ -21,6 +31,24 @@ type Combined struct {
 	Standard, DegreesOfFreedom, Coverage, Expanded float64
 }
 
+// FromExpanded is the standard uncertainty U/k of a certificate that states U
+// with its coverage factor k > 0 (GUM 4.3.3). Not-a-number for any other k.
+func FromExpanded(expanded, k float64) float64 {
+	if !(k > 0) {
+		return math.NaN()
+	}
+	return expanded / k
+}
+
+// FromHalfWidth is a/sqrt(3): all values within -a..a are equally likely (GUM
+// 4.3.7).
+func FromHalfWidth(a float64) float64 { return a / math.Sqrt(3) }
+
+// FromFullWidth is w/(2 sqrt(3)), for what is stated from end to end: a
+// resolution, hysteresis, repeatability as a range, the return of zero (GUM
+// F.2.2.1 for resolution; the others as DKD-R 6-1, from memory).
+func FromFullWidth(w float64) float64 { return w / (2 * math.Sqrt(3)) }
+
 // Combine adds in quadrature, u_c^2 = Sum (c_i u_i)^2, takes the effective
 // degrees of freedom u_c^4 / Sum ((c_i u_i)^4/nu_i) (Welch and Satterthwaite,
 // GUM G.4.1; +Inf when no input has finite ones) and the factor of Student's t
@@ -34,11 +62,25 @@ func Combine(inputs []Input) Combined {
 			d += c * c * c * c / in.DegreesOfFreedom
 		}
 	}
-	r := Combined{Standard: math.Sqrt(v), DegreesOfFreedom: math.Inf(1), Coverage: 1.959963984540054}
+	r := Combined{Standard: math.Sqrt(v), DegreesOfFreedom: math.Inf(1)}
 	if d > 0 {
 		r.DegreesOfFreedom = v * v / d
-		r.Coverage = distuv.StudentsT{Mu: 0, Sigma: 1, Nu: r.DegreesOfFreedom}.Quantile(0.975)
 	}
+	r.Coverage = coverage(r.DegreesOfFreedom)
 	r.Expanded = r.Coverage * r.Standard
 	return r
+}
+
+// manyDegrees is from where on the normal distribution stands for Student's t:
+// the factor is then 2.4e-8 too small, while the library's own t loses its
+// digits and at 1e15 is wrong altogether (3.23 for 1.96). Degrees of freedom
+// like that are met: one small noise beside large contributions.
+const manyDegrees = 1e8
+
+// coverage is the 97.5 % quantile of Student's t.
+func coverage(dof float64) float64 {
+	if !(dof < manyDegrees) {
+		return 1.959963984540054
+	}
+	return distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Quantile(0.975)
 }

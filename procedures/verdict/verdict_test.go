@@ -136,10 +136,15 @@ func TestUnitsAndSigns(t *testing.T) {
 	if d := Judge(0.2, 0.1, 0.05, 0, Limit{Low: side(0.1), High: side(0.3)}, Guarded, 1); d.Outcome != Pass {
 		t.Errorf("bands that meet: %+v", d)
 	}
-	// With many degrees of freedom t is the normal distribution.
-	d, n := Judge(1, 1, 0.5, 1e8, Limit{High: side(2)}, Simple, 0), Judge(1, 1, 0.5, 0, Limit{High: side(2)}, Simple, 0)
-	if math.Abs(*d.FalseAccept-*n.FalseAccept) > 1e-8 {
-		t.Errorf("t of 1e8 degrees of freedom %v, normal %v", *d.FalseAccept, *n.FalseAccept)
+	// With many degrees of freedom t is the normal distribution, Phi(-2).
+	for _, dof := range []float64{0, 1e9, 1e15, 1e20, 1e300, math.Inf(1)} {
+		d := Judge(1, 1, 0.5, dof, Limit{High: side(2)}, Simple, 0)
+		if math.Abs(*d.FalseAccept-0.0227501319481792) > 1e-12 {
+			t.Errorf("%v degrees of freedom: %v", dof, *d.FalseAccept)
+		}
+	}
+	if d := Judge(1, 1, 0.5, 9.99e7, Limit{High: side(2)}, Simple, 0); math.Abs(*d.FalseAccept-0.0227501319481792) > 2e-9 {
+		t.Errorf("just below: %v", *d.FalseAccept)
 	}
 }
 
