@@ -6,12 +6,6 @@ import (
 	"slices"
 )
 
-// leg is one passage of one cycle.
-type leg struct {
-	cycle int
-	down  bool
-}
-
 // group gives every reading its set pressure; false when that is impossible,
 // and every set pressure is then NaN.
 func (w *work) group() bool {
