@@ -102,7 +102,10 @@ func Report(file []byte, roots []*x509.Certificate) Findings {
 		return f.fail("signature", err)
 	}
 	f.Signer = signer.Subject.CommonName
-	f.pass("signature", "by %s, over every byte of the file, under the trusted root", f.Signer)
+	f.pass("signature", "by %s, over every byte of the file, under a trusted root", f.Signer)
+	for _, root := range roots {
+		f.pass("root", "trusted because it was given: %s, SHA-256 %s", root.Subject.CommonName, sign.Fingerprint(root))
+	}
 	if len(p.Files) != 2 {
 		return f.fail("files", fmt.Errorf("%d files are attached, record and statement belong there", len(p.Files)))
 	}
