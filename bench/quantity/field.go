@@ -1,7 +1,10 @@
 // Package quantity holds what a number with a unit is, as instruments and
 // files state it. It is a leaf; it measures and judges nothing.
 //
-// Field is the place of one number in a line of text; Parse reads "300 mmHg".
+// Field is the place of one number in a line of text; Parse reads "300 mmHg",
+// and the Parse functions of each quantity read it into a named type. Unit and
+// Value turn numbers into SI and back; RoundTo and the Format functions write
+// them.
 package quantity
 
 import (
@@ -22,15 +25,15 @@ type Field struct {
 	UnitInText bool   `json:"unit_in_text,omitempty"`
 }
 
-// Number returns the number in the text, or an error that quotes the text.
+// Number returns the number in the text, or an error that quotes the text. It
+// allocates nothing unless it refuses: fast streams come through here.
 func (f Field) Number(text string) (float64, error) {
 	s := text
 	if f.Separator != "" {
-		parts := strings.Split(s, f.Separator)
-		if f.Column < 0 || f.Column >= len(parts) {
+		var ok bool
+		if s, ok = column(s, f.Separator, f.Column); !ok {
 			return 0, fmt.Errorf("%q has no column %d", text, f.Column)
 		}
-		s = parts[f.Column]
 	}
 	s, ok := strings.CutPrefix(s, f.Prefix)
 	if !ok {
@@ -49,6 +52,31 @@ func (f Field) Number(text string) (float64, error) {
 		return 0, fmt.Errorf("%q: the number has %d characters, %d are stated", text, len(s), f.Width)
 	}
 	return ParseDecimal(strings.TrimLeft(s, " "))
+}
+
+// Value is Number with the field's unit. A field that names no known unit, and
+// a number too large for SI, are refused.
+func (f Field) Value(text string) (Value, error) {
+	u, ok := UnitNamed(f.Unit)
+	if !ok {
+		return Value{}, fmt.Errorf("%q is no unit known here", f.Unit)
+	}
+	x, err := f.Number(text)
+	if err != nil {
+		return Value{}, err
+	}
+	return valueOf(x, u)
+}
+
+// column returns the part of s between separators, from 0.
+func column(s, separator string, n int) (part string, ok bool) {
+	for ; n > 0; n-- {
+		if _, s, ok = strings.Cut(s, separator); !ok {
+			return "", false
+		}
+	}
+	part, _, _ = strings.Cut(s, separator)
+	return part, n == 0
 }
 
 // ParseDecimal reads [+-]digits[.digits][(e|E)[+-]digits] and nothing else: no

@@ -44,87 +44,80 @@ const (
 	inWaterPa = 249.08891
 )
 
-// UnitNamed returns the unit of that name; "µ" and "μ" are read as "u".
+// units is every unit known here, those people mean most often first within a
+// dimension.
+var units = [...]Unit{
+	{"1", DimNone, 1, 0},
+	{"%", DimNone, 0.01, 0},
+	{"mmHg", DimPressure, mmHgPa, 0},
+	{"kPa", DimPressure, 1e3, 0},
+	{"Pa", DimPressure, 1, 0},
+	{"hPa", DimPressure, 100, 0},
+	{"mbar", DimPressure, 100, 0},
+	{"bar", DimPressure, 1e5, 0},
+	{"psi", DimPressure, psiPa, 0},
+	{"torr", DimPressure, torrPa, 0},
+	{"cmH2O", DimPressure, cmWaterPa, 0},
+	{"cmH2O_4C", DimPressure, cmWaterPa * 0.999972, 0},
+	{"cmH2O_20C", DimPressure, cmWaterPa * 0.9982071, 0},
+	{"inH2O", DimPressure, inWaterPa, 0},
+	{"inH2O_4C", DimPressure, inWaterPa * 0.999972, 0},
+	{"inH2O_20C", DimPressure, inWaterPa * 0.9982071, 0},
+	{"inH2O_60F", DimPressure, inWaterPa * 0.999001, 0},
+	{"V", DimVoltage, 1, 0},
+	{"mV", DimVoltage, 1e-3, 0},
+	{"uV", DimVoltage, 1e-6, 0},
+	{"uV/V", DimRatio, 1e-6, 0},
+	{"mV/V", DimRatio, 1e-3, 0},
+	{"V/V", DimRatio, 1, 0},
+	{"uV/V/mmHg", DimSensitivity, 1e-6 / mmHgPa, 0},
+	{"Hz", DimFrequency, 1, 0},
+	{"kHz", DimFrequency, 1e3, 0},
+	{"degC", DimTemperature, 1, 273.15},
+	{"K", DimTemperature, 1, 0},
+	{"mm", DimLength, 1e-3, 0},
+	{"cm", DimLength, 1e-2, 0},
+	{"m", DimLength, 1, 0},
+	{"s", DimSpan, 1, 0},
+	{"ms", DimSpan, 1e-3, 0},
+	{"us", DimSpan, 1e-6, 0},
+	{"min", DimSpan, 60, 0},
+	{"h", DimSpan, 3600, 0},
+	{"mmHg/s", DimPressureRate, mmHgPa, 0},
+	{"mmHg/min", DimPressureRate, mmHgPa / 60, 0},
+}
+
+// UnitNamed returns the unit of that name; "µ" (both of them) is read as "u",
+// "°C" as "degC".
 func UnitNamed(name string) (Unit, bool) {
-	name = strings.NewReplacer("µ", "u", "μ", "u", "°C", "degC").Replace(name)
-	u := func(d Dimension, factor float64) (Unit, bool) { return Unit{name, d, factor, 0}, true }
-	switch name {
-	case "1":
-		return u(DimNone, 1)
-	case "%":
-		return u(DimNone, 0.01)
-	case "Pa":
-		return u(DimPressure, 1)
-	case "hPa", "mbar":
-		return u(DimPressure, 100)
-	case "kPa":
-		return u(DimPressure, 1e3)
-	case "bar":
-		return u(DimPressure, 1e5)
-	case "mmHg":
-		return u(DimPressure, mmHgPa)
-	case "torr":
-		return u(DimPressure, torrPa)
-	case "psi":
-		return u(DimPressure, psiPa)
-	case "cmH2O":
-		return u(DimPressure, cmWaterPa)
-	case "cmH2O_4C":
-		return u(DimPressure, cmWaterPa*0.999972)
-	case "cmH2O_20C":
-		return u(DimPressure, cmWaterPa*0.9982071)
-	case "inH2O":
-		return u(DimPressure, inWaterPa)
-	case "inH2O_4C":
-		return u(DimPressure, inWaterPa*0.999972)
-	case "inH2O_20C":
-		return u(DimPressure, inWaterPa*0.9982071)
-	case "inH2O_60F":
-		return u(DimPressure, inWaterPa*0.999001)
-	case "V":
-		return u(DimVoltage, 1)
-	case "mV":
-		return u(DimVoltage, 1e-3)
-	case "uV":
-		return u(DimVoltage, 1e-6)
-	case "V/V":
-		return u(DimRatio, 1)
-	case "mV/V":
-		return u(DimRatio, 1e-3)
-	case "uV/V":
-		return u(DimRatio, 1e-6)
-	case "uV/V/mmHg":
-		return u(DimSensitivity, 1e-6/mmHgPa)
-	case "Hz":
-		return u(DimFrequency, 1)
-	case "kHz":
-		return u(DimFrequency, 1e3)
-	case "K":
-		return u(DimTemperature, 1)
-	case "degC":
-		return Unit{name, DimTemperature, 1, 273.15}, true
-	case "m":
-		return u(DimLength, 1)
-	case "cm":
-		return u(DimLength, 1e-2)
-	case "mm":
-		return u(DimLength, 1e-3)
-	case "s":
-		return u(DimSpan, 1)
-	case "ms":
-		return u(DimSpan, 1e-3)
-	case "us":
-		return u(DimSpan, 1e-6)
-	case "min":
-		return u(DimSpan, 60)
-	case "h":
-		return u(DimSpan, 3600)
-	case "mmHg/s":
-		return u(DimPressureRate, mmHgPa)
-	case "mmHg/min":
-		return u(DimPressureRate, mmHgPa/60)
+	name = plain(name)
+	for _, u := range units {
+		if u.Name == name {
+			return u, true
+		}
 	}
 	return Unit{}, false
+}
+
+// UnitNames lists the units of a dimension, those people mean most often first.
+func UnitNames(d Dimension) []string {
+	var names []string
+	for _, u := range units {
+		if u.Dimension == d {
+			names = append(names, u.Name)
+		}
+	}
+	return names
+}
+
+// plain writes a name in ASCII where it has a spelling in ASCII.
+func plain(name string) string {
+	for i := range len(name) {
+		if name[i] >= 0x80 {
+			return strings.NewReplacer("µ", "u", "μ", "u", "°C", "degC").Replace(name)
+		}
+	}
+	return name
 }
 
 // ToSI turns x of the unit into SI.
@@ -153,8 +146,24 @@ func (v Value) In(u Unit) (float64, error) {
 }
 
 // Parse reads "300 mmHg": a decimal, one or more blanks, a unit. The unit is
-// required.
-func Parse(s string) (Value, error) {
+// required. An unknown unit that is spelt nearly like a known one is answered
+// with that one.
+func Parse(s string) (Value, error) { return parseUnits(s, func(Dimension) bool { return true }) }
+
+// ParseAs is Parse for a value that must be of the dimension d.
+func ParseAs(s string, d Dimension) (Value, error) {
+	v, err := parseUnits(s, func(other Dimension) bool { return other == d })
+	if err != nil {
+		return Value{}, err
+	}
+	if v.Unit.Dimension != d {
+		return Value{}, fmt.Errorf("%q: %s is a unit of something else", s, v.Unit.Name)
+	}
+	return v, nil
+}
+
+// parseUnits proposes units of the dimensions wanted alone.
+func parseUnits(s string, wanted func(Dimension) bool) (Value, error) {
 	number, name, ok := strings.Cut(s, " ")
 	if !ok {
 		return Value{}, fmt.Errorf("%q: a number, a blank and a unit are expected, as in \"300 mmHg\"", s)
@@ -166,23 +175,19 @@ func Parse(s string) (Value, error) {
 	name = strings.TrimLeft(name, " ")
 	u, ok := UnitNamed(name)
 	if !ok {
+		if like := spelt(name, wanted); like != "" {
+			return Value{}, fmt.Errorf("%q: %q is no unit known here; did you mean %q?", s, name, like)
+		}
 		return Value{}, fmt.Errorf("%q: %q is no unit known here", s, name)
 	}
+	return valueOf(x, u)
+}
+
+// valueOf refuses what is too large for SI.
+func valueOf(x float64, u Unit) (Value, error) {
 	si := u.ToSI(x)
 	if math.IsInf(si, 0) {
 		return Value{}, errors.New("a number that is too large")
 	}
 	return Value{SI: si, Stated: x, Unit: u}, nil
-}
-
-// ParseAs is Parse for a value that must be of the dimension d.
-func ParseAs(s string, d Dimension) (Value, error) {
-	v, err := Parse(s)
-	if err != nil {
-		return Value{}, err
-	}
-	if v.Unit.Dimension != d {
-		return Value{}, fmt.Errorf("%q: %s is a unit of something else", s, v.Unit.Name)
-	}
-	return v, nil
 }
