@@ -1,0 +1,115 @@
+package main
+
+import (
+	"io"
+	"strings"
+	"testing"
+	"time"
+
+	"kymobench/bench/line"
+	"kymobench/bench/setup"
+	"kymobench/bench/simulated"
+	"kymobench/procedures"
+	"kymobench/procedures/record"
+	"kymobench/procedures/run"
+)
+
+// lying is a reference that answers one of its questions with a text of its own.
+type lying struct {
+	line.Machine
+	at   int    // the question, counted from 1
+	text string // what it answers then
+	asks int
+	told line.Instant
+	out  []byte
+}
+
+func (l *lying) Receive(at line.Instant, data []byte) {
+	if strings.Contains(string(data), "MEAS") {
+		if l.asks++; l.asks == l.at {
+			l.told, l.out = at.Add(30*time.Millisecond), []byte(l.text+"\n")
+			return
+		}
+	}
+	l.Machine.Receive(at, data)
+}
+
+func (l *lying) Due() (line.Instant, bool) {
+	if l.out != nil {
+		return l.told, true
+	}
+	return l.Machine.Due()
+}
+
+func (l *lying) Emit(at line.Instant) []byte {
+	if out := l.out; out != nil {
+		l.out = nil
+		return out
+	}
+	return l.Machine.Emit(at)
+}
+
+// One reading of the reference beyond the pressures never to be exceeded, or
+// over its range, vents at once; the run is closed as inconclusive, with the
+// fault written after the vent was sent.
+func TestOverpressureVentsFirst(t *testing.T) {
+	for _, c := range []struct{ text, code string }{
+		{"+3.5000E+02", "overpressure"}, {"-4.0000E+01", "underpressure"}, {"9.9E37", "reference_lost"}, {"nonsense", ""},
+	} {
+		b, err := simulated.New(simulated.Settings{Seed: 11})
+		if err != nil {
+			t.Fatal(err)
+		}
+		d, err := procedures.Shipped("incoming")
+		if err != nil {
+			t.Fatal(err)
+		}
+		file, err := setup.Load("bench.toml", b.BenchFile(nil))
+		if err != nil {
+			t.Fatal(err)
+		}
+		source := &listening{Machine: b.Machine(simulated.RoleSource), word: "SOUR:VENT"}
+		reference := &lying{Machine: b.Machine(simulated.RoleReference), at: 300, text: c.text}
+		j := job{
+			file: file, definition: d, folder: folder{t.TempDir()}, serial: "S", operator: "test", layout: 1, covered: func(string) error { return nil },
+			ports:     replacing{newMemoryPorts(b), map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}},
+			committer: func(i line.Inbox) record.Committer { return record.NewSimulated(i, b.CommitLatency) },
+			console:   func(i line.Inbox) run.Operator { return script{inbox: i, err: io.Discard, after: time.Second} },
+		}
+		if err := j.folder.make(); err != nil {
+			t.Fatal(err)
+		}
+		out, err := j.carry(t.Context())
+		if err != nil {
+			t.Fatal(err)
+		}
+		if c.code == "" { // one garbled answer is asked again
+			if got := out.Results.Verdict.String(); got != "accepted" {
+				t.Errorf("%s: %s, %v", c.text, got, out.Results.Reasons)
+			}
+			continue
+		}
+		if got := out.Results.Verdict.String(); !out.Closed || got != "inconclusive" || out.Results.Reasons[0].Code != c.code {
+			t.Errorf("%s: closed %v, %s, %v", c.text, out.Closed, got, out.Results.Reasons)
+			continue
+		}
+		vent := line.Instant(-1)
+		for _, at := range source.heard {
+			if at >= reference.told && vent < 0 {
+				vent = at
+			}
+		}
+		if vent < 0 || vent.Sub(reference.told) > 200*time.Millisecond {
+			t.Errorf("%s: said at %v, vent heard at %v", c.text, reference.told, source.heard)
+		}
+		read, err := record.ReadFile(out.record)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, e := range read.Events {
+			if e.Kind == record.KindFault && e.At < vent {
+				t.Errorf("%s: the fault was written at %v, the vent sent at %v", c.text, e.At, vent)
+			}
+		}
+	}
+}
