@@ -16,8 +16,8 @@ import (
 	"kymobench/procedures/run"
 )
 
-// simulatedRun carries the shipped procedure on the simulated bench in memory.
-func simulatedRun(t *testing.T, dir string, seed uint64, condition string) (outcome, simulated.Truth) {
+// simulatedJob is the shipped procedure on a simulated bench in memory.
+func simulatedJob(t *testing.T, dir string, seed uint64, condition string) (job, *simulated.Bench) {
 	t.Helper()
 	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: condition})
 	if err != nil {
@@ -35,13 +35,20 @@ func simulatedRun(t *testing.T, dir string, seed uint64, condition string) (outc
 	if err := f.make(); err != nil {
 		t.Fatal(err)
 	}
-	j := job{
-		file: file, ports: newMemoryPorts(b), definition: d, folder: f, serial: b.SerialNumber(), operator: "test", seed: seed, layout: 1, covered: func(string) error { return nil },
+	return job{
+		file: file, ports: newMemoryPorts(b), definition: d, folder: f, serial: b.SerialNumber(), operator: "test", seed: seed, layout: 1,
+		covered:   func(string) error { return nil },
 		committer: func(i line.Inbox) record.Committer { return record.NewSimulated(i, b.CommitLatency) },
 		console: func(i line.Inbox) run.Operator {
 			return script{inbox: i, err: io.Discard, after: 500 * time.Millisecond}
 		},
-	}
+	}, b
+}
+
+// simulatedRun carries such a job.
+func simulatedRun(t *testing.T, dir string, seed uint64, condition string) (outcome, simulated.Truth) {
+	t.Helper()
+	j, b := simulatedJob(t, dir, seed, condition)
 	out, err := j.carry(t.Context())
 	if err != nil {
 		t.Fatalf("seed %d, %s: %v", seed, condition, err)

@@ -1,17 +1,13 @@
 package main
 
 import (
-	"io"
 	"strings"
 	"testing"
 	"time"
 
 	"kymobench/bench/line"
-	"kymobench/bench/setup"
 	"kymobench/bench/simulated"
-	"kymobench/procedures"
 	"kymobench/procedures/record"
-	"kymobench/procedures/run"
 )
 
 // lying is a reference that answers one of its questions with a text of its own.
@@ -56,29 +52,10 @@ func TestOverpressureVentsFirst(t *testing.T) {
 	for _, c := range []struct{ text, code string }{
 		{"+3.5000E+02", "overpressure"}, {"-4.0000E+01", "underpressure"}, {"9.9E37", "reference_lost"}, {"nonsense", ""},
 	} {
-		b, err := simulated.New(simulated.Settings{Seed: 11})
-		if err != nil {
-			t.Fatal(err)
-		}
-		d, err := procedures.Shipped("incoming")
-		if err != nil {
-			t.Fatal(err)
-		}
-		file, err := setup.Load("bench.toml", b.BenchFile(nil))
-		if err != nil {
-			t.Fatal(err)
-		}
+		j, b := simulatedJob(t, t.TempDir(), 11, simulated.Good)
 		source := &listening{Machine: b.Machine(simulated.RoleSource), word: "SOUR:VENT"}
 		reference := &lying{Machine: b.Machine(simulated.RoleReference), at: 300, text: c.text}
-		j := job{
-			file: file, definition: d, folder: folder{t.TempDir()}, serial: "S", operator: "test", layout: 1, covered: func(string) error { return nil },
-			ports:     replacing{newMemoryPorts(b), map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}},
-			committer: func(i line.Inbox) record.Committer { return record.NewSimulated(i, b.CommitLatency) },
-			console:   func(i line.Inbox) run.Operator { return script{inbox: i, err: io.Discard, after: time.Second} },
-		}
-		if err := j.folder.make(); err != nil {
-			t.Fatal(err)
-		}
+		j.ports = replacing{newMemoryPorts(b), map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}}
 		out, err := j.carry(t.Context())
 		if err != nil {
 			t.Fatal(err)

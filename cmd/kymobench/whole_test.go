@@ -13,11 +13,8 @@ import (
 	"time"
 
 	"kymobench/bench/line"
-	"kymobench/bench/setup"
 	"kymobench/bench/simulated"
-	"kymobench/procedures"
 	"kymobench/procedures/record"
-	"kymobench/procedures/run"
 	"kymobench/reports/sign"
 	"kymobench/reports/verify"
 )
@@ -226,31 +223,11 @@ func (l *listening) Receive(at line.Instant, data []byte) {
 func TestCancelVents(t *testing.T) {
 	for k := range seeds(40) {
 		stop := 1 + int(k*7)
-		b, err := simulated.New(simulated.Settings{Seed: k})
-		if err != nil {
-			t.Fatal(err)
-		}
-		d, err := procedures.Shipped("incoming")
-		if err != nil {
-			t.Fatal(err)
-		}
-		file, err := setup.Load("bench.toml", b.BenchFile(nil))
-		if err != nil {
-			t.Fatal(err)
-		}
+		j, b := simulatedJob(t, t.TempDir(), k, simulated.Good)
 		ctx, cancel := context.WithCancel(t.Context())
 		source := &listening{Machine: b.Machine(simulated.RoleSource), word: "SOUR:VENT"}
 		reference := &listening{Machine: b.Machine(simulated.RoleReference), word: "MEAS", stop: stop, cancel: cancel}
-		ports := newMemoryPorts(b)
-		j := job{
-			file: file, definition: d, folder: folder{t.TempDir()}, serial: "S", operator: "test", layout: 1, covered: func(string) error { return nil },
-			ports:     replacing{ports, map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}},
-			committer: func(i line.Inbox) record.Committer { return record.NewSimulated(i, b.CommitLatency) },
-			console:   func(i line.Inbox) run.Operator { return script{inbox: i, err: io.Discard, after: time.Second} },
-		}
-		if err := j.folder.make(); err != nil {
-			t.Fatal(err)
-		}
+		j.ports = replacing{newMemoryPorts(b), map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}}
 		out, err := j.carry(ctx)
 		cancel()
 		if err == nil && !out.Stopped {
