@@ -79,15 +79,30 @@ type Valve interface {
 	Shut(ctx context.Context) error
 }
 
+// UUT is how one unit under test of a rig is read.
+type UUT struct {
+	Name     string     // of its place on the manifold, "" when it is the only one
+	Stream   Streaming  // nil when it does not send by itself
+	Asked    Manometer  // nil when it is not asked
+	Applied  Streaming  // the applied pressure on the same converter clock; nil when it is not measured
+	Readout  Identified // who turns the bridge into numbers; nil when it cannot be asked
+	SamePort bool       // its port is that of another UUT
+}
+
 // Rig is the set of instruments of one run.
 type Rig struct {
 	Engine    *line.Engine
 	Inbox     line.Inbox
 	Reference Manometer
-	UUT       Streaming
-	Readout   Identified // who turns the bridge into numbers; nil when it cannot be asked
+	UUTs      []UUT
 	Source    PressureSource
 	Valve     Valve
+	// Role names the instrument on a port as the operator knows it, and says
+	// which UUT's it is: an index of UUTs, or -1 for an instrument of all.
+	Role func(line.PortID) (role string, uut int)
+	// Reconnect opens a port that is gone once more, under the name in the
+	// bench file. Who answers there must be asked again.
+	Reconnect func(line.PortID) error
 	// EmergencyVent writes the vent commands of source and valve at once, on
 	// every port, without waiting for answers or for the record.
 	EmergencyVent func()

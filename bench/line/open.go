@@ -84,6 +84,14 @@ func (l *Line) OnFrame(f func(Frame) error) {
 	l.onFrame = f
 }
 
+// Again tells that the port of a line that was gone is there once more: what
+// comes first may have lost its beginning, and whoever is asked is doubtful
+// until Resync.
+func (l *Line) Again() {
+	l.gone, l.echoes = nil, l.echoes[:0]
+	l.lose()
+}
+
 // Stale counts the lines that came unasked on an asked line and were dropped.
 func (l *Line) Stale() int64 { return l.stale }
 

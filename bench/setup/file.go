@@ -30,6 +30,7 @@ type File struct {
 	Reference Reference
 	UUT       UUT
 	Readout   *Readout // nil when the UUT puts out pressure
+	Others    []Place  // further UUTs on the same manifold
 	Pressure  Source
 	Valve     Valve
 }
@@ -83,6 +84,22 @@ type UUT struct {
 	Height, HeightUncertainty, Fluid, Delay, DelayUncertainty                       string
 
 	FluidDensity float64 // kg/m3, 0 when no fluid is named
+}
+
+// Place is one place on the manifold for a UUT.
+type Place struct {
+	Name    string // "" of the only one
+	UUT     UUT
+	Readout *Readout
+}
+
+// Places are all places on the manifold, that of [uut] first.
+func (f *File) Places() []Place {
+	first := Place{UUT: f.UUT, Readout: f.Readout}
+	if len(f.Others) > 0 {
+		first.Name = "1"
+	}
+	return append([]Place{first}, f.Others...)
 }
 
 // Readout turns the bridge into numbers. Port is "" when it cannot be asked.

@@ -26,6 +26,7 @@ type benchFile struct {
 	Pressure   *pressureTable `toml:"pressure"`
 	Reference  *instrument    `toml:"reference"`
 	UUT        *uutTable      `toml:"uut"`
+	Others     []otherTable   `toml:"another_uut"`
 	Readout    *readoutTable  `toml:"readout"`
 	Source     *instrument    `toml:"source"`
 	Valve      *instrument    `toml:"valve"`
@@ -138,6 +139,17 @@ type uutTable struct {
 	DelayUncertainty      string `toml:"delay_uncertainty"`
 }
 
+// otherTable is a further UUT on the manifold: what it does not state is as in
+// [uut] and [readout].
+type otherTable struct {
+	Name              string        `toml:"name"`
+	Port              string        `toml:"port"`
+	Column            int           `toml:"column"`
+	Height            string        `toml:"height"`
+	HeightUncertainty string        `toml:"height_uncertainty"`
+	Readout           *readoutTable `toml:"readout"`
+}
+
 type loader struct {
 	doc  *tomlfile.Document
 	file benchFile
@@ -170,6 +182,7 @@ func Load(name string, data []byte) (*File, error) {
 	l.reference(f)
 	l.uut(f)
 	l.readout(f)
+	l.others(f)
 	l.source(f)
 	l.valve(f)
 	l.together(f)
@@ -210,33 +223,34 @@ func (l *loader) tables() {
 	}
 }
 
-// dialogue takes what every asked instrument has. A readout without a port
-// cannot be asked, so it has no questions either.
-func (l *loader) dialogue(role string, in *instrument, d *Dialogue) {
+// dialogue takes what every asked instrument has, at a path of the file. A
+// readout without a port cannot be asked, so it has no questions either.
+func (l *loader) dialogue(role string, in *instrument, d *Dialogue, path ...any) {
+	at := func(name string) []any { return append(slices.Clone(path), name) }
 	*d = Dialogue{Name: in.Name, Baud: in.Baud}
 	if d.Name == "" {
 		d.Name = role
 	} else {
-		l.check(tomlfile.LongestIdentity, role, "name")
+		l.check(tomlfile.LongestIdentity, at("name")...)
 	}
-	if role == "readout" && !l.doc.Has(role, "port") {
+	if role == "readout" && !l.doc.Has(at("port")...) {
 		for _, key := range []string{"family", "baud", "identify", "identity", "uptime", "clear", "errors", "answer_within"} {
-			l.demand(!l.doc.Has(role, key), fmt.Sprintf("%s of a readout that has no port", key), "state its port, or leave this out", role, key)
+			l.demand(!l.doc.Has(at(key)...), fmt.Sprintf("%s of a readout that has no port", key), "state its port, or leave this out", at(key)...)
 		}
 		return
 	}
-	d.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"scpi"}, role, "family")
-	d.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, role, "port")
-	d.Identify = tomlfile.TakeText(l.doc, &l.err, longestCommand, role, "identify")
-	d.Identity = tomlfile.TakeText(l.doc, &l.err, longestCommand, role, "identity")
-	d.Uptime = l.command(role, "uptime")
-	d.Clear = l.command(role, "clear")
-	d.Errors = l.command(role, "errors")
-	d.Baud = l.baud(in.Baud, role)
+	d.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"scpi"}, at("family")...)
+	d.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, at("port")...)
+	d.Identify = tomlfile.TakeText(l.doc, &l.err, longestCommand, at("identify")...)
+	d.Identity = tomlfile.TakeText(l.doc, &l.err, longestCommand, at("identity")...)
+	d.Uptime = l.command(at("uptime")...)
+	d.Clear = l.command(at("clear")...)
+	d.Errors = l.command(at("errors")...)
+	d.Baud = l.baud(in.Baud, path...)
 	d.Within = 2 * time.Second
-	if l.doc.Has(role, "answer_within") {
-		within := quantity.Span(l.optional(quantity.DimSpan, role, "answer_within"))
-		l.demand(within >= 1e-3 && within <= 60, "an answer is waited for between 1 ms and 60 s", "", role, "answer_within")
+	if l.doc.Has(at("answer_within")...) {
+		within := quantity.Span(l.optional(quantity.DimSpan, at("answer_within")...))
+		l.demand(within >= 1e-3 && within <= 60, "an answer is waited for between 1 ms and 60 s", "", at("answer_within")...)
 		if l.err == nil {
 			d.Within = within.Duration()
 		}
@@ -257,17 +271,18 @@ func (l *loader) command(path ...any) string {
 }
 
 // baud gives 9600 where none is stated.
-func (l *loader) baud(stated int, role string) int {
-	if !l.doc.Has(role, "baud") {
+func (l *loader) baud(stated int, path ...any) int {
+	path = append(slices.Clone(path), "baud")
+	if !l.doc.Has(path...) {
 		return 9600
 	}
-	l.demand(stated >= 50 && stated <= 12_000_000, "no serial port has that rate", "usual rates are 9600 and 115200", role, "baud")
+	l.demand(stated >= 50 && stated <= 12_000_000, "no serial port has that rate", "usual rates are 9600 and 115200", path...)
 	return stated
 }
 
 func (l *loader) reference(f *File) {
 	in, r := l.file.Reference, &f.Reference
-	l.dialogue("reference", in, &r.Dialogue)
+	l.dialogue("reference", in, &r.Dialogue, "reference")
 	r.Read = tomlfile.TakeText(l.doc, &l.err, longestCommand, "reference", "read")
 	r.Zero = l.command("reference", "zero")
 	r.Field = quantity.Field{Unit: l.unit(quantity.DimPressure, "reference", "unit"), UnitInText: in.UnitInText}

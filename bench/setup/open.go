@@ -14,7 +14,8 @@ import (
 type Opener interface {
 	// Inbox is where the events of all its ports wait.
 	Inbox() line.Inbox
-	// Connect opens the port of that name under an id.
+	// Connect opens the port of that name under an id, also once more when it
+	// has gone.
 	Connect(id line.PortID, name string, baud int) error
 	// Close ends every port.
 	Close() error
@@ -30,41 +31,63 @@ func (f *File) Open(o Opener) (*bench.Rig, error) {
 	return rig, nil
 }
 
+// opened is a port that was opened, for whom and how.
+type opened struct {
+	line *line.Line
+	role string
+	uut  int // index of the UUT, or -1
+	port string
+	baud int
+}
+
+// opening is the work of opening a file's instruments.
+type opening struct {
+	o      Opener
+	engine *line.Engine
+	ports  []opened // that of PortID i+1 is ports[i]
+	asked  []lateAsked
+	shared map[string]*lines.Port
+}
+
+// lateAsked is an instrument that several UUTs share.
+type lateAsked struct {
+	port string
+	who  bench.Identified
+}
+
+func (w *opening) connect(role string, uut int, port string, baud int) (*line.Line, error) {
+	id := line.PortID(len(w.ports) + 1)
+	if err := w.o.Connect(id, port, baud); err != nil {
+		return nil, fmt.Errorf("open the %s on %s: %w", role, port, err)
+	}
+	l := w.engine.Open(id, line.Settings{Name: role + " on " + port})
+	w.ports = append(w.ports, opened{l, role, uut, port, baud})
+	return l, nil
+}
+
+// dialogue opens the line of an instrument that is asked.
+func (w *opening) dialogue(role string, uut int, d Dialogue) (*line.Line, scpi.Settings, error) {
+	l, err := w.connect(role, uut, d.Port, d.Baud)
+	return l, scpi.Settings{Identify: d.Identify, Identity: d.Identity, Uptime: d.Uptime, Clear: d.Clear, Errors: d.Errors, Within: d.Within}, err
+}
+
 func (f *File) open(o Opener) (*bench.Rig, error) {
-	engine := line.NewEngine(o.Inbox())
-	next := line.PortID(1)
-	connect := func(role, port string, baud int) (*line.Line, error) {
-		id := next
-		next++
-		if err := o.Connect(id, port, baud); err != nil {
-			return nil, fmt.Errorf("open the %s on %s: %w", role, port, err)
-		}
-		return engine.Open(id, line.Settings{Name: role + " on " + port}), nil
-	}
-	asked := func(role string, d Dialogue) (*line.Line, scpi.Settings, error) {
-		l, err := connect(role, d.Port, d.Baud)
-		return l, scpi.Settings{Identify: d.Identify, Identity: d.Identity, Uptime: d.Uptime, Clear: d.Clear, Errors: d.Errors, Within: d.Within}, err
-	}
-	rig := &bench.Rig{Engine: engine, Inbox: o.Inbox(), Close: o.Close}
-	l, s, err := asked("reference", f.Reference.Dialogue)
+	w := &opening{o: o, engine: line.NewEngine(o.Inbox()), shared: map[string]*lines.Port{}}
+	rig := &bench.Rig{Engine: w.engine, Inbox: o.Inbox(), Close: o.Close, Role: w.role, Reconnect: w.reconnect}
+	l, s, err := w.dialogue("reference", -1, f.Reference.Dialogue)
 	if err != nil {
 		return nil, err
 	}
 	s.Read, s.Field, s.Zero = f.Reference.Read, f.Reference.Field, f.Reference.Zero
 	rig.Reference = scpi.New(l, s)
-	if l, err = connect("UUT", f.UUT.Port, f.UUT.Baud); err != nil {
-		return nil, err
-	}
-	if rig.UUT, err = lines.New(l, lines.Settings{Field: f.UUT.Field}); err != nil {
-		return nil, err
-	}
-	if f.Readout != nil && f.Readout.Port != "" {
-		if l, s, err = asked("readout", f.Readout.Dialogue); err != nil {
+	for i, p := range f.Places() {
+		u, err := w.uut(i, p)
+		if err != nil {
 			return nil, err
 		}
-		rig.Readout = scpi.New(l, s)
+		rig.UUTs = append(rig.UUTs, u)
 	}
-	if l, s, err = asked("pressure source", f.Pressure.Dialogue); err != nil {
+	if l, s, err = w.dialogue("pressure source", -1, f.Pressure.Dialogue); err != nil {
 		return nil, err
 	}
 	source, err := scpi.NewSource(l, scpi.SourceSettings{
@@ -73,7 +96,7 @@ func (f *File) open(o Opener) (*bench.Rig, error) {
 	if err != nil {
 		return nil, err
 	}
-	if l, s, err = asked("valve", f.Valve.Dialogue); err != nil {
+	if l, s, err = w.dialogue("valve", -1, f.Valve.Dialogue); err != nil {
 		return nil, err
 	}
 	valve, err := scpi.NewValve(l, scpi.ValveSettings{Settings: s, Release: f.Valve.Release, Shut: f.Valve.Shut})
@@ -86,4 +109,72 @@ func (f *File) open(o Opener) (*bench.Rig, error) {
 		valve.ReleaseNow()
 	}
 	return rig, nil
+}
+
+// uut opens the stream and the readout of one place. UUTs may share a port,
+// each in a column of its lines, and a readout.
+func (w *opening) uut(i int, p Place) (bench.UUT, error) {
+	u := bench.UUT{Name: p.Name}
+	of := func(what string) string {
+		if p.Name == "" {
+			return what
+		}
+		return what + " " + p.Name
+	}
+	port := w.shared[p.UUT.Port]
+	if u.SamePort = port != nil; !u.SamePort {
+		l, err := w.connect(of("UUT"), i, p.UUT.Port, p.UUT.Baud)
+		if err != nil {
+			return u, err
+		}
+		port = lines.NewPort(l)
+		w.shared[p.UUT.Port] = port
+	}
+	stream, err := port.Instrument(lines.Settings{Field: p.UUT.Field})
+	if err != nil {
+		return u, err
+	}
+	u.Stream = stream
+	if p.Readout == nil || p.Readout.Port == "" {
+		return u, nil
+	}
+	for _, a := range w.asked {
+		if a.port == p.Readout.Port {
+			u.Readout = a.who
+			return u, nil
+		}
+	}
+	l, s, err := w.dialogue(of("readout"), i, p.Readout.Dialogue)
+	if err != nil {
+		return u, err
+	}
+	u.Readout = scpi.New(l, s)
+	w.asked = append(w.asked, lateAsked{p.Readout.Port, u.Readout})
+	return u, nil
+}
+
+// role names a port, and says which UUT's it is; a port that several share is
+// no single one's.
+func (w *opening) role(id line.PortID) (string, int) {
+	if id < 1 || int(id) > len(w.ports) {
+		return "a port", -1
+	}
+	p := w.ports[id-1]
+	return p.role + " on " + p.port, p.uut
+}
+
+// ErrNoSuchPort: a port that the bench file does not name.
+var ErrNoSuchPort = errors.New("the bench has no such port")
+
+// reconnect opens a port that has gone, under its name in the bench file.
+func (w *opening) reconnect(id line.PortID) error {
+	if id < 1 || int(id) > len(w.ports) {
+		return ErrNoSuchPort
+	}
+	p := w.ports[id-1]
+	if err := w.o.Connect(id, p.port, p.baud); err != nil {
+		return fmt.Errorf("open the %s on %s once more: %w", p.role, p.port, err)
+	}
+	p.line.Again()
+	return nil
 }

@@ -226,13 +226,13 @@ func TestOpen(t *testing.T) {
 	ctx := context.Background()
 	for role, who := range map[string]interface {
 		Identify(context.Context) (string, error)
-	}{"reference": rig.Reference, "readout": rig.Readout, "source": rig.Source, "valve": rig.Valve} {
+	}{"reference": rig.Reference, "readout": rig.UUTs[0].Readout, "source": rig.Source, "valve": rig.Valve} {
 		if _, err := who.Identify(ctx); err != nil {
 			t.Errorf("%s: %v", role, err)
 		}
 	}
 	frames := 0
-	rig.UUT.Watch(func(r bench.Reading, err error) error {
+	rig.UUTs[0].Stream.Watch(func(r bench.Reading, err error) error {
 		if err == nil && r.Text != "" {
 			frames++
 		}

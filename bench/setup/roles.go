@@ -4,6 +4,8 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
+	"strconv"
 	"strings"
 
 	"kymobench/bench/quantity"
@@ -81,25 +83,69 @@ func (l *loader) readout(f *File) {
 		return
 	}
 	l.demand(unit.Dimension != quantity.DimPressure, "a UUT that puts out pressure has no readout of the bench's", "leave out [readout]", "readout")
+	f.Readout = l.readoutAt(in, unit, "readout")
+}
+
+// readoutAt takes the readout that stands at a path.
+func (l *loader) readoutAt(in *readoutTable, unit quantity.Unit, path ...any) *Readout {
+	key := func(name string) []any { return append(slices.Clone(path), name) }
 	r := &Readout{}
-	l.dialogue("readout", in.dialogue(), &r.Dialogue)
-	r.GainUncertainty = l.width(quantity.DimNone, "readout", "gain_uncertainty")
-	r.ZeroUncertainty = l.width(unit.Dimension, "readout", "zero_uncertainty")
-	r.CoverageFactor = l.coverage(in.CoverageFactor, "readout", "coverage_factor")
-	r.Certificate = l.text("readout", "certificate")
-	r.Due = tomlfile.Take(l.doc, &l.err, day, "readout", "due")
-	f.Readout = r
+	l.dialogue("readout", in.dialogue(), &r.Dialogue, path...)
+	r.GainUncertainty = l.width(quantity.DimNone, key("gain_uncertainty")...)
+	r.ZeroUncertainty = l.width(unit.Dimension, key("zero_uncertainty")...)
+	r.CoverageFactor = l.coverage(in.CoverageFactor, key("coverage_factor")...)
+	r.Certificate = l.text(key("certificate")...)
+	r.Due = tomlfile.Take(l.doc, &l.err, day, key("due")...)
+	return r
+}
+
+// others takes the further UUTs of the manifold: each is as [uut] says but for
+// what it states itself.
+func (l *loader) others(f *File) {
+	unit, _ := quantity.UnitNamed(f.UUT.Field.Unit)
+	names := map[string]bool{"1": true}
+	for i, in := range l.file.Others {
+		at := func(name string) []any { return []any{"another_uut", i, name} }
+		p := Place{UUT: f.UUT, Readout: f.Readout, Name: strconv.Itoa(i + 2)}
+		if l.doc.Has(at("name")...) {
+			p.Name = tomlfile.TakeText(l.doc, &l.err, tomlfile.LongestIdentity, at("name")...)
+		}
+		l.demand(!names[p.Name], "two places on the manifold have one name", "the place of [uut] is named 1", at("name")...)
+		names[p.Name] = true
+		p.UUT.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, at("port")...)
+		if l.doc.Has(at("column")...) {
+			l.demand(in.Column >= 0 && in.Column <= 64, "columns are counted from 0 to 64", "", at("column")...)
+			l.demand(in.Column == 0 || f.UUT.Field.Separator != "", "a column without a separator", `separator = "," in [uut]`, at("column")...)
+			p.UUT.Field.Column = in.Column
+		}
+		if l.doc.Has(at("height")...) {
+			p.UUT.Height = l.stated(quantity.DimLength, at("height")...)
+			level := l.optional(quantity.DimLength, at("height")...) == l.optional(quantity.DimLength, "reference", "height")
+			l.demand(level || f.UUT.Fluid != "", "the UUT is not level with the reference, and no fluid is named", `fluid = "water" in [uut]`, at("height")...)
+		}
+		if l.doc.Has(at("height_uncertainty")...) {
+			p.UUT.HeightUncertainty = l.width(quantity.DimLength, at("height_uncertainty")...)
+		}
+		if in.Readout != nil {
+			l.demand(f.Readout != nil, "a UUT that puts out pressure has no readout of the bench's", "leave it out", at("readout")...)
+			p.Readout = l.readoutAt(in.Readout, unit, at("readout")...)
+		}
+		if l.err != nil {
+			return
+		}
+		f.Others = append(f.Others, p)
+	}
 }
 
 func (l *loader) source(f *File) {
-	l.dialogue("source", l.file.Source, &f.Pressure.Dialogue)
+	l.dialogue("source", l.file.Source, &f.Pressure.Dialogue, "source")
 	f.Pressure.Set = tomlfile.Take(l.doc, &l.err, placeholder, "source", "set")
 	f.Pressure.Hold = tomlfile.TakeText(l.doc, &l.err, longestCommand, "source", "hold")
 	f.Pressure.Vent = tomlfile.TakeText(l.doc, &l.err, longestCommand, "source", "vent")
 }
 
 func (l *loader) valve(f *File) {
-	l.dialogue("valve", l.file.Valve, &f.Valve.Dialogue)
+	l.dialogue("valve", l.file.Valve, &f.Valve.Dialogue, "valve")
 	f.Valve.Release = tomlfile.TakeText(l.doc, &l.err, longestCommand, "valve", "release")
 	f.Valve.Shut = tomlfile.TakeText(l.doc, &l.err, longestCommand, "valve", "shut")
 	l.demand(f.Valve.Release != f.Valve.Shut, "the valve is shut by the command that opens it", "", "valve", "shut")
@@ -115,26 +161,51 @@ func (l *loader) together(f *File) {
 	high, low := l.pressure("reference", "range_high"), l.pressure("reference", "range_low")
 	l.demand(f.Highest <= high, "the highest pressure is above the reference's range: nobody would see it", "", "pressure", "highest")
 	l.demand(f.Lowest >= low, "the lowest pressure is below the reference's range: nobody would see it", "", "pressure", "lowest")
-	ports := map[string]string{}
-	for _, p := range []struct{ role, port string }{
-		{"reference", f.Reference.Port}, {"uut", f.UUT.Port}, {"source", f.Pressure.Port}, {"valve", f.Valve.Port}, {"readout", l.readoutPort()},
-	} {
-		name := p.port
+	l.ports(f)
+}
+
+// ports refuses two instruments on one port; UUTs may share one when each has
+// a column of its own, and a readout may serve several UUTs.
+func (l *loader) ports(f *File) {
+	type user struct {
+		role   string
+		column int
+	}
+	used := map[string][]user{}
+	use := func(role, port string, column int, path ...any) {
+		name := port
 		if strings.HasPrefix(strings.ToUpper(name), "COM") {
 			name = strings.ToUpper(name) // com3 is COM3
 		}
-		if other, used := ports[name]; used && name != "" {
-			l.refuse(l.doc.Refuse(fmt.Sprintf("the port of the %s is that of the %s", p.role, other), "one port, one instrument", p.role, "port"))
+		if name == "" {
+			return
 		}
-		ports[name] = p.role
+		for _, other := range used[name] {
+			if !(column >= 0 && other.column >= 0 && column != other.column) {
+				l.refuse(l.doc.Refuse(fmt.Sprintf("the port of the %s is that of the %s", role, other.role), "one port, one instrument", path...))
+			}
+		}
+		used[name] = append(used[name], user{role, column})
 	}
-}
-
-func (l *loader) readoutPort() string {
-	if l.file.Readout == nil {
-		return ""
+	column := func(field quantity.Field) int {
+		if field.Separator == "" {
+			return -1
+		}
+		return field.Column
 	}
-	return l.file.Readout.Port
+	use("reference", f.Reference.Port, -1, "reference", "port")
+	use("uut", f.UUT.Port, column(f.UUT.Field), "uut", "port")
+	use("source", f.Pressure.Port, -1, "source", "port")
+	use("valve", f.Valve.Port, -1, "valve", "port")
+	if f.Readout != nil {
+		use("readout", f.Readout.Port, -1, "readout", "port")
+	}
+	for i, p := range f.Others {
+		use("UUT "+p.Name, p.UUT.Port, column(p.UUT.Field), "another_uut", i, "port")
+		if p.Readout != f.Readout {
+			use("readout of UUT "+p.Name, p.Readout.Port, -1, "another_uut", i, "readout", "port")
+		}
+	}
 }
 
 // text takes a text that names something.

@@ -118,9 +118,28 @@ shut = "ROUT:CLOS"
 edge_time = "%g ms"
 edge_time_tolerance = "%g %%"
 `, port(RoleUUT), lineLength-2, converterResolution, clockTolerance*100, nominal, heightSD,
-		port(RoleReadout), quoted(identityReadout), readoutGain*100, readoutZero, readoutK,
+		port(RoleReadout), quoted(identityOfReadout(1)), readoutGain*100, readoutZero, readoutK,
 		port(RoleSource), quoted(identitySource),
 		port(RoleValve), quoted(identityValve), edge*1000, edgeTolerance*100)
+	for i := range b.others {
+		fmt.Fprintf(&w, `
+[[another_uut]]
+port = %s
+
+[another_uut.readout]
+name = "bridge converter %d"
+family = "scpi"
+port = %s
+identify = "*IDN?"
+identity = %s
+uptime = "SYST:UPT?"
+gain_uncertainty = "%g %%"
+zero_uncertainty = "%g uV/V"
+coverage_factor = %.1f
+certificate = "HI-2026-0118"
+due = "2027-03-01"
+`, port(numbered(RoleUUT, i+2)), i+2, port(numbered(RoleReadout, i+2)), quoted(identityOfReadout(i+2)), readoutGain*100, readoutZero, readoutK)
+	}
 	return w.Bytes()
 }
 

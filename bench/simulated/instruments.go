@@ -1,6 +1,7 @@
 package simulated
 
 import (
+	"fmt"
 	"math"
 	"math/rand/v2"
 	"strconv"
@@ -12,7 +13,6 @@ import (
 // Identities, as "maker,model,serial number,firmware".
 const (
 	identityReference = "Kymobench simulation,reference,SIM-R-001,1"
-	identityReadout   = "Kymobench simulation,bridge converter,SIM-C-001,1"
 	identitySource    = "Kymobench simulation,pressure source,SIM-P-001,1"
 	identityValve     = "Kymobench simulation,fast valve,SIM-V-001,1"
 )
@@ -150,6 +150,11 @@ func newValve(v *volume, d drawn) *dialogue {
 
 // newReadout is what can be asked of the bridge converter; its numbers come
 // with the UUT's stream.
-func newReadout(v *volume, d drawn) *dialogue {
-	return newDialogue(v, d.seed, RoleReadout, identityReadout)
+func newReadout(v *volume, d drawn, number int) *dialogue {
+	return newDialogue(v, d.seed, RoleReadout, identityOfReadout(number))
+}
+
+// identityOfReadout is that of the readout of a UUT, counted from 1.
+func identityOfReadout(number int) string {
+	return fmt.Sprintf("Kymobench simulation,bridge converter,SIM-C-%03d,1", number)
 }

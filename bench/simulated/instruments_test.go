@@ -17,7 +17,7 @@ func TestDialogues(t *testing.T) {
 	for _, row := range []struct{ role, send, answer, err string }{
 		{RoleReference, "*IDN?", identityReference, none},
 		{RoleReference, "*idn?\r", identityReference, none},
-		{RoleReadout, "*IDN?", identityReadout, none},
+		{RoleReadout, "*IDN?", identityOfReadout(1), none},
 		{RoleSource, "*IDN?", identitySource, none},
 		{RoleValve, "*IDN?", identityValve, none},
 		{RoleValve, "SYST:UPT?", "3600", none},

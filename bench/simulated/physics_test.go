@@ -86,7 +86,7 @@ func TestReleaseOnTheWire(t *testing.T) {
 		more, _ := emitUntil(t, u, now.Add(200*time.Millisecond))
 		out = append(out, more...)
 		edge := v.pieces[len(v.pieces)-1]
-		w, zeta := 2*math.Pi*edge.fn, edge.zeta
+		w, zeta := 2*math.Pi*d.fn*edge.fn, d.zeta*edge.zeta
 		slope := newDiaphragm(d).slope
 
 		y, dy, at := edge.p0, 0.0, 0.0

@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"strings"
 	"sync"
 	"time"
 
@@ -24,6 +25,7 @@ var errTooMany = errors.New("too many files are open")
 // Published is a bench whose instruments can be opened as serial ports, in
 // real time, until Close.
 type Published struct {
+	roles  []string // of the pump's terminals, in their order
 	ports  map[string]string
 	stops  int // write end of a pipe that wakes the pump
 	pump   *pump
@@ -51,10 +53,11 @@ func (b *Bench) publish(dir string, patience time.Duration) (*Published, error) 
 		return nil, fmt.Errorf("publish simulated instruments: %w", err)
 	}
 	p := &Published{ports: map[string]string{}, stops: -1, pump: &pump{wake: -1, patience: patience, start: time.Now()}}
-	for _, role := range Roles() {
+	for _, role := range b.Roles() {
 		t, err := openTerminal(b.machines[role])
 		if err == nil {
-			t.streams = role == RoleUUT
+			t.streams = strings.HasPrefix(role, RoleUUT)
+			p.roles = append(p.roles, role)
 			p.pump.terminals = append(p.pump.terminals, t)
 			link := filepath.Join(dir, role)
 			if err = relink(t.name, link); err == nil {
@@ -106,7 +109,7 @@ func (p *Published) Close() error {
 // release gives back what was opened and linked, as far as it was.
 func (p *Published) release() error {
 	var errs []error
-	for i, role := range Roles() {
+	for i, role := range p.roles {
 		if link, ok := p.ports[role]; ok {
 			// Another bench may have taken the name meanwhile: leave it alone.
 			if name, err := os.Readlink(link); err == nil && name == p.pump.terminals[i].name {

@@ -65,6 +65,7 @@ import (
 	"fmt"
 	"math/rand/v2"
 	"slices"
+	"strconv"
 	"strings"
 	"time"
 
@@ -75,6 +76,9 @@ import (
 type Settings struct {
 	Seed      uint64
 	Condition string // one of Conditions; empty is "good"
+	// Others are the conditions of further UUTs on the same manifold, each with
+	// a line, a readout and draws of its own.
+	Others []string
 }
 
 // Conditions that a UUT, or its line, can be in.
@@ -106,6 +110,21 @@ func Roles() []string {
 	return []string{RoleReference, RoleUUT, RoleReadout, RoleSource, RoleValve}
 }
 
+// MostUUTs is how many UUTs a simulated manifold takes.
+const MostUUTs = 16
+
+// numbered is the role of a UUT, or its readout, after the first: "uut2".
+func numbered(role string, number int) string { return role + strconv.Itoa(number) }
+
+// Roles lists the machines of this bench.
+func (b *Bench) Roles() []string {
+	roles := Roles()
+	for i := range b.others {
+		roles = append(roles, numbered(RoleUUT, i+2), numbered(RoleReadout, i+2))
+	}
+	return roles
+}
+
 // Truth is what the UUT and its line are, without noise and without any error
 // of the bench. No run may read it; it is for whoever checks runs.
 type Truth struct {
@@ -122,22 +141,37 @@ type Bench struct {
 	settings  Settings
 	drawn     drawn
 	truth     Truth
+	others    []UUT
 	machines  map[string]line.Machine
 	committer *rand.Rand
 }
 
-// New draws a bench. It errs on an unknown condition only.
+// UUT is what is known of one of the bench's UUTs.
+type UUT struct {
+	Condition, SerialNumber, Model, Lot string
+	Truth                               Truth
+}
+
+// New draws a bench. It errs on an unknown condition, on more than MostUUTs,
+// and on a leak stated of a further UUT, for a leak is the whole volume's.
 func New(s Settings) (*Bench, error) {
 	if s.Condition == "" {
 		s.Condition = Good
 	}
-	if !slices.Contains(Conditions(), s.Condition) {
-		return nil, fmt.Errorf("simulated bench: no condition %q; there are %s", s.Condition, strings.Join(Conditions(), ", "))
+	for i, c := range append([]string{s.Condition}, s.Others...) {
+		switch {
+		case !slices.Contains(Conditions(), c):
+			return nil, fmt.Errorf("simulated bench: no condition %q; there are %s", c, strings.Join(Conditions(), ", "))
+		case i > 0 && c == Leak:
+			return nil, fmt.Errorf("simulated bench: a leak is the whole volume's; state it of the first UUT")
+		case i >= MostUUTs:
+			return nil, fmt.Errorf("simulated bench: more than %d UUTs", MostUUTs)
+		}
 	}
 	d := draw(s)
 	dia := newDiaphragm(d)
 	v := newVolume(d)
-	return &Bench{
+	b := &Bench{
 		settings:  s,
 		drawn:     d,
 		truth:     trueOf(d, dia),
@@ -145,11 +179,29 @@ func New(s Settings) (*Bench, error) {
 		machines: map[string]line.Machine{
 			RoleReference: newReference(v, d),
 			RoleUUT:       newTransducer(v, dia, d),
-			RoleReadout:   newReadout(v, d),
+			RoleReadout:   newReadout(v, d, 1),
 			RoleSource:    newSource(v, d),
 			RoleValve:     newValve(v, d),
 		},
-	}, nil
+	}
+	for i, condition := range s.Others {
+		own := Settings{Seed: mix(s.Seed + uint64(i+1)*0x9e3779b97f4a7c15), Condition: condition}
+		d := draw(own)
+		d.edgeWidth = b.drawn.edgeWidth // the valve is the bench's
+		dia := newDiaphragm(d)
+		b.machines[numbered(RoleUUT, i+2)] = newTransducer(v, dia, d)
+		b.machines[numbered(RoleReadout, i+2)] = newReadout(v, d, i+2)
+		b.others = append(b.others, UUT{
+			Condition: condition, SerialNumber: serialNumber(condition, s.Seed) + fmt.Sprintf("-%d", i+2), Model: b.Model(), Lot: b.Lot(), Truth: trueOf(d, dia),
+		})
+	}
+	return b, nil
+}
+
+// UUTs lists the bench's UUTs in the order of the bench file.
+func (b *Bench) UUTs() []UUT {
+	first := UUT{Condition: b.settings.Condition, SerialNumber: b.SerialNumber(), Model: b.Model(), Lot: b.Lot(), Truth: b.truth}
+	return append([]UUT{first}, b.others...)
 }
 
 // Machine returns the instrument of a role, nil for a role that is not there.
@@ -171,12 +223,14 @@ func (b *Bench) StartTime() time.Time { return b.drawn.start }
 func (b *Bench) Model() string { return "SIM-PT5" }
 
 // SerialNumber is told by seed and condition.
-func (b *Bench) SerialNumber() string {
-	code := strings.ToUpper(b.settings.Condition[:1])
-	if b.settings.Condition == AirBubble {
+func (b *Bench) SerialNumber() string { return serialNumber(b.settings.Condition, b.settings.Seed) }
+
+func serialNumber(condition string, seed uint64) string {
+	code := strings.ToUpper(condition[:1])
+	if condition == AirBubble {
 		code = "B"
 	}
-	return fmt.Sprintf("SIM-%s%06d", code, b.settings.Seed)
+	return fmt.Sprintf("SIM-%s%06d", code, seed)
 }
 
 // Lot is told by the seed.

@@ -132,7 +132,7 @@ func (u *transducer) follow(t line.Instant) {
 		u.to(next.from, next.p0)
 		c.index++
 		if next.fn != 0 {
-			u.line.tune(next.fn, next.zeta, u.period/1e9)
+			u.line.tune(u.d.fn*next.fn, u.d.zeta*next.zeta, u.period/1e9)
 		}
 	}
 	p := &u.v.pieces[c.index]

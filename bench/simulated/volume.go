@@ -60,14 +60,14 @@ type piece struct {
 	p0     float64 // mmHg at from
 	target float64 // driving, mmHg
 	cool   float64 // held: what cooling will take, mmHg
-	fn     float64 // not 0: the line's figures from here on
+	fn     float64 // not 0: what the lines' figures are multiplied by from here on
 	zeta   float64
 }
 
 func newVolume(d drawn) *volume {
 	return &volume{
 		d:        d,
-		pieces:   []piece{{kind: still, fn: d.fn, zeta: d.zeta}},
+		pieces:   []piece{{kind: still, fn: 1, zeta: 1}},
 		setError: stream(d.seed, "set-point error"),
 		relay:    stream(d.seed, "relay delay"),
 		scatterF: stream(d.seed, "scatter of fn"),
@@ -134,8 +134,8 @@ func (v *volume) advance(now line.Instant) {
 			v.warm(s.at, -v.now(s.at))
 			v.begin(piece{
 				from: s.at, kind: falling,
-				fn:   v.d.fn * math.Exp(0.003*v.scatterF.NormFloat64()),
-				zeta: v.d.zeta * (1 + 0.008*v.scatterZ.NormFloat64()),
+				fn:   math.Exp(0.003 * v.scatterF.NormFloat64()),
+				zeta: 1 + 0.008*v.scatterZ.NormFloat64(),
 			})
 		case !s.open && v.open:
 			v.open = false

@@ -20,10 +20,9 @@ type job struct {
 	file       *setup.File
 	ports      setup.Opener
 	definition *procedures.Definition
-	committer  func(line.Inbox) record.Committer
+	committer  func(record.Poster) record.Committer
 	folder     folder
-	serial     string
-	marks      marks
+	uuts       []marks // in the order of the bench's places
 	operator   string
 	console    func(line.Inbox) run.Operator
 	seed       uint64
@@ -31,54 +30,84 @@ type job struct {
 	covered    func(text string) error // the report can print it
 }
 
-// outcome of a job: the run's, with the files it left.
+// outcome of a job for one UUT: the run's, with the file it left.
 type outcome struct {
 	run.Outcome
+	serial string
 	record string
 }
 
-// carry runs the job to its closed record.
-func (j job) carry(ctx context.Context) (outcome, error) {
+// carry runs the job to its closed records, one for each UUT.
+func (j job) carry(ctx context.Context) ([]outcome, error) {
 	counter, previous, err := j.folder.latest()
 	if err != nil {
-		return outcome{}, err
+		return nil, err
 	}
 	if f := j.file; f.Highest < j.definition.HighestPressure() {
-		return outcome{}, usagef("the procedure goes to %.0f mmHg, the bench file allows %.0f mmHg", j.definition.HighestPressure().MmHg(), f.Highest.MmHg())
+		return nil, usagef("the procedure goes to %.0f mmHg, the bench file allows %.0f mmHg", j.definition.HighestPressure().MmHg(), f.Highest.MmHg())
 	}
-	for _, text := range []string{j.serial, j.operator, j.marks.model, j.marks.lot, j.file.Department, j.file.Bench} {
-		if err := j.covered(text); err != nil {
-			return outcome{}, usageError{fmt.Errorf("the report could not print it: %w", err)}
+	if n := len(j.file.Places()); len(j.uuts) > n {
+		return nil, usagef("%d serial numbers, and the bench file has %d places for a UUT", len(j.uuts), n)
+	}
+	for i, m := range j.uuts {
+		for _, other := range j.uuts[:i] {
+			if m.serial == other.serial {
+				return nil, usagef("the serial number %s stands twice", m.serial)
+			}
 		}
 	}
-	rig, err := j.file.Open(j.ports)
-	if err != nil {
-		return outcome{}, err
+	texts := []string{j.operator, j.file.Department, j.file.Bench}
+	for _, m := range j.uuts {
+		texts = append(texts, m.serial, m.model, m.lot)
 	}
-	out, path, err := j.carryOn(ctx, rig, counter+1, previous)
+	for _, text := range texts {
+		if err := j.covered(text); err != nil {
+			return nil, usageError{fmt.Errorf("the report could not print it: %w", err)}
+		}
+	}
+	file := *j.file
+	file.Others = file.Others[:len(j.uuts)-1]
+	rig, err := file.Open(j.ports)
+	if err != nil {
+		return nil, err
+	}
+	out, err := j.carryOn(ctx, &file, rig, counter, previous)
 	if closing := rig.Close(); err == nil {
 		err = closing
 	}
-	return outcome{out, path}, err
+	return out, err
 }
 
-func (j job) carryOn(ctx context.Context, rig *bench.Rig, counter int64, previous string) (run.Outcome, string, error) {
-	id := fmt.Sprintf("%s-%04d", rig.Inbox.Wall().UTC().Format("20060102T150405Z"), counter)
-	path := filepath.Join(j.folder.runs(), id+".record")
-	out, err := run.Carry(ctx, run.Settings{
+// carryOn names a run for each UUT, counted one after the other; all follow
+// the run that was the latest when they began.
+func (j job) carryOn(ctx context.Context, file *setup.File, rig *bench.Rig, counter int64, previous string) ([]outcome, error) {
+	settings := run.Settings{
 		Definition: j.definition,
 		BenchFile:  record.File{Name: filepath.Base(j.file.Name), SHA256: j.file.SHA256, Text: string(j.file.Source)},
-		Facts:      factsOf(j.file, j.definition, j.serial, j.marks),
+		Facts:      factsOf(j.file),
 		Rig:        rig,
 		Layout:     j.layout,
 		Operator:   j.console(rig.Inbox),
-		Opened: record.Opened{
+	}
+	out := make([]outcome, len(j.uuts))
+	for i, place := range file.Places() {
+		m := j.uuts[i]
+		counter++
+		id := fmt.Sprintf("%s-%04d", rig.Inbox.Wall().UTC().Format("20060102T150405Z"), counter)
+		out[i].serial, out[i].record = m.serial, filepath.Join(j.folder.runs(), id+".record")
+		subject := subjectOf(place, j.definition, m)
+		subject.Opened = record.Opened{
 			Schema: record.Schema, Run: id, Counter: counter, Previous: previous, Program: "kymobench " + version,
 			Department: j.file.Department, Bench: j.file.Bench, Operator: j.operator, Simulated: j.file.Simulated, Seed: j.seed,
-		},
-		Open: func() (*record.Writer, error) { return record.Create(path, id, j.committer(rig.Inbox)) },
-	})
-	return out, path, err
+		}
+		subject.Open = func(p record.Poster) (*record.Writer, error) { return record.Create(out[i].record, id, j.committer(p)) }
+		settings.Subjects = append(settings.Subjects, subject)
+	}
+	outcomes, err := run.Carry(ctx, settings)
+	for i, o := range outcomes {
+		out[i].Outcome = o
+	}
+	return out, err
 }
 
 // exit is the code for a verdict.
@@ -102,9 +131,10 @@ type runDocument struct {
 		Static any `json:"static"`
 		Step   any `json:"step"`
 	} `json:"results"`
-	Record string  `json:"record"`
-	Report *string `json:"report"`
-	Truth  *truth  `json:"simulated_truth,omitempty"`
+	SerialNumber string  `json:"serial_number,omitempty"` // where there are several UUTs
+	Record       string  `json:"record"`
+	Report       *string `json:"report"`
+	Truth        *truth  `json:"simulated_truth,omitempty"`
 }
 
 type truth struct {

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"io"
 	"math"
 	"os"
@@ -17,9 +18,9 @@ import (
 )
 
 // simulatedJob is the shipped procedure on a simulated bench in memory.
-func simulatedJob(t *testing.T, dir string, seed uint64, condition string) (job, *simulated.Bench) {
+func simulatedJob(t *testing.T, dir string, seed uint64, conditions ...string) (job, *simulated.Bench) {
 	t.Helper()
-	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: condition})
+	b, err := simulatedBench(seed, conditions)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -36,20 +37,29 @@ func simulatedJob(t *testing.T, dir string, seed uint64, condition string) (job,
 		t.Fatal(err)
 	}
 	return job{
-		file: file, ports: newMemoryPorts(b), definition: d, folder: f, serial: b.SerialNumber(), operator: "test", seed: seed, layout: 1,
+		file: file, ports: newMemoryPorts(b), definition: d, folder: f, uuts: marksOf(b), operator: "test", seed: seed, layout: 1,
 		covered:   func(string) error { return nil },
-		committer: func(i line.Inbox) record.Committer { return record.NewSimulated(i, b.CommitLatency) },
+		committer: func(i record.Poster) record.Committer { return record.NewSimulated(i, b.CommitLatency) },
 		console: func(i line.Inbox) run.Operator {
 			return script{inbox: i, err: io.Discard, after: 500 * time.Millisecond}
 		},
 	}, b
 }
 
+// carryOne carries a job with one UUT.
+func (j job) carryOne(ctx context.Context) (outcome, error) {
+	all, err := j.carry(ctx)
+	if len(all) != 1 {
+		return outcome{}, err
+	}
+	return all[0], err
+}
+
 // simulatedRun carries such a job.
 func simulatedRun(t *testing.T, dir string, seed uint64, condition string) (outcome, simulated.Truth) {
 	t.Helper()
 	j, b := simulatedJob(t, dir, seed, condition)
-	out, err := j.carry(t.Context())
+	out, err := j.carryOne(t.Context())
 	if err != nil {
 		t.Fatalf("seed %d, %s: %v", seed, condition, err)
 	}

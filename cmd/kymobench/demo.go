@@ -15,14 +15,13 @@ import (
 	"kymobench/bench/simulated"
 	"kymobench/procedures"
 	"kymobench/procedures/record"
-	"kymobench/procedures/results"
 	"kymobench/procedures/run"
 	"kymobench/reports/layout1"
 )
 
 type demoOptions struct {
 	seed  uint64
-	uut   string
+	uuts  []string
 	ports string
 	out   string
 	json  bool
@@ -45,7 +44,7 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive.`,
 		},
 	}
 	cmd.Flags().Uint64Var(&o.seed, "seed", 1, "what the simulated bench is drawn from")
-	cmd.Flags().StringVar(&o.uut, "uut", simulated.Good, "condition of the UUT: "+strings.Join(simulated.Conditions(), ", "))
+	cmd.Flags().StringSliceVar(&o.uuts, "uut", []string{simulated.Good}, conditionsHelp())
 	cmd.Flags().StringVar(&o.ports, "ports", "memory", "memory (virtual time) or pty (pseudo-terminals, real time)")
 	cmd.Flags().StringVar(&o.out, "out", "", "folder to make, default kymobench-demo-SEED")
 	cmd.Flags().BoolVar(&o.json, "json", false, "one JSON document on stdout")
@@ -60,15 +59,12 @@ func noArguments(_ *cobra.Command, args []string) error {
 }
 
 func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
-	if !slices.Contains(simulated.Conditions(), o.uut) {
-		return usagef("no UUT %q: there are %s", o.uut, strings.Join(simulated.Conditions(), ", "))
-	}
 	if o.ports != "memory" && o.ports != "pty" {
 		return usagef("--ports is memory or pty, not %q", o.ports)
 	}
-	b, err := simulated.New(simulated.Settings{Seed: o.seed, Condition: o.uut})
+	b, err := simulatedBench(o.seed, o.uuts)
 	if err != nil {
-		return usageError{err}
+		return err
 	}
 	if o.out == "" {
 		if named {
@@ -89,8 +85,7 @@ func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
 		return err
 	}
 	j := job{
-		definition: d, folder: f, serial: b.SerialNumber(), marks: marks{b.Model(), b.Lot()},
-		operator: demonstrator, seed: o.seed, layout: layout1.Number, covered: layout1.Covered,
+		definition: d, folder: f, uuts: marksOf(b), operator: demonstrator, seed: o.seed, layout: layout1.Number, covered: layout1.Covered,
 	}
 	names := map[string]string{}
 	if o.ports == "pty" {
@@ -101,11 +96,11 @@ func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
 		defer published.Close()
 		names = published.Ports()
 		j.ports = newSerialPorts()
-		j.committer = func(i line.Inbox) record.Committer { return record.NewDisk(i) }
+		j.committer = func(i record.Poster) record.Committer { return record.NewDisk(i) }
 		j.console = func(i line.Inbox) run.Operator { return script{inbox: i, err: io.err} }
 	} else {
 		j.ports = newMemoryPorts(b)
-		j.committer = func(i line.Inbox) record.Committer { return record.NewSimulated(i, b.CommitLatency) }
+		j.committer = func(i record.Poster) record.Committer { return record.NewSimulated(i, b.CommitLatency) }
 		j.console = func(i line.Inbox) run.Operator { return script{inbox: i, err: io.err, after: 500 * time.Millisecond} }
 	}
 	text := b.BenchFile(names)
@@ -115,59 +110,40 @@ func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
 	if j.file, err = setup.Load("bench.toml", text); err != nil {
 		return err
 	}
-	t := b.Truth()
-	return finish(ctx, j, keys, o.json, &truth{t.NaturalFrequency, t.DampingRatio, t.ZeroOffset, t.Sensitivity, t.Hysteresis}, io)
+	var truths []truth
+	for _, u := range b.UUTs() {
+		t := u.Truth
+		truths = append(truths, truth{t.NaturalFrequency, t.DampingRatio, t.ZeroOffset, t.Sensitivity, t.Hysteresis})
+	}
+	return finish(ctx, j, keys, o.json, truths, io)
 }
 
-// finish carries the job, seals its report and shows how it went.
-func finish(ctx context.Context, j job, keys signer, asJSON bool, simulatedTruth *truth, io streams) error {
-	out, err := j.carry(ctx)
+func conditionsHelp() string {
+	return "condition of the UUT, or of several on one manifold with commas between: " + strings.Join(simulated.Conditions(), ", ")
+}
+
+// simulatedBench is a bench with a UUT in each of the conditions.
+func simulatedBench(seed uint64, conditions []string) (*simulated.Bench, error) {
+	if len(conditions) == 0 {
+		return nil, usagef("no UUT: there are %s", strings.Join(simulated.Conditions(), ", "))
+	}
+	for _, c := range conditions {
+		if !slices.Contains(simulated.Conditions(), c) {
+			return nil, usagef("no UUT %q: there are %s", c, strings.Join(simulated.Conditions(), ", "))
+		}
+	}
+	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: conditions[0], Others: conditions[1:]})
 	if err != nil {
-		return err
+		return nil, usageError{err}
 	}
-	if out.Stopped {
-		fmt.Fprintf(io.err, "stopped and vented: %s\nthe record stays open: %s\n", out.Why, out.record)
-		if asJSON {
-			d := runDocument{Schema: "kymobench/run/1", Verdict: "inconclusive", Record: out.record}
-			d.Reasons, d.Limits = []results.Reason{{Code: "stopped", Text: out.Why}}, []results.Limit{}
-			if err := encode(io.out, d); err != nil {
-				return err
-			}
-		}
-		return ended{exitInconclusive}
-	}
-	if keys.key == nil {
-		fmt.Fprintln(io.err, "record closed; no key is named in the bench file, so no report was signed")
-		return show(out, "", keys, asJSON, simulatedTruth, io)
-	}
-	fmt.Fprintln(io.err, "record closed, making the report")
-	path := filepath.Join(j.folder.reports(), strings.TrimSuffix(filepath.Base(out.record), ".record")+".pdf")
-	if err := sealReport(out.record, path, keys); err != nil {
-		return err
-	}
-	return show(out, path, keys, asJSON, simulatedTruth, io)
+	return b, nil
 }
 
-// show prints what a run found and the files it left.
-func show(out outcome, path string, keys signer, asJSON bool, simulatedTruth *truth, io streams) error {
-	if asJSON {
-		d := documentOf(out.Results, out.record)
-		d.Truth = simulatedTruth
-		if path != "" {
-			d.Report = &path
-		}
-		if err := encode(io.out, d); err != nil {
-			return err
-		}
-	} else {
-		printRun(io.out, out.Results)
-		fmt.Fprintf(io.out, "record: %s\n", out.record)
-		if path != "" {
-			fmt.Fprintf(io.out, "report: %s\ntrust:  %s\n", path, keys.root)
-		}
+// marksOf is what stands on the UUTs of a simulated bench.
+func marksOf(b *simulated.Bench) []marks {
+	var all []marks
+	for _, u := range b.UUTs() {
+		all = append(all, marks{u.SerialNumber, u.Model, u.Lot})
 	}
-	if code := exitFor(out.Results); code != exitDone {
-		return ended{code}
-	}
-	return nil
+	return all
 }

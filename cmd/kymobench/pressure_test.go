@@ -56,7 +56,7 @@ func TestOverpressureVentsFirst(t *testing.T) {
 		source := &listening{Machine: b.Machine(simulated.RoleSource), word: "SOUR:VENT"}
 		reference := &lying{Machine: b.Machine(simulated.RoleReference), at: 300, text: c.text}
 		j.ports = replacing{newMemoryPorts(b), map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}}
-		out, err := j.carry(t.Context())
+		out, err := j.carryOne(t.Context())
 		if err != nil {
 			t.Fatal(err)
 		}

@@ -19,8 +19,9 @@ import (
 )
 
 type runOptions struct {
-	bench, procedure, serial, out, operator, model, lot string
-	json                                                bool
+	bench, procedure, out, operator, model, lot string
+	serials                                     []string
+	json                                        bool
 }
 
 func newRunCommand(io streams) *cobra.Command {
@@ -40,7 +41,7 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive or stopped.`,
 	f := cmd.Flags()
 	f.StringVar(&o.bench, "bench", "", "bench file")
 	f.StringVar(&o.procedure, "procedure", "", "a shipped procedure ("+strings.Join(procedures.ShippedNames(), ", ")+") or a file")
-	f.StringVar(&o.serial, "serial-number", "", "of the UUT")
+	f.StringArrayVar(&o.serials, "serial-number", nil, "of the UUT; once for each UUT on a manifold, in the bench file's order")
 	f.StringVar(&o.model, "model", "", "of the UUT, as marked")
 	f.StringVar(&o.lot, "lot", "", "of the UUT, as marked")
 	f.StringVar(&o.operator, "operator", "", "who carries it out")
@@ -50,13 +51,17 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive or stopped.`,
 }
 
 func runRun(ctx context.Context, o runOptions, io streams) error {
-	for _, need := range []struct{ flag, value string }{{"bench", o.bench}, {"procedure", o.procedure}, {"serial-number", o.serial}} {
+	for _, need := range []struct{ flag, value string }{{"bench", o.bench}, {"procedure", o.procedure}, {"serial-number", strings.Join(o.serials, "")}} {
 		if need.value == "" {
 			return usagef("--%s is needed", need.flag)
 		}
 	}
-	if strings.TrimSpace(o.serial) != o.serial || len([]rune(o.serial)) > 64 {
-		return usagef("the serial number has blanks around it or more than 64 characters")
+	var uuts []marks
+	for _, serial := range o.serials {
+		if serial == "" || strings.TrimSpace(serial) != serial || len([]rune(serial)) > 64 {
+			return usagef("the serial number %q is empty, has blanks around it or more than 64 characters", serial)
+		}
+		uuts = append(uuts, marks{serial, o.model, o.lot})
 	}
 	d, err := definitionOf(o.procedure)
 	if err != nil {
@@ -95,9 +100,9 @@ func runRun(ctx context.Context, o runOptions, io streams) error {
 		return err
 	}
 	return finish(ctx, job{
-		file: file, ports: newSerialPorts(), definition: d, folder: f, serial: o.serial, marks: marks{o.model, o.lot}, operator: operator,
+		file: file, ports: newSerialPorts(), definition: d, folder: f, uuts: uuts, operator: operator,
 		layout: layout1.Number, covered: layout1.Covered,
-		committer: func(i line.Inbox) record.Committer { return record.NewDisk(i) },
+		committer: func(i record.Poster) record.Committer { return record.NewDisk(i) },
 		console:   func(i line.Inbox) run.Operator { return newConsole(io.in, io.err, i) },
 	}, keys, o.json, nil, io)
 }

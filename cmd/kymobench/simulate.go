@@ -4,8 +4,6 @@ import (
 	"context"
 	"fmt"
 	"path/filepath"
-	"slices"
-	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -13,8 +11,9 @@ import (
 )
 
 type simulateOptions struct {
-	dir, uut string
-	seed     uint64
+	dir  string
+	uuts []string
+	seed uint64
 }
 
 func newSimulateCommand(io streams) *cobra.Command {
@@ -30,7 +29,7 @@ terminal, or any program, can talk to them. Linux and macOS.`,
 		RunE:    func(cmd *cobra.Command, _ []string) error { return runSimulate(cmd.Context(), o, io) },
 	}
 	cmd.Flags().StringVar(&o.dir, "dir", "", "folder for ports, bench.toml and trust")
-	cmd.Flags().StringVar(&o.uut, "uut", simulated.Good, "condition of the UUT: "+strings.Join(simulated.Conditions(), ", "))
+	cmd.Flags().StringSliceVar(&o.uuts, "uut", []string{simulated.Good}, conditionsHelp())
 	cmd.Flags().Uint64Var(&o.seed, "seed", 1, "what the simulated bench is drawn from")
 	return cmd
 }
@@ -39,10 +38,7 @@ func runSimulate(ctx context.Context, o simulateOptions, io streams) error {
 	if o.dir == "" {
 		return usagef("--dir is needed")
 	}
-	if !slices.Contains(simulated.Conditions(), o.uut) {
-		return usagef("no UUT %q: there are %s", o.uut, strings.Join(simulated.Conditions(), ", "))
-	}
-	b, err := simulated.New(simulated.Settings{Seed: o.seed, Condition: o.uut})
+	b, err := simulatedBench(o.seed, o.uuts)
 	if err != nil {
 		return err
 	}
@@ -65,7 +61,11 @@ func runSimulate(ctx context.Context, o simulateOptions, io streams) error {
 	if err := writeWhole(path, b.BenchFile(published.Ports())); err != nil {
 		return err
 	}
-	fmt.Fprintf(io.err, "the simulated bench is there until ^C; in another terminal:\n  kymobench run --bench %s --procedure incoming --serial-number %s\n", path, b.SerialNumber())
+	fmt.Fprintf(io.err, "the simulated bench is there until ^C; in another terminal:\n  kymobench run --bench %s --procedure incoming", path)
+	for _, u := range b.UUTs() {
+		fmt.Fprintf(io.err, " --serial-number %s", u.SerialNumber)
+	}
+	fmt.Fprintln(io.err)
 	<-ctx.Done()
 	fmt.Fprintln(io.err, "the simulated bench is gone")
 	return published.Close()

@@ -50,7 +50,7 @@ func demonstrated(t *testing.T) (f folder, report []byte, trust string) {
 	t.Helper()
 	dir := filepath.Join(t.TempDir(), "demo")
 	var out bytes.Buffer
-	err := runDemo(t.Context(), demoOptions{seed: 3, uut: simulated.Good, ports: "memory", out: dir, json: true}, true, streams{out: &out, err: io.Discard})
+	err := runDemo(t.Context(), demoOptions{seed: 3, uuts: []string{simulated.Good}, ports: "memory", out: dir, json: true}, true, streams{out: &out, err: io.Discard})
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -228,7 +228,7 @@ func TestCancelVents(t *testing.T) {
 		source := &listening{Machine: b.Machine(simulated.RoleSource), word: "SOUR:VENT"}
 		reference := &listening{Machine: b.Machine(simulated.RoleReference), word: "MEAS", stop: stop, cancel: cancel}
 		j.ports = replacing{newMemoryPorts(b), map[string]line.Machine{simulated.RoleSource: source, simulated.RoleReference: reference}}
-		out, err := j.carry(ctx)
+		out, err := j.carryOne(ctx)
 		cancel()
 		if err == nil && !out.Stopped {
 			t.Errorf("cancelled at message %d, the run went on: %v", stop, out.Results.Verdict)

@@ -82,7 +82,8 @@ type UUT struct {
 	SerialNumber          string         `json:"serial_number"`
 	Model                 string         `json:"model,omitempty"`
 	Lot                   string         `json:"lot,omitempty"`
-	Is                    string         `json:"is"` // bare transducer, transducer with cable and channel, channel
+	Is                    string         `json:"is"`              // bare transducer, transducer with cable and channel, channel
+	Place                 string         `json:"place,omitempty"` // on the manifold, when there are several
 	Family                string         `json:"family,omitempty"`
 	Port                  string         `json:"port,omitempty"`
 	Field                 quantity.Field `json:"field"`

@@ -54,37 +54,56 @@ func (s *session) identify(ctx context.Context) error {
 	if err := ask("valve", s.Rig.Valve, &f.Valve.Instrument); err != nil {
 		return err
 	}
-	if f.Readout != nil && s.Rig.Readout != nil {
-		return ask("readout", s.Rig.Readout, &f.Readout.Instrument)
+	asked := map[bench.Identified]string{}
+	for _, u := range s.units {
+		who := u.rig.Readout
+		if u.Readout == nil || who == nil {
+			continue
+		}
+		identity, known := asked[who]
+		if !known {
+			into := record.Instrument{}
+			if err := ask("readout", who, &into); err != nil {
+				return err
+			}
+			identity = into.Identity
+			asked[who] = identity
+		}
+		readout := *u.Readout // may be shared with another UUT
+		readout.Identity = identity
+		u.Readout = &readout
 	}
 	return nil
 }
 
 // open writes the first lines: the run, the files it goes by, the instruments.
 func (s *session) open(ctx context.Context) error {
-	f := s.Facts
+	for _, u := range s.units {
+		if _, err := s.put(u, record.KindOpened, u.Opened); err != nil {
+			return err
+		}
+	}
+	if err := s.durable(ctx); err != nil {
+		return err
+	}
+	f, d := s.Facts, s.Definition
 	type first struct {
 		kind    string
 		payload any
 	}
-	d := s.Definition
-	lines := []first{
-		{record.KindOpened, s.Opened},
-		{record.KindProcedure, record.File{Name: d.Name, ID: d.ID, Revision: d.Revision, Title: d.Title, SHA256: d.SHA256, Text: string(d.Source)}},
-		{record.KindBenchFile, s.BenchFile},
-		{record.KindReference, f.Reference},
-		{record.KindUUT, f.UUT},
-	}
-	if f.Readout != nil {
-		lines = append(lines, first{record.KindReadout, *f.Readout})
-	}
-	lines = append(lines, first{record.KindSource, f.Source}, first{record.KindValve, f.Valve})
-	for i, l := range lines {
-		if err := s.append(l.kind, l.payload); err != nil {
-			return err
+	for _, u := range s.units {
+		lines := []first{
+			{record.KindProcedure, record.File{Name: d.Name, ID: d.ID, Revision: d.Revision, Title: d.Title, SHA256: d.SHA256, Text: string(d.Source)}},
+			{record.KindBenchFile, s.BenchFile},
+			{record.KindReference, f.Reference},
+			{record.KindUUT, u.UUT},
 		}
-		if i == 0 {
-			if err := s.durable(ctx); err != nil {
+		if u.Readout != nil {
+			lines = append(lines, first{record.KindReadout, *u.Readout})
+		}
+		lines = append(lines, first{record.KindSource, f.Source}, first{record.KindValve, f.Valve})
+		for _, l := range lines {
+			if _, err := s.put(u, l.kind, l.payload); err != nil {
 				return err
 			}
 		}
@@ -105,8 +124,17 @@ func (s *session) warn(ctx context.Context) error {
 	if err := s.append(record.KindWarnings, record.Warnings{Lines: Warnings(), Acknowledged: answer}); err != nil {
 		return err
 	}
-	_, err = s.ask(ctx, fmt.Sprintf("Connect UUT %s, diaphragm at the stated height, line filled and free of air. Enter goes on, \"stop\" ends", s.Facts.UUT.SerialNumber))
-	return err
+	for _, u := range s.units {
+		at := ""
+		if u.rig.Name != "" {
+			at = " at place " + u.rig.Name
+		}
+		_, err = s.ask(ctx, fmt.Sprintf("Connect UUT %s%s, diaphragm at the stated height, line filled and free of air. Enter goes on, \"stop\" ends", u.UUT.SerialNumber, at))
+		if err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // ask prompts the operator and waits for one line. "stop", "no", "n" and "q"
@@ -158,8 +186,14 @@ func (s *session) warmUp(ctx context.Context, stage procedures.WarmUp) error {
 	if err := ask("reference", s.Rig.Reference); err != nil {
 		return err
 	}
-	if s.Rig.Readout != nil {
-		if err := ask("readout", s.Rig.Readout); err != nil {
+	seen := map[bench.Identified]bool{}
+	for _, u := range s.live() {
+		who := u.rig.Readout
+		if who == nil || seen[who] {
+			continue
+		}
+		seen[who] = true
+		if err := ask("readout", who); err != nil {
 			return err
 		}
 	}

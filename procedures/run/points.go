@@ -19,14 +19,15 @@ const readEvery = 100 * time.Millisecond
 // silentAfter is how long the UUT may send nothing.
 const silentAfter = time.Second
 
-// asked is one reading of the reference.
+// asked is one reading of the reference, and what the UUTs sent up to it; the
+// slices have a place for each UUT.
 type asked struct {
-	line   int64
+	lines  []int64 // of the record; 0 for a UUT that takes no part
 	sent   line.Instant
 	at     line.Instant
 	middle float64 // s
 	p      quantity.Pressure
-	uut    float64 // Pa, mean of the UUT since the reading before; NaN if it sent nothing
+	uuts   []float64 // Pa, mean since the reading before; NaN if it sent nothing
 }
 
 // read asks the reference once, records the answer and holds it against the
@@ -43,17 +44,26 @@ func (s *session) read(ctx context.Context) (asked, error) {
 	if err := s.watchPressure("reference", p, r.Text); err != nil {
 		return asked{}, err
 	}
-	a := asked{sent: r.Sent, at: r.At, middle: r.Middle().Seconds(), p: p, uut: math.NaN()}
-	if s.stream.since.n > 0 {
-		a.uut = s.stream.since.mean
+	n := len(s.units)
+	a := asked{sent: r.Sent, at: r.At, middle: r.Middle().Seconds(), p: p, uuts: make([]float64, n), lines: make([]int64, n)}
+	for _, u := range s.live() {
+		if f := s.silent(u); f != nil {
+			if err := s.leaveOut(u, f); err != nil {
+				return asked{}, err
+			}
+			continue
+		}
+		a.uuts[u.index] = math.NaN()
+		if u.stream.since.n > 0 {
+			a.uuts[u.index] = u.stream.since.mean
+		}
+		a.lines[u.index], err = s.put(u, record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text, Watch: u.stream.since.watch()})
+		if err != nil {
+			return asked{}, err
+		}
 	}
-	n := len(s.stream.samples)
-	if n == 0 || s.now().Sub(s.stream.samples[n-1].at) > silentAfter {
-		return asked{}, &Fault{Code: "uut_silent", Text: fmt.Sprintf("the UUT's readings have not come for %v: check cable, port and rate", silentAfter)}
-	}
-	a.line, err = s.appendLine(record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text, Watch: s.stream.since.watch()})
 	s.last = p
-	return a, err
+	return a, nil
 }
 
 // next waits until it is time for the reading after this one.
@@ -93,77 +103,74 @@ func (s *session) sourceFault(ctx context.Context, err error) error {
 	return &Fault{Code: "source", Text: "the pressure source did not do as asked", Err: err}
 }
 
-// settle reads until the difference of UUT and reference is ready to be taken,
-// and returns the readings of the window. Readings outside the set pressure's
-// window begin the wait anew; a window of 0 is no window.
-func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rule ready.Settings, longest time.Duration) ([]asked, ready.State, error) {
+// settled is the window of one UUT's point.
+type settled struct {
+	unit     *unit
+	readings []asked
+	state    ready.State
+	waiting  string
+}
+
+// settle reads until the difference of UUT and reference is ready to be taken
+// for every UUT at once, and returns the readings of each one's window.
+// Readings outside the set pressure's window begin the wait anew; a window of 0
+// is no window. Of several UUTs, those that are not ready in time are left out.
+func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rule ready.Settings, longest time.Duration) ([]settled, error) {
 	until := s.now().Add(longest)
-	watch := ready.NewWatch(rule)
-	var readings []asked
-	waiting := ""
+	watches := make([]*ready.Watch, len(s.units))
+	points := make([]settled, len(s.units))
+	for _, u := range s.units {
+		watches[u.index], points[u.index].unit = ready.NewWatch(rule), u
+	}
 	for {
 		a, err := s.read(ctx)
 		if err != nil {
-			return nil, ready.State{}, err
-		}
-		inside := window == 0 || math.Abs(float64(a.p-set)) <= float64(window)
-		if !inside {
-			watch, readings = ready.NewWatch(rule), nil
-			waiting = fmt.Sprintf("pressure within %.1f mmHg of %.0f mmHg", window.MmHg(), set.MmHg())
-		} else if !math.IsNaN(a.uut) {
-			readings = append(readings, a)
-			state := watch.Add(ready.Sample{Time: a.middle, Reference: a.p.MmHg(), UUT: quantity.Pressure(a.uut).MmHg()})
-			if state.Ready {
-				return readings[state.First:], state, nil
-			}
-			waiting = state.Waiting
-		}
-		if s.now() > until {
-			return nil, ready.State{}, &Fault{Code: "not_settling", Text: fmt.Sprintf("the point at %.0f mmHg was not ready within %v, waiting for: %s", set.MmHg(), longest, waiting)}
-		}
-		if err := s.next(ctx, a); err != nil {
-			return nil, ready.State{}, err
-		}
-	}
-}
-
-// keep writes the UUT's samples that belong to the readings as blocks, then
-// the point, and waits until it is durable: only then may it be judged.
-func (s *session) keep(ctx context.Context, readings []asked, point record.Point) ([]sample, error) {
-	from, end := s.stream.from(readings[0].sent), s.stream.end()
-	samples, ok := s.stream.between(from, end)
-	if !ok || len(samples) == 0 {
-		return nil, &Fault{Code: "uut_silent", Text: "the UUT sent nothing while the point was taken"}
-	}
-	blocks, err := s.blocks(samples)
-	if err != nil {
-		return nil, err
-	}
-	for _, a := range readings {
-		point.Readings = append(point.Readings, a.line)
-	}
-	point.Blocks, point.Stage = blocks, s.stage
-	if err := s.append(record.KindPoint, point); err != nil {
-		return nil, err
-	}
-	return samples, s.durable(ctx)
-}
-
-func (s *session) blocks(samples []sample) ([]int64, error) {
-	var lines []int64
-	for i := 0; i < len(samples); i += record.BlockSize {
-		part := samples[i:min(i+record.BlockSize, len(samples))]
-		block := record.Block{Role: "uut", Start: part[0].at, Period: s.Facts.UUT.SamplePeriod}
-		for _, p := range part {
-			block.Samples = append(block.Samples, p.text)
-		}
-		n, err := s.appendLine(record.KindBlock, block)
-		if err != nil {
 			return nil, err
 		}
-		lines = append(lines, n)
+		inside := window == 0 || math.Abs(float64(a.p-set)) <= float64(window)
+		all := true
+		for _, u := range s.live() {
+			p, watch := &points[u.index], watches[u.index]
+			switch {
+			case !inside:
+				watches[u.index], p.readings, p.state = ready.NewWatch(rule), nil, ready.State{}
+				p.waiting = fmt.Sprintf("pressure within %.1f mmHg of %.0f mmHg", window.MmHg(), set.MmHg())
+			case !math.IsNaN(a.uuts[u.index]):
+				p.readings = append(p.readings, a)
+				p.state = watch.Add(ready.Sample{Time: a.middle, Reference: a.p.MmHg(), UUT: quantity.Pressure(a.uuts[u.index]).MmHg()})
+				p.waiting = p.state.Waiting
+			}
+			all = all && p.state.Ready
+		}
+		late := s.now() > until
+		if all || late {
+			done, err := s.take(points, set, longest)
+			if all || err != nil || len(done) > 0 {
+				return done, err
+			}
+		}
+		if err := s.next(ctx, a); err != nil {
+			return nil, err
+		}
 	}
-	return lines, nil
+}
+
+// take returns the windows that are ready and leaves the other UUTs out.
+func (s *session) take(points []settled, set quantity.Pressure, longest time.Duration) ([]settled, error) {
+	var done []settled
+	for _, u := range s.live() {
+		p := points[u.index]
+		if p.state.Ready {
+			p.readings = p.readings[p.state.First:]
+			done = append(done, p)
+			continue
+		}
+		f := &Fault{Code: "not_settling", Text: fmt.Sprintf("the point at %.0f mmHg was not ready within %v, waiting for: %s", set.MmHg(), longest, p.waiting)}
+		if err := s.leaveOut(u, f); err != nil {
+			return nil, err
+		}
+	}
+	return done, nil
 }
 
 // rule is the difference rule as the procedure and the bench file set it.
@@ -182,7 +189,11 @@ func (s *session) rule(stage procedures.Static) ready.Settings {
 	}
 	f := s.Facts
 	response := seconds(f.Reference.ResponseTime)
-	settings.Delay = response + seconds(f.Reference.ResponseTimeTolerance) + seconds(f.UUT.Delay) + seconds(f.UUT.DelayUncertainty)
+	delay := 0.0
+	for _, u := range s.units {
+		delay = max(delay, seconds(u.UUT.Delay)+seconds(u.UUT.DelayUncertainty))
+	}
+	settings.Delay = response + seconds(f.Reference.ResponseTimeTolerance) + delay
 	settings.Settling = response
 	return settings
 }

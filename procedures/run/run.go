@@ -13,6 +13,7 @@ import (
 	"fmt"
 
 	"kymobench/bench"
+	"kymobench/bench/line"
 	"kymobench/bench/quantity"
 	"kymobench/procedures"
 	"kymobench/procedures/record"
@@ -28,15 +29,23 @@ type Operator interface {
 	Prompt(text string)
 }
 
-// Facts are what the bench file states about the instruments, as the record
-// keeps it. Identities are filled in by the run.
+// Facts are what the bench file states about the instruments that serve every
+// UUT, as the record keeps it. Identities are filled in by the run.
 type Facts struct {
 	Reference       record.Reference
-	UUT             record.UUT
-	Readout         *record.Readout // nil when the UUT puts out pressure itself
 	Source          record.Instrument
 	Valve           record.Valve
 	Highest, Lowest quantity.Pressure // never to be exceeded
+}
+
+// Subject is one unit under test with what the bench file states about it.
+type Subject struct {
+	UUT     record.UUT
+	Readout *record.Readout // nil when the UUT puts out pressure itself
+	Opened  record.Opened
+	// Open creates its record; it is called when the instruments have said who
+	// they are. Durable events are posted to the Poster.
+	Open func(record.Poster) (*record.Writer, error)
 }
 
 // Settings of one run.
@@ -45,15 +54,12 @@ type Settings struct {
 	BenchFile  record.File
 	Facts      Facts
 	Rig        *bench.Rig
-	Opened     record.Opened
+	Subjects   []Subject // one for each of Rig.UUTs, in that order
 	Operator   Operator
 	Layout     int // page layout number the report will be made with
-	// Open creates the record; it is called when the instruments have said who
-	// they are.
-	Open func() (*record.Writer, error)
 }
 
-// Outcome is how a run ended.
+// Outcome is how a run ended for one UUT.
 type Outcome struct {
 	Closed  bool // the record is closed and Results hold
 	Stopped bool // the operator or the system stopped it; the record stays open
@@ -89,21 +95,27 @@ var (
 	ErrUnanswered = errors.New("nobody answered the prompt")
 )
 
-// Carry carries the procedure out. It returns an error only when there is no
-// record to speak for the run or the record itself is broken; everything that
-// goes wrong on the bench stands in the record and in the Outcome.
-func Carry(ctx context.Context, settings Settings) (Outcome, error) {
+// Carry carries the procedure out and returns an Outcome for each Subject. It
+// returns an error only when there is no record to speak for the run or a
+// record itself is broken; everything that goes wrong on the bench stands in
+// the records and in the Outcomes.
+func Carry(ctx context.Context, settings Settings) ([]Outcome, error) {
+	if len(settings.Subjects) == 0 || len(settings.Subjects) != len(settings.Rig.UUTs) {
+		return nil, fmt.Errorf("%d units under test for %d places of the bench", len(settings.Subjects), len(settings.Rig.UUTs))
+	}
 	s := newSession(settings)
 	defer s.vent("end of the program's work")
 	if err := s.identify(ctx); err != nil {
-		return Outcome{}, fmt.Errorf("the bench is not as its file says: %w", err)
+		return nil, fmt.Errorf("the bench is not as its file says: %w", err)
 	}
-	writer, err := settings.Open()
-	if err != nil {
-		return Outcome{}, err
+	for _, u := range s.units {
+		var err error
+		if u.writer, err = u.Open(labelled{s.Rig.Inbox, line.PortID(u.index)}); err != nil {
+			return nil, errors.Join(err, s.leave(context.WithoutCancel(ctx)))
+		}
 	}
-	s.writer = writer
-	if err = s.work(ctx); errors.Is(err, context.Canceled) {
+	err := s.work(ctx)
+	if errors.Is(err, context.Canceled) {
 		err = fmt.Errorf("%w by ^C or by the system", ErrStopped)
 	}
 	s.vent(ventReason(err))
@@ -176,64 +188,52 @@ func inWords(stage procedures.Stage) string {
 	return stage.Kind()
 }
 
-// end closes the record, or leaves it open after a stop, and says how it went.
-func (s *session) end(ctx context.Context, err error) (Outcome, error) {
+// end closes the records, or leaves them open after a stop, and says how it
+// went.
+func (s *session) end(ctx context.Context, err error) ([]Outcome, error) {
 	// What is left is bookkeeping on a vented bench; a cancelled context must
 	// not keep it from being done.
 	ctx = context.WithoutCancel(ctx)
+	finished := record.Finished{Complete: err == nil}
 	var fault *Fault
 	switch {
 	case s.broken != nil:
-		return Outcome{}, errors.Join(fmt.Errorf("the record is broken, nothing more is judged: %w", s.broken), s.writer.Leave(ctx))
+		return nil, errors.Join(fmt.Errorf("the record is broken, nothing more is judged: %w", s.broken), s.leave(ctx))
 	case err == nil:
 	case errors.As(err, &fault):
-		if e := s.append(record.KindFault, record.Fault{Code: fault.Code, Text: fault.Error()}); e != nil {
-			return Outcome{}, e
-		}
+		finished.Code, finished.Text = fault.Code, fault.Error()
 	case errors.Is(err, ErrStopped), errors.Is(err, ErrInputEnded), errors.Is(err, ErrUnanswered):
-		return Outcome{Stopped: true, Why: err.Error()}, s.writer.Leave(ctx)
+		outcomes := make([]Outcome, len(s.units))
+		for i := range outcomes {
+			outcomes[i] = Outcome{Stopped: true, Why: err.Error()}
+		}
+		return outcomes, s.leave(ctx)
 	default:
-		if e := s.append(record.KindFault, record.Fault{Code: "bench_fault", Text: err.Error()}); e != nil {
-			return Outcome{}, e
+		finished.Code, finished.Text = "bench_fault", err.Error()
+	}
+	if err != nil {
+		if e := s.append(record.KindFault, record.Fault{Code: finished.Code, Text: finished.Text}); e != nil {
+			return nil, errors.Join(e, s.leave(ctx))
 		}
 	}
-	return s.close(ctx, err)
+	var outcomes []Outcome
+	for _, u := range s.units {
+		o, e := s.close(ctx, u, finished)
+		if e != nil {
+			return nil, errors.Join(e, s.leave(ctx))
+		}
+		outcomes = append(outcomes, o)
+	}
+	return outcomes, nil
 }
 
-func (s *session) close(ctx context.Context, err error) (Outcome, error) {
-	finished := record.Finished{Complete: err == nil}
-	if err != nil {
-		finished.Code, finished.Text = "bench_fault", err.Error()
-		var fault *Fault
-		if errors.As(err, &fault) {
-			finished.Code = fault.Code
+// leave ends the records that are open and leaves them so.
+func (s *session) leave(ctx context.Context) error {
+	var errs []error
+	for _, u := range s.units {
+		if u.writer != nil && !u.closed {
+			errs = append(errs, u.writer.Leave(ctx))
 		}
 	}
-	if s.refused > 0 {
-		text := fmt.Sprintf("%d lines of the UUT were refused as no number and not used", s.refused)
-		if e := s.append(record.KindReservation, record.Reservation{Code: "lines_refused", Text: text}); e != nil {
-			return Outcome{}, e
-		}
-	}
-	if e := s.append(record.KindFinished, finished); e != nil {
-		return Outcome{}, e
-	}
-	if e := s.durable(ctx); e != nil {
-		return Outcome{}, e
-	}
-	res, e := results.Compute(s.events)
-	if e != nil {
-		return Outcome{}, fmt.Errorf("compute the results: %w", e)
-	}
-	stored, e := results.Store(res, s.Layout)
-	if e != nil {
-		return Outcome{}, e
-	}
-	if e := s.append(record.KindResults, stored); e != nil {
-		return Outcome{}, e
-	}
-	if e := s.writer.Close(ctx, s.now(), s.wall()); e != nil {
-		return Outcome{}, e
-	}
-	return Outcome{Closed: true, Results: res, Head: s.writer.Head()}, nil
+	return errors.Join(errs...)
 }

@@ -4,7 +4,6 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"math"
 	"time"
 
 	"kymobench/bench"
@@ -16,22 +15,13 @@ import (
 // session is one run while it goes on. Only the engine's goroutine touches it.
 type session struct {
 	Settings
-	writer *record.Writer
-	events []record.Event
-	known  int64 // highest line known to be durable
-	broken error // the record's first error; nothing is written after it
+	units  []*unit
+	broken error // the records' first error; nothing is written after it
 	stage  int
 
-	answers []record.Answer
-	stream  stream
-	refused int
-
-	nominal    float64 // V/V/Pa, 0 for a pressure output
-	excitation float64 // V
-	zeroed     bool
-	releasing  bool    // a good line rings below zero after a release; only the reference is watched
-	zeroUUT    float64 // Pa: the UUT's reading at the one zeroing
-	last       quantity.Pressure
+	answers   []record.Answer
+	releasing bool // a good line rings below zero after a release; only the reference is watched
+	last      quantity.Pressure
 }
 
 // within is how long the bookkeeping on a vented bench may take.
@@ -39,12 +29,8 @@ const within = 10 * time.Second
 
 func newSession(settings Settings) *session {
 	s := &session{Settings: settings}
-	u := settings.Facts.UUT
-	if v, err := quantity.ParseAs(u.NominalSensitivity, quantity.DimSensitivity); err == nil {
-		s.nominal = v.SI
-	}
-	if v, err := quantity.ParseAs(u.Excitation, quantity.DimVoltage); err == nil {
-		s.excitation = v.SI
+	for i, subject := range settings.Subjects {
+		s.units = append(s.units, newUnit(i, subject, settings.Rig.UUTs[i]))
 	}
 	e := settings.Rig.Engine
 	e.Handle(line.KindDurable, s.tookDurable)
@@ -60,10 +46,10 @@ func newSession(settings Settings) *session {
 	e.Handle(line.KindOverflow, func(line.Event) error {
 		return &Fault{Code: "overflow", Text: "the program could not keep up and events were lost"}
 	})
-	e.Handle(line.KindGone, func(ev line.Event) error {
-		return &Fault{Code: "port_gone", Text: "a port went away", Err: ev.Err}
-	})
-	settings.Rig.UUT.Watch(s.tookSample)
+	e.Handle(line.KindGone, s.tookGone)
+	for _, u := range s.units {
+		u.rig.Stream.Watch(func(r bench.Reading, err error) error { return s.tookSample(u, r, err) })
+	}
 	return s
 }
 
@@ -71,45 +57,71 @@ func (s *session) now() line.Instant { return s.Rig.Inbox.Now() }
 
 func (s *session) wall() time.Time { return s.Rig.Inbox.Wall() }
 
-// append puts an event into the record. After the record's first error it only
-// returns that error.
+// append puts an event into the record of every UUT that takes part. After the
+// first error of any of them it only returns that error.
 func (s *session) append(kind string, payload any) error {
-	_, err := s.appendLine(kind, payload)
-	return err
+	for _, u := range s.live() {
+		if _, err := s.put(u, kind, payload); err != nil {
+			return err
+		}
+	}
+	return s.broken
 }
 
-func (s *session) appendLine(kind string, payload any) (int64, error) {
+// put puts an event into the record of one UUT and returns its line.
+func (s *session) put(u *unit, kind string, payload any) (int64, error) {
 	if s.broken != nil {
 		return 0, s.broken
 	}
-	e, err := s.writer.AppendEvent(s.now(), s.wall(), kind, payload)
+	e, err := u.writer.AppendEvent(s.now(), s.wall(), kind, payload)
 	if err != nil {
 		s.broken = err
 		return 0, err
 	}
-	s.events = append(s.events, e)
+	u.events = append(u.events, e)
 	return e.Line, nil
 }
 
 // durable waits until every line so far is durable.
 func (s *session) durable(ctx context.Context) error {
-	want := s.events[len(s.events)-1].Line
-	err := s.Rig.Engine.Wait(ctx, s.now().Add(within), func() bool { return s.known >= want })
+	done := func() bool {
+		for _, u := range s.units {
+			if n := len(u.events); n > 0 && !u.closed && u.known < u.events[n-1].Line {
+				return false
+			}
+		}
+		return true
+	}
+	err := s.Rig.Engine.Wait(ctx, s.now().Add(within), done)
 	if errors.Is(err, line.ErrDeadline) {
-		s.broken = fmt.Errorf("the disk did not take line %d within %v", want, within)
+		s.broken = fmt.Errorf("the disk did not take the last lines within %v", within)
 		return s.broken
 	}
 	return err
 }
 
 func (s *session) tookDurable(e line.Event) error {
+	if int(e.Port) < 0 || int(e.Port) >= len(s.units) {
+		return nil
+	}
 	if e.Err != nil {
 		s.broken = e.Err
 		return e.Err
 	}
-	s.known = max(s.known, e.Number)
-	s.writer.Taken(e.Number)
+	u := s.units[e.Port]
+	u.known = max(u.known, e.Number)
+	u.writer.Taken(e.Number)
 	return nil
+}
+
+// tookGone hears that a port went away. A UUT's own port ends its own part.
+func (s *session) tookGone(e line.Event) error {
+	role, uut := s.Rig.Role(e.Port)
+	f := &Fault{Code: "port_gone", Text: "the port of the " + role + " went away", Err: e.Err}
+	if uut >= 0 && s.units[uut].fault == nil && s.units[uut].writer != nil {
+		return s.leaveOut(s.units[uut], f)
+	}
+	return f
 }
 
 // pause lets the time pass, taking what comes meanwhile.
@@ -121,12 +133,14 @@ func (s *session) pause(ctx context.Context, until line.Instant) error {
 	return err
 }
 
-// vent opens the volume to atmosphere: at once on every port, then with the
-// instruments' answers, on a deadline of its own.
+// vent opens the volume to atmosphere: at once on every port, and writes it
+// down afterwards.
 func (s *session) vent(why string) {
 	s.Rig.EmergencyVent()
-	if s.writer != nil && s.broken == nil && why != "" {
-		_ = s.append(record.KindVent, record.Vent{Why: why})
+	for _, u := range s.units {
+		if u.writer != nil && !u.closed && s.broken == nil && why != "" {
+			_, _ = s.put(u, record.KindVent, record.Vent{Why: why})
+		}
 	}
 }
 
@@ -135,56 +149,4 @@ func ventReason(err error) string {
 		return "all stages done"
 	}
 	return err.Error()
-}
-
-// pressureOf turns one of the UUT's values into pressure as the nominal
-// sensitivity has it, before any zeroing.
-func (s *session) pressureOf(v quantity.Value) (float64, error) {
-	switch v.Unit.Dimension {
-	case quantity.DimPressure:
-		return v.SI, nil
-	case quantity.DimRatio:
-		if s.nominal > 0 {
-			return v.SI / s.nominal, nil
-		}
-	case quantity.DimVoltage:
-		if s.nominal > 0 && s.excitation > 0 {
-			return v.SI / s.excitation / s.nominal, nil
-		}
-	}
-	return 0, fmt.Errorf("the UUT's unit %s cannot be turned into pressure with what the bench file states", v.Unit.Name)
-}
-
-// tookSample takes one of the UUT's lines as it comes, wherever the run waits,
-// and holds it against the pressures never to be exceeded.
-func (s *session) tookSample(r bench.Reading, err error) error {
-	if err != nil {
-		s.refused++
-		s.stream.gap()
-		return nil
-	}
-	p, err := s.pressureOf(r.Value)
-	if err != nil {
-		return &Fault{Code: "unit", Text: err.Error()}
-	}
-	s.stream.add(r.At, r.Text, p)
-	if s.zeroed && !s.releasing {
-		return s.watchPressure("UUT", quantity.Pressure(p-s.zeroUUT), r.Text)
-	}
-	return nil
-}
-
-// watchPressure vents at the first reading outside the pressures never to be
-// exceeded, before anything is written.
-func (s *session) watchPressure(role string, p quantity.Pressure, text string) error {
-	if p <= s.Facts.Highest && p >= s.Facts.Lowest && !math.IsNaN(float64(p)) {
-		return nil
-	}
-	s.Rig.EmergencyVent()
-	code := "overpressure"
-	if p < s.Facts.Lowest {
-		code = "underpressure"
-	}
-	return &Fault{Code: code, Text: fmt.Sprintf("the %s read %.1f mmHg (%q), outside %.0f to %.0f mmHg never to be left: vented",
-		role, p.MmHg(), text, s.Facts.Lowest.MmHg(), s.Facts.Highest.MmHg())}
 }

@@ -7,6 +7,7 @@ import (
 	"math"
 	"time"
 
+	"kymobench/bench/line"
 	"kymobench/bench/quantity"
 	"kymobench/procedures"
 	"kymobench/procedures/ready"
@@ -32,10 +33,11 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 		return s.sourceFault(ctx, err)
 	}
 	rule := s.rule(procedures.Static{ShareOfLimit: 0.05, StandardUncertainty: quantity.MmHg(0.2), LeastReadings: 8})
-	readings, _, err := s.settle(ctx, 0, 0, rule, stage.LongestWait)
+	still, err := s.settle(ctx, 0, 0, rule, stage.LongestWait)
 	if err != nil {
 		return err
 	}
+	readings := still[0].readings
 	if p := readings[len(readings)-1].p.MmHg(); math.Abs(p) > ventedWithin {
 		return &Fault{Code: "not_vented", Text: fmt.Sprintf("the reference reads %.1f mmHg with the vent open: is the volume open to atmosphere?", p)}
 	}
@@ -49,11 +51,21 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 		return err
 	}
 	rule.LeastReadings = max(rule.LeastReadings, int(math.Ceil(stage.For.Seconds()/readEvery.Seconds())))
-	readings, state, err := s.settle(ctx, 0, 0, rule, stage.LongestWait)
-	if err != nil {
+	if still, err = s.settle(ctx, 0, 0, rule, stage.LongestWait); err != nil {
 		return err
 	}
-	samples, err := s.keep(ctx, readings, record.Point{Purpose: "zero", Set: "0 mmHg", Ready: inReady(state)})
+	for _, p := range still {
+		if err := s.zeroOf(p); err != nil {
+			return err
+		}
+	}
+	return s.durable(ctx)
+}
+
+// zeroOf takes a UUT's reading for its zero.
+func (s *session) zeroOf(p settled) error {
+	u := p.unit
+	samples, err := s.keep(u, p.readings, record.Point{Purpose: "zero", Set: "0 mmHg", Ready: inReady(p.state)})
 	if err != nil {
 		return err
 	}
@@ -61,9 +73,10 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 	for _, x := range samples {
 		sum.add(x.p)
 	}
-	s.zeroUUT, s.zeroed = sum.mean, true
-	s.Operator.Tell(fmt.Sprintf("  zero offset as read %+.2f mmHg", quantity.Pressure(sum.mean).MmHg()))
-	return s.append(record.KindZeroing, record.Zeroing{Role: "uut", How: "arithmetic"})
+	u.zero, u.zeroed = sum.mean, true
+	s.Operator.Tell(fmt.Sprintf("  %s: zero offset as read %+.2f mmHg", u.name(), quantity.Pressure(sum.mean).MmHg()))
+	_, err = s.put(u, record.KindZeroing, record.Zeroing{Role: "uut", How: "arithmetic"})
+	return err
 }
 
 func inReady(state ready.State) string {
@@ -115,17 +128,30 @@ func (s *session) leak(ctx context.Context, stage procedures.Leak) error {
 	if err := s.readFor(ctx, stage.Settle, nil); err != nil {
 		return err
 	}
-	hold := record.Hold{Stage: s.stage, Set: inMmHg(stage.At)}
-	if err := s.readFor(ctx, stage.For, func(a asked) { hold.Readings = append(hold.Readings, a.line) }); err != nil {
+	holds := make([]record.Hold, len(s.units))
+	err := s.readFor(ctx, stage.For, func(a asked) {
+		for i, n := range a.lines {
+			if n > 0 {
+				holds[i].Readings = append(holds[i].Readings, n)
+			}
+		}
+	})
+	if err != nil {
 		return err
 	}
-	if err := s.append(record.KindHold, hold); err != nil {
-		return err
+	live := s.live()
+	for _, u := range live {
+		hold := holds[u.index]
+		hold.Stage, hold.Set = s.stage, inMmHg(stage.At)
+		if _, err := s.put(u, record.KindHold, hold); err != nil {
+			return err
+		}
 	}
 	if err := s.durable(ctx); err != nil {
 		return err
 	}
-	res, err := results.Compute(s.events)
+	// All UUTs hang on one volume, so one record tells for all of them.
+	res, err := results.Compute(live[0].events)
 	if err != nil {
 		return fmt.Errorf("judge the leak: %w", err)
 	}
@@ -155,16 +181,23 @@ func (s *session) static(ctx context.Context, stage procedures.Static) error {
 		if _, err := s.approach(ctx, stage, point, first(stage, i)); err != nil {
 			return err
 		}
-		readings, state, err := s.settle(ctx, point.Set, stage.Window, rule, stage.LongestWait)
+		points, err := s.settle(ctx, point.Set, stage.Window, rule, stage.LongestWait)
 		if err != nil {
 			return err
 		}
-		_, err = s.keep(ctx, readings, record.Point{
-			Purpose: "static", Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(state),
-		})
-		if err != nil {
+		for _, p := range points {
+			_, err = s.keep(p.unit, p.readings, record.Point{
+				Purpose: "static", Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(p.state),
+			})
+			if err != nil {
+				return err
+			}
+		}
+		// Only what is durable may be judged.
+		if err := s.durable(ctx); err != nil {
 			return err
 		}
+		readings := points[0].readings
 		s.Operator.Tell(fmt.Sprintf("  point %d of %d: %s at %.0f mmHg taken, reference %.2f mmHg",
 			i+1, len(stage.Points()), point.Leg, point.Set.MmHg(), readings[len(readings)-1].p.MmHg()))
 	}
@@ -196,22 +229,30 @@ func (s *session) approach(ctx context.Context, stage procedures.Static, point p
 	return a, nil
 }
 
-// captureTries is how often one step is taken again when a line of the UUT was
+// captureTries is how often one step is taken again when a line of a UUT was
 // refused during it.
 const captureTries = 3
 
-// step releases the pressure to atmosphere and keeps the UUT's answer.
+// step releases the pressure to atmosphere and keeps the UUTs' answers.
 func (s *session) step(ctx context.Context, stage procedures.Step) error {
 	for number := 1; number <= stage.Count; number++ {
-		done := false
-		for try := 0; try < captureTries && !done; try++ {
-			var err error
-			if done, err = s.release(ctx, stage, number); err != nil {
+		done := make([]bool, len(s.units))
+		for range captureTries {
+			if s.captured(done) {
+				break
+			}
+			if err := s.release(ctx, stage, number, done); err != nil {
 				return err
 			}
 		}
-		if !done {
-			return &Fault{Code: "capture", Text: fmt.Sprintf("step %d could not be captured whole in %d tries: lines of the UUT were refused", number, captureTries)}
+		for _, u := range s.live() {
+			if done[u.index] {
+				continue
+			}
+			f := &Fault{Code: "capture", Text: fmt.Sprintf("step %d could not be captured whole in %d tries: lines of %s were refused", number, captureTries, u.name())}
+			if err := s.leaveOut(u, f); err != nil {
+				return err
+			}
 		}
 		s.Operator.Tell(fmt.Sprintf("  step %d of %d captured", number, stage.Count))
 	}
@@ -221,52 +262,74 @@ func (s *session) step(ctx context.Context, stage procedures.Step) error {
 	return s.durable(ctx)
 }
 
-// release makes one step; false when the capture has a gap.
-func (s *session) release(ctx context.Context, stage procedures.Step, number int) (bool, error) {
+// captured says that every UUT that takes part has its capture.
+func (s *session) captured(done []bool) bool {
+	for _, u := range s.live() {
+		if !done[u.index] {
+			return false
+		}
+	}
+	return true
+}
+
+// release makes one step and notes whose capture is whole.
+func (s *session) release(ctx context.Context, stage procedures.Step, number int, done []bool) error {
 	if _, err := s.reach(ctx, stage.Size, quantity.MmHg(reachWindow), stage.LongestWait); err != nil {
-		return false, err
+		return err
 	}
 	if err := s.readFor(ctx, stage.Settle, nil); err != nil {
-		return false, err
+		return err
 	}
 	if err := s.Rig.Source.Hold(ctx); err != nil {
-		return false, s.sourceFault(ctx, err)
+		return s.sourceFault(ctx, err)
 	}
 	if err := s.pause(ctx, s.now().Add(stage.Before)); err != nil {
-		return false, err
+		return err
 	}
 	commanded := s.now()
 	s.releasing = true
 	defer func() { s.releasing = false }()
 	if err := s.Rig.Valve.Release(ctx); err != nil {
-		return false, s.valveFault(ctx, err)
+		return s.valveFault(ctx, err)
 	}
 	until := commanded.Add(stage.After)
 	if err := s.pause(ctx, until); err != nil {
-		return false, err
+		return err
 	}
-	from, end := s.stream.from(commanded.Add(-stage.Before)), s.stream.from(until)
-	samples, ok := s.stream.between(from, end)
-	if !ok || len(samples) == 0 {
-		return false, &Fault{Code: "uut_silent", Text: "the UUT sent nothing during the step"}
-	}
-	whole := s.stream.whole(from, end)
-	if whole {
-		lines, err := s.blocks(samples)
-		if err != nil {
-			return false, err
+	for _, u := range s.live() {
+		if done[u.index] {
+			continue
 		}
-		err = s.append(record.KindCapture, record.Capture{
-			Stage: s.stage, Number: number, Direction: string(stage.Direction), Size: inMmHg(stage.Size), Commanded: commanded, Blocks: lines,
-		})
+		whole, err := s.capture(u, stage, number, commanded, until)
 		if err != nil {
-			return false, err
+			return err
 		}
+		done[u.index] = whole
 	}
 	if err := s.closeValve(ctx); err != nil {
+		return err
+	}
+	return s.durable(ctx)
+}
+
+// capture keeps one UUT's answer to a step; false when it has a gap.
+func (s *session) capture(u *unit, stage procedures.Step, number int, commanded, until line.Instant) (bool, error) {
+	from, end := u.stream.from(commanded.Add(-stage.Before)), u.stream.from(until)
+	samples, ok := u.stream.between(from, end)
+	if !ok || len(samples) == 0 {
+		return false, s.leaveOut(u, &Fault{Code: "uut_silent", Text: fmt.Sprintf("%s sent nothing during the step", u.name())})
+	}
+	if !u.stream.whole(from, end) {
+		return false, nil
+	}
+	lines, err := s.blocks(u, samples)
+	if err != nil {
 		return false, err
 	}
-	return whole, s.durable(ctx)
+	_, err = s.put(u, record.KindCapture, record.Capture{
+		Stage: s.stage, Number: number, Direction: string(stage.Direction), Size: inMmHg(stage.Size), Commanded: commanded, Blocks: lines,
+	})
+	return true, err
 }
 
 func (s *session) closeValve(ctx context.Context) error {

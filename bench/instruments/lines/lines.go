@@ -27,6 +27,8 @@ type Settings struct {
 
 // Instrument is a bench.Streaming.
 type Instrument struct {
+	port  *Port
+	place int // in the port's list
 	line  *line.Line
 	field quantity.Field
 	unit  quantity.Unit
@@ -36,21 +38,56 @@ type Instrument struct {
 // ErrLong: a line was longer than the line's cap and was dropped.
 var ErrLong = errors.New("a line is too long")
 
+// Port is a line that one or more instruments share, each with its own column.
+type Port struct {
+	line    *line.Line
+	watched []func(line.Frame) error // nil until its instrument is watched
+}
+
+// NewPort makes a Port of a line that is its own.
+func NewPort(l *line.Line) *Port { return &Port{line: l} }
+
 // New makes an Instrument on a line that is its own. It refuses a unit that it
 // does not know.
-func New(l *line.Line, s Settings) (*Instrument, error) {
+func New(l *line.Line, s Settings) (*Instrument, error) { return NewPort(l).Instrument(s) }
+
+// Instrument makes one of the port's instruments. It refuses a unit that it
+// does not know.
+func (p *Port) Instrument(s Settings) (*Instrument, error) {
 	unit, ok := quantity.UnitNamed(s.Field.Unit)
 	if !ok {
-		return nil, fmt.Errorf("%s: %q is no unit known here", l.Name(), s.Field.Unit)
+		return nil, fmt.Errorf("%s: %q is no unit known here", p.line.Name(), s.Field.Unit)
 	}
-	return &Instrument{line: l, field: s.Field, unit: unit}, nil
+	p.watched = append(p.watched, nil)
+	return &Instrument{port: p, place: len(p.watched) - 1, line: p.line, field: s.Field, unit: unit}, nil
+}
+
+// watch hands every line to everyone who watches; the first error is returned
+// when all have had it.
+func (p *Port) watch(place int, f func(line.Frame) error) {
+	p.watched[place] = f
+	if len(p.watched) == 1 {
+		p.line.OnFrame(f)
+		return
+	}
+	p.line.OnFrame(func(frame line.Frame) (first error) {
+		for _, f := range p.watched {
+			if f == nil {
+				continue
+			}
+			if err := f(frame); err != nil && first == nil {
+				first = err
+			}
+		}
+		return first
+	})
 }
 
 // Watch hands every line to take from now on, in the order of arrival: a
 // reading, or a line that is not one, with its text and err set. An error of
 // take ends the engine's present wait.
 func (i *Instrument) Watch(take func(r bench.Reading, err error) error) {
-	i.line.OnFrame(func(f line.Frame) error {
+	i.port.watch(i.place, func(f line.Frame) error {
 		r := bench.Reading{Sent: f.At, At: f.At}
 		if f.Long {
 			return take(r, fmt.Errorf("read %s: %w", i.line.Name(), ErrLong))
