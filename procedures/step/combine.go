@@ -14,6 +14,7 @@ type Combined struct {
 	Frequency, Damping Estimate
 	Steps              int // determined steps used
 	DegreesOfFreedom   float64
+	Correlation        float64 // of what is uncertain in ln Frequency and in Damping
 }
 
 // largestUncertainty is the relative standard uncertainty of fn beyond which
@@ -37,6 +38,7 @@ const largestUncertainty = 0.05
 func Combine(steps []Step) Combined {
 	var c Combined
 	var frequency, damping, frequencyOwn, dampingOwn []float64
+	var within float64 // mean correlation within the fits
 	var only Step
 	for _, s := range steps {
 		if !s.Determined {
@@ -52,6 +54,7 @@ func Combine(steps []Step) Combined {
 		frequencyOwn = append(frequencyOwn, s.Frequency.StandardUncertainty/s.Frequency.Value)
 		damping = append(damping, s.Damping.Value)
 		dampingOwn = append(dampingOwn, s.Damping.StandardUncertainty)
+		within += s.Correlation
 	}
 	c.Steps = len(frequency)
 	switch {
@@ -61,11 +64,12 @@ func Combine(steps []Step) Combined {
 	case c.Steps == 0:
 		return c
 	case c.Steps == 1:
-		return Combined{Determined: true, Frequency: only.Frequency, Damping: only.Damping, Steps: 1, DegreesOfFreedom: only.DegreesOfFreedom}
+		return Combined{Determined: true, Frequency: only.Frequency, Damping: only.Damping, Steps: 1, DegreesOfFreedom: only.DegreesOfFreedom, Correlation: only.Correlation}
 	}
 	c.DegreesOfFreedom = float64(c.Steps - 1)
 	t := studentT(c.DegreesOfFreedom)
 	m, u := mean(frequency, frequencyOwn, t)
+	uLog := u
 	if !(u <= largestUncertainty) {
 		c.Reasons = []string{UncertaintyTooLarge}
 		return c
@@ -74,7 +78,33 @@ func Combine(steps []Step) Combined {
 	c.Frequency = logEstimate(m, u, t)
 	m, u = mean(damping, dampingOwn, t)
 	c.Damping = Estimate{m, u, math.Max(0, m-t*u), m + t*u}
+	c.Correlation = together(frequency, damping, uLog, u, within/float64(c.Steps))
 	return c
+}
+
+// together is the correlation of the two means with standard uncertainties ux
+// and uy: the covariance of their scatter, and of what ux and uy have beyond
+// their scatter, that the fits have within. With the scatter alone every
+// linear combination of the two is Student's t with the same degrees of
+// freedom, even from two steps.
+func together(x, y []float64, ux, uy, within float64) float64 {
+	n := float64(len(x))
+	var mx, my, xx, yy, xy float64
+	for i := range x {
+		mx += x[i] / n
+		my += y[i] / n
+	}
+	for i := range x {
+		xx += (x[i] - mx) * (x[i] - mx)
+		yy += (y[i] - my) * (y[i] - my)
+		xy += (x[i] - mx) * (y[i] - my)
+	}
+	scale := n * (n - 1)
+	beyond := math.Sqrt(math.Max(0, ux*ux-xx/scale) * math.Max(0, uy*uy-yy/scale))
+	if !(ux*uy > 0) {
+		return 0
+	}
+	return math.Max(-1, math.Min(1, (xy/scale+within*beyond)/(ux*uy)))
 }
 
 // mean returns the mean and its standard uncertainty: from the scatter, but

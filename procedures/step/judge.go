@@ -60,7 +60,11 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	uLog, uZeta := c.deviation[linear+lnOmega], zeta*c.deviation[linear+lnZeta]
 	if p.applied != nil {
 		shiftLog, shiftZeta := f.betweenSamples()
+		own := uLog * uZeta
 		uLog, uZeta = math.Hypot(uLog, shiftLog), math.Hypot(uZeta, shiftZeta)
+		if own > 0 {
+			c.together *= own / (uLog * uZeta)
+		}
 	}
 	add := func(code string) { s.Reasons = append(s.Reasons, code) }
 	if q.clipped() {
@@ -93,6 +97,7 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	s.Determined = true
 	s.Frequency = logEstimate(math.Log(fn), uLog, t)
 	s.Damping = Estimate{zeta, uZeta, math.Max(0, zeta-t*uZeta), zeta + t*uZeta}
+	s.Correlation = c.together
 	return s, true
 }
 
@@ -170,6 +175,7 @@ func (f *fitted) withoutSpikes(r []float64) []float64 {
 // of the jacobian, in the scaled unit.
 type covariance struct {
 	deviation   [most]float64
+	together    float64 // correlation of ln w and ln zeta
 	sigma       float64 // of the residuals, unit of the trace
 	correlation float64 // from sample to sample
 	freedom     float64
@@ -250,15 +256,22 @@ func sandwich(j [][]float64, residuals []float64, scale float64, through passed)
 	// Rounding keeps even a perfect trace from being known exactly.
 	c.sigma = math.Max(math.Sqrt(variance), 1e-9*math.Abs(scale))
 	own := math.Max(c.sigma*c.sigma-through.variance*scale*scale, 0)
-	for i := range size {
+	product := func(i, l int) float64 {
 		v := 0.0
 		for k := range size {
 			for m := range size {
 				middle := own*meat[k][m] + scale*scale*through.meat[k][m]/unit[k]/unit[m]
-				v += inverse[i][k] * middle * inverse[m][i]
+				v += inverse[i][k] * middle * inverse[m][l]
 			}
 		}
-		c.deviation[i] = math.Sqrt(math.Max(v, 0)) / math.Abs(scale) / unit[i]
+		return v
+	}
+	for i := range size {
+		c.deviation[i] = math.Sqrt(math.Max(product(i, i), 0)) / math.Abs(scale) / unit[i]
+	}
+	const w, z = linear + lnOmega, linear + lnZeta
+	if d := math.Sqrt(product(w, w) * product(z, z)); d > 0 {
+		c.together = math.Max(-1, math.Min(1, product(w, z)/d))
 	}
 	return c
 }

@@ -81,6 +81,8 @@ type Step struct {
 	Noise      float64  // standard deviation before the step, unit of the trace
 	Frequency  Estimate // natural frequency, Hz
 	Damping    Estimate // damping ratio
+	// Correlation of what is uncertain in ln Frequency and in Damping.
+	Correlation float64
 
 	From, To         int       // samples fitted: From <= i < To
 	Fitted           []float64 // the model on those samples; nil if nothing could be fitted
