@@ -64,11 +64,18 @@ func Bandwidth(zeta float64) float64 {
 func FlatBand(zeta, part float64) float64 {
 	a := 1 - 2*zeta*zeta
 	c := 1 - 1/((1+part)*(1+part))
-	if a > 0 && a*a >= c {
+	if peaksBeyond(zeta, part) {
 		return math.Sqrt(c / (a + math.Sqrt(a*a-c)))
 	}
 	d := 1/((1-part)*(1-part)) - 1
 	return root(a, math.Sqrt(a*a+d), -d)
+}
+
+// peaksBeyond says that the resonance peak reaches 1 + part: the flat band
+// then ends on its way up.
+func peaksBeyond(zeta, part float64) bool {
+	a := 1 - 2*zeta*zeta
+	return a > 0 && a*a >= 1-1/((1+part)*(1+part))
 }
 
 // root is sqrt(a + r) with r = sqrt(a^2 - product), without cancellation for
@@ -90,7 +97,7 @@ func PeakTime(zeta float64) float64 {
 }
 
 // RiseTime is the time from 10 to 90 % of the step on the first rise, by
-// bisection of Response.
+// solving Response for both.
 func RiseTime(zeta float64) float64 {
 	end := riseEnd(zeta)
 	return crossing(zeta, 0, end, 0.9) - crossing(zeta, 0, end, 0.1)
@@ -107,33 +114,52 @@ func riseEnd(zeta float64) float64 {
 // SettlingTime is when the answer enters the band of 1 - part to 1 + part for
 // good, counted from the (ideal) step, 0 < part < 1. It jumps where an
 // extremum just touches the band. Found from the extrema, which lie
-// exp(-zeta x) from the end at multiples of PeakTime, and bisection.
+// exp(-zeta x) from the end at multiples of PeakTime, and solving Response
+// between two of them.
 func SettlingTime(zeta, part float64) float64 {
 	if zeta >= 1 {
 		return crossing(zeta, 0, riseEnd(zeta), 1-part)
 	}
 	half := PeakTime(zeta)
-	n := math.Max(0, math.Ceil(-math.Log(part)/(zeta*half))-1) // the last extremum outside
+	n := float64(extremaOutside(zeta, part))
 	if math.Mod(n, 2) == 0 {
 		return crossing(zeta, n*half, (n+1)*half, 1-part)
 	}
 	return crossing(zeta, n*half, (n+1)*half, 1+part)
 }
 
-// crossing bisects for the level between two times at which Response lies on
-// either side of it.
+// extremaOutside counts the extrema of the answer that lie outside the band of
+// 1 - part to 1 + part; 0 for zeta >= 1. The settling time jumps where it
+// changes. Above a million nothing is told apart.
+func extremaOutside(zeta, part float64) int {
+	if zeta >= 1 {
+		return 0
+	}
+	return int(math.Min(1e6, math.Max(0, math.Ceil(-math.Log(part)/(zeta*PeakTime(zeta)))-1)))
+}
+
+// crossing finds where Response has a level, between two times at which it
+// lies on either side of it: Newton's steps (the slope of g is s), and halving
+// where one would leave the bracket.
 func crossing(zeta, low, high, level float64) float64 {
 	rising := Response(low, zeta) < level
+	x := (low + high) / 2
 	for range 200 {
-		mid := (low + high) / 2
-		if mid <= low || mid >= high {
-			break
-		}
-		if (Response(mid, zeta) < level) == rising {
-			low = mid
+		c, s := kernel(x, zeta)
+		g := 1 - c - zeta*s
+		if (g < level) == rising {
+			low = x
 		} else {
-			high = mid
+			high = x
 		}
+		next := x - (g-level)/s
+		if !(next > low && next < high) {
+			next = (low + high) / 2
+		}
+		if math.Abs(next-x) <= 4e-16*x || next <= low || next >= high {
+			return next
+		}
+		x = next
 	}
-	return (low + high) / 2
+	return x
 }
