@@ -14,11 +14,12 @@ import (
 var ErrNoLine = errors.New("no straight line can be fitted to these readings")
 
 // Straight is y = Intercept + Slope x with standard uncertainties from the
-// residuals, n - 2 degrees of freedom.
+// residuals.
 type Straight struct {
 	Intercept, Slope     float64
 	UIntercept, USlope   float64
 	Covariance, Residual float64 // of intercept and slope; standard deviation of the residuals
+	DoF                  int     // of Residual
 }
 
 // Line is the ordinary least-squares line of y on x (same length, n >= 3):
@@ -61,7 +62,7 @@ func Line(x, y []float64) (Straight, error) {
 	scaled := mx * fx
 	slope := b / fy * fx
 	l := Straight{
-		Intercept: my - slope*mx, Slope: slope, Residual: s / fy,
+		Intercept: my - slope*mx, Slope: slope, Residual: s / fy, DoF: len(x) - 2,
 		USlope: s / math.Sqrt(sxx) / fy * fx, UIntercept: s * math.Sqrt(1/n+scaled*scaled/sxx) / fy,
 		Covariance: -s * s * scaled / sxx / fy * fx / fy,
 	}
@@ -94,4 +95,29 @@ func mean(x []float64) float64 {
 		rest += (v - m) / float64(len(x))
 	}
 	return m + rest
+}
+
+// At is the line at x and its standard uncertainty, of the line and not of one
+// more reading: u^2 = u(intercept)^2 + x^2 u(slope)^2 + 2 x covariance.
+// Source: GUM H.3.4.
+func (l Straight) At(x float64) (y, u float64) {
+	v := l.UIntercept*l.UIntercept + x*x*l.USlope*l.USlope + 2*x*l.Covariance
+	return l.Intercept + l.Slope*x, math.Sqrt(math.Max(v, 0))
+}
+
+// Where is the x at which the mean of times further readings of y lies on the
+// line, and its standard uncertainty by the line's and their scatter:
+//
+//	x = (y - intercept)/slope
+//	u(x)^2 = (residual^2/times + u(intercept)^2 + x^2 u(slope)^2 + 2 x covariance)/slope^2
+//
+// ErrNoLine for a slope of zero or fewer than one reading.
+// Source: EURACHEM/CITAC guide, example A5, eq. of the calibration line.
+func (l Straight) Where(y float64, times int) (x, u float64, err error) {
+	if l.Slope == 0 || times < 1 {
+		return 0, 0, ErrNoLine
+	}
+	x = (y - l.Intercept) / l.Slope
+	_, on := l.At(x)
+	return x, math.Sqrt(l.Residual*l.Residual/float64(times)+on*on) / math.Abs(l.Slope), nil
 }
