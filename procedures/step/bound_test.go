@@ -126,32 +126,3 @@ func simulate(t *testing.T, p plan, s Settings, count int, seed uint64) tally {
 	}
 	return sum
 }
-
-// The root mean square error against what the noise allows. With 1,000
-// trials a ratio is uncertain by 2 %, with 150 by 6 %.
-func TestRatioToBound(t *testing.T) {
-	limit, meanLimit := 1.15, 1.06
-	if full() {
-		limit, meanLimit = 1.08, 1.03
-	}
-	var mean float64
-	for _, fn := range []float64{8, 24, 200} {
-		for _, zeta := range []float64{0.2, 0.64, 1} {
-			p := plan{fn: fn, zeta: zeta, rate: max(250, 20*fn), before: 0.4, spacing: 25 * slowest(fn, zeta), heights: []float64{100}, sigma: 0.5}
-			boundFn, boundZeta := p.bound(false)
-			sum := simulate(t, p, Settings{EdgeStated: true, MinimumStep: 8}, trials(150, 1000), 1)
-			fnRMSE, zetaRMSE := sum.rmse()
-			ratioFn, ratioZeta := fnRMSE/boundFn, zetaRMSE/boundZeta
-			mean += (ratioFn + ratioZeta) / 18
-			t.Logf("fn %3g zeta %.2f: bound %.3f %% and %.4f, rmse over bound %.3f %.3f, refused %d reserved %d gross %d",
-				fn, zeta, 100*boundFn, boundZeta, ratioFn, ratioZeta, sum.refused, sum.reserved, sum.gross)
-			if ratioFn > limit || ratioZeta > limit || sum.refused+sum.reserved+sum.gross > 0 {
-				t.Errorf("fn %g zeta %g is worse than it may be", fn, zeta)
-			}
-		}
-	}
-	t.Logf("mean of rmse over bound %.3f", mean)
-	if mean > meanLimit {
-		t.Errorf("mean of rmse over bound %.3f, at most %.2f", mean, meanLimit)
-	}
-}

@@ -38,7 +38,7 @@ func goodPlan(r *rand.Rand) plan {
 func TestGoodTraces(t *testing.T) {
 	r := rand.New(rand.NewPCG(7, 5))
 	var sum tally
-	for range trials(40, 2000) {
+	for range trials(25, 2000) {
 		p := goodPlan(r)
 		steps, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
 		if err != nil {

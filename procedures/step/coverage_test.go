@@ -60,7 +60,7 @@ func TestCoverage(t *testing.T) {
 	}
 	var pooled, inside float64
 	for _, row := range rows {
-		sum := simulate(t, row.plan, row.s, trials(row.count/8, 4*row.count), 3)
+		sum := simulate(t, row.plan, row.s, trials(row.count/16, 4*row.count), 3)
 		n := float64(sum.count - sum.refused)
 		rmseFn, rmseZeta := sum.rmse()
 		p := row.plan

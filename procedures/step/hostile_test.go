@@ -189,7 +189,7 @@ func TestHostileTraces(t *testing.T) {
 	for _, class := range hostileClasses() {
 		r := rand.New(rand.NewPCG(11, 5))
 		var silent, refused, reserved, right, wrongSaid int
-		for range trials(25, 1000) {
+		for range trials(12, 1000) {
 			all++
 			trace, s, fn, note := hostile(class, r)
 			steps, c, reservations, err := Analyse(trace, s)

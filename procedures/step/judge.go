@@ -71,10 +71,12 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 		add(Clipped)
 	}
 	rate := a.trace.Rate
-	slowly := f.rival && q.rivals(fn, c)
+	slowly := f.rival && q.rivals(fn, c) || q.aliasBetter(c)
 	switch {
 	case fn*samplesNeeded > rate, zeta > 1+2*uZeta && fn*samplesOverdamped*math.Exp(-3*uLog) > rate, slowly:
 		add(SamplingTooSlow)
+	case q.aliasKnown(c):
+		s.reserve(SamplingSlow, fmt.Sprintf("at %.3g samples a period a line of %.3g Hz and damping ratio %.2g would leave the same samples", rate/fn, math.Exp(f.alias.theta[lnOmega])/(2*math.Pi), math.Exp(f.alias.theta[lnZeta])))
 	case fn*samplesComfort*math.Exp(-2*uLog) > rate:
 		s.reserve(SamplingSlow, fmt.Sprintf("%.3g samples a period of the natural frequency, fewer than %d", rate/fn, samplesComfort))
 	}

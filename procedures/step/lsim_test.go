@@ -72,7 +72,7 @@ func TestLsimCoverage(t *testing.T) {
 		if c.zeta > 1 {
 			continue // its uncertainty is over 5 % at this noise
 		}
-		coverFn, coverZeta, n := 0, 0, trials(40, 1000)
+		coverFn, coverZeta, n := 0, 0, trials(25, 1000)
 		for range n {
 			trace := c.trace
 			trace.Pressure = append([]float64{}, c.trace.Pressure...)

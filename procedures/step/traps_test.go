@@ -11,7 +11,7 @@ import (
 // or with coarse digits, at any damping.
 func TestNotClipped(t *testing.T) {
 	r := rand.New(rand.NewPCG(21, 1))
-	flat, all := 0, trials(250, 4000)
+	flat, all := 0, trials(120, 4000)
 	for range all {
 		p := plan{
 			fn: 5 * math.Pow(12, r.Float64()), zeta: 0.1 * math.Pow(20, r.Float64()), before: 0.5, phase: r.Float64(),
@@ -57,7 +57,7 @@ func TestNotClipped(t *testing.T) {
 // without noise: refused as clipped.
 func TestClipped(t *testing.T) {
 	r := rand.New(rand.NewPCG(22, 1))
-	missed, all := 0, trials(150, 3000)
+	missed, all := 0, trials(60, 3000)
 	for range all {
 		p := plan{
 			fn: 6 + 40*r.Float64(), zeta: 0.1 + 0.5*r.Float64(), before: 0.5, phase: r.Float64(),
@@ -96,7 +96,7 @@ func TestClipped(t *testing.T) {
 // answer is refused or right within its uncertainty.
 func TestTruncated(t *testing.T) {
 	r := rand.New(rand.NewPCG(23, 1))
-	wrong, all := 0, trials(300, 3000)
+	wrong, all := 0, trials(120, 3000)
 	for range all {
 		trace, s, fn, note := hostile("truncated", r)
 		_, c, _, err := Analyse(trace, s)
@@ -203,7 +203,7 @@ func TestCombine(t *testing.T) {
 func TestOnsets(t *testing.T) {
 	r := rand.New(rand.NewPCG(27, 1))
 	steps, wrong := 0, 0
-	for range trials(60, 400) {
+	for range trials(30, 400) {
 		p := plan{
 			fn: 5 * math.Pow(40, r.Float64()), zeta: 0.1 * math.Pow(20, r.Float64()), before: 0.5, phase: r.Float64(),
 			heights: []float64{100, -100, 60, -60}, sigma: 0.3, drift: 10 * (r.Float64() - 0.5), level: 20,

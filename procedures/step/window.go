@@ -8,6 +8,8 @@ type fitted struct {
 	window
 	second  found // another minimum, if rival
 	rival   bool
+	alias   found // a faster answer that leaves much the same samples, if aliased
+	aliased bool
 	problem *problem
 	base    float64 // level and height that the samples were scaled with
 	scale   float64
@@ -36,6 +38,7 @@ func (a *analysis) fit(w window) (fitted, bool) {
 	if !any {
 		return f, false
 	}
+	f.alias, f.aliased = aliases(f.problem, f.found, half)
 	f.place(a)
 	// Cut a window that is far longer than the answer, and fit again.
 	tau := settling(math.Exp(f.theta[lnOmega]), math.Exp(f.theta[lnZeta]))
@@ -46,6 +49,9 @@ func (a *analysis) fit(w window) (fitted, bool) {
 	if cut.to-cut.from <= (w.to-w.from)*9/10 {
 		if g, _, ok := a.set(cut); ok {
 			g.found = polish(g.problem, f.theta)
+			if g.aliased = f.aliased; g.aliased {
+				g.alias = polish(g.problem, f.alias.theta)
+			}
 			if g.rival = f.rival; g.rival {
 				g.second = polish(g.problem, f.second.theta)
 			}
