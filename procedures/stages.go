@@ -142,19 +142,26 @@ func (s Static) Points() []Point {
 // HighestPressure returns the highest pressure that any stage asks for.
 func (d *Definition) HighestPressure() quantity.Pressure {
 	var highest quantity.Pressure
+	for _, p := range d.Pressures() {
+		highest = max(highest, p)
+	}
+	return highest
+}
+
+// Pressures returns every pressure that a stage asks for, in their order.
+func (d *Definition) Pressures() []quantity.Pressure {
+	var all []quantity.Pressure
 	for _, s := range d.Stages {
 		switch s := s.(type) {
 		case Exercise:
-			highest = max(highest, s.To)
+			all = append(all, s.To)
 		case Leak:
-			highest = max(highest, s.At)
+			all = append(all, s.At)
 		case Static:
-			for _, p := range s.SetPressures {
-				highest = max(highest, p)
-			}
+			all = append(all, s.SetPressures...)
 		case Step:
-			highest = max(highest, s.Size)
+			all = append(all, s.Size)
 		}
 	}
-	return highest
+	return all
 }

@@ -42,16 +42,46 @@ func (g *gathered) reservations(res results.Results, signed time.Time) []Reserva
 	for _, r := range g.recovered {
 		add("record", fmt.Sprintf("the record was taken up again after it had been left open; %d bytes of an unfinished line were set aside", r.Bytes))
 	}
-	if due := g.reference.Certificate.Due; g.overdue(due) {
-		add("bench", "the certificate of the reference was due on "+due+", before this run")
+	for _, o := range g.overdueList() {
+		add("bench", "the certificate of the "+o.of+" was due on "+o.due+", before this run")
 	}
-	if g.readout != nil && g.overdue(g.readout.Due) {
-		add("bench", "the certificate of the readout was due on "+g.readout.Due+", before this run")
+	for _, o := range g.overrides {
+		add("override", o.Text+"; used all the same, the reason given: \u201c"+oneLine(o.Reason)+"\u201d")
 	}
 	if signed.Before(g.last.Truncate(time.Second)) {
 		add("signature", "by the clocks used, it was signed before the record was closed")
 	}
 	return list
+}
+
+type overdue struct{ of, due string }
+
+// overdueList is the instruments whose certificates had run out.
+func (g *gathered) overdueList() []overdue {
+	var list []overdue
+	if due := g.reference.Certificate.Due; g.overdue(due) {
+		list = append(list, overdue{"reference", due})
+	}
+	if g.readout != nil && g.overdue(g.readout.Due) {
+		list = append(list, overdue{"readout", g.readout.Due})
+	}
+	return list
+}
+
+// stamp is what every page says of a run with an overdue certificate.
+func (g *gathered) stamp() string {
+	list := g.overdueList()
+	if len(list) == 0 {
+		if len(g.overrides) == 0 {
+			return ""
+		}
+		return "USED UNDER AN OVERRIDE: INCONCLUSIVE AT BEST"
+	}
+	var parts []string
+	for _, o := range list {
+		parts = append(parts, strings.ToUpper(o.of)+" SINCE "+o.due)
+	}
+	return "CERTIFICATE OVERDUE: " + strings.Join(parts, ", ") + " \u2013 INCONCLUSIVE AT BEST"
 }
 
 // textOf is a reason's text, or its code in words when it has none.

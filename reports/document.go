@@ -28,6 +28,7 @@ type Document struct {
 	Bench      string
 	Simulated  bool
 	Mark       string    // stands across every page, "" on a real bench
+	Stamp      string    // stands at the head of every page: what weakens the whole run; "" for nothing
 	Made       time.Time // the statement's time; the document's own date
 
 	Verdict  string   // "accepted", "rejected", "inconclusive"
@@ -205,6 +206,7 @@ func New(events []record.Event, head record.Head, res results.Results, layout in
 	if d.Simulated {
 		d.Mark = "SIMULATED BENCH \u2013 DEMONSTRATION"
 	}
+	d.Stamp = g.stamp()
 	d.Identity, d.Test = g.identity(), g.test(st, made)
 	d.limits(res)
 	d.judged(res)

@@ -23,6 +23,7 @@ type gathered struct {
 	recovered   []record.Recovered
 	faults      []record.Fault
 	noted       []record.Reservation
+	overrides   []record.Override
 	zeroings    []record.Zeroing
 	stages      []stage
 	first, last time.Time
@@ -86,6 +87,8 @@ func (g *gathered) take(e record.Event) error {
 		return add(e, &g.faults)
 	case record.KindReservation:
 		return add(e, &g.noted)
+	case record.KindOverride:
+		return add(e, &g.overrides)
 	case record.KindZeroing:
 		return add(e, &g.zeroings)
 	case record.KindStage:

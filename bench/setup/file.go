@@ -67,6 +67,8 @@ type Certificate struct {
 	Number, Laboratory, Date, Due                   string
 	CoverageFactor                                  float64
 	Uncertainty, UncertaintyOfReading, DriftPercent string
+	DriftOfReadingPerYear, DriftPerYear             string
+	TemperatureOfReading                            string
 	Corrections                                     []Correction
 }
 
@@ -106,6 +108,7 @@ func (f *File) Places() []Place {
 type Readout struct {
 	Dialogue
 	GainUncertainty, ZeroUncertainty string // expanded
+	ExcitationUncertainty            string // expanded, "" when not stated
 	CoverageFactor                   float64
 	Certificate, Due                 string
 }

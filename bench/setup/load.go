@@ -87,6 +87,7 @@ type readoutTable struct {
 	AnswerWithin    string  `toml:"answer_within"`
 	GainUncertainty string  `toml:"gain_uncertainty"`
 	ZeroUncertainty string  `toml:"zero_uncertainty"`
+	Excitation      string  `toml:"excitation_uncertainty"`
 	CoverageFactor  float64 `toml:"coverage_factor"`
 	Certificate     string  `toml:"certificate"`
 	Due             string  `toml:"due"`
@@ -107,6 +108,9 @@ type certificateTable struct {
 	Uncertainty          string            `toml:"uncertainty"`
 	UncertaintyOfReading string            `toml:"uncertainty_of_reading"`
 	DriftOfReading       string            `toml:"drift_of_reading"`
+	DriftOfReadingYearly string            `toml:"drift_of_reading_per_year"`
+	DriftYearly          string            `toml:"drift_per_year"`
+	Temperature          string            `toml:"temperature_of_reading"`
 	Corrections          []correctionTable `toml:"correction"`
 }
 
@@ -312,6 +316,11 @@ func (l *loader) certificate(in *certificateTable, out *Certificate) {
 	out.Uncertainty = l.width(quantity.DimPressure, at("uncertainty")...)
 	out.UncertaintyOfReading = l.width(quantity.DimNone, at("uncertainty_of_reading")...)
 	out.DriftPercent = l.widthIf(quantity.DimNone, at("drift_of_reading")...)
+	out.DriftOfReadingPerYear = l.widthIf(quantity.DimNone, at("drift_of_reading_per_year")...)
+	out.DriftPerYear = l.widthIf(quantity.DimPressure, at("drift_per_year")...)
+	l.demand(out.DriftPercent == "" || out.DriftOfReadingPerYear == "", "the drift of the reading is stated twice, since the date and by year",
+		"leave one of them out", at("drift_of_reading_per_year")...)
+	out.TemperatureOfReading = l.widthIf(quantity.DimNone, at("temperature_of_reading")...)
 	nothing := l.optional(quantity.DimPressure, at("uncertainty")...) == 0 && l.optional(quantity.DimNone, at("uncertainty_of_reading")...) == 0
 	l.demand(!nothing, "a certificate without any uncertainty", "", at("uncertainty")...)
 	var before quantity.Pressure

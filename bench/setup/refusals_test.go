@@ -73,6 +73,11 @@ func TestRefusals(t *testing.T) {
 		{`response_time_tolerance = "0.1 s"`, `response_time_tolerance = «"-0.1 s"`, `response_time_tolerance is below zero`, ""},
 		{`date = "2026-03-02"`, `date = «2026-03-02`, `key "date" takes text in quotes, not a date or time`, `write the date in quotes: date = "2026-03-02"`},
 		{`date = "2026-03-02"`, `date = «"2 March 2026"`, `"2 March 2026" is no date like 2026-03-02`, ""},
+		{`number = "HI-2026-0117"`, "number = \"HI-2026-0117\"\ndrift_per_year = «\"0.1 %\"", `"0.1 %": % is a unit of something else`, ""},
+		{`number = "HI-2026-0117"`, "number = \"HI-2026-0117\"\ndrift_per_year = «\"-0.1 mmHg\"", `drift_per_year is below zero`, ""},
+		{`number = "HI-2026-0117"`, "number = \"HI-2026-0117\"\ndrift_of_reading = \"0.01 %\"\ndrift_of_reading_per_year = «\"0.01 %\"",
+			`the drift of the reading is stated twice, since the date and by year`, "leave one of them out"},
+		{`number = "HI-2026-0117"`, "number = \"HI-2026-0117\"\ntemperature_of_reading = «\"1 mmHg\"", `"1 mmHg": mmHg is a unit of something else`, ""},
 		{`due = "2027-03-01"`, `due = «"2026-03-02"`, `the certificate is due before its date`, ""},
 		{`coverage_factor = 2.0`, `coverage_factor = «0.9`, `a coverage factor is 1 to 4, usually 2`, ""},
 		{corrections, "\n[[reference.certificate.correction]]\nat = \"1000 mmHg\"\ncorrection = \"0 mmHg\"\n" +
@@ -93,6 +98,7 @@ func TestRefusals(t *testing.T) {
 		{`delay = "9 ms"`, `delay = «"-9 ms"`, `delay is below zero`, ""},
 
 		{`gain_uncertainty = "`, `gain_uncertainty = «"-`, `gain_uncertainty is below zero`, ""},
+		{`gain_uncertainty = "`, "excitation_uncertainty = «\"-0.1 %\"\ngain_uncertainty = \"", `excitation_uncertainty is below zero`, ""},
 		{`port = "readout"`, `port = «"uut"`, `the port of the readout is that of the uut`, "one port, one instrument"},
 
 		{`set = "SOUR:PRES {mmHg}"`, `set = «"SOUR:PRES {mmHg} {kPa}"`, `"SOUR:PRES {mmHg} {kPa}" needs one place for the pressure, as in "SOUR:PRES {mmHg}"`, ""},

@@ -93,6 +93,7 @@ func (l *loader) readoutAt(in *readoutTable, unit quantity.Unit, path ...any) *R
 	l.dialogue("readout", in.dialogue(), &r.Dialogue, path...)
 	r.GainUncertainty = l.width(quantity.DimNone, key("gain_uncertainty")...)
 	r.ZeroUncertainty = l.width(unit.Dimension, key("zero_uncertainty")...)
+	r.ExcitationUncertainty = l.widthIf(quantity.DimNone, key("excitation_uncertainty")...)
 	r.CoverageFactor = l.coverage(in.CoverageFactor, key("coverage_factor")...)
 	r.Certificate = l.text(key("certificate")...)
 	r.Due = tomlfile.Take(l.doc, &l.err, day, key("due")...)

@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"fmt"
 	"strings"
+	"time"
 )
 
 // BenchFile writes the bench file that describes this bench to whoever is to
@@ -54,13 +55,13 @@ answer_within = "1 s"
 [reference.certificate]
 number = "HI-2026-0117"
 laboratory = "Pressure laboratory, Hollerbrook Infirmary"
-date = "2026-03-02"
-due = "2027-03-01"
+date = "%s"
+due = "%s"
 coverage_factor = %.1f
 uncertainty = "%g mmHg"
 uncertainty_of_reading = "%g %%"
 `, port(RoleReference), quoted(identityReference), referenceResolution, sourceLow, sourceHigh,
-		certificateK, certificatePoint, certificateShare*100)
+		b.day(-91), b.day(273), certificateK, certificatePoint, certificateShare*100)
 	for i, c := range b.drawn.correction {
 		fmt.Fprintf(&w, "\n[[reference.certificate.correction]]\nat = \"%g mmHg\"\ncorrection = \"%.2f mmHg\"\n", nodeLow+nodeStep*float64(i), c)
 	}
@@ -94,7 +95,7 @@ gain_uncertainty = "%g %%"
 zero_uncertainty = "%g uV/V"
 coverage_factor = %.1f
 certificate = "HI-2026-0118"
-due = "2027-03-01"
+due = "%s"
 
 [source]
 family = "scpi"
@@ -118,7 +119,7 @@ shut = "ROUT:CLOS"
 edge_time = "%g ms"
 edge_time_tolerance = "%g %%"
 `, port(RoleUUT), lineLength-2, converterResolution, clockTolerance*100, nominal, heightSD,
-		port(RoleReadout), quoted(identityOfReadout(1)), readoutGain*100, readoutZero, readoutK,
+		port(RoleReadout), quoted(identityOfReadout(1)), readoutGain*100, readoutZero, readoutK, b.day(273),
 		port(RoleSource), quoted(identitySource),
 		port(RoleValve), quoted(identityValve), edge*1000, edgeTolerance*100)
 	for i := range b.others {
@@ -137,10 +138,19 @@ gain_uncertainty = "%g %%"
 zero_uncertainty = "%g uV/V"
 coverage_factor = %.1f
 certificate = "HI-2026-0118"
-due = "2027-03-01"
-`, port(numbered(RoleUUT, i+2)), i+2, port(numbered(RoleReadout, i+2)), quoted(identityOfReadout(i+2)), readoutGain*100, readoutZero, readoutK)
+due = "%s"
+`, port(numbered(RoleUUT, i+2)), i+2, port(numbered(RoleReadout, i+2)), quoted(identityOfReadout(i+2)), readoutGain*100, readoutZero, readoutK, b.day(273))
 	}
 	return w.Bytes()
+}
+
+// day is a date some days from the one the certificates are dated for.
+func (b *Bench) day(days int) string {
+	today := b.settings.Today
+	if today.IsZero() {
+		today = firstDay()
+	}
+	return today.UTC().AddDate(0, 0, days).Format(time.DateOnly)
 }
 
 // quoted writes a TOML basic string.

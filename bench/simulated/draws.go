@@ -126,7 +126,7 @@ func draw(s Settings) drawn {
 		leak:       one("leak", 0, 0.003) / 300,
 	}
 	offsetSeconds := one("start", 5*60, 8*3600)
-	d.start = time.Date(2026, time.June, 1, 8, 0, 0, 0, time.UTC).Add(time.Duration(offsetSeconds) * time.Second)
+	d.start = firstDay().Add(time.Duration(offsetSeconds) * time.Second)
 	d.burstPhase = time.Duration(one("burst phase", 1, 16) * float64(time.Millisecond))
 	d.samplePhase = time.Duration(one("sample phase", 0, 1) * float64(time.Millisecond))
 	points, corrections := stream(s.Seed, "reference points"), stream(s.Seed, "certificate corrections")
@@ -139,6 +139,9 @@ func draw(s Settings) drawn {
 	d.worsen(s)
 	return d
 }
+
+// firstDay is when the virtual days of all benches begin.
+func firstDay() time.Time { return time.Date(2026, time.June, 1, 8, 0, 0, 0, time.UTC) }
 
 // worsen puts in the condition. Its quantities have streams of their own, so
 // the rest of the bench is that of the good one with the same seed.

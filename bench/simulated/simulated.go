@@ -79,6 +79,9 @@ type Settings struct {
 	// Others are the conditions of further UUTs on the same manifold, each with
 	// a line, a readout and draws of its own.
 	Others []string
+	// Today is the day its certificates are dated for, so that they hold; zero
+	// is that of its virtual start.
+	Today time.Time
 }
 
 // Conditions that a UUT, or its line, can be in.

@@ -28,6 +28,7 @@ type job struct {
 	seed       uint64
 	layout     int
 	covered    func(text string) error // the report can print it
+	overdue    string                  // why a certificate past its due date may be used, "" when it may not
 }
 
 // outcome of a job for one UUT: the run's, with the file it left.
@@ -56,7 +57,7 @@ func (j job) carry(ctx context.Context) ([]outcome, error) {
 			}
 		}
 	}
-	texts := []string{j.operator, j.file.Department, j.file.Bench}
+	texts := []string{j.operator, j.file.Department, j.file.Bench, j.overdue}
 	for _, m := range j.uuts {
 		texts = append(texts, m.serial, m.model, m.lot)
 	}
@@ -67,20 +68,51 @@ func (j job) carry(ctx context.Context) ([]outcome, error) {
 	}
 	file := *j.file
 	file.Others = file.Others[:len(j.uuts)-1]
+	overdue, err := j.certified(&file)
+	if err != nil {
+		return nil, err
+	}
 	rig, err := file.Open(j.ports)
 	if err != nil {
 		return nil, err
 	}
-	out, err := j.carryOn(ctx, &file, rig, counter, previous)
+	out, err := j.carryOn(ctx, &file, rig, counter, previous, overdue)
 	if closing := rig.Close(); err == nil {
 		err = closing
 	}
 	return out, err
 }
 
+// certified refuses, before a port is opened, a run that asks for pressures
+// about which the reference's certificate says nothing, and one whose
+// certificates are overdue unless somebody gave a reason to use them all the
+// same; those it returns.
+func (j job) certified(file *setup.File) ([]setup.Overdue, error) {
+	low, high := file.Certified()
+	for _, p := range j.definition.Pressures() {
+		const bits = 1e-6 // Pa: 300 mmHg by way of another unit differs in the last bits
+		if p != 0 && (p > high+bits || p < low-bits) {
+			return nil, usagef("the procedure asks for %.4g mmHg, and the reference's certificate covers %.4g to %.4g mmHg: a reference certified for this pressure is needed",
+				p.MmHg(), low.MmHg(), high.MmHg())
+		}
+	}
+	overdue := file.Overdue(j.ports.Inbox().Wall())
+	if j.overdue == "" && len(overdue) > 0 {
+		return nil, usagef("%s: have it calibrated, or say with --allow-overdue \"REASON\" why it is used; the verdict is then inconclusive at best", overdueText(overdue[0]))
+	}
+	if j.overdue != "" && len(overdue) == 0 {
+		return nil, usagef("--allow-overdue is given and no certificate is overdue")
+	}
+	return overdue, nil
+}
+
+func overdueText(o setup.Overdue) string {
+	return fmt.Sprintf("the certificate %s of the %s was due on %s", o.Number, o.Of, o.Due)
+}
+
 // carryOn names a run for each UUT, counted one after the other; all follow
 // the run that was the latest when they began.
-func (j job) carryOn(ctx context.Context, file *setup.File, rig *bench.Rig, counter int64, previous string) ([]outcome, error) {
+func (j job) carryOn(ctx context.Context, file *setup.File, rig *bench.Rig, counter int64, previous string, overdue []setup.Overdue) ([]outcome, error) {
 	settings := run.Settings{
 		Definition: j.definition,
 		BenchFile:  record.File{Name: filepath.Base(j.file.Name), SHA256: j.file.SHA256, Text: string(j.file.Source)},
@@ -99,6 +131,11 @@ func (j job) carryOn(ctx context.Context, file *setup.File, rig *bench.Rig, coun
 		subject.Opened = record.Opened{
 			Schema: record.Schema, Run: id, Counter: counter, Previous: previous, Program: "kymobench " + version,
 			Department: j.file.Department, Bench: j.file.Bench, Operator: j.operator, Simulated: j.file.Simulated, Seed: j.seed,
+		}
+		for _, o := range overdue {
+			if o.Place < 0 || o.Place == i {
+				subject.Overrides = append(subject.Overrides, record.Override{Code: results.CertificateOverdue, Text: overdueText(o), Reason: j.overdue})
+			}
 		}
 		subject.Open = func(p record.Poster) (*record.Writer, error) { return record.Create(out[i].record, id, j.committer(p)) }
 		settings.Subjects = append(settings.Subjects, subject)

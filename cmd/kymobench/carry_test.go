@@ -20,7 +20,7 @@ import (
 // simulatedJob is the shipped procedure on a simulated bench in memory.
 func simulatedJob(t *testing.T, dir string, seed uint64, conditions ...string) (job, *simulated.Bench) {
 	t.Helper()
-	b, err := simulatedBench(seed, conditions)
+	b, err := simulatedBench(seed, conditions, time.Time{})
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -62,7 +62,11 @@ func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
 	if o.ports != "memory" && o.ports != "pty" {
 		return usagef("--ports is memory or pty, not %q", o.ports)
 	}
-	b, err := simulatedBench(o.seed, o.uuts)
+	var today time.Time
+	if o.ports == "pty" {
+		today = time.Now() // it runs in real time, so its certificates have to hold today
+	}
+	b, err := simulatedBench(o.seed, o.uuts, today)
 	if err != nil {
 		return err
 	}
@@ -123,7 +127,7 @@ func conditionsHelp() string {
 }
 
 // simulatedBench is a bench with a UUT in each of the conditions.
-func simulatedBench(seed uint64, conditions []string) (*simulated.Bench, error) {
+func simulatedBench(seed uint64, conditions []string, today time.Time) (*simulated.Bench, error) {
 	if len(conditions) == 0 {
 		return nil, usagef("no UUT: there are %s", strings.Join(simulated.Conditions(), ", "))
 	}
@@ -132,7 +136,7 @@ func simulatedBench(seed uint64, conditions []string) (*simulated.Bench, error) 
 			return nil, usagef("no UUT %q: there are %s", c, strings.Join(simulated.Conditions(), ", "))
 		}
 	}
-	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: conditions[0], Others: conditions[1:]})
+	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: conditions[0], Others: conditions[1:], Today: today})
 	if err != nil {
 		return nil, usageError{err}
 	}

@@ -25,6 +25,8 @@ func factsOf(f *setup.File) run.Facts {
 				Number: ref.Certificate.Number, Laboratory: ref.Certificate.Laboratory, Date: ref.Certificate.Date, Due: ref.Certificate.Due,
 				CoverageFactor: ref.Certificate.CoverageFactor, Uncertainty: ref.Certificate.Uncertainty,
 				UncertaintyOfReading: ref.Certificate.UncertaintyOfReading, DriftOfReading: ref.Certificate.DriftPercent,
+				DriftOfReadingPerYear: ref.Certificate.DriftOfReadingPerYear, DriftPerYear: ref.Certificate.DriftPerYear,
+				TemperatureOfReading: ref.Certificate.TemperatureOfReading,
 			},
 		},
 		Source: instrumentOf("source", f.Pressure.Dialogue),
@@ -51,7 +53,7 @@ func subjectOf(p setup.Place, d *procedures.Definition, m marks) run.Subject {
 	if r := p.Readout; r != nil {
 		subject.Readout = &record.Readout{
 			Instrument: instrumentOf("readout", r.Dialogue), Certificate: r.Certificate, Due: r.Due, CoverageFactor: r.CoverageFactor,
-			GainUncertainty: r.GainUncertainty, ZeroUncertainty: r.ZeroUncertainty,
+			GainUncertainty: r.GainUncertainty, ZeroUncertainty: r.ZeroUncertainty, ExcitationUncertainty: r.ExcitationUncertainty,
 		}
 	}
 	return subject

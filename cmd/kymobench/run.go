@@ -19,9 +19,9 @@ import (
 )
 
 type runOptions struct {
-	bench, procedure, out, operator, model, lot string
-	serials                                     []string
-	json                                        bool
+	bench, procedure, out, operator, model, lot, overdue string
+	serials                                              []string
+	json                                                 bool
 }
 
 func newRunCommand(io streams) *cobra.Command {
@@ -36,7 +36,12 @@ input vents and leaves the record open (exit 4), and so does ^C.
 Exit codes: 0 accepted, 3 rejected, 4 inconclusive or stopped.`,
 		Example: `  kymobench run --bench bench.toml --procedure incoming --serial-number P-1234`,
 		Args:    noArguments,
-		RunE:    func(cmd *cobra.Command, _ []string) error { return runRun(cmd.Context(), o, io) },
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			if cmd.Flags().Changed("allow-overdue") && (strings.TrimSpace(o.overdue) == "" || len([]rune(o.overdue)) > 200) {
+				return usagef("--allow-overdue takes a reason of 1 to 200 characters")
+			}
+			return runRun(cmd.Context(), o, io)
+		},
 	}
 	f := cmd.Flags()
 	f.StringVar(&o.bench, "bench", "", "bench file")
@@ -46,6 +51,7 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive or stopped.`,
 	f.StringVar(&o.lot, "lot", "", "of the UUT, as marked")
 	f.StringVar(&o.operator, "operator", "", "who carries it out")
 	f.StringVar(&o.out, "out", ".", "folder for runs and reports")
+	f.StringVar(&o.overdue, "allow-overdue", "", "why a certificate past its due date is used; the verdict is then inconclusive at best")
 	f.BoolVar(&o.json, "json", false, "one JSON document on stdout")
 	return cmd
 }
@@ -101,7 +107,7 @@ func runRun(ctx context.Context, o runOptions, io streams) error {
 	}
 	return finish(ctx, job{
 		file: file, ports: newSerialPorts(), definition: d, folder: f, uuts: uuts, operator: operator,
-		layout: layout1.Number, covered: layout1.Covered,
+		layout: layout1.Number, covered: layout1.Covered, overdue: strings.TrimSpace(o.overdue),
 		committer: func(i record.Poster) record.Committer { return record.NewDisk(i) },
 		console:   func(i line.Inbox) run.Operator { return newConsole(io.in, io.err, i) },
 	}, keys, o.json, nil, io)

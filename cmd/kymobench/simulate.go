@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"path/filepath"
+	"time"
 
 	"github.com/spf13/cobra"
 
@@ -38,7 +39,7 @@ func runSimulate(ctx context.Context, o simulateOptions, io streams) error {
 	if o.dir == "" {
 		return usagef("--dir is needed")
 	}
-	b, err := simulatedBench(o.seed, o.uuts)
+	b, err := simulatedBench(o.seed, o.uuts, time.Now())
 	if err != nil {
 		return err
 	}

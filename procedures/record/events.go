@@ -33,6 +33,7 @@ const (
 	KindVent        = "vent"        // Vent
 	KindFault       = "fault"       // Fault
 	KindReservation = "reservation" // Reservation
+	KindOverride    = "override"    // Override
 	KindFinished    = "finished"    // Finished
 	KindRecovered   = "recovered"   // Recovered
 	KindResults     = "results"     // StoredResults, the last line but one
@@ -115,15 +116,19 @@ type Reference struct {
 
 // Certificate is what the reference's calibration certificate states.
 type Certificate struct {
-	Number               string       `json:"number,omitempty"`
-	Laboratory           string       `json:"laboratory,omitempty"`
-	Date                 string       `json:"date,omitempty"`
-	Due                  string       `json:"due,omitempty"`
-	CoverageFactor       float64      `json:"coverage_factor,omitempty"`
-	Uncertainty          string       `json:"uncertainty,omitempty"`            // expanded, at each set pressure
-	UncertaintyOfReading string       `json:"uncertainty_of_reading,omitempty"` // expanded, a share common to all readings
-	DriftOfReading       string       `json:"drift_of_reading,omitempty"`       // half-width, a share
-	Corrections          []Correction `json:"corrections,omitempty"`
+	Number               string  `json:"number,omitempty"`
+	Laboratory           string  `json:"laboratory,omitempty"`
+	Date                 string  `json:"date,omitempty"`
+	Due                  string  `json:"due,omitempty"`
+	CoverageFactor       float64 `json:"coverage_factor,omitempty"`
+	Uncertainty          string  `json:"uncertainty,omitempty"`            // expanded, at each set pressure
+	UncertaintyOfReading string  `json:"uncertainty_of_reading,omitempty"` // expanded, a share common to all readings
+	DriftOfReading       string  `json:"drift_of_reading,omitempty"`       // half-width since its date, a share
+	// Half-widths for each year since its date: a share of the reading, and a pressure.
+	DriftOfReadingPerYear string       `json:"drift_of_reading_per_year,omitempty"`
+	DriftPerYear          string       `json:"drift_per_year,omitempty"`
+	TemperatureOfReading  string       `json:"temperature_of_reading,omitempty"` // half-width, a share: bench against laboratory
+	Corrections           []Correction `json:"corrections,omitempty"`
 }
 
 // Correction says what to add to a reading at a pressure.
@@ -140,6 +145,8 @@ type Readout struct {
 	CoverageFactor  float64 `json:"coverage_factor,omitempty"`
 	GainUncertainty string  `json:"gain_uncertainty,omitempty"` // expanded, a share
 	ZeroUncertainty string  `json:"zero_uncertainty,omitempty"` // expanded
+	// ExcitationUncertainty is expanded, a share; of a voltage output it counts like a gain.
+	ExcitationUncertainty string `json:"excitation_uncertainty,omitempty"`
 }
 
 // Valve is what makes the step.
@@ -264,6 +271,13 @@ type Fault struct {
 type Reservation struct {
 	Code string `json:"code"`
 	Text string `json:"text"`
+}
+
+// Override is a rule of the house that somebody set aside for this run.
+type Override struct {
+	Code   string `json:"code"`   // certificate_overdue
+	Text   string `json:"text"`   // what was set aside
+	Reason string `json:"reason"` // as typed
 }
 
 // Finished ends the measuring: complete, or stopped with a code.

@@ -61,21 +61,32 @@ func (s *scale) errorBudget(t taken, zero taken, n noise) *budget {
 	b := &budget{}
 	b.add("reference, share of reading", fromCertificate, normal, "1", s.uShare, t.p, 0)
 	b.add("reference, at the set pressure", fromCertificate, normal, u, s.uReference, atPressure(t), 0)
-	b.add("reference, drift since its date", fromCertificate, rectangular, "1", s.uDrift, t.p, 0)
+	s.aged(b, t.p, atPressure(t))
 	b.add("readout, gain", fromCertificate, normal, "1", s.uGain, t.y-zero.y, 0)
+	b.add("readout, excitation", fromCertificate, normal, "1", s.uVolts, t.y-zero.y, 0)
 	b.add("noise of the point", fromRun, studentT, u, n.of(t), 1, n.dof(t))
 	b.add("noise of the zero", fromRun, studentT, u, n.of(zero), 1, n.dof(zero))
 	s.small(b, t, 1)
 	return b
 }
 
+// aged adds what the reference may have changed by since its certificate's
+// date and with the temperature: shares of the reading with sensitivity share,
+// and what is the same at every pressure but a zeroed zero with sensitivity at.
+func (s *scale) aged(b *budget, share, at float64) {
+	const drifted = "reference, drift since its date"
+	b.add(drifted, fromCertificate, rectangular, "1", uncertainty.FromHalfWidth(s.drift), share, 0)
+	b.add(drifted+", at every pressure", fromCertificate, rectangular, s.unit.Name, uncertainty.FromHalfWidth(s.driftAt), at, 0)
+	b.add("reference, temperature", fromCertificate, rectangular, "1", uncertainty.FromHalfWidth(s.warmth), share, 0)
+}
+
 // small adds what every difference of UUT and reference has: resolutions and
 // the settling left.
 func (s *scale) small(b *budget, t taken, times float64) {
 	u := s.unit.Name
-	b.add("reference, resolution", fromBench, rectangular, u, s.resolutionReference/2/math.Sqrt(3), times, 0)
-	b.add("UUT, resolution", fromBench, rectangular, u, s.resolutionUUT/2/math.Sqrt(3), times, 0)
-	b.add("settling left: slope x delay", fromRun, rectangular, u, math.Abs(t.slope)*s.delay/math.Sqrt(3), times, 0)
+	b.add("reference, resolution", fromBench, rectangular, u, uncertainty.FromFullWidth(s.resolutionReference), times, 0)
+	b.add("UUT, resolution", fromBench, rectangular, u, uncertainty.FromFullWidth(s.resolutionUUT), times, 0)
+	b.add("settling left: slope x delay", fromRun, rectangular, u, uncertainty.FromHalfWidth(math.Abs(t.slope)*s.delay), times, 0)
 }
 
 // atPressure is 0 at zero pressure, where the reference was itself zeroed in
@@ -94,6 +105,7 @@ func (s *scale) zeroBudget(t taken, n noise) *budget {
 	b.add("head: height of the diaphragm", fromBench, normal, u, s.uHead, 1, 0)
 	b.add("readout, zero", fromCertificate, normal, u, s.uZero, 1, 0)
 	b.add("readout, gain", fromCertificate, normal, "1", s.uGain, t.y, 0)
+	b.add("readout, excitation", fromCertificate, normal, "1", s.uVolts, t.y, 0)
 	b.add("noise of the reading", fromRun, studentT, u, n.of(t), 1, n.dof(t))
 	s.small(b, t, 1)
 	return b
@@ -120,7 +132,7 @@ func (s *scale) slopeBudget(points []taken, slope float64, n noise) *budget {
 	}
 	common := map[float64]float64{}
 	var order []float64
-	var vNoise, vSquares, vSettling float64
+	var vNoise, vSquares, vSettling, vAged, cAged float64
 	for _, t := range points {
 		c := (t.p - mp) / sxx
 		key := t.p
@@ -131,9 +143,11 @@ func (s *scale) slopeBudget(points []taken, slope float64, n noise) *budget {
 			order = append(order, key)
 		}
 		common[key] += c * atPressure(t)
+		vAged, cAged = vAged+t.p*atPressure(t), cAged+atPressure(t)
 		vNoise += c * c * n.of(t) * n.of(t)
 		vSquares += c * c
-		vSettling += c * c * t.slope * t.slope * s.delay * s.delay / 3
+		u := uncertainty.FromHalfWidth(c * t.slope * s.delay)
+		vSettling += u * u
 	}
 	var vCommon float64
 	for _, key := range order {
@@ -143,11 +157,12 @@ func (s *scale) slopeBudget(points []taken, slope float64, n noise) *budget {
 	per := 1 / slope // all as shares of the slope
 	b.add("reference, share of reading", fromCertificate, normal, "1", s.uShare, 1, 0)
 	b.add("reference, at the set pressures", fromCertificate, normal, u, s.uReference, math.Sqrt(vCommon), 0)
-	b.add("reference, drift since its date", fromCertificate, rectangular, "1", s.uDrift, 1, 0)
+	s.aged(b, 1, (vAged-mp*cAged)/sxx)
 	b.add("readout, gain", fromCertificate, normal, "1", s.uGain, 1, 0)
+	b.add("readout, excitation", fromCertificate, normal, "1", s.uVolts, 1, 0)
 	b.add("noise of the points", fromRun, studentT, "1", math.Sqrt(vNoise), per, n.dofY)
-	b.add("reference, resolution", fromBench, rectangular, u, s.resolutionReference/2/math.Sqrt(3), math.Sqrt(vSquares), 0)
-	b.add("UUT, resolution", fromBench, rectangular, u, s.resolutionUUT/2/math.Sqrt(3), math.Sqrt(vSquares)*per, 0)
+	b.add("reference, resolution", fromBench, rectangular, u, uncertainty.FromFullWidth(s.resolutionReference), math.Sqrt(vSquares), 0)
+	b.add("UUT, resolution", fromBench, rectangular, u, uncertainty.FromFullWidth(s.resolutionUUT), math.Sqrt(vSquares)*per, 0)
 	b.add("settling left: slope x delay", fromRun, rectangular, "1", math.Sqrt(vSettling), 1, 0)
 	return b
 }

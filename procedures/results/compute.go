@@ -2,6 +2,7 @@ package results
 
 import (
 	"fmt"
+	"time"
 
 	"kymobench/procedures"
 	"kymobench/procedures/ready"
@@ -121,7 +122,51 @@ func (j *judge) verdict(limits []Limit) (verdict.Verdict, []Reason) {
 		}
 	}
 	d := j.g.definition.Decision
-	return verdict.Overall(outcomes, fault, d.ConditionalPass, d.ConditionalFail), reasons
+	v := verdict.Overall(outcomes, fault, d.ConditionalPass, d.ConditionalFail)
+	if overdue := j.g.overdue(); len(overdue) > 0 {
+		reasons = append(reasons, overdue...)
+		if v == verdict.Accepted {
+			v = verdict.Inconclusive
+		}
+	}
+	return v, reasons
+}
+
+// CertificateOverdue is the code of an override, and of the reason why a run
+// with an instrument past its due date is inconclusive at best.
+const CertificateOverdue = "certificate_overdue"
+
+// overdue lists the certificates that were past their due date when the run
+// began, whether or not somebody gave a reason for it.
+func (g *gathered) overdue() []Reason {
+	var out []Reason
+	for _, c := range g.certificates() {
+		day, err := time.Parse(time.DateOnly, c.due)
+		if err != nil || g.began.IsZero() || g.began.Before(day.AddDate(0, 0, 1)) {
+			continue
+		}
+		text := fmt.Sprintf("the certificate of the %s was due on %s: inconclusive at best", c.of, c.due)
+		out = append(out, Reason{CertificateOverdue, text})
+	}
+	for _, o := range g.overrides {
+		if len(out) == 0 {
+			out = append(out, Reason{o.Code, o.Text})
+		}
+	}
+	return out
+}
+
+type certificate struct{ of, date, due string }
+
+func (g *gathered) certificates() []certificate {
+	var out []certificate
+	if g.reference != nil {
+		out = append(out, certificate{"reference", g.reference.Certificate.Date, g.reference.Certificate.Due})
+	}
+	if g.readout != nil {
+		out = append(out, certificate{"readout", "", g.readout.Due})
+	}
+	return out
 }
 
 // told says in words how a limit came out.

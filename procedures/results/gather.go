@@ -2,6 +2,7 @@ package results
 
 import (
 	"fmt"
+	"time"
 
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
@@ -12,6 +13,7 @@ import (
 // gathered is what the events of a record say, sorted by kind, before anything
 // is computed.
 type gathered struct {
+	began        time.Time // on the wall clock; zero for readings of no known day
 	opened       *record.Opened
 	definition   *procedures.Definition
 	reference    *record.Reference
@@ -25,6 +27,7 @@ type gathered struct {
 	captures     []record.Capture
 	faults       []Reason
 	reservations []Reason
+	overrides    []record.Override
 	finished     *record.Finished
 }
 
@@ -52,6 +55,7 @@ func gather(events []record.Event) (*gathered, error) {
 func (g *gathered) take(e record.Event) error {
 	switch e.Kind {
 	case record.KindOpened:
+		g.began = e.Wall.UTC()
 		return keep(e, &g.opened)
 	case record.KindProcedure:
 		file, err := record.Decode[record.File](e)
@@ -90,6 +94,8 @@ func (g *gathered) take(e record.Event) error {
 		r, err := record.Decode[record.Reservation](e)
 		g.reservations = append(g.reservations, Reason{Code: r.Code, Text: r.Text})
 		return err
+	case record.KindOverride:
+		return add(e, &g.overrides)
 	case record.KindFinished:
 		return keep(e, &g.finished)
 	}

@@ -20,7 +20,7 @@ type taken struct {
 	hasSet bool
 	p      float64 // corrected reference
 	y      float64 // UUT
-	beyond bool    // outside the certificate's corrections
+	beyond float64 // mean distance of its readings outside the certificate's range
 
 	nP, nY int
 	vP     float64 // variance of one reading of the reference about its slope
@@ -51,7 +51,7 @@ func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
 		if err != nil {
 			return t, fmt.Errorf("reference reading in line %d: %w", n, err)
 		}
-		t.beyond = t.beyond || beyond
+		t.beyond += beyond / float64(len(pt.Readings))
 		times, ps = append(times, r.middle()), append(ps, p)
 	}
 	if len(ps) == 0 {

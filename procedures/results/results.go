@@ -81,24 +81,23 @@ type Figure struct {
 
 // Static is what the static readings gave; a figure they cannot give is nil.
 type Static struct {
-	Unit             string        `json:"pressure_unit"`
-	Readings         int           `json:"readings"`
-	Cycles           int           `json:"cycles"`
-	Intercept        *Figure       `json:"intercept"`
-	Slope            *Figure       `json:"slope"`
-	ResidualSD       *float64      `json:"residual_standard_deviation"`
-	Covariance       *float64      `json:"covariance_intercept_slope"`
-	Sensitivity      *Sensitivity  `json:"sensitivity"`
-	ZeroOffset       *Value        `json:"zero_offset"`
-	ZeroReturn       []*float64    `json:"zero_return"`
-	Linearity        Linearity     `json:"linearity"`
-	Hysteresis       *Located      `json:"hysteresis"`
-	Repeatability    Repeatability `json:"repeatability"`
-	LargestError     *ErrorAt      `json:"largest_error"`
-	ErrorAfterZero   *ErrorAt      `json:"largest_error_after_zero"`
-	Reservations     []Reason      `json:"reservations"`
-	NominalUsed      *float64      `json:"nominal_sensitivity_uV_V_mmHg"` // nil for a pressure output
-	CorrectionBeyond bool          `json:"-"`
+	Unit           string        `json:"pressure_unit"`
+	Readings       int           `json:"readings"`
+	Cycles         int           `json:"cycles"`
+	Intercept      *Figure       `json:"intercept"`
+	Slope          *Figure       `json:"slope"`
+	ResidualSD     *float64      `json:"residual_standard_deviation"`
+	Covariance     *float64      `json:"covariance_intercept_slope"`
+	Sensitivity    *Sensitivity  `json:"sensitivity"`
+	ZeroOffset     *Value        `json:"zero_offset"`
+	ZeroReturn     []*float64    `json:"zero_return"`
+	Linearity      Linearity     `json:"linearity"`
+	Hysteresis     *Located      `json:"hysteresis"`
+	Repeatability  Repeatability `json:"repeatability"`
+	LargestError   *ErrorAt      `json:"largest_error"`
+	ErrorAfterZero *ErrorAt      `json:"largest_error_after_zero"`
+	Reservations   []Reason      `json:"reservations"`
+	NominalUsed    *float64      `json:"nominal_sensitivity_uV_V_mmHg"` // nil for a pressure output
 }
 
 // Value is a bare figure.

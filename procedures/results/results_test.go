@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"testing"
+	"time"
 
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
@@ -259,5 +260,59 @@ func TestStoreAndCompare(t *testing.T) {
 	}
 	if d := change(func(r *Results) { *r.Limits[0].Value *= 1 + 1e-10 }); d != "" {
 		t.Errorf("a last bit was taken for a difference in %s", d)
+	}
+}
+
+// Drift by year counts from the certificate's date to the run, as a rectangle:
+// half a year of 0.04 % a year is 0.02 % of the reading, over sqrt 3 (GUM
+// 4.3.7), by hand. A certificate past its due date leaves a run that would be
+// accepted inconclusive, with or without an override in the record.
+func TestCertificateAges(t *testing.T) {
+	made := func(certificate record.Certificate) Results {
+		m := opening(t)
+		m.cycle(0, func(float64, bool) float64 { return 0 })
+		m.add(record.KindFinished, record.Finished{Complete: true})
+		m.add(record.KindOpened, record.Opened{})
+		for i, e := range m.events {
+			switch e.Kind {
+			case record.KindOpened:
+				m.events[i].Wall = time.Date(2026, 7, 1, 12, 0, 0, 0, time.UTC)
+			case record.KindReference:
+				again, err := record.NewEvent(e.Line, e.At, e.Kind, record.Reference{Field: quantity.Field{Unit: "mmHg"}, Certificate: certificate})
+				if err != nil {
+					t.Fatal(err)
+				}
+				m.events[i] = again
+			}
+		}
+		return m.compute()
+	}
+	r := made(record.Certificate{CoverageFactor: 2, Uncertainty: "0.04 mmHg", Date: "2026-01-01", Due: "2026-12-31", DriftOfReadingPerYear: "0.04 %", DriftPerYear: "0.1 mmHg"})
+	years := 181.5 / 365.2425
+	found := 0
+	for _, b := range r.limit(t, "accuracy").Budget {
+		want := map[string]float64{
+			"reference, drift since its date":                    years * 0.0004 / math.Sqrt(3),
+			"reference, drift since its date, at every pressure": years * 0.1 / math.Sqrt(3),
+		}
+		if u, ok := want[b.Name]; ok {
+			found++
+			if math.Abs(b.Standard-u) > 1e-12 {
+				t.Errorf("%s: %g, want %g", b.Name, b.Standard, u)
+			}
+		}
+	}
+	if found != 2 {
+		t.Errorf("%d contributions of drift in %+v", found, r.limit(t, "accuracy").Budget)
+	}
+	for due, want := range map[string]bool{"2026-06-30": true, "2026-07-01": false} {
+		r := made(record.Certificate{CoverageFactor: 2, Uncertainty: "0.04 mmHg", Date: "2026-01-01", Due: due})
+		said := false
+		for _, reason := range r.Reasons {
+			said = said || reason.Code == CertificateOverdue
+		}
+		if said != want || said && r.Verdict == verdict.Accepted {
+			t.Errorf("due on %s: %v, %v", due, r.Verdict, r.Reasons)
+		}
 	}
 }

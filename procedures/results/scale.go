@@ -3,6 +3,7 @@ package results
 import (
 	"fmt"
 	"math"
+	"time"
 
 	"kymobench/bench/quantity"
 	"kymobench/procedures/fit"
@@ -12,6 +13,9 @@ import (
 // AssumedSensitivity is taken for an electrical output whose nominal
 // sensitivity nobody stated, with a reservation: 5 uV/V/mmHg.
 const AssumedSensitivity = "5 uV/V/mmHg"
+
+// hoursInYear is the mean year of the calendar, 365.2425 days.
+const hoursInYear = 365.2425 * 24
 
 // standardGravity in m/s2, exact by convention; airDensity in kg/m3 at about
 // 20 degC and 1013 hPa, from memory.
@@ -33,13 +37,17 @@ type scale struct {
 	assumed    bool    // nominal is AssumedSensitivity
 	head       float64 // added to the reference's reading
 	curve      fit.Curve
-	corrected  bool // there is a curve
+	corrected  bool    // there is a curve
+	low, high  float64 // the range of the certificate
 
 	// standard uncertainties
 	uReference float64 // at each set pressure
 	uShare     float64 // of the reading, common
-	uDrift     float64 // of the reading
+	drift      float64 // of the reading, half-width
+	driftAt    float64 // at each pressure but a zeroed zero, half-width
+	warmth     float64 // of the reading, half-width: temperature
 	uGain      float64 // of the reading, the readout's
+	uVolts     float64 // of the reading, the excitation's
 	uZero      float64 // the readout's zero
 	uHead      float64
 
@@ -81,11 +89,12 @@ func newScale(g *gathered) (*scale, error) {
 	} else {
 		s.resolutionUUT = s.unit.FromSI(r.si(g.uut.Resolution, quantity.DimPressure))
 	}
-	s.certificate(g.reference, &r)
+	s.certificate(g.reference, g.began, &r)
 	s.heads(g, &r)
 	if g.readout != nil && g.readout.CoverageFactor > 0 {
 		k := g.readout.CoverageFactor
 		s.uGain = r.si(g.readout.GainUncertainty, quantity.DimNone) / k
+		s.uVolts = r.si(g.readout.ExcitationUncertainty, quantity.DimNone) / k
 		if s.nominal > 0 {
 			s.uZero = s.output(r.si(g.readout.ZeroUncertainty, s.uutUnit.Dimension), s.excitation) / k
 		}
@@ -100,20 +109,35 @@ func newScale(g *gathered) (*scale, error) {
 	return s, r.err
 }
 
-func (s *scale) certificate(ref *record.Reference, r *reader) {
+// certificate reads what the certificate states. Drift by year counts from its
+// date to the beginning of the run.
+func (s *scale) certificate(ref *record.Reference, began time.Time, r *reader) {
 	c := ref.Certificate
 	if c.CoverageFactor > 0 {
 		s.uReference = s.unit.FromSI(r.si(c.Uncertainty, quantity.DimPressure)) / c.CoverageFactor
 		s.uShare = r.si(c.UncertaintyOfReading, quantity.DimNone) / c.CoverageFactor
 	}
-	s.uDrift = r.si(c.DriftOfReading, quantity.DimNone) / math.Sqrt(3)
+	years := 0.0
+	if date, err := time.Parse(time.DateOnly, c.Date); err == nil && !began.IsZero() {
+		years = math.Abs(began.Sub(date).Hours()) / hoursInYear
+	}
+	s.drift = r.si(c.DriftOfReading, quantity.DimNone) + years*r.si(c.DriftOfReadingPerYear, quantity.DimNone)
+	s.driftAt = years * s.unit.FromSI(r.si(c.DriftPerYear, quantity.DimPressure))
+	s.warmth = r.si(c.TemperatureOfReading, quantity.DimNone)
 	s.resolutionReference = s.unit.FromSI(r.si(ref.Resolution, quantity.DimPressure))
+	s.low, s.high = math.Inf(-1), math.Inf(1)
+	if ref.RangeLow != "" && ref.RangeHigh != "" {
+		s.low, s.high = r.stated(ref.RangeLow, s.unit), r.stated(ref.RangeHigh, s.unit)
+	}
 	var at, add []float64
 	for _, p := range c.Corrections {
 		at = append(at, r.stated(p.At, s.unit))
 		add = append(add, r.stated(p.Correction, s.unit))
 	}
 	if len(at) > 0 {
+		if len(at) > 1 { // one alone is a constant, for the whole range
+			s.low, s.high = math.Max(s.low, at[0]), math.Min(s.high, at[len(at)-1])
+		}
 		curve, err := fit.NewCurve(at, add)
 		if err != nil && r.err == nil {
 			r.err = err
@@ -169,24 +193,19 @@ func (s *scale) uut(text, excitation string) (float64, error) {
 }
 
 // reference reads one of the reference's texts and corrects it: reading +
-// correction(reading) + head. beyond says that the certificate's corrections
-// end before this reading.
-func (s *scale) reference(text string) (p float64, beyond bool, err error) {
+// correction(reading) + head. beyond is how far the reading lies outside the
+// range of the certificate, where the last correction was kept.
+func (s *scale) reference(text string) (p, beyond float64, err error) {
 	x, err := s.referenceF.Number(text)
 	if err != nil {
-		return 0, false, err
+		return 0, 0, err
 	}
-	return s.correct(x)
-}
-
-func (s *scale) correct(x float64) (p float64, beyond bool, err error) {
-	p = x
+	p = x + s.head
 	if s.corrected {
-		var c float64
-		c, beyond = s.curve.At(x)
+		c, _ := s.curve.At(x)
 		p += c
 	}
-	return p + s.head, beyond, nil
+	return p, math.Max(0, math.Max(s.low-x, x-s.high)), nil
 }
 
 // reader parses stated quantities and keeps the first error.

@@ -25,7 +25,7 @@ type staticFigures struct {
 func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 	var out staticFigures
 	var data fit.Data
-	beyond, sets := false, true
+	farthest, sets := 0.0, true
 	for i, pt := range g.points {
 		t, err := g.takePoint(s, pt)
 		if err != nil {
@@ -35,7 +35,7 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 			out.zero = &t
 			continue
 		}
-		beyond = beyond || t.beyond
+		farthest = math.Max(farthest, t.beyond)
 		sets = sets && t.hasSet
 		out.points = append(out.points, t)
 		data.Reference, data.UUT = append(data.Reference, t.p), append(data.UUT, t.y)
@@ -68,11 +68,11 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 		out.static.Reservations = append(out.static.Reservations, Reason{"nominal_sensitivity_assumed",
 			"nobody stated the nominal sensitivity; " + AssumedSensitivity + " is assumed"})
 	}
-	if beyond {
+	if farthest > 0 {
 		out.static.Reservations = append(out.static.Reservations, Reason{"correction_extrapolated",
-			"readings lie beyond the ends of the reference's corrections, where the last correction was kept"})
+			fmt.Sprintf("readings lie up to %.3g %s outside the range of the reference's certificate, where the last correction was kept", farthest, s.unit.Name)})
 	}
-	out.short = g.short(len(out.points), beyond)
+	out.short = g.short(s, len(out.points), farthest)
 	return out, nil
 }
 
@@ -85,19 +85,22 @@ func at(t taken) float64 {
 }
 
 // short says why a run's points cannot be judged: some are missing, or lie
-// where the reference's certificate says nothing.
-func (g *gathered) short(points int, beyond bool) string {
-	if beyond {
-		return "readings lie outside the range of the reference's certificate"
-	}
+// where the reference's certificate says nothing. A set pressure at the end of
+// the certificate's range may be missed by the window of the procedure, or the
+// vented zero of a certificate that begins at zero could never be taken.
+func (g *gathered) short(s *scale, points int, farthest float64) string {
 	if g.definition == nil {
 		return ""
 	}
-	want := 0
+	want, window := 0, 0.0
 	for _, stage := range g.definition.Stages {
 		if st, ok := stage.(procedures.Static); ok {
 			want += len(st.Points())
+			window = s.unit.FromSI(float64(st.Window))
 		}
+	}
+	if farthest > window {
+		return fmt.Sprintf("readings lie up to %.3g %s outside the range of the reference's certificate", farthest, s.unit.Name)
 	}
 	if points < want {
 		return fmt.Sprintf("only %d of %d points were taken", points, want)

@@ -102,6 +102,9 @@ func (s *session) open(ctx context.Context) error {
 			lines = append(lines, first{record.KindReadout, *u.Readout})
 		}
 		lines = append(lines, first{record.KindSource, f.Source}, first{record.KindValve, f.Valve})
+		for _, o := range u.Overrides {
+			lines = append(lines, first{record.KindOverride, o})
+		}
 		for _, l := range lines {
 			if _, err := s.put(u, l.kind, l.payload); err != nil {
 				return err

@@ -43,6 +43,8 @@ type Subject struct {
 	UUT     record.UUT
 	Readout *record.Readout // nil when the UUT puts out pressure itself
 	Opened  record.Opened
+	// Overrides are the rules set aside for this run.
+	Overrides []record.Override
 	// Open creates its record; it is called when the instruments have said who
 	// they are. Durable events are posted to the Poster.
 	Open func(record.Poster) (*record.Writer, error)

@@ -102,6 +102,25 @@ func TestMarkAcrossEveryPage(t *testing.T) {
 	}
 }
 
+// A certificate past its due date is stamped on every page, and only then.
+func TestStampOnEveryPage(t *testing.T) {
+	for name, m := range kinds(t) {
+		for _, due := range []string{"2025-12-31", "2026-01-02"} { // the run is of 2 January 2026
+			for i, e := range m.events {
+				if e.Kind == record.KindReadout {
+					m.events[i].Payload = bytes.Replace(e.Payload, []byte(`"due":"2025-12-31"`), []byte(`"due":"`+due+`"`), 1)
+				}
+			}
+			for i, p := range pagesOf(t, render(t, m)) {
+				stamped := strings.Contains(allText(p), "CERTIFICATE OVERDUE: READOUT SINCE 2025-12-31")
+				if stamped != (due == "2025-12-31") {
+					t.Errorf("%s, page %d, due on %s: stamped %v", name, i+1, due, stamped)
+				}
+			}
+		}
+	}
+}
+
 // Everything that the document says stands on the pages.
 func TestEverythingIsPrinted(t *testing.T) {
 	for name, m := range kinds(t) {

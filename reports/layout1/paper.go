@@ -88,6 +88,16 @@ func (p *paper) finish() {
 		p.textRight(right, 14, p.clipped(p.d.Department, 0.34*width))
 		p.line(left, 16.5, right, 16.5, 0.15, hair())
 		p.line(left, 281, right, 281, 0.15, hair())
+		if p.d.Stamp != "" {
+			p.font(bold, 8)
+			p.colour(ink())
+			half := p.width(p.d.Stamp)/2 + 2.5
+			middle := (left + right) / 2
+			p.rect(middle-half, 17.4, 2*half, 4.6, pale())
+			p.textCentre(middle, 20.7, p.d.Stamp)
+			p.font(sans, 7.5)
+			p.colour(quiet())
+		}
 		p.text(left, 285.5, "Run "+p.d.Run)
 		p.textRight(right, 285.5, fmt.Sprintf("page %d of %d", i, n))
 		if p.d.Mark != "" {
