@@ -32,6 +32,8 @@ func mayImport() map[string][]string {
 		"procedures":              {"bench/quantity", "bench/tomlfile", "procedures/verdict"},
 		"procedures/fit":          {},
 		"procedures/step":         {},
+		"procedures/pulse":        {},
+		"procedures/tubing":       {},
 		"procedures/ready":        {},
 		"procedures/uncertainty":  {},
 		"procedures/verdict":      {"bench/quantity"},

@@ -40,6 +40,28 @@ func Overshoot(zeta float64) float64 {
 	return math.Exp(-math.Pi * zeta / DampedFrequency(zeta))
 }
 
+// DampingOfOpposite is the damping ratio that a ratio of successive opposite
+// extrema stands for (height above the end, then depth below it; 0 to 1):
+// L/sqrt(pi^2 + L^2), L = -ln ratio. It is the inverse of Overshoot. This is
+// what a flush test on paper gives when neighbouring heights are taken.
+// NaN outside 0 to 1.
+func DampingOfOpposite(ratio float64) float64 { return dampingOf(-math.Log(ratio), math.Pi) }
+
+// DampingOfSameSide is the same for successive peaks on one side, a full cycle
+// apart: L/sqrt(4 pi^2 + L^2). Taken for opposite extrema it gives half the
+// damping.
+func DampingOfSameSide(ratio float64) float64 { return dampingOf(-math.Log(ratio), 2*math.Pi) }
+
+func dampingOf(decrement, angle float64) float64 {
+	if !(decrement >= 0) {
+		return math.NaN()
+	}
+	if math.IsInf(decrement, 1) {
+		return 1
+	}
+	return decrement / math.Hypot(angle, decrement)
+}
+
 // Resonance is where the gain is largest, as a multiple of fn, and how large:
 // sqrt(1 - 2 zeta^2) and 1/(2 zeta sqrt(1 - zeta^2)). 0 and 1 where there is
 // no peak, zeta >= 1/sqrt 2.

@@ -88,3 +88,38 @@ func TestBandsMeetTheGain(t *testing.T) {
 		t.Errorf("flat band %g below and %g above the jump, want 0.55 and 0.8679", low, high)
 	}
 }
+
+// The published flush test: a period of 1.7 mm at 25 mm/s is 14.7 Hz, adjacent
+// heights of 17 and 24 mm are a ratio of 0.71 and a damping ratio of 0.11
+// (Miller's Anesthesia, 6th edition, figure 32-11). Read as a full cycle the
+// same ratio gives half of it. What rings is the damped frequency: 14.794 Hz is
+// the natural one (computed elsewhere).
+func TestFlushTest(t *testing.T) {
+	ringing, ratio := 25/1.7, 17.0/24
+	zeta := DampingOfOpposite(ratio)
+	if math.Abs(ringing-14.7) > 0.05 || math.Abs(ratio-0.71) > 0.005 || math.Abs(zeta-0.11) > 0.005 || math.Abs(zeta-0.1091) > 5e-5 {
+		t.Errorf("%.4f Hz, ratio %.4f, damping %.5f", ringing, ratio, zeta)
+	}
+	if half := DampingOfSameSide(ratio); math.Abs(half-0.0548) > 5e-5 {
+		t.Errorf("as a full cycle %.5f, want 0.0548", half)
+	}
+	if fn := ringing / DampedFrequency(zeta); math.Abs(fn-14.794) > 5e-4 {
+		t.Errorf("natural frequency %.4f Hz, want 14.794", fn)
+	}
+	// The inverse of the half-cycle ratio, and the same ratios misread
+	// (computed elsewhere, four decimals).
+	half := []float64{0.5912, 0.4559, 0.3579, 0.2800, 0.2155, 0.1605, 0.1128, 0.0709, 0.0335}
+	full := []float64{0.3441, 0.2481, 0.1882, 0.1443, 0.1097, 0.0810, 0.0567, 0.0355, 0.0168}
+	for i := range half {
+		r := float64(i+1) / 10
+		if got := DampingOfOpposite(r); math.Abs(got-half[i]) > 5.1e-5 || math.Abs(Overshoot(got)-r) > 1e-12 {
+			t.Errorf("ratio %.1f: %.5f", r, got)
+		}
+		if got := DampingOfSameSide(r); math.Abs(got-full[i]) > 5.1e-5 {
+			t.Errorf("ratio %.1f as a full cycle: %.5f", r, got)
+		}
+	}
+	if !math.IsNaN(DampingOfOpposite(1.1)) || !math.IsNaN(DampingOfOpposite(-1)) || DampingOfOpposite(0) != 1 || DampingOfOpposite(1) != 0 {
+		t.Error("edges")
+	}
+}
