@@ -44,8 +44,9 @@ func newFitStaticCommand(io streams) *cobra.Command {
 		Use:   "static FILE.csv",
 		Short: "Offset, sensitivity, linearity, hysteresis, repeatability",
 		Long: `Reads columns cycle, leg (up or down), set_UNIT (optional), reference_UNIT and
-uut_UNIT, or uut_mV (uut_uV) with excitation_V, in any order. Figures are in
-the reference column's unit; a figure the data cannot carry is "undetermined".`,
+uut_UNIT, or uut_mV (uut_uV) with excitation_V, in any order; also mounting, from
+1, where the UUT was mounted again. Figures are in the reference column's unit; a
+figure the data cannot carry is "undetermined", with the reason.`,
 		Example: `  kymobench fit static readings.csv --nominal-sensitivity "5 uV/V/mmHg"`,
 		Args:    oneFile,
 		RunE: func(cmd *cobra.Command, args []string) error {
@@ -147,65 +148,6 @@ func encode(w io.Writer, v any) error {
 	e := json.NewEncoder(w)
 	e.SetEscapeHTML(false)
 	return e.Encode(v)
-}
-
-func printStatic(w io.Writer, s *results.Static) error {
-	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
-	u := s.Unit
-	row := func(name string, v *float64, unit string) {
-		if v == nil {
-			fmt.Fprintf(t, "%s\tundetermined\t\n", name)
-			return
-		}
-		fmt.Fprintf(t, "%s\t%.6g\t%s\n", name, *v, unit)
-	}
-	figure := func(name string, f *results.Figure, unit string) {
-		if f == nil {
-			row(name, nil, unit)
-			return
-		}
-		fmt.Fprintf(t, "%s\t%.6g\t%s\tstandard uncertainty %.2g\n", name, f.Value, unit, f.Standard)
-	}
-	fmt.Fprintf(t, "readings\t%d\tin %d cycles\n", s.Readings, s.Cycles)
-	figure("intercept", s.Intercept, u)
-	figure("slope", s.Slope, "1")
-	row("residual standard deviation", s.ResidualSD, u)
-	if s.Sensitivity != nil {
-		figure("sensitivity", &results.Figure{Value: s.Sensitivity.Value, Standard: s.Sensitivity.Standard}, s.Sensitivity.Unit)
-	}
-	if s.ZeroOffset != nil {
-		row("zero offset", &s.ZeroOffset.Value, u)
-	}
-	for i, z := range s.ZeroReturn {
-		row(fmt.Sprintf("zero return, cycle %d", i+1), z, u)
-	}
-	row("linearity, independent", s.Linearity.Independent, u)
-	row("linearity, terminal-based", s.Linearity.Terminal, u)
-	row("linearity, zero-based", s.Linearity.ZeroBased, u)
-	row("linearity, least squares", s.Linearity.LeastSquares, u)
-	if s.Hysteresis != nil {
-		fmt.Fprintf(t, "hysteresis, largest\t%.6g\t%s\tat %.6g %s\n", s.Hysteresis.Largest, u, s.Hysteresis.At, u)
-	} else {
-		row("hysteresis, largest", nil, u)
-	}
-	row("repeatability, largest range", s.Repeatability.LargestRange, u)
-	row("repeatability, pooled SD", s.Repeatability.PooledSD, u)
-	for _, e := range []struct {
-		name string
-		at   *results.ErrorAt
-	}{{"largest error", s.LargestError}, {"largest error after zero", s.ErrorAfterZero}} {
-		if e.at == nil {
-			row(e.name, nil, u)
-			continue
-		}
-		where := fmt.Sprintf("cycle %d, %s", e.at.Cycle, e.at.Leg)
-		if e.at.At != nil {
-			where = fmt.Sprintf("at %.6g %s, %s", *e.at.At, u, where)
-		}
-		fmt.Fprintf(t, "%s\t%.6g\t%s\t%s\n", e.name, e.at.Value, u, where)
-	}
-	reservations(t, s.Reservations)
-	return t.Flush()
 }
 
 func reservations(w io.Writer, all []results.Reason) {

@@ -65,8 +65,9 @@ func TestEdges(t *testing.T) {
 	}{
 		"one reading": {[]reading{{1, "up", 0, 2, 5}}, true,
 			none, 3, none, none, 3, []float64{none}, []string{"one_cycle", "one_leg", "points_not_grouped"}},
+		// Read twice before the down leg: the zero offset is their mean.
 		"all at one pressure": {[]reading{{1, "up", 0, .1, 1}, {1, "up", 0, .1, 2}, {1, "down", 0, .1, 3}}, true,
-			none, .9, none, none, 2.9, []float64{none}, []string{"one_cycle", "points_not_grouped"}},
+			none, 1.4, none, none, 2.9, []float64{none}, []string{"one_cycle", "points_not_grouped"}},
 		"one leg": {[]reading{{1, "up", 0, 0, 1}, {1, "up", 100, 100, 102}, {1, "up", 200, 200, 203}}, true,
 			1.01, 1, none, none, 3, []float64{none}, []string{"one_cycle", "one_leg"}},
 		"top shared, ranked": {[]reading{{1, "up", 0, 0, 0}, {1, "up", 0, 100, 100}, {1, "up", 0, 200, 200}, {1, "down", 0, 100, 100}, {1, "down", 0, 0, 0}}, false,
@@ -187,7 +188,7 @@ func TestScaleAndRepetition(t *testing.T) {
 		}
 		want := *a.Line
 		want.Intercept, want.UIntercept, want.Residual, want.Covariance = want.Intercept*by, want.UIntercept*by, want.Residual*by, want.Covariance*by
-		if *b.Line != want || *b.Linearity.Terminal != *a.Linearity.Terminal*by || b.Hysteresis.Value != a.Hysteresis.Value*by {
+		if *b.Line != want || b.Linearity.Terminal.Value != a.Linearity.Terminal.Value*by || b.Hysteresis.Value != a.Hysteresis.Value*by {
 			t.Errorf("by 2^%d: %+v, want %+v", e, *b.Line, want)
 		}
 	}
@@ -209,8 +210,8 @@ func TestScaleAndRepetition(t *testing.T) {
 		}
 		same(t, "intercept", &b.Line.Intercept, a.Line.Intercept)
 		same(t, "slope", &b.Line.Slope, a.Line.Slope)
-		same(t, "independent", b.Linearity.Independent, *a.Linearity.Independent)
-		same(t, "least squares", b.Linearity.LeastSquares, *a.Linearity.LeastSquares)
+		same(t, "independent", &b.Linearity.Independent.Value, a.Linearity.Independent.Value)
+		same(t, "least squares", &b.Linearity.LeastSquares.Value, a.Linearity.LeastSquares.Value)
 		same(t, "hysteresis", value(b.Hysteresis), a.Hysteresis.Value)
 		same(t, "range", b.Repeatability.LargestRange, 0)
 		same(t, "pooled", b.Repeatability.PooledSD, 0)

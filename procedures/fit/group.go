@@ -6,11 +6,105 @@ import (
 	"slices"
 )
 
+// work is the data on their way to figures.
+type work struct {
+	Data
+	cycles []int // in rising order
+	cycle  []int // of each reading, in cycles
+	leg    []int // 0 up, 1 down
+	order  []int // of time: cycle, up before down, and as the leg goes
+	sets   []float64
+	levels []float64 // set pressures in rising order
+	level  []int     // of each reading, in levels
+	r      []float64 // residuals about the line
+	cells  []cell
+}
+
+// cell is the readings of one cycle, leg and set pressure, by their mean
+// residual.
+type cell struct {
+	cycle, level, leg int
+	r                 float64
+}
+
+// number replaces cycles and legs by indices.
+func (w *work) number() {
+	w.cycle, w.cycles = dense(w.Cycle)
+	w.leg = make([]int, len(w.Down))
+	for i, down := range w.Down {
+		if down {
+			w.leg[i] = 1
+		}
+	}
+}
+
+// dense numbers the values of x from the lowest, 0, up. Linear in len(x) where
+// the values lie close, as numbers of cycles do.
+func dense(x []int) (index, values []int) {
+	low, high := slices.Min(x), slices.Max(x)
+	index = make([]int, len(x))
+	if span := uint64(high) - uint64(low); span <= uint64(4*len(x)) {
+		seen := make([]int, span+1)
+		for _, v := range x {
+			seen[v-low] = 1
+		}
+		for k, s := range seen {
+			if s == 1 {
+				seen[k] = len(values)
+				values = append(values, low+k)
+			}
+		}
+		for i, v := range x {
+			index[i] = seen[v-low]
+		}
+		return index, values
+	}
+	values = slices.Clone(x)
+	slices.Sort(values)
+	values = slices.Compact(values)
+	for i, v := range x {
+		index[i], _ = slices.BinarySearch(values, v)
+	}
+	return index, values
+}
+
+// sorted is order, stably sorted by the key of each, 0 to keys-1, in linear
+// time.
+func sorted(order, key []int, keys int) []int {
+	start := make([]int, keys+1)
+	for _, i := range order {
+		start[key[i]+1]++
+	}
+	for k := range keys {
+		start[k+1] += start[k]
+	}
+	out := make([]int, len(order))
+	for _, i := range order {
+		out[start[key[i]]] = i
+		start[key[i]]++
+	}
+	return out
+}
+
+func counted(n int) []int {
+	out := make([]int, n)
+	for i := range out {
+		out[i] = i
+	}
+	return out
+}
+
+// oneLeg says that all readings are of one leg.
+func (w *work) oneLeg() bool {
+	return !slices.Contains(w.leg, 1-w.leg[0])
+}
+
 // group gives every reading its set pressure; false when that is impossible,
 // and every set pressure is then NaN.
 func (w *work) group() bool {
 	if w.Set != nil {
 		w.sets = w.Set
+		w.rank()
 		return true
 	}
 	w.sets = make([]float64, len(w.Reference))
@@ -34,22 +128,26 @@ func (w *work) group() bool {
 	for i, rank := range level {
 		w.sets[i] = means[rank]
 	}
+	w.rank()
 	return true
 }
 
-// ranked is the readings of each leg from the lowest p up; the legs in order
-// of time, for the sums over them must not depend on chance.
+// ranked is the readings of each leg from the lowest p up, by y where p is
+// equal; the legs in order of time.
 func (w *work) ranked() [][]int {
+	order := sorted(sorted(counted(len(w.leg)), w.leg, 2), w.cycle, len(w.cycles))
 	var legs [][]int
-	for k, i := range w.order {
-		if k == 0 || w.Cycle[i] != w.Cycle[w.order[k-1]] || w.Down[i] != w.Down[w.order[k-1]] {
-			legs = append(legs, nil)
+	from := 0
+	for k := range order {
+		if k+1 == len(order) || w.cycle[order[k+1]] != w.cycle[order[k]] || w.leg[order[k+1]] != w.leg[order[k]] {
+			legs = append(legs, order[from:k+1])
+			from = k + 1
 		}
-		last := len(legs) - 1
-		legs[last] = append(legs[last], i)
 	}
 	for _, ranked := range legs {
-		slices.SortStableFunc(ranked, func(a, b int) int { return cmp.Compare(w.Reference[a], w.Reference[b]) })
+		slices.SortFunc(ranked, func(a, b int) int {
+			return cmp.Or(compareFloats(w.Reference[a], w.Reference[b]), compareFloats(w.UUT[a], w.UUT[b]))
+		})
 	}
 	return legs
 }
@@ -96,94 +194,49 @@ func (w *work) rank() {
 	}
 }
 
-// cell is the readings of one cycle, leg and set pressure, by their mean
-// residual.
-type cell struct {
-	cycle, level int
-	down         bool
-	r            float64
+// inOrder finds the order of time.
+func (w *work) inOrder(grouped bool) {
+	if !grouped {
+		w.order = w.order[:0]
+		for _, leg := range w.ranked() {
+			if w.leg[leg[0]] == 1 {
+				slices.Reverse(leg)
+			}
+			w.order = append(w.order, leg...)
+		}
+		return
+	}
+	n := len(w.levels)
+	along := make([]int, len(w.level)) // up from the lowest, down from the highest
+	for i, l := range w.level {
+		along[i] = l
+		if w.leg[i] == 1 {
+			along[i] = n + n - 1 - l
+		}
+	}
+	w.order = sorted(sorted(counted(len(along)), along, 2*n), w.cycle, len(w.cycles))
+}
+
+func (w *work) residuals(l Straight) {
+	w.r = make([]float64, len(w.UUT))
+	for i := range w.r {
+		w.r[i] = w.UUT[i] - l.Intercept - l.Slope*w.Reference[i]
+	}
 }
 
 // inCells averages the residuals of each cell; in order of cycle, set
 // pressure, up before down.
-func (w *work) inCells() []cell {
-	order := slices.Clone(w.order)
-	slices.SortStableFunc(order, func(a, b int) int {
-		return cmp.Or(cmp.Compare(w.Cycle[a], w.Cycle[b]), cmp.Compare(w.level[a], w.level[b]))
-	}) // stable: up stays before down
-	var cells []cell
+func (w *work) inCells() {
+	order := sorted(sorted(sorted(w.order, w.leg, 2), w.level, len(w.levels)), w.cycle, len(w.cycles))
 	number := make([]int, len(order))
 	for _, i := range order {
-		c := cell{cycle: w.Cycle[i], level: w.level[i], down: w.Down[i]}
-		if len(cells) == 0 || c != cells[len(cells)-1] {
-			cells = append(cells, c)
+		c := cell{cycle: w.cycle[i], level: w.level[i], leg: w.leg[i]}
+		if len(w.cells) == 0 || c != w.cells[len(w.cells)-1] {
+			w.cells = append(w.cells, c)
 		}
-		number[i] = len(cells) - 1
+		number[i] = len(w.cells) - 1
 	}
-	for k, r := range means(w.r, number, len(cells)) {
-		cells[k].r = r
+	for k, r := range means(w.r, number, len(w.cells)) {
+		w.cells[k].r = r
 	}
-	return cells
-}
-
-// hysteresis compares the legs of each cycle at each set pressure.
-func (w *work) hysteresis(cells []cell) *Located {
-	var best *Located
-	for k := 1; k < len(cells); k++ {
-		up, down := cells[k-1], cells[k]
-		if up.cycle != down.cycle || up.level != down.level {
-			continue
-		}
-		if h := down.r - up.r; best == nil || math.Abs(h) > math.Abs(best.Value) {
-			best = &Located{Value: h, At: w.levels[up.level], Cycle: up.cycle, Down: true}
-		}
-	}
-	return best
-}
-
-// repeatability compares the cycles at each set pressure in each leg.
-func repeatability(cells []cell) Repeatability {
-	cells = slices.Clone(cells)
-	slices.SortStableFunc(cells, func(a, b cell) int {
-		switch c := cmp.Compare(a.level, b.level); {
-		case c != 0 || a.down == b.down:
-			return c
-		case b.down:
-			return -1
-		}
-		return 1
-	})
-	var squares, largest float64
-	dof := 0
-	for len(cells) > 0 {
-		n := 1
-		for n < len(cells) && cells[n].level == cells[0].level && cells[n].down == cells[0].down {
-			n++
-		}
-		values := make([]float64, n)
-		for k := range values {
-			values[k] = cells[k].r
-		}
-		cells = cells[n:]
-		m := mean(values)
-		for _, v := range values {
-			squares += (v - m) * (v - m)
-		}
-		dof += n - 1
-		largest = math.Max(largest, slices.Max(values)-slices.Min(values))
-	}
-	if dof == 0 {
-		return Repeatability{}
-	}
-	sd := math.Sqrt(squares / float64(dof))
-	return Repeatability{LargestRange: &largest, PooledSD: &sd, DoF: &dof}
-}
-
-// linearities draws four lines through the averages at the set pressures.
-func (w *work) linearities(slope float64) Linearities {
-	reduced := make([]float64, len(w.UUT))
-	for i, set := range w.sets {
-		reduced[i] = w.UUT[i] + slope*(set-w.Reference[i])
-	}
-	return Lines(w.levels, means(reduced, w.level, len(w.levels)))
 }

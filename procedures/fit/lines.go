@@ -2,15 +2,32 @@ package fit
 
 import (
 	"math"
+	"slices"
 	"sort"
 )
 
-// Lines returns the largest |deviation| of points (x rising, no x twice) from
-// four lines: least squares (at least three points, else nil), terminal-based
-// (through the end points), zero-based (through the first point, its slope
-// such that the largest deviation is least) and independent (both free). One
-// point gives nil for all, two give zero. O(n log n) but for the zero-based
-// line, whose passes are few on any curve met in practice.
+// Linearities are the largest deviations from four lines, each under its own
+// name; nil where there is none.
+type Linearities struct{ Independent, Terminal, ZeroBased, LeastSquares *Deviation }
+
+// Deviation is the largest |deviation| of points from a line.
+type Deviation struct {
+	Value            float64
+	Intercept, Slope float64  // of the line
+	Standard         *float64 // what the noise of the points leaves in Value; nil when it was not stated
+}
+
+// Lines holds points against four lines: least squares (from three points on;
+// two lie on it), terminal-based (through the end points), zero-based (through
+// the lowest point, its slope such that the largest deviation is least) and
+// independent (both free). x in any order; the y at one x are averaged. One x
+// gives nil for all, two give zero.
+//
+// u is the standard uncertainty of each y by its own noise, nil when not known.
+// A deviation is a sum of a few y with weights that follow from the points the
+// line touches; Standard is the root of the sum of squares of weight and u, the
+// largest where several sets of points lie equally far off. It says nothing of
+// the bias that the largest of several noisy deviations has.
 //
 // Independent: W(b) = max(y - bx) - min(y - bx) is convex and piecewise linear
 // with its breaks at the slopes of the edges of the convex hull, so the best
@@ -19,50 +36,190 @@ import (
 // are. Zero-based: over pairs of points above the first, the largest
 // |ri dj - rj di| / (di + dj), d = x - x0, r = y - y0, found by exchange. The
 // end chord is taken off first, against cancellation.
+//
+// O(n log n) but for the zero-based line, whose passes are few on any curve met
+// in practice. Nil for all where lengths differ or a number is not finite or
+// beyond 1e150.
+//
 // Source: definitions of IEC 61298-2 from memory; the geometry is textbook.
-func Lines(x, y []float64) Linearities {
-	n := len(x)
-	if n < 2 || len(y) != n {
+func Lines(x, y, u []float64) Linearities {
+	if len(x) != len(y) || u != nil && len(u) != len(x) || finite(x) != nil || finite(y) != nil || finite(u) != nil {
 		return Linearities{}
 	}
-	chord := (y[n-1] - y[0]) / (x[n-1] - x[0])
-	r := make([]float64, n)
-	var terminal float64
-	for i := range r {
-		r[i] = (y[i] - y[0]) - chord*(x[i]-x[0])
-		if i > 0 && i < n-1 { // the ends lie on the chord
-			terminal = math.Max(terminal, math.Abs(r[i]))
+	if !rising(x) {
+		x, y, u = merged(x, y, u)
+	}
+	if len(x) < 2 {
+		return Linearities{}
+	}
+	p := newPoints(x, y, u)
+	if len(x) == 2 { // all four are the line through both
+		return Linearities{Terminal: p.terminal(), ZeroBased: p.terminal(), Independent: p.terminal(), LeastSquares: p.terminal()}
+	}
+	return Linearities{Terminal: p.terminal(), ZeroBased: p.zeroBased(), Independent: p.independent(), LeastSquares: p.leastSquares()}
+}
+
+func rising(x []float64) bool {
+	for i := 1; i < len(x); i++ {
+		if !(x[i] > x[i-1]) {
+			return false
 		}
 	}
-	r[n-1] = 0
-	out := Linearities{Terminal: &terminal}
-	zero := zeroBased(x, r)
-	free := independent(x, r)
-	out.ZeroBased, out.Independent = &zero, &free
-	if n == 2 {
-		least := 0.0
-		out.LeastSquares = &least
-	} else if l, err := Line(x, r); err == nil {
-		var least float64
-		for i := range r {
-			least = math.Max(least, math.Abs(r[i]-l.Intercept-l.Slope*x[i]))
-		}
-		out.LeastSquares = &least
+	return true
+}
+
+// merged sorts by x and averages what stands at one x.
+func merged(x, y, u []float64) (mx, my, mu []float64) {
+	order := make([]int, len(x))
+	for i := range order {
+		order[i] = i
 	}
-	return out
+	slices.SortStableFunc(order, func(a, b int) int { return compareFloats(x[a], x[b]) })
+	for len(order) > 0 {
+		n := 1
+		for n < len(order) && x[order[n]] == x[order[0]] {
+			n++
+		}
+		var sum, squares float64
+		for _, i := range order[:n] {
+			sum += y[i]
+			if u != nil {
+				squares += u[i] * u[i]
+			}
+		}
+		mx, my = append(mx, x[order[0]]), append(my, sum/float64(n))
+		if u != nil {
+			mu = append(mu, math.Sqrt(squares)/float64(n))
+		}
+		order = order[n:]
+	}
+	return mx, my, mu
+}
+
+// points are scaled to size 1 by powers of two, less the end chord.
+type points struct {
+	d, r, u   []float64 // x - x0; y less the chord; its standard uncertainty, may be nil
+	x0, y0    float64
+	chord     float64
+	fx, fy    float64
+	tolerance float64 // of r: what is nearer than this is the same
+}
+
+func newPoints(x, y, u []float64) *points {
+	n := len(x)
+	p := &points{d: make([]float64, n), r: make([]float64, n), x0: x[0], y0: y[0], fx: scaleFor(x, x[0])}
+	p.chord = (y[n-1] - y[0]) / (x[n-1] - x[0])
+	for i := range x {
+		p.d[i] = (x[i] - x[0]) * p.fx
+		p.r[i] = (y[i] - y[0]) - p.chord*(x[i]-x[0])
+	}
+	p.r[n-1] = 0
+	p.fy = scaleFor(p.r, 0)
+	var size float64 // of what was subtracted, whose rounding is left
+	for i := range p.r {
+		p.r[i] *= p.fy
+		size = math.Max(size, math.Max(math.Abs(y[i]), math.Abs(p.chord*(x[i]-x[0]))))
+	}
+	p.tolerance = 1e-9 + 1e-14*size*p.fy
+	if u != nil {
+		p.u = make([]float64, n)
+		for i := range u {
+			p.u[i] = u[i] * p.fy
+		}
+	}
+	return p
+}
+
+// deviation puts a line of r, intercept at x0 and slope over d, back into x
+// and y. squares are of weights times u.
+func (p *points) deviation(value, intercept, slope, squares float64) *Deviation {
+	d := &Deviation{Value: value / p.fy, Slope: p.chord + slope/p.fy*p.fx}
+	d.Intercept = p.y0 + intercept/p.fy - d.Slope*p.x0
+	if p.u != nil {
+		s := math.Sqrt(squares) / p.fy
+		d.Standard = &s
+	}
+	return d
+}
+
+// farthest is the largest |r - intercept - slope d|, and the first and last
+// point that lie as far off.
+func (p *points) farthest(intercept, slope float64) (most float64, first, last int) {
+	off := func(i int) float64 { return math.Abs(p.r[i] - intercept - slope*p.d[i]) }
+	for i := range p.r {
+		most = math.Max(most, off(i))
+	}
+	first = -1
+	for i := range p.r {
+		if off(i) >= most-p.tolerance {
+			if first < 0 {
+				first = i
+			}
+			last = i
+		}
+	}
+	return most, first, last
+}
+
+// square is (weight u_i)^2.
+func (p *points) square(i int, weight float64) float64 {
+	if p.u == nil {
+		return 0
+	}
+	return weight * p.u[i] * weight * p.u[i]
+}
+
+func (p *points) terminal() *Deviation {
+	n := len(p.r)
+	var most, squares float64
+	for i := 1; i < n-1; i++ { // the ends lie on the chord
+		most = math.Max(most, math.Abs(p.r[i]))
+	}
+	for i := 1; i < n-1; i++ {
+		if share := p.d[i] / p.d[n-1]; math.Abs(p.r[i]) >= most-p.tolerance {
+			squares = math.Max(squares, p.square(i, 1)+p.square(0, 1-share)+p.square(n-1, share))
+		}
+	}
+	return p.deviation(most, 0, 0, squares)
+}
+
+// leastSquares: the residual of point j is Sum_k ([j = k] - h_jk) y_k with
+// h_jk = 1/n + (d_j - m)(d_k - m)/Sxx.
+func (p *points) leastSquares() *Deviation {
+	n := float64(len(p.r))
+	line, err := Line(p.d, p.r)
+	if err != nil {
+		return nil
+	}
+	most, first, last := p.farthest(line.Intercept, line.Slope)
+	m := mean(p.d)
+	var sxx, a, b, c float64
+	for i, d := range p.d {
+		sxx += (d - m) * (d - m)
+		a += p.square(i, 1)
+		b += p.square(i, 1) * (d - m)
+		c += p.square(i, d-m)
+	}
+	var squares float64
+	for _, j := range []int{first, last} {
+		d := p.d[j] - m
+		squares = math.Max(squares, p.square(j, 1)*(1-2*(1/n+d*d/sxx))+a/n/n+2*d*b/n/sxx+d*d*c/sxx/sxx)
+	}
+	return p.deviation(most, line.Intercept, line.Slope, squares)
 }
 
 // zeroBased holds a pair of points, one above and one below the line through
 // the first, equally far: no line does better for that pair. The point that
 // lies farthest off takes the place of the one on its side, which makes the
 // distance grow, until no point lies farther off than the pair.
-func zeroBased(x, r []float64) float64 {
-	off := func(i int, slope float64) float64 { return r[i] - slope*(x[i]-x[0]) } // r[0] is 0
-	above, below := len(x)-1, len(x)-1
+func (p *points) zeroBased() *Deviation {
+	n := len(p.r)
+	off := func(i int, slope float64) float64 { return p.r[i] - slope*p.d[i] } // r[0] is 0
+	above, below := n-1, n-1
 	var slope, best float64
 	for {
 		far := above
-		for i := 1; i < len(x); i++ {
+		for i := 1; i < n; i++ {
 			if math.Abs(off(i, slope)) > math.Abs(off(far, slope)) {
 				far = i
 			}
@@ -72,39 +229,86 @@ func zeroBased(x, r []float64) float64 {
 		} else {
 			below = far
 		}
-		da, db := x[above]-x[0], x[below]-x[0]
-		e := (r[above]*db - r[below]*da) / (da + db)
+		da, db := p.d[above], p.d[below]
+		e := (p.r[above]*db - p.r[below]*da) / (da + db)
 		if !(e > best) {
-			return best
+			break
 		}
-		slope, best = (r[above]+r[below])/(da+db), e
+		slope, best = (p.r[above]+p.r[below])/(da+db), e
 	}
+	// The pairs that carry the line: the first and last on either side.
+	up, down := [2]int{-1, -1}, [2]int{-1, -1}
+	for i := 1; i < n; i++ {
+		for _, side := range []struct {
+			pair *[2]int
+			is   bool
+		}{{&up, off(i, slope) >= best-p.tolerance}, {&down, off(i, slope) <= -best+p.tolerance}} {
+			if side.is {
+				if side.pair[0] < 0 {
+					side.pair[0] = i
+				}
+				side.pair[1] = i
+			}
+		}
+	}
+	var squares float64
+	for _, i := range up {
+		for _, j := range down {
+			if i < 0 || j < 0 || i == j {
+				continue
+			}
+			a, b := p.d[i], p.d[j]
+			squares = math.Max(squares, p.square(i, b/(a+b))+p.square(j, a/(a+b))+p.square(0, (a-b)/(a+b)))
+		}
+	}
+	return p.deviation(best, 0, slope, squares)
 }
 
 // independent tries every edge of the hull against the opposite side.
-func independent(x, r []float64) float64 {
-	upper, lower := hull(x, r, 1), hull(x, r, -1)
-	slope := func(h []int, k int) float64 { return (r[h[k+1]] - r[h[k]]) / (x[h[k+1]] - x[h[k]]) }
+func (p *points) independent() *Deviation {
+	upper, lower := p.hull(1), p.hull(-1)
+	slope := func(h []int, k int) float64 { return (p.r[h[k+1]] - p.r[h[k]]) / (p.d[h[k+1]] - p.d[h[k]]) }
+	type contact struct {
+		from, to, opposite int // an edge, and the point across
+		slope, width       float64
+	}
+	var all []contact
 	best := math.Inf(1)
-	try := func(u, l int, b float64) { best = math.Min(best, ((r[u]-r[l])-b*(x[u]-x[l]))/2) }
+	try := func(from, to, opposite int, b float64) {
+		w := math.Abs((p.r[from] - p.r[opposite]) - b*(p.d[from]-p.d[opposite]))
+		all = append(all, contact{from, to, opposite, b, w})
+		best = math.Min(best, w)
+	}
 	for k := range len(upper) - 1 {
 		b := slope(upper, k)
-		try(upper[k], lower[sort.Search(len(lower)-1, func(m int) bool { return slope(lower, m) >= b })], b)
+		try(upper[k], upper[k+1], lower[sort.Search(len(lower)-1, func(m int) bool { return slope(lower, m) >= b })], b)
 	}
 	for k := range len(lower) - 1 {
 		b := slope(lower, k)
-		try(upper[sort.Search(len(upper)-1, func(m int) bool { return slope(upper, m) <= b })], lower[k], b)
+		try(lower[k], lower[k+1], upper[sort.Search(len(upper)-1, func(m int) bool { return slope(upper, m) <= b })], b)
 	}
-	return math.Max(best, 0)
+	var squares, middle, b float64
+	for _, c := range all {
+		if c.width > best+p.tolerance {
+			continue
+		}
+		share := (p.d[c.opposite] - p.d[c.from]) / (p.d[c.to] - p.d[c.from])
+		squares = math.Max(squares, p.square(c.opposite, 0.5)+p.square(c.from, (1-share)/2)+p.square(c.to, share/2))
+		if c.width == best {
+			b = c.slope
+			middle = (p.r[c.from] + p.r[c.opposite] - b*(p.d[c.from]+p.d[c.opposite])) / 2
+		}
+	}
+	return p.deviation(best/2, middle, b, squares)
 }
 
 // hull returns the indices of the upper (sign 1) or lower (-1) convex hull.
-func hull(x, y []float64, sign float64) []int {
+func (p *points) hull(sign float64) []int {
 	var h []int
-	for i := range x {
+	for i := range p.r {
 		for len(h) > 1 {
 			a, b := h[len(h)-2], h[len(h)-1]
-			if sign*((x[b]-x[a])*(y[i]-y[a])-(y[b]-y[a])*(x[i]-x[a])) < 0 {
+			if sign*((p.d[b]-p.d[a])*(p.r[i]-p.r[a])-(p.r[b]-p.r[a])*(p.d[i]-p.d[a])) < 0 {
 				break
 			}
 			h = h[:len(h)-1]
@@ -112,4 +316,14 @@ func hull(x, y []float64, sign float64) []int {
 		h = append(h, i)
 	}
 	return h
+}
+
+func compareFloats(a, b float64) int {
+	switch {
+	case a < b:
+		return -1
+	case a > b:
+		return 1
+	}
+	return 0
 }

@@ -34,9 +34,9 @@ func TestLinesByBruteForce(t *testing.T) {
 				}
 			}
 		}
-		l := Lines(x, y)
-		if math.Abs(*l.Independent-triples) > 1e-12 || math.Abs(*l.ZeroBased-pairs) > 1e-12 {
-			t.Fatalf("%v at %v: independent %v, by triples %v; zero-based %v, by pairs %v", y, x, *l.Independent, triples, *l.ZeroBased, pairs)
+		l := Lines(x, y, nil)
+		if math.Abs(l.Independent.Value-triples) > 1e-12 || math.Abs(l.ZeroBased.Value-pairs) > 1e-12 {
+			t.Fatalf("%v at %v: independent %v, by triples %v; zero-based %v, by pairs %v", y, x, l.Independent.Value, triples, l.ZeroBased.Value, pairs)
 		}
 	}
 }
@@ -44,19 +44,19 @@ func TestLinesByBruteForce(t *testing.T) {
 // A plain bow has a terminal-based deviation of exactly twice the independent
 // one; a straight line has none; one point gives none of the four.
 func TestLinesOfPlainShapes(t *testing.T) {
-	l := Lines([]float64{0, 1, 2, 3, 4}, []float64{0, 3, 4, 3, 0})
-	if *l.Terminal != 4 || *l.Independent != 2 {
-		t.Errorf("a bow of 4: terminal %v, independent %v", *l.Terminal, *l.Independent)
+	l := Lines([]float64{0, 1, 2, 3, 4}, []float64{0, 3, 4, 3, 0}, nil)
+	if l.Terminal.Value != 4 || l.Independent.Value != 2 {
+		t.Errorf("a bow of 4: terminal %v, independent %v", l.Terminal.Value, l.Independent.Value)
 	}
 	for n, y := range map[int][]float64{2: {1, 5}, 3: {1, 3, 5}, 5: {7, 7, 7, 7, 7}} {
 		x := []float64{0, 1, 2, 3, 4}[:n]
-		for i, d := range []*float64{Lines(x, y).Terminal, Lines(x, y).Independent, Lines(x, y).ZeroBased, Lines(x, y).LeastSquares} {
-			if d == nil || *d > 1e-15 {
+		for i, d := range []*Deviation{Lines(x, y, nil).Terminal, Lines(x, y, nil).Independent, Lines(x, y, nil).ZeroBased, Lines(x, y, nil).LeastSquares} {
+			if d == nil || d.Value > 1e-15 {
 				t.Errorf("%v, line %d: %v", y, i, d)
 			}
 		}
 	}
-	if l := Lines([]float64{3}, []float64{4}); l.Terminal != nil || l.Independent != nil || l.ZeroBased != nil || l.LeastSquares != nil {
+	if l := Lines([]float64{3}, []float64{4}, nil); l.Terminal != nil || l.Independent != nil || l.ZeroBased != nil || l.LeastSquares != nil {
 		t.Errorf("one point gave %+v", l)
 	}
 }
@@ -69,10 +69,10 @@ func TestLinesOfManyPoints(t *testing.T) {
 		x[i] = float64(i) / (n - 1)
 		y[i] = 4 * x[i] * (1 - x[i])
 	}
-	l := Lines(x, y)
+	l := Lines(x, y, nil)
 	// 4x(1-x) - sx is largest, (4-s)^2/16, at (4-s)/8 and s at 1: equal for
 	// s = 12 - 8 sqrt 2.
-	if want := 12 - 8*math.Sqrt2; math.Abs(*l.Terminal-1) > 1e-9 || math.Abs(*l.Independent-0.5) > 1e-9 || math.Abs(*l.ZeroBased-want) > 1e-9 {
-		t.Errorf("terminal %v, independent %v, zero-based %v, want 1, 0.5, %v", *l.Terminal, *l.Independent, *l.ZeroBased, want)
+	if want := 12 - 8*math.Sqrt2; math.Abs(l.Terminal.Value-1) > 1e-9 || math.Abs(l.Independent.Value-0.5) > 1e-9 || math.Abs(l.ZeroBased.Value-want) > 1e-9 {
+		t.Errorf("terminal %v, independent %v, zero-based %v, want 1, 0.5, %v", l.Terminal.Value, l.Independent.Value, l.ZeroBased.Value, want)
 	}
 }

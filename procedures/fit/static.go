@@ -1,11 +1,9 @@
 package fit
 
 import (
-	"cmp"
 	"errors"
 	"fmt"
 	"math"
-	"slices"
 )
 
 // Data are static readings, all slices of one length: the corrected reference
@@ -16,12 +14,18 @@ type Data struct {
 	Cycle          []int
 	Down           []bool
 	Set            []float64
+	// Mounting numbers the times the UUT was mounted; nil: once. The cycles are
+	// numbered on through them: a cycle lies in one.
+	Mounting []int
+	// Zero is y - p at the one zeroing before the first cycle, where it was read
+	// apart from the cycles; nil: the zero offset serves.
+	Zero *float64
 }
 
 // Reservation weakens the figures.
 type Reservation struct{ Code, Text string }
 
-// Located is the largest of a figure by magnitude, signed, and where.
+// Located is a figure, signed, and where it was found.
 type Located struct {
 	Value float64
 	At    float64 // set pressure; NaN when the readings are not grouped
@@ -35,85 +39,128 @@ type Repeatability struct {
 	DoF                    *int
 }
 
-// Linearities are the largest deviations of the averages at the set pressures
-// from four lines; nil when the readings are not grouped.
-type Linearities struct{ Independent, Terminal, ZeroBased, LeastSquares *float64 }
+// Extremes are the highest and the lowest of an error.
+type Extremes struct{ Highest, Lowest Located }
 
-// Figures are what static readings give. What they cannot give is nil.
+// AtSet is what was found at one set pressure; nil where nothing shows it.
+type AtSet struct {
+	Set                float64
+	Average            *float64 // of the legs' averages over the cycles, reduced to Set
+	Hysteresis         *float64 // |down - up|, averaged over the cycles
+	RangeUp, RangeDown *float64 // over the cycles of one mounting
+	Repeatability      *float64 // the larger range of the two legs, each cycle less its own zero
+	Reproducibility    *float64 // the same over the first cycles of the mountings
+}
+
+// Figures are what static readings give. What they cannot give is nil, and
+// Undetermined says why.
 type Figures struct {
 	Line           *Straight // of UUT on reference over all readings
 	Cycles         int
 	ZeroOffset     *float64
 	ZeroReturn     []*float64 // one for each cycle in rising order
 	Linearity      Linearities
-	Hysteresis     *Located
+	Hysteresis     *Located  // the largest by magnitude
+	EachHysteresis []Located // of every cycle and set pressure that has both legs, in order
 	Repeatability  Repeatability
-	LargestError   *Located
-	ErrorAfterZero *Located
-	Sets           []float64 // set pressure of each reading as used; NaN without one
-	Reservations   []Reservation
+	// Reproducibility is the largest of those in Points.
+	Reproducibility *float64
+	Points          []AtSet
+	LargestError    *Located
+	ErrorAfterZero  *Located
+	AsRead          Extremes // y - p
+	AfterZero       Extremes // the same, less the error at the zeroing
+	Curvature       *Polynomial
+	Sets            []float64 // set pressure of each reading as used; NaN without one
+	Reservations    []Reservation
+	Undetermined    []Undetermined
 }
+
+// Undetermined names a figure that is nil, and why.
+type Undetermined struct{ Figure, Reason string }
+
+// The names of figures that may be undetermined.
+const (
+	FigureLine            = "line"
+	FigureLinearity       = "linearity"
+	FigureHysteresis      = "hysteresis"
+	FigureRepeatability   = "repeatability"
+	FigureReproducibility = "reproducibility"
+	FigureZeroReturn      = "zero return"
+	FigureCurvature       = "curvature"
+)
 
 // ErrData: slices of unequal length, none at all, or values that are not finite.
 var ErrData = errors.New("static readings not usable")
 
 // Static computes the figures. With y the UUT, p the reference, a + b p the
-// least-squares line over all readings and r = y - (a + b p):
+// least-squares line over all readings and r = y - (a + b p), averaged over the
+// readings of a cell (one cycle, leg and set pressure):
 //
-//	linearity      each reading reduced to its set pressure, y + b (set - p),
-//	               averaged over cycles and legs; largest |deviation| of the
-//	               averages from each of four lines through them
-//	hysteresis     r(down) - r(up) for each cycle and set pressure, the
-//	               largest by magnitude; several readings of a cell averaged
-//	repeatability  range over cycles of r at one set pressure in one leg, the
-//	               largest; pooled SD over those cells
-//	zero offset    y - p of the first reading at the set pressure nearest zero
-//	zero return    last r less first r there, for each cycle
-//	largest error  y - p, by magnitude, as read and less the zero offset
+//	linearity      each reading reduced to its set pressure, y + b (set - p);
+//	               averaged over the cycles, then over the legs; largest
+//	               |deviation| of these averages from each of four lines
+//	hysteresis     r(down) - r(up) for each cycle and set pressure
+//	repeatability  range over the cycles of r at one set pressure in one leg, the
+//	               largest; pooled SD over those cells, with its degrees of freedom
+//	zero offset    y - p of the first cell at the set pressure nearest zero
+//	zero return    r(down) - r(up) there, for each cycle
+//	errors         y - p, as read, and less the error at the one zeroing:
+//	               highest, lowest, and the larger of them by magnitude
+//	curvature      polynomial of y on p, of third order or as high as the set
+//	               pressures carry, over all readings: a description
 //
-// First and last are by cycle, up before down, then in the order given.
+// and at each set pressure the mean hysteresis, and by r less r(up) at zero of
+// the same cycle the largest range over the cycles of one mounting
+// (repeatability) and over the first cycles of the mountings (reproducibility).
+//
+// Within a leg readings are taken to follow each other as the leg says, up from
+// the lowest: the order in which they are given changes nothing. First is by
+// cycle, up before down.
+//
 // Without set pressures the readings are ranked by p within cycle and leg, and
 // a rank's mean p is its set pressure; a leg that lacks the top shares that of
 // the others. Legs that differ by more, or by another point than the top,
-// cannot be grouped: then hysteresis, repeatability, linearity and zero return
-// are nil, and the zero offset is that of the reading nearest zero. Fewer than
-// three readings, or all at one p, carry no line and nothing that needs one.
+// cannot be grouped: then all that compares legs or cycles is nil, and the zero
+// offset is that of the reading nearest zero. Fewer than three readings, or all
+// at one p, carry no line and nothing that needs one. A set pressure between
+// the ends that was read in one leg only has no average of the legs, and the
+// linearity is nil, unless the whole is of one leg: then it is that leg's.
 //
-// ErrData for slices of unequal length, no reading, and values that are not
-// finite or beyond 1e150 in magnitude, whose squares no double holds.
+// ErrData for slices of unequal length, no reading, a cycle in two mountings,
+// and values that are not finite or beyond 1e150 in magnitude, whose squares no
+// double holds.
 //
 // Definitions: facts of practice named in the program's guide (IEC 61298-2 and
-// ISA-51.1 terms, from memory).
+// ISA-51.1 terms, those at each set pressure after DKD-R 6-1; from memory).
 func Static(d Data) (Figures, error) {
 	if err := refuse(d); err != nil {
 		return Figures{}, err
 	}
-	w := work{Data: d, order: order(d)}
+	w := work{Data: d}
+	w.number()
 	grouped := w.group()
-	f := Figures{LargestError: w.largest(0), Sets: w.sets}
-	cycles := slices.Clone(d.Cycle)
-	slices.Sort(cycles)
-	cycles = slices.Compact(cycles)
-	f.Cycles = len(cycles)
+	w.inOrder(grouped)
+	f := Figures{Sets: w.sets, Cycles: len(w.cycles), ZeroReturn: make([]*float64, len(w.cycles))}
 	if line, err := Line(d.Reference, d.UUT); err == nil {
 		f.Line = &line
 	}
-	w.zeros(&f, cycles)
+	w.errors(&f)
 	if f.Line != nil && grouped {
 		w.residuals(*f.Line)
-		w.rank()
-		cells := w.inCells()
-		f.Linearity = w.linearities(f.Line.Slope)
-		f.Hysteresis = w.hysteresis(cells)
-		f.Repeatability = repeatability(cells)
+		w.inCells()
+		w.compare(&f)
+		w.linearity(&f)
+		w.curvature(&f)
 	}
-	f.reserve(d, grouped)
+	f.reserve(&w, grouped)
+	f.explain(&w, grouped)
 	return f, nil
 }
 
 func refuse(d Data) error {
 	n := len(d.Reference)
-	if n == 0 || len(d.UUT) != n || len(d.Cycle) != n || len(d.Down) != n || d.Set != nil && len(d.Set) != n {
+	if n == 0 || len(d.UUT) != n || len(d.Cycle) != n || len(d.Down) != n || d.Set != nil && len(d.Set) != n || d.Mounting != nil && len(d.Mounting) != n {
 		return fmt.Errorf("%w: columns of unequal length, or no reading", ErrData)
 	}
 	for _, column := range [][]float64{d.Reference, d.UUT, d.Set} {
@@ -123,113 +170,160 @@ func refuse(d Data) error {
 			}
 		}
 	}
+	if d.Zero != nil && finite([]float64{*d.Zero}) != nil {
+		return fmt.Errorf("%w: the error at the zeroing is not finite, or too large to compute with", ErrData)
+	}
+	mounted := map[int]int{}
+	for i, m := range d.Mounting {
+		if first, known := mounted[d.Cycle[i]]; known && first != m {
+			return fmt.Errorf("%w: cycle %d lies in two mountings; number the cycles on through them", ErrData, d.Cycle[i])
+		}
+		mounted[d.Cycle[i]] = m
+	}
 	return nil
 }
 
-// reserve says why figures are nil.
-func (f *Figures) reserve(d Data, grouped bool) {
-	add := func(code, text string) { f.Reservations = append(f.Reservations, Reservation{code, text}) }
-	oneLeg := !slices.Contains(d.Down, true) || !slices.Contains(d.Down, false)
-	if f.Cycles == 1 {
-		add("one_cycle", "one cycle shows no repeatability")
+// errors fills in y - p as read and after the zeroing.
+func (w *work) errors(f *Figures) {
+	zero := w.zeroOffset()
+	f.ZeroOffset = &zero
+	if w.Zero != nil {
+		zero = *w.Zero
 	}
-	if oneLeg {
-		add("one_leg", "one leg shows no hysteresis")
-	}
-	switch {
-	case !grouped:
-		add("points_not_grouped", "without set pressures the readings of up and down legs cannot be matched by rank")
-	case f.Line == nil:
-		add("points_not_grouped", "fewer than three readings, or all at one pressure: they carry no line, and nothing that needs one")
-	case f.Hysteresis == nil && !oneLeg:
-		add("points_not_grouped", "no cycle has a set pressure in both legs: nothing shows hysteresis")
-	case f.Repeatability.DoF == nil && f.Cycles > 1:
-		add("points_not_grouped", "no set pressure was read in the same leg of two cycles: nothing shows repeatability")
-	}
+	f.AsRead, f.LargestError = w.extremes(0)
+	f.AfterZero, f.ErrorAfterZero = w.extremes(zero)
 }
 
-// work is the data on their way to figures.
-type work struct {
-	Data
-	order  []int     // of time: cycle, up before down, as given
-	sets   []float64 // set pressure of each reading, NaN when not grouped
-	levels []float64 // set pressures in rising order
-	level  []int     // of each reading, in levels
-	r      []float64 // residuals about the line
-}
-
-func order(d Data) []int {
-	o := make([]int, len(d.Reference))
-	for i := range o {
-		o[i] = i
-	}
-	slices.SortStableFunc(o, func(a, b int) int {
-		if c := cmp.Compare(d.Cycle[a], d.Cycle[b]); c != 0 {
-			return c
-		}
-		switch {
-		case d.Down[a] == d.Down[b]:
-			return 0
-		case d.Down[b]:
-			return -1
-		}
-		return 1
-	})
-	return o
-}
-
-// largest finds the largest |y - p - zero|; of equals the first in time.
-func (w *work) largest(zero float64) *Located {
-	best := &Located{}
-	for k, i := range w.order {
-		if e := w.UUT[i] - w.Reference[i] - zero; k == 0 || math.Abs(e) > math.Abs(best.Value) {
-			*best = Located{Value: e, At: w.sets[i], Cycle: w.Cycle[i], Down: w.Down[i]}
-		}
-	}
-	return best
-}
-
-// zeros fills in what is read at the set pressure nearest zero; of two as
-// near, the one read first.
-func (w *work) zeros(f *Figures, cycles []int) {
+// zeroOffset averages y - p over the first readings at the pressure nearest
+// zero. Of two pressures as near, the one that the leg comes to first.
+func (w *work) zeroOffset() float64 {
 	key := w.sets
 	if math.IsNaN(key[0]) {
 		key = w.Reference
 	}
-	nearest := key[w.order[0]]
+	first := w.order[0]
 	for _, i := range w.order {
-		if math.Abs(key[i]) < math.Abs(nearest) {
-			nearest = key[i]
-		}
-	}
-	f.ZeroReturn = make([]*float64, len(cycles))
-	first, c := -1, 0
-	for _, i := range w.order {
-		if key[i] != nearest {
-			continue
-		}
-		if f.ZeroOffset == nil {
-			e := w.UUT[i] - w.Reference[i]
-			f.ZeroOffset = &e
-		}
-		if first < 0 || w.Cycle[i] != w.Cycle[first] {
+		if math.Abs(key[i]) < math.Abs(key[first]) {
 			first = i
-			continue
-		}
-		for cycles[c] != w.Cycle[i] {
-			c++
-		}
-		if f.Line != nil && !math.IsNaN(w.sets[i]) {
-			back := (w.UUT[i] - w.UUT[first]) - f.Line.Slope*(w.Reference[i]-w.Reference[first])
-			f.ZeroReturn[c] = &back // the last one stays
 		}
 	}
-	f.ErrorAfterZero = w.largest(*f.ZeroOffset)
+	var sum, n float64
+	for _, i := range w.order {
+		if key[i] == key[first] && w.Cycle[i] == w.Cycle[first] && w.Down[i] == w.Down[first] {
+			sum += w.UUT[i] - w.Reference[i]
+			n++
+		}
+	}
+	return sum / n
 }
 
-func (w *work) residuals(l Straight) {
-	w.r = make([]float64, len(w.UUT))
-	for i := range w.r {
-		w.r[i] = w.UUT[i] - l.Intercept - l.Slope*w.Reference[i]
+// extremes finds the highest, the lowest and the largest y - p - zero.
+func (w *work) extremes(zero float64) (Extremes, *Located) {
+	e := make([]float64, len(w.order))
+	var size float64
+	for k, i := range w.order {
+		e[k] = w.UUT[i] - w.Reference[i] - zero
+		size = math.Max(size, math.Abs(w.UUT[i]))
 	}
+	at := func(k int) Located {
+		i := w.order[k]
+		return Located{Value: e[k], At: w.sets[i], Cycle: w.Cycle[i], Down: w.Down[i]}
+	}
+	least := size * nearlyEqual
+	largest := at(first(e, least, math.Abs))
+	return Extremes{
+		Highest: at(first(e, least, func(x float64) float64 { return x })),
+		Lowest:  at(first(e, least, func(x float64) float64 { return -x })),
+	}, &largest
+}
+
+// nearlyEqual is the share of the readings by which equal figures may differ
+// after rounding.
+const nearlyEqual = 1e-12
+
+// first is the first x whose measure is the largest, or as large but for
+// rounding: where it lies must not depend on the last bits.
+func first(x []float64, least float64, measure func(float64) float64) int {
+	most := math.Inf(-1)
+	for _, v := range x {
+		most = math.Max(most, measure(v))
+	}
+	least = math.Max(least, 1e-9*math.Abs(most))
+	for i, v := range x {
+		if measure(v) >= most-least {
+			return i
+		}
+	}
+	return 0
+}
+
+// curvature describes the whole, in three terms above the constant or as many
+// as there are set pressures for.
+func (w *work) curvature(f *Figures) {
+	order := min(3, len(w.levels)-1)
+	if order < 2 {
+		return
+	}
+	if p, err := FitPolynomial(w.Reference, w.UUT, order, Noise{}); err == nil {
+		f.Curvature = &p
+	}
+}
+
+// linearity draws four lines through the averages at the set pressures.
+func (w *work) linearity(f *Figures) {
+	y, u, missing := w.averages(*f.Line)
+	for l := range y {
+		f.Points[l].Average = y[l]
+	}
+	if missing >= 0 {
+		return
+	}
+	averages, noise := make([]float64, len(y)), make([]float64, len(y))
+	for l := range y {
+		averages[l] = *y[l]
+		if f.Repeatability.PooledSD != nil {
+			noise[l] = u[l] * *f.Repeatability.PooledSD
+		}
+	}
+	if f.Repeatability.PooledSD == nil {
+		noise = nil
+	}
+	f.Linearity = Lines(w.levels, averages, noise)
+}
+
+// averages over cycles and then legs, reduced to the set pressures, each with
+// its standard uncertainty when that of a cell is 1. missing is the first set
+// pressure between the ends that was read in one leg only though there are
+// two, else -1; its average is nil.
+func (w *work) averages(line Straight) (y []*float64, u []float64, missing int) {
+	y, u, missing = make([]*float64, len(w.levels)), make([]float64, len(w.levels)), -1
+	legs := make([]struct{ sum, n float64 }, 2*len(w.levels))
+	oneLeg := w.oneLeg()
+	for _, c := range w.cells {
+		leg := &legs[2*c.level+c.leg]
+		leg.sum += c.r
+		leg.n++
+	}
+	for l, set := range w.levels {
+		up, down := legs[2*l], legs[2*l+1]
+		between := l > 0 && l < len(w.levels)-1
+		if between && !oneLeg && (up.n == 0 || down.n == 0) {
+			if missing < 0 {
+				missing = l
+			}
+			continue
+		}
+		var r float64
+		switch {
+		case down.n == 0:
+			r, u[l] = up.sum/up.n, 1/math.Sqrt(up.n)
+		case up.n == 0:
+			r, u[l] = down.sum/down.n, 1/math.Sqrt(down.n)
+		default:
+			r, u[l] = (up.sum/up.n+down.sum/down.n)/2, math.Sqrt(1/up.n+1/down.n)/2
+		}
+		average := line.Intercept + line.Slope*set + r
+		y[l] = &average
+	}
+	return y, u, missing
 }

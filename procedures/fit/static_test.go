@@ -88,8 +88,8 @@ func TestWorkedLinearities(t *testing.T) {
 			got       *float64
 			want, tol float64
 		}{
-			{"terminal", f.Linearity.Terminal, 1.15, 1e-12}, {"least squares", f.Linearity.LeastSquares, 0.6982142857142857, 1e-12},
-			{"independent", f.Linearity.Independent, 0.575, 1e-12}, {"zero-based", f.Linearity.ZeroBased, 23.0 / 30, 1e-12},
+			{"terminal", &f.Linearity.Terminal.Value, 1.15, 1e-12}, {"least squares", &f.Linearity.LeastSquares.Value, 0.6982142857142857, 1e-12},
+			{"independent", &f.Linearity.Independent.Value, 0.575, 1e-12}, {"zero-based", &f.Linearity.ZeroBased.Value, 23.0 / 30, 1e-12},
 			{"hysteresis", &f.Hysteresis.Value, 0.8, 1e-12}, {"zero offset", f.ZeroOffset, 0.2, 1e-12},
 			{"zero return", f.ZeroReturn[0], 0.2, 1e-12}, {"largest error", &f.LargestError.Value, -1.4, 1e-12},
 			{"after zero", &f.ErrorAfterZero.Value, -1.6, 1e-12},
@@ -171,8 +171,8 @@ func TestLaws(t *testing.T) {
 				t.Fatal(err)
 			}
 			for what, pair := range map[string][2]float64{
-				"independent": {*a.Linearity.Independent, *b.Linearity.Independent}, "terminal": {*a.Linearity.Terminal, *b.Linearity.Terminal},
-				"zero-based": {*a.Linearity.ZeroBased, *b.Linearity.ZeroBased}, "least squares": {*a.Linearity.LeastSquares, *b.Linearity.LeastSquares},
+				"independent": {a.Linearity.Independent.Value, b.Linearity.Independent.Value}, "terminal": {a.Linearity.Terminal.Value, b.Linearity.Terminal.Value},
+				"zero-based": {a.Linearity.ZeroBased.Value, b.Linearity.ZeroBased.Value}, "least squares": {a.Linearity.LeastSquares.Value, b.Linearity.LeastSquares.Value},
 				"hysteresis": {a.Hysteresis.Value, b.Hysteresis.Value},
 			} {
 				if name == "line added" && what != "hysteresis" && math.Abs(pair[0]-pair[1]) > 300e-9 ||

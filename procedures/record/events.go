@@ -224,9 +224,10 @@ type Zeroing struct {
 type Point struct {
 	Purpose  string  `json:"purpose"`
 	Stage    int     `json:"stage"`
-	Cycle    int     `json:"cycle,omitempty"` // from 1
-	Leg      string  `json:"leg,omitempty"`   // up, down
-	Set      string  `json:"set,omitempty"`   // "" when the data state none
+	Cycle    int     `json:"cycle,omitempty"`    // from 1
+	Leg      string  `json:"leg,omitempty"`      // up, down
+	Set      string  `json:"set,omitempty"`      // "" when the data state none
+	Mounting int     `json:"mounting,omitempty"` // from 1; 0: the UUT was mounted once
 	Readings []int64 `json:"readings"`
 	Blocks   []int64 `json:"blocks,omitempty"`
 	// Text of a single UUT reading, for data that have no blocks.

@@ -19,14 +19,15 @@ type StaticOptions struct {
 	Corrections string
 }
 
-// Static reads cycle, leg, set_UNIT (optional), reference_UNIT and uut_UNIT,
-// uut_mV or uut_uV with excitation_V, in any order of columns.
+// Static reads cycle, leg, set_UNIT (optional), mounting (optional, from 1),
+// reference_UNIT and uut_UNIT, uut_mV or uut_uV with excitation_V, in any order
+// of columns.
 func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 	t, err := open(file, r)
 	if err != nil {
 		return nil, err
 	}
-	cycle, leg := slices.Index(t.header, "cycle"), slices.Index(t.header, "leg")
+	cycle, leg, mounting := slices.Index(t.header, "cycle"), slices.Index(t.header, "leg"), slices.Index(t.header, "mounting")
 	set, setUnit, err := t.column("set", quantity.DimPressure)
 	if err != nil {
 		return nil, err
@@ -70,7 +71,7 @@ func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 	}
 	e.add(0, record.KindReference, record.Reference{Field: quantity.Field{Unit: referenceUnit.Name}, Certificate: record.Certificate{Corrections: corrections}})
 	e.add(0, record.KindUUT, record.UUT{Field: quantity.Field{Unit: uutUnit.Name}, NominalSensitivity: o.NominalSensitivity})
-	used := []int{cycle, leg, set, reference, uut}
+	used := []int{cycle, leg, mounting, set, reference, uut}
 	if uutUnit.Dimension == quantity.DimVoltage {
 		used = append(used, excitation)
 	}
@@ -86,8 +87,13 @@ func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 		}
 		rows++
 		point := record.Point{Purpose: "static"}
-		if point.Cycle, err = t.cycle(cycle); err != nil {
+		if point.Cycle, err = t.whole(cycle, "cycle"); err != nil {
 			return nil, err
+		}
+		if mounting >= 0 {
+			if point.Mounting, err = t.whole(mounting, "mounting"); err != nil {
+				return nil, err
+			}
 		}
 		if point.Leg, err = t.leg(leg); err != nil {
 			return nil, err
@@ -125,11 +131,12 @@ func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 	return e.done()
 }
 
-func (t *table) cycle(column int) (int, error) {
+// whole reads a number that counts from 1.
+func (t *table) whole(column int, name string) (int, error) {
 	text := strings.TrimSpace(t.row[column])
 	n, err := strconv.Atoi(text)
 	if err != nil || n < 1 {
-		return 0, t.refuse(column, fmt.Sprintf("cycle %q is no whole number from 1", text))
+		return 0, t.refuse(column, fmt.Sprintf("%s %q is no whole number from 1", name, text))
 	}
 	return n, nil
 }

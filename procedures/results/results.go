@@ -98,6 +98,17 @@ type Static struct {
 	ErrorAfterZero *ErrorAt      `json:"largest_error_after_zero"`
 	Reservations   []Reason      `json:"reservations"`
 	NominalUsed    *float64      `json:"nominal_sensitivity_uV_V_mmHg"` // nil for a pressure output
+
+	ResidualDoF     *int           `json:"residual_degrees_of_freedom"`
+	Lines           Lines          `json:"linearity_lines"`
+	EachHysteresis  []HysteresisAt `json:"hysteresis_each"`
+	DifferenceSD    *float64       `json:"difference_standard_deviation"` // of two readings: of a hysteresis or zero return, by noise alone
+	Reproducibility *float64       `json:"reproducibility"`
+	Points          []SetPressure  `json:"set_pressures"`
+	AsRead          *Extremes      `json:"errors_as_read"`
+	AfterZero       *Extremes      `json:"errors_after_zero"`
+	Curvature       *Curvature     `json:"curvature"`
+	Undetermined    []Undetermined `json:"undetermined"`
 }
 
 // Value is a bare figure.

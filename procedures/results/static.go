@@ -41,6 +41,7 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 		data.Reference, data.UUT = append(data.Reference, t.p), append(data.UUT, t.y)
 		data.Cycle, data.Down = append(data.Cycle, t.Cycle), append(data.Down, t.Leg == legDown)
 		data.Set = append(data.Set, t.set)
+		data.Mounting = append(data.Mounting, t.Mounting)
 	}
 	all := out.points
 	if out.zero != nil {
@@ -112,16 +113,10 @@ func (g *gathered) short(s *scale, points int, farthest float64) string {
 func (s *scale) staticOf(f fit.Figures) *Static {
 	out := &Static{
 		Unit: s.unit.Name, Cycles: f.Cycles, ZeroReturn: f.ZeroReturn, Reservations: []Reason{},
-		Linearity: Linearity{
-			Independent: f.Linearity.Independent, Terminal: f.Linearity.Terminal,
-			ZeroBased: f.Linearity.ZeroBased, LeastSquares: f.Linearity.LeastSquares,
-		},
 		Repeatability: Repeatability{LargestRange: f.Repeatability.LargestRange, PooledSD: f.Repeatability.PooledSD, DoF: f.Repeatability.DoF},
 		LargestError:  errorAtOf(f.LargestError), ErrorAfterZero: errorAtOf(f.ErrorAfterZero),
 	}
-	if out.ZeroReturn == nil {
-		out.ZeroReturn = []*float64{}
-	}
+	out.conformity(f)
 	if f.ZeroOffset != nil {
 		out.ZeroOffset = &Value{*f.ZeroOffset}
 	}
@@ -130,7 +125,7 @@ func (s *scale) staticOf(f fit.Figures) *Static {
 	}
 	if l := f.Line; l != nil {
 		out.Intercept, out.Slope = &Figure{l.Intercept, l.UIntercept}, &Figure{l.Slope, l.USlope}
-		out.ResidualSD, out.Covariance = &l.Residual, &l.Covariance
+		out.ResidualSD, out.ResidualDoF, out.Covariance = &l.Residual, &l.DoF, &l.Covariance
 		if s.nominal > 0 {
 			nominal := quantity.Sensitivity(s.nominal).MicrovoltPerVoltPerMmHg()
 			out.NominalUsed = &nominal
