@@ -12,40 +12,68 @@ func (w *work) compare(f *Figures) {
 		f.Points[l].Set = set
 	}
 	w.hysteresis(f)
-	w.repeatability(f)
-	w.reproducibility(f)
+	zeros := w.zeros()
+	mounting, mountings := w.mountings()
+	w.repeatability(f, zeros, mounting)
+	if mountings > 1 {
+		w.reproducibility(f, zeros, mounting, mountings)
+	}
 }
 
 // hysteresis compares the legs of each cycle at each set pressure.
 func (w *work) hysteresis(f *Figures) {
 	zero := w.zeroLevel()
-	sum, n := make([]float64, len(w.levels)), make([]float64, len(w.levels))
-	var values []float64
+	pairs := 0
 	for k := 1; k < len(w.cells); k++ {
-		up, down := w.cells[k-1], w.cells[k]
-		if up.cycle != down.cycle || up.level != down.level {
-			continue
-		}
-		h := down.r - up.r
-		values = append(values, h)
-		f.EachHysteresis = append(f.EachHysteresis, Located{Value: h, At: w.levels[up.level], Cycle: w.cycles[up.cycle], Down: true})
-		sum[up.level] += math.Abs(h)
-		n[up.level]++
-		if up.level == zero {
-			f.ZeroReturn[up.cycle] = &h
+		if w.paired(k) {
+			pairs++
 		}
 	}
-	if len(values) == 0 {
+	if pairs == 0 {
 		return
 	}
-	largest := f.EachHysteresis[first(values, w.size()*nearlyEqual, math.Abs)]
-	f.Hysteresis = &largest
-	for l := range sum {
-		if n[l] > 0 {
-			mean := sum[l] / n[l]
-			f.Points[l].Hysteresis = &mean
+	f.EachHysteresis = make([]Located, 0, pairs)
+	mean := make([]float64, len(w.levels))
+	n := make([]int, len(w.levels))
+	var most float64
+	for k := 1; k < len(w.cells); k++ {
+		if !w.paired(k) {
+			continue
+		}
+		c := w.cells[k]
+		h := c.r - w.cells[k-1].r
+		f.EachHysteresis = append(f.EachHysteresis, Located{Value: h, At: w.levels[c.level], Cycle: w.cycles[c.cycle], Down: true})
+		most = math.Max(most, math.Abs(h))
+		mean[c.level] += math.Abs(h)
+		n[c.level]++
+		if c.level == zero {
+			f.ZeroReturn[c.cycle] = &f.EachHysteresis[len(f.EachHysteresis)-1].Value
 		}
 	}
+	for k := range f.EachHysteresis {
+		if math.Abs(f.EachHysteresis[k].Value) >= most-w.tie(most) {
+			largest := f.EachHysteresis[k]
+			f.Hysteresis = &largest
+			break
+		}
+	}
+	for l := range mean {
+		if n[l] > 0 {
+			mean[l] /= float64(n[l])
+			f.Points[l].Hysteresis = &mean[l]
+		}
+	}
+}
+
+// paired says that cell k is the down leg of the cell before it.
+func (w *work) paired(k int) bool {
+	return w.cells[k-1].cycle == w.cells[k].cycle && w.cells[k-1].level == w.cells[k].level
+}
+
+// tie is by how much figures of this size may differ and be the same but for
+// rounding: where the largest lies must not depend on the last bits.
+func (w *work) tie(most float64) float64 {
+	return math.Max(1e-9*math.Abs(most), 1e-12*w.size)
 }
 
 // zeroLevel is the set pressure nearest zero; of two as near, the lower.
@@ -59,16 +87,13 @@ func (w *work) zeroLevel() int {
 	return zero
 }
 
-func (w *work) size() float64 {
-	var size float64
-	for _, y := range w.UUT {
-		size = math.Max(size, math.Abs(y))
-	}
-	return size
-}
+// series is numbers that should be alike.
+type series struct{ n, sum, low, high, wide float64 }
 
-// series is the cells of one set pressure, leg and mounting.
-type series struct{ n, sum, low, high float64 }
+func (s *series) spread() *float64 {
+	s.wide = s.high - s.low
+	return &s.wide
+}
 
 func (s *series) add(x float64) {
 	if s.n == 0 {
@@ -92,70 +117,59 @@ func (w *work) mountings() (of []int, n int) {
 	return of, len(values)
 }
 
-// alike visits the cells of each mounting, set pressure and leg.
-func (w *work) alike(mounting []int, mountings int, visit func(cells []int)) {
-	n := len(w.cells)
-	leg, level, mount := make([]int, n), make([]int, n), make([]int, n)
-	for k, c := range w.cells {
-		leg[k], level[k], mount[k] = c.leg, c.level, mounting[c.cycle]
-	}
-	order := sorted(sorted(sorted(counted(n), leg, 2), level, len(w.levels)), mount, mountings)
-	from := 0
-	for k, c := range order {
-		if next := k + 1; next == n || leg[order[next]] != leg[c] || level[order[next]] != level[c] || mount[order[next]] != mount[c] {
-			visit(order[from:next])
-			from = next
-		}
-	}
-}
-
 // repeatability compares the cycles of one mounting at each set pressure in
 // each leg, as read, and less the zero of its own cycle, read before the up leg.
-func (w *work) repeatability(f *Figures) {
-	mounting, mountings := w.mountings()
-	zeros := w.zeros()
+func (w *work) repeatability(f *Figures, zeros []float64, mounting []int) {
+	key := make([]int, len(w.cells))
+	for k, c := range w.cells {
+		key[k] = (mounting[c.cycle]*len(w.levels)+c.level)*2 + c.leg
+	}
+	number, keys := dense(key)
+	groups := make([]struct {
+		as, less series
+	}, len(keys))
+	for k, c := range w.cells {
+		g := &groups[number[k]]
+		g.as.add(c.r)
+		if x := c.r - zeros[c.cycle]; !math.IsNaN(x) {
+			g.less.add(x)
+		}
+	}
 	var squares, largest float64
+	for k, c := range w.cells {
+		g := &groups[number[k]]
+		d := c.r - g.as.sum/g.as.n
+		squares += d * d
+	}
 	dof := 0
-	w.alike(mounting, mountings, func(cells []int) {
-		var all, less series
-		for _, k := range cells {
-			c := w.cells[k]
-			all.add(c.r)
-			if x := c.r - zeros[c.cycle]; !math.IsNaN(x) {
-				less.add(x)
-			}
+	for k := range groups {
+		g := &groups[k]
+		at := &f.Points[keys[k]/2%len(w.levels)]
+		if g.less.n > 1 {
+			at.Repeatability = larger(at.Repeatability, g.less.spread())
 		}
-		at := &f.Points[w.cells[cells[0]].level]
-		if less.n > 1 {
-			at.Repeatability = larger(at.Repeatability, less.high-less.low)
+		if g.as.n < 2 {
+			continue
 		}
-		if all.n < 2 {
-			return
-		}
-		for _, k := range cells {
-			d := w.cells[k].r - all.sum/all.n
-			squares += d * d
-		}
-		dof += len(cells) - 1
-		spread := all.high - all.low
-		largest = math.Max(largest, spread)
-		if w.cells[cells[0]].leg == 0 {
-			at.RangeUp = larger(at.RangeUp, spread)
+		dof += int(g.as.n) - 1
+		largest = math.Max(largest, *g.as.spread())
+		if keys[k]%2 == 0 {
+			at.RangeUp = larger(at.RangeUp, g.as.spread())
 		} else {
-			at.RangeDown = larger(at.RangeDown, spread)
+			at.RangeDown = larger(at.RangeDown, g.as.spread())
 		}
-	})
+	}
 	if dof > 0 {
 		sd := math.Sqrt(squares / float64(dof))
 		f.Repeatability = Repeatability{LargestRange: &largest, PooledSD: &sd, DoF: &dof}
 	}
 }
 
-func larger(a *float64, b float64) *float64 {
-	if a != nil && *a >= b {
+func larger(a, b *float64) *float64 {
+	if a != nil && *a >= *b {
 		return a
 	}
-	return &b
+	return b
 }
 
 // zeros is the residual at zero of the up leg of each cycle, NaN without.
@@ -175,9 +189,7 @@ func (w *work) zeros() []float64 {
 
 // reproducibility compares the first cycles of the mountings, each less its own
 // zero.
-func (w *work) reproducibility(f *Figures) {
-	mounting, mountings := w.mountings()
-	zeros := w.zeros()
+func (w *work) reproducibility(f *Figures, zeros []float64, mounting []int, mountings int) {
 	begins := make([]int, mountings)
 	for c := len(mounting) - 1; c >= 0; c-- {
 		begins[mounting[c]] = c
@@ -191,8 +203,8 @@ func (w *work) reproducibility(f *Figures) {
 	for k, s := range across {
 		if s.n > 1 {
 			at := &f.Points[k/2]
-			at.Reproducibility = larger(at.Reproducibility, s.high-s.low)
-			f.Reproducibility = larger(f.Reproducibility, s.high-s.low)
+			at.Reproducibility = larger(at.Reproducibility, across[k].spread())
+			f.Reproducibility = larger(f.Reproducibility, at.Reproducibility)
 		}
 	}
 }
@@ -200,11 +212,10 @@ func (w *work) reproducibility(f *Figures) {
 // reserve says what weakens the figures.
 func (f *Figures) reserve(w *work, grouped bool) {
 	add := func(code, text string) { f.Reservations = append(f.Reservations, Reservation{code, text}) }
-	oneLeg := w.oneLeg()
 	if f.Cycles == 1 {
 		add("one_cycle", "one cycle shows no repeatability")
 	}
-	if oneLeg {
+	if w.oneLeg {
 		add("one_leg", "one leg shows no hysteresis, and the linearity is that leg's alone")
 	}
 	switch {
@@ -212,7 +223,7 @@ func (f *Figures) reserve(w *work, grouped bool) {
 		add("points_not_grouped", "without set pressures the readings of up and down legs cannot be matched by rank")
 	case f.Line == nil:
 		add("points_not_grouped", "fewer than three readings, or all at one pressure: they carry no line, and nothing that needs one")
-	case f.Hysteresis == nil && !oneLeg:
+	case f.Hysteresis == nil && !w.oneLeg:
 		add("points_not_grouped", "no cycle has a set pressure in both legs: nothing shows hysteresis")
 	case f.Repeatability.DoF == nil && f.Cycles > 1:
 		add("points_not_grouped", "no set pressure was read in the same leg of two cycles: nothing shows repeatability")
@@ -271,7 +282,7 @@ func (f *Figures) explain(w *work, grouped bool) {
 	add(f.Line == nil, FigureLine, "")
 	add(f.Linearity.Independent == nil, FigureLinearity, f.whyNotLinear(w))
 	hysteresis := "no cycle has a set pressure in both legs"
-	if w.oneLeg() {
+	if w.oneLeg {
 		hysteresis = "only one leg was read"
 	}
 	add(f.Hysteresis == nil, FigureHysteresis, hysteresis)

@@ -87,14 +87,15 @@ func scaleFor(x []float64, m float64) float64 {
 
 // mean in two passes; not empty. Equal values give exactly that value.
 func mean(x []float64) float64 {
-	var m, rest float64
+	var sum, rest float64
 	for _, v := range x {
-		m += v / float64(len(x))
+		sum += v
 	}
+	m := sum / float64(len(x))
 	for _, v := range x {
-		rest += (v - m) / float64(len(x))
+		rest += v - m
 	}
-	return m + rest
+	return m + rest/float64(len(x))
 }
 
 // At is the line at x and its standard uncertainty, of the line and not of one

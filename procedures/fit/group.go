@@ -11,13 +11,14 @@ type work struct {
 	Data
 	cycles []int // in rising order
 	cycle  []int // of each reading, in cycles
-	leg    []int // 0 up, 1 down
-	order  []int // of time: cycle, up before down, and as the leg goes
+	leg    []int // of each reading: 0 up, 1 down
 	sets   []float64
 	levels []float64 // set pressures in rising order
 	level  []int     // of each reading, in levels
-	r      []float64 // residuals about the line
-	cells  []cell
+	time   []int     // of each reading, rising: cycle, up before down, and as the leg goes
+	cells  []cell    // in order of cycle, set pressure, up before down
+	oneLeg bool      // all readings are of one
+	size   float64   // the largest |y|
 }
 
 // cell is the readings of one cycle, leg and set pressure, by their mean
@@ -35,7 +36,9 @@ func (w *work) number() {
 		if down {
 			w.leg[i] = 1
 		}
+		w.size = math.Max(w.size, math.Abs(w.UUT[i]))
 	}
+	w.oneLeg = !slices.Contains(w.leg, 1-w.leg[0])
 }
 
 // dense numbers the values of x from the lowest, 0, up. Linear in len(x) where
@@ -43,11 +46,14 @@ func (w *work) number() {
 func dense(x []int) (index, values []int) {
 	low, high := slices.Min(x), slices.Max(x)
 	index = make([]int, len(x))
-	if span := uint64(high) - uint64(low); span <= uint64(4*len(x)) {
+	if span := uint64(high) - uint64(low); span <= uint64(4*len(x)+64) {
 		seen := make([]int, span+1)
+		distinct := 0
 		for _, v := range x {
+			distinct += 1 - seen[v-low]
 			seen[v-low] = 1
 		}
+		values = make([]int, 0, distinct)
 		for k, s := range seen {
 			if s == 1 {
 				seen[k] = len(values)
@@ -92,11 +98,6 @@ func counted(n int) []int {
 		out[i] = i
 	}
 	return out
-}
-
-// oneLeg says that all readings are of one leg.
-func (w *work) oneLeg() bool {
-	return !slices.Contains(w.leg, 1-w.leg[0])
 }
 
 // group gives every reading its set pressure; false when that is impossible,
@@ -164,21 +165,22 @@ func (w *work) lacksTop(ranked, longest []int) bool {
 	return math.Abs(highest-w.Reference[longest[n-2]]) <= math.Abs(highest-w.Reference[longest[n-1]])
 }
 
-// means averages x by level, two passes against rounding. Every level has at
+// means averages x by group, two passes against rounding. Every group has at
 // least one x.
-func means(x []float64, level []int, levels int) []float64 {
-	n, m, rest := make([]float64, levels), make([]float64, levels), make([]float64, levels)
-	for _, l := range level {
-		n[l]++
+func means(x []float64, group []int, groups int) []float64 {
+	m, of := make([]float64, groups), make([]struct{ n, rest float64 }, groups)
+	for i, g := range group {
+		m[g] += x[i]
+		of[g].n++
 	}
-	for i, l := range level {
-		m[l] += x[i] / n[l]
+	for g := range m {
+		m[g] /= of[g].n
 	}
-	for i, l := range level {
-		rest[l] += (x[i] - m[l]) / n[l]
+	for i, g := range group {
+		of[g].rest += x[i] - m[g]
 	}
-	for l := range m {
-		m[l] += rest[l]
+	for g := range m {
+		m[g] += of[g].rest / of[g].n
 	}
 	return m
 }
@@ -194,49 +196,44 @@ func (w *work) rank() {
 	}
 }
 
-// inOrder finds the order of time.
-func (w *work) inOrder(grouped bool) {
+// inTime numbers the readings by cycle, up before down, an up leg from the
+// lowest set pressure, a down leg from the highest. Those of one cell have one
+// number, when the readings are grouped.
+func (w *work) inTime(grouped bool) {
+	w.time = make([]int, len(w.leg))
 	if !grouped {
-		w.order = w.order[:0]
+		k := 0
 		for _, leg := range w.ranked() {
 			if w.leg[leg[0]] == 1 {
 				slices.Reverse(leg)
 			}
-			w.order = append(w.order, leg...)
+			for _, i := range leg {
+				w.time[i] = k
+				k++
+			}
 		}
 		return
 	}
 	n := len(w.levels)
-	along := make([]int, len(w.level)) // up from the lowest, down from the highest
 	for i, l := range w.level {
-		along[i] = l
 		if w.leg[i] == 1 {
-			along[i] = n + n - 1 - l
+			l = 2*n - 1 - l
 		}
-	}
-	w.order = sorted(sorted(counted(len(along)), along, 2*n), w.cycle, len(w.cycles))
-}
-
-func (w *work) residuals(l Straight) {
-	w.r = make([]float64, len(w.UUT))
-	for i := range w.r {
-		w.r[i] = w.UUT[i] - l.Intercept - l.Slope*w.Reference[i]
+		w.time[i] = 2*n*w.cycle[i] + l
 	}
 }
 
-// inCells averages the residuals of each cell; in order of cycle, set
-// pressure, up before down.
-func (w *work) inCells() {
-	order := sorted(sorted(sorted(w.order, w.leg, 2), w.level, len(w.levels)), w.cycle, len(w.cycles))
-	number := make([]int, len(order))
-	for _, i := range order {
-		c := cell{cycle: w.cycle[i], level: w.level[i], leg: w.leg[i]}
-		if len(w.cells) == 0 || c != w.cells[len(w.cells)-1] {
-			w.cells = append(w.cells, c)
-		}
-		number[i] = len(w.cells) - 1
+// inCells averages the residuals of each cell.
+func (w *work) inCells(line Straight) {
+	key, r := make([]int, len(w.UUT)), make([]float64, len(w.UUT))
+	n := len(w.levels)
+	for i := range key {
+		key[i] = (w.cycle[i]*n+w.level[i])*2 + w.leg[i]
+		r[i] = w.UUT[i] - line.Intercept - line.Slope*w.Reference[i]
 	}
-	for k, r := range means(w.r, number, len(w.cells)) {
-		w.cells[k].r = r
+	number, keys := dense(key)
+	w.cells = make([]cell, len(keys))
+	for k, r := range means(r, number, len(keys)) {
+		w.cells[k] = cell{cycle: keys[k] / 2 / n, level: keys[k] / 2 % n, leg: keys[k] % 2, r: r}
 	}
 }

@@ -140,15 +140,14 @@ func Static(d Data) (Figures, error) {
 	w := work{Data: d}
 	w.number()
 	grouped := w.group()
-	w.inOrder(grouped)
+	w.inTime(grouped)
 	f := Figures{Sets: w.sets, Cycles: len(w.cycles), ZeroReturn: make([]*float64, len(w.cycles))}
 	if line, err := Line(d.Reference, d.UUT); err == nil {
 		f.Line = &line
 	}
 	w.errors(&f)
 	if f.Line != nil && grouped {
-		w.residuals(*f.Line)
-		w.inCells()
+		w.inCells(*f.Line)
 		w.compare(&f)
 		w.linearity(&f)
 		w.curvature(&f)
@@ -172,6 +171,9 @@ func refuse(d Data) error {
 	}
 	if d.Zero != nil && finite([]float64{*d.Zero}) != nil {
 		return fmt.Errorf("%w: the error at the zeroing is not finite, or too large to compute with", ErrData)
+	}
+	if d.Mounting == nil {
+		return nil
 	}
 	mounted := map[int]int{}
 	for i, m := range d.Mounting {
@@ -201,15 +203,16 @@ func (w *work) zeroOffset() float64 {
 	if math.IsNaN(key[0]) {
 		key = w.Reference
 	}
-	first := w.order[0]
-	for _, i := range w.order {
-		if math.Abs(key[i]) < math.Abs(key[first]) {
+	first := 0
+	for i := range key {
+		a, b := math.Abs(key[i]), math.Abs(key[first])
+		if a < b || a == b && w.time[i] < w.time[first] {
 			first = i
 		}
 	}
 	var sum, n float64
-	for _, i := range w.order {
-		if key[i] == key[first] && w.Cycle[i] == w.Cycle[first] && w.Down[i] == w.Down[first] {
+	for i := range key {
+		if key[i] == key[first] && w.cycle[i] == w.cycle[first] && w.leg[i] == w.leg[first] {
 			sum += w.UUT[i] - w.Reference[i]
 			n++
 		}
@@ -217,44 +220,33 @@ func (w *work) zeroOffset() float64 {
 	return sum / n
 }
 
-// extremes finds the highest, the lowest and the largest y - p - zero.
+// extremes finds the highest, the lowest and the largest y - p - zero; of
+// equals the first in time.
 func (w *work) extremes(zero float64) (Extremes, *Located) {
-	e := make([]float64, len(w.order))
-	var size float64
-	for k, i := range w.order {
-		e[k] = w.UUT[i] - w.Reference[i] - zero
-		size = math.Max(size, math.Abs(w.UUT[i]))
+	high, low := math.Inf(-1), math.Inf(1)
+	for i := range w.UUT {
+		e := w.UUT[i] - w.Reference[i] - zero
+		high, low = math.Max(high, e), math.Min(low, e)
 	}
-	at := func(k int) Located {
-		i := w.order[k]
-		return Located{Value: e[k], At: w.sets[i], Cycle: w.Cycle[i], Down: w.Down[i]}
-	}
-	least := size * nearlyEqual
-	largest := at(first(e, least, math.Abs))
-	return Extremes{
-		Highest: at(first(e, least, func(x float64) float64 { return x })),
-		Lowest:  at(first(e, least, func(x float64) float64 { return -x })),
-	}, &largest
-}
-
-// nearlyEqual is the share of the readings by which equal figures may differ
-// after rounding.
-const nearlyEqual = 1e-12
-
-// first is the first x whose measure is the largest, or as large but for
-// rounding: where it lies must not depend on the last bits.
-func first(x []float64, least float64, measure func(float64) float64) int {
-	most := math.Inf(-1)
-	for _, v := range x {
-		most = math.Max(most, measure(v))
-	}
-	least = math.Max(least, 1e-9*math.Abs(most))
-	for i, v := range x {
-		if measure(v) >= most-least {
-			return i
+	most := math.Max(high, -low)
+	highest, lowest, largest := -1, -1, -1
+	tie := w.tie(most)
+	for i := range w.UUT {
+		e := w.UUT[i] - w.Reference[i] - zero
+		take := func(at *int, near bool) {
+			if near && (*at < 0 || w.time[i] < w.time[*at]) {
+				*at = i
+			}
 		}
+		take(&highest, e >= high-tie)
+		take(&lowest, e <= low+tie)
+		take(&largest, math.Abs(e) >= most-tie)
 	}
-	return 0
+	at := func(i int) Located {
+		return Located{Value: w.UUT[i] - w.Reference[i] - zero, At: w.sets[i], Cycle: w.Cycle[i], Down: w.Down[i]}
+	}
+	l := at(largest)
+	return Extremes{Highest: at(highest), Lowest: at(lowest)}, &l
 }
 
 // curvature describes the whole, in three terms above the constant or as many
@@ -271,34 +263,32 @@ func (w *work) curvature(f *Figures) {
 
 // linearity draws four lines through the averages at the set pressures.
 func (w *work) linearity(f *Figures) {
-	y, u, missing := w.averages(*f.Line)
+	y, u := w.averages(*f.Line)
+	whole := true
 	for l := range y {
-		f.Points[l].Average = y[l]
-	}
-	if missing >= 0 {
-		return
-	}
-	averages, noise := make([]float64, len(y)), make([]float64, len(y))
-	for l := range y {
-		averages[l] = *y[l]
-		if f.Repeatability.PooledSD != nil {
-			noise[l] = u[l] * *f.Repeatability.PooledSD
+		if math.IsNaN(y[l]) {
+			whole = false
+			continue
+		}
+		f.Points[l].Average = &y[l]
+		if s := f.Repeatability.PooledSD; s != nil {
+			u[l] *= *s
 		}
 	}
 	if f.Repeatability.PooledSD == nil {
-		noise = nil
+		u = nil
 	}
-	f.Linearity = Lines(w.levels, averages, noise)
+	if whole {
+		f.Linearity = Lines(w.levels, y, u)
+	}
 }
 
 // averages over cycles and then legs, reduced to the set pressures, each with
-// its standard uncertainty when that of a cell is 1. missing is the first set
-// pressure between the ends that was read in one leg only though there are
-// two, else -1; its average is nil.
-func (w *work) averages(line Straight) (y []*float64, u []float64, missing int) {
-	y, u, missing = make([]*float64, len(w.levels)), make([]float64, len(w.levels)), -1
+// its standard uncertainty when that of a cell is 1. Not-a-number for a set
+// pressure between the ends that was read in one leg only though there are two.
+func (w *work) averages(line Straight) (y, u []float64) {
+	y, u = make([]float64, len(w.levels)), make([]float64, len(w.levels))
 	legs := make([]struct{ sum, n float64 }, 2*len(w.levels))
-	oneLeg := w.oneLeg()
 	for _, c := range w.cells {
 		leg := &legs[2*c.level+c.leg]
 		leg.sum += c.r
@@ -307,10 +297,8 @@ func (w *work) averages(line Straight) (y []*float64, u []float64, missing int) 
 	for l, set := range w.levels {
 		up, down := legs[2*l], legs[2*l+1]
 		between := l > 0 && l < len(w.levels)-1
-		if between && !oneLeg && (up.n == 0 || down.n == 0) {
-			if missing < 0 {
-				missing = l
-			}
+		if between && !w.oneLeg && (up.n == 0 || down.n == 0) {
+			y[l] = math.NaN()
 			continue
 		}
 		var r float64
@@ -322,8 +310,7 @@ func (w *work) averages(line Straight) (y []*float64, u []float64, missing int) 
 		default:
 			r, u[l] = (up.sum/up.n+down.sum/down.n)/2, math.Sqrt(1/up.n+1/down.n)/2
 		}
-		average := line.Intercept + line.Slope*set + r
-		y[l] = &average
+		y[l] = line.Intercept + line.Slope*set + r
 	}
-	return y, u, missing
+	return y, u
 }
