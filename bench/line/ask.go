@@ -49,9 +49,15 @@ func (e *LateError) Error() string {
 func (e *LateError) Unwrap() error { return ErrDeadline }
 
 // UnrecognisedError is an answer to Resync's question that was not accepted.
-type UnrecognisedError struct{ Question, Text string }
+type UnrecognisedError struct {
+	Question, Text string
+	Hex            bool // they are no text
+}
 
 func (e *UnrecognisedError) Error() string {
+	if e.Hex {
+		return fmt.Sprintf("% X was answered % X, which is not the answer expected", e.Question, e.Text)
+	}
 	return fmt.Sprintf("%q was answered %q, which is not the answer expected", e.Question, e.Text)
 }
 
@@ -89,12 +95,15 @@ func (l *Line) ask(ctx context.Context, question string, within time.Duration) (
 	switch {
 	case l.gone != nil:
 		return Answer{}, l.wrong("read", l.gone)
-	case l.onFrame != nil:
+	case l.onFrame != nil || l.onBytes != nil:
 		return Answer{}, l.wrong("read", ErrFreeRunning)
 	case l.engine.inside || l.asked != nil:
 		return Answer{}, l.wrong("read", ErrInside)
 	}
 	l.settings.Latency = max(l.settings.Latency, within)
+	if err := l.silence(ctx, within); err != nil {
+		return Answer{}, err
+	}
 	a := &asked{sent: l.engine.Now()}
 	a.number = l.write(question)
 	l.asked = a
@@ -105,18 +114,49 @@ func (l *Line) ask(ctx context.Context, question string, within time.Duration) (
 	if a.got && err == nil {
 		return Answer{Text: a.text, Sent: a.sent, At: a.at}, nil
 	}
-	l.doubtful = !a.got && !a.long
+	// Where a line of text that was too long ended could be seen.
+	l.doubtful = !a.got && (!a.long || l.settings.Whole != nil)
 	switch {
 	case errors.Is(err, ErrDeadline):
-		return Answer{}, l.wrong("read", &LateError{fmt.Sprintf("no answer to %q", question), within})
+		return Answer{}, l.wrong("read", &LateError{"no answer to " + l.quoted(question), within})
 	case err != nil:
 		return Answer{}, err // of the context, or of somebody else's handler
 	case a.long:
-		return Answer{}, l.wrong("read", fmt.Errorf("%w: %q was answered with over %d bytes", ErrLong, question, l.framer.cap))
+		return Answer{}, l.wrong("read", fmt.Errorf("%w: %s was answered with over %d bytes", ErrLong, l.quoted(question), l.framer.cap))
 	case a.err != nil:
 		return Answer{}, l.wrong("write", a.err)
 	}
 	return Answer{}, l.wrong("read", l.gone)
+}
+
+// silence waits until nothing has been going on the line for Settings.Silence.
+func (l *Line) silence(ctx context.Context, within time.Duration) error {
+	if l.settings.Silence <= 0 {
+		return nil
+	}
+	limit := l.engine.Now().Add(within)
+	for l.received > 0 && l.engine.Now() < l.last.Add(l.settings.Silence) {
+		until, seen := l.last.Add(l.settings.Silence), l.received
+		if until > limit {
+			return l.wrong("read", ErrNotQuiet)
+		}
+		err := l.engine.Wait(ctx, until, func() bool { return l.received != seen || l.gone != nil })
+		switch {
+		case l.gone != nil:
+			return l.wrong("read", l.gone)
+		case err != nil && !errors.Is(err, ErrDeadline):
+			return err
+		}
+	}
+	return nil
+}
+
+// quoted shows what is sent: text in quotation marks, other bytes hexadecimal.
+func (l *Line) quoted(s string) string {
+	if l.settings.Whole == nil {
+		return strconv.Quote(s)
+	}
+	return fmt.Sprintf("% X", s)
 }
 
 // resyncRounds is how often Resync asks before it gives up.
@@ -138,7 +178,7 @@ func (l *Line) Resync(ctx context.Context, question string, accept func(string) 
 			return nil
 		case err == nil:
 			l.doubtful = true
-			refused = l.wrong("read", &UnrecognisedError{question, answer.Text})
+			refused = l.wrong("read", &UnrecognisedError{question, answer.Text, l.settings.Whole != nil})
 		case errors.Is(err, ErrDeadline), errors.Is(err, ErrLong):
 			l.doubtful = true
 			refused = err
@@ -192,7 +232,7 @@ func (l *Line) Send(ctx context.Context, command string, within time.Duration) e
 	l.writing = 0
 	switch {
 	case errors.Is(err, ErrDeadline):
-		return l.wrong("write", &LateError{fmt.Sprintf("the port did not take %q", command), within})
+		return l.wrong("write", &LateError{"the port did not take " + l.quoted(command), within})
 	case err != nil:
 		return err
 	case l.writeErr != nil:
@@ -210,6 +250,9 @@ func (l *Line) Fire(command string) { l.write(command) }
 func (l *Line) write(text string) int64 {
 	if l.settings.Echo {
 		l.echoes = append(l.echoes, text)
+	}
+	if l.settings.Whole != nil {
+		return l.engine.inbox.Send(l.port, []byte(text))
 	}
 	return l.engine.inbox.Send(l.port, []byte(text+l.settings.Terminator))
 }

@@ -4,18 +4,24 @@ package line
 // otherwise.
 const LongestLine = 256
 
-// framer cuts bytes into lines ended by CR, LF or CRLF. A line longer than its
-// cap is dropped up to its end, which is told; empty lines are no lines.
+// framer cuts bytes into lines ended by CR, LF or CRLF, or, with whole, into
+// frames whose beginning says how long they are. A line longer than its cap is
+// dropped up to its end, which is told; empty lines are no lines.
 type framer struct {
-	cap  int
-	part []byte
-	over bool // the present line is too long already
-	skip bool // the present line lost its beginning; it is passed over untold
+	cap   int
+	whole func([]byte) int
+	part  []byte
+	over  bool // the present line is too long already
+	skip  bool // the present line lost its beginning; it is passed over untold
 }
 
 // take hands every whole line to line, which may use it until it returns; a
 // line that was too long comes as (nil, true).
 func (f *framer) take(data []byte, line func(text []byte, long bool)) {
+	if f.whole != nil {
+		f.frames(data, line)
+		return
+	}
 	from := 0
 	for i, c := range data {
 		if c != '\r' && c != '\n' {
@@ -38,6 +44,31 @@ func (f *framer) take(data []byte, line func(text []byte, long bool)) {
 		}
 	}
 	f.keep(data[from:])
+}
+
+// frames is take for frames that have no terminator. What is longer than the
+// cap is dropped with everything that came with it: only quiet, and reset, can
+// tell where the next frame begins.
+func (f *framer) frames(data []byte, frame func(data []byte, long bool)) {
+	if f.skip || f.over {
+		return
+	}
+	f.part = append(f.part, data...)
+	rest := f.part
+	for len(rest) > 0 {
+		n := f.whole(rest)
+		if n > f.cap || n <= 0 && len(rest) > f.cap {
+			f.part, f.over = f.part[:0], true
+			frame(nil, true)
+			return
+		}
+		if n <= 0 || n > len(rest) {
+			break
+		}
+		frame(rest[:n], false)
+		rest = rest[n:]
+	}
+	f.part = f.part[:copy(f.part, rest)]
 }
 
 // partial says that a line has begun and not ended.

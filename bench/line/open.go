@@ -18,17 +18,32 @@ type Settings struct {
 	// is never less than the longest time that Ask has waited. Resync waits for
 	// longer than that.
 	Latency time.Duration
+	// Whole makes the line one of frames that are no text: it tells how long
+	// the frame is that data begins with, or 0 when more of it must be seen to
+	// know. Nothing is added to what is sent then, and errors show hexadecimal.
+	Whole func(data []byte) int
+	// Silence is how long nothing may have been going either way before a
+	// question is sent, where that is what parts one frame from the next.
+	Silence time.Duration
 }
 
-// Frame is one line of text as received, without its terminator.
+// Frame is one line of text as received, without its terminator, or one frame
+// as Settings.Whole cuts them.
 type Frame struct {
 	Data []byte  // valid during the callback only; copy to keep
 	At   Instant // when the bytes that ended it were posted
 	Long bool    // it was longer than the cap; Data is nil
 }
 
+// Bytes is what came at once, on a line that is not cut here.
+type Bytes struct {
+	Data []byte  // the receiver's to keep
+	At   Instant // when it was posted
+	Hole bool    // bytes were lost before it
+}
+
 // Line is a port with lines of text going to and fro. It is asked (Ask), or it
-// is free-running (OnFrame).
+// is free-running (OnFrame, OnBytes).
 type Line struct {
 	engine   *Engine
 	port     PortID
@@ -37,12 +52,15 @@ type Line struct {
 	gone     error
 
 	onFrame func(Frame) error
+	onBytes func(Bytes) error
+	hole    bool               // in what onBytes is given
 	each    func([]byte, bool) // l.line, made once
 	at      Instant            // of the event being taken
 	begun   Instant            // when the first byte of the present line came
 	err     error              // the callback's first
 
-	received int64 // bytes
+	received int64   // bytes
+	last     Instant // when something was received or sent last
 	stale    int64
 	long     int64
 
@@ -68,6 +86,9 @@ func (e *Engine) Open(port PortID, s Settings) *Line {
 	}
 	l := &Line{engine: e, port: port, settings: s, framer: framer{cap: s.Cap}}
 	l.each = l.line
+	if s.Whole != nil {
+		l.framer.whole = l.whole
+	}
 	e.lines[port] = l
 	return l
 }
@@ -92,6 +113,16 @@ func (l *Line) Again() {
 	l.lose()
 }
 
+// OnBytes makes the line free-running without cutting it: f is called with all
+// bytes as they come, for instruments whose frames need more than their bytes
+// to be told apart. Otherwise it is as OnFrame.
+func (l *Line) OnBytes(f func(Bytes) error) {
+	if l.onBytes == nil {
+		l.hole = true
+	}
+	l.onBytes = f
+}
+
 // Stale counts the lines that came unasked on an asked line and were dropped.
 func (l *Line) Stale() int64 { return l.stale }
 
@@ -109,12 +140,29 @@ func (l *Line) Name() string { return l.settings.Name }
 
 func (l *Line) take(e Event) error {
 	l.received += int64(len(e.Data))
+	l.last = e.At
+	if l.onBytes != nil {
+		hole := l.hole
+		l.hole = false
+		return l.onBytes(Bytes{e.Data, e.At, hole})
+	}
 	l.at, l.err = e.At, nil
 	if !l.framer.partial() {
 		l.begun = e.At
 	}
 	l.framer.take(e.Data, l.each)
 	return l.err
+}
+
+// whole cuts off an echo that is expected before Settings.Whole is asked.
+func (l *Line) whole(data []byte) int {
+	if len(l.echoes) > 0 {
+		n := min(len(data), len(l.echoes[0]))
+		if string(data[:n]) == l.echoes[0][:n] {
+			return len(l.echoes[0])
+		}
+	}
+	return l.settings.Whole(data)
 }
 
 // line takes one line of text.
@@ -147,6 +195,7 @@ func (l *Line) line(text []byte, long bool) {
 }
 
 func (l *Line) wrote(e Event) {
+	l.last = max(l.last, e.At)
 	if a := l.asked; a != nil && a.number == e.Number {
 		a.err = e.Err
 	}
@@ -166,7 +215,8 @@ func (l *Line) leave(err error) {
 // asked may have been answered.
 func (l *Line) lose() {
 	l.framer.lose()
-	if l.onFrame == nil {
+	l.hole = true
+	if l.onFrame == nil && l.onBytes == nil {
 		l.doubtful = true
 	}
 }

@@ -23,6 +23,7 @@ func mayImport() map[string][]string {
 		"bench":                   {"bench/line", "bench/quantity"},
 		"bench/quantity":          {},
 		"bench/line":              {},
+		"bench/checksum":          {},
 		"bench/tomlfile":          {},
 		"bench/serialport":        {"bench/line"},
 		"bench/simulated":         {"bench/line", "bench/quantity"},
