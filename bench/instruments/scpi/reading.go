@@ -4,17 +4,11 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"math"
 	"strings"
 
 	"kymobench/bench"
 	"kymobench/bench/quantity"
 )
-
-// overflow is what SCPI puts out for a value beyond the range: 9.9E37 for plus
-// infinity, -9.9E37 for minus infinity, 9.91E37 for not a number. Source:
-// SCPI-99 volume 1, 7.2.1.4 and 7.2.1.5, from memory.
-const overflow = 9.9e37
 
 // OverRangeError is an instrument's statement that it cannot measure what is
 // there.
@@ -24,18 +18,8 @@ func (e *OverRangeError) Error() string {
 	return fmt.Sprintf("read %s: out of its range, it answered %q", e.Name, e.Text)
 }
 
-// saysOverRange knows the words that instruments put in a number's place
-// (common practice, no source).
-func saysOverRange(text string) bool {
-	word := strings.ToUpper(strings.Trim(text, " +-.\""))
-	switch word {
-	case "OL", "OVL", "OVLD", "OVFL", "OFL", "OVER", "OVERLOAD", "OVERFLOW", "OVERRANGE", "UNDER", "UNDERRANGE", "INF", "NAN":
-		return true
-	case "":
-		return strings.ContainsAny(text, "-") && len(strings.Trim(text, " ")) > 2 // "-----"
-	}
-	return false
-}
+// Unwrap returns quantity.ErrOverRange.
+func (e *OverRangeError) Unwrap() error { return quantity.ErrOverRange }
 
 // Read asks for one reading.
 func (i *Instrument) Read(ctx context.Context) (bench.Reading, error) {
@@ -48,7 +32,7 @@ func (i *Instrument) Read(ctx context.Context) (bench.Reading, error) {
 	var x float64
 	a, err := i.ask(ctx, i.s.Read, func(text string) (err error) {
 		x, err = i.s.Field.Number(text)
-		if err == nil && math.Abs(x) >= overflow || err != nil && saysOverRange(text) {
+		if errors.Is(err, quantity.ErrOverRange) {
 			return &OverRangeError{i.line.Name(), text}
 		}
 		return err
