@@ -24,6 +24,11 @@ type Reading struct {
 	At    line.Instant // when the last byte of the answer was taken
 	Text  string       // the frame as received, without its terminator
 	Value quantity.Value
+	// Sequence counts the readings as the instrument does, on over the wraps of
+	// its own number, so that what is missing between two readings is known. It
+	// may begin anywhere. HasSequence says that the instrument counts.
+	Sequence    uint64
+	HasSequence bool
 }
 
 // Middle is the instant half way between question and answer, the best single
