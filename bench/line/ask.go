@@ -189,6 +189,16 @@ func (l *Line) Resync(ctx context.Context, question string, accept func(string) 
 	return refused
 }
 
+// Quiet makes a doubtful line sure again, as Resync does, for an instrument
+// that has no question with an answer to recognise: quiet must do.
+func (l *Line) Quiet(ctx context.Context) error {
+	err := l.drain(ctx)
+	if err == nil {
+		l.doubtful = false
+	}
+	return err
+}
+
 // drain waits until nothing has come for 1.25 times the worst latency, at most
 // ten times as long, and drops what came.
 func (l *Line) drain(ctx context.Context) error {

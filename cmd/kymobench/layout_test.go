@@ -29,7 +29,8 @@ func mayImport() map[string][]string {
 		"bench/simulated":  {"bench/line", "bench/quantity"},
 		"bench/setup":      {"bench", "bench/line", "bench/quantity", "bench/tomlfile", "bench/instruments/scpi", "bench/instruments/lines"},
 
-		"bench/instruments/scpi":   {"bench", "bench/line", "bench/quantity"},
+		"bench/instruments/asked":  {"bench", "bench/line", "bench/quantity"},
+		"bench/instruments/scpi":   {"bench", "bench/instruments/asked", "bench/line", "bench/quantity"},
 		"bench/instruments/lines":  {"bench", "bench/line", "bench/quantity"},
 		"bench/instruments/frames": {"bench", "bench/line", "bench/quantity"},
 

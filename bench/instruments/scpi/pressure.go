@@ -51,7 +51,7 @@ func NewSource(l *line.Line, s SourceSettings) (*Source, error) {
 func (s *Source) Set(ctx context.Context, p quantity.Pressure) error {
 	bounded := s.s.Lowest != 0 || s.s.Highest != 0
 	if x := float64(p); math.IsNaN(x) || math.IsInf(x, 0) || bounded && (p < s.s.Lowest || p > s.s.Highest) {
-		return fmt.Errorf("set %s: %s %s is not allowed", s.line.Name(), written(p, s.unit), s.unit.Name)
+		return fmt.Errorf("set %s: %s %s is not allowed", s.Line.Name(), written(p, s.unit), s.unit.Name)
 	}
 	return s.set(ctx, s.before+written(p, s.unit)+s.after)
 }
@@ -73,7 +73,7 @@ func written(p quantity.Pressure, u quantity.Unit) string {
 // Hold shuts the source off from the volume.
 func (s *Source) Hold(ctx context.Context) error {
 	if s.s.Hold == "" {
-		return fmt.Errorf("hold %s: %w", s.line.Name(), bench.ErrNotStated)
+		return fmt.Errorf("hold %s: %w", s.Line.Name(), bench.ErrNotStated)
 	}
 	return s.set(ctx, s.s.Hold)
 }
@@ -83,7 +83,7 @@ func (s *Source) Vent(ctx context.Context) error { return s.set(ctx, s.s.Vent) }
 
 // VentNow sends the vent command at once and waits for nothing; it may be
 // called from inside a handler.
-func (s *Source) VentNow() { s.line.Fire(s.s.Vent) }
+func (s *Source) VentNow() { s.Line.Fire(s.s.Vent) }
 
 // ValveSettings of a fast valve.
 type ValveSettings struct {
@@ -114,4 +114,4 @@ func (v *Valve) Shut(ctx context.Context) error { return v.set(ctx, v.s.Shut) }
 
 // ReleaseNow sends the release command at once and waits for nothing; it may
 // be called from inside a handler.
-func (v *Valve) ReleaseNow() { v.line.Fire(v.s.Release) }
+func (v *Valve) ReleaseNow() { v.Line.Fire(v.s.Release) }

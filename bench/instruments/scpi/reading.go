@@ -10,31 +10,17 @@ import (
 	"kymobench/bench/quantity"
 )
 
-// OverRangeError is an instrument's statement that it cannot measure what is
-// there.
-type OverRangeError struct{ Name, Text string }
-
-func (e *OverRangeError) Error() string {
-	return fmt.Sprintf("read %s: out of its range, it answered %q", e.Name, e.Text)
-}
-
-// Unwrap returns quantity.ErrOverRange.
-func (e *OverRangeError) Unwrap() error { return quantity.ErrOverRange }
-
 // Read asks for one reading.
 func (i *Instrument) Read(ctx context.Context) (bench.Reading, error) {
 	if i.s.Read == "" {
-		return bench.Reading{}, fmt.Errorf("read %s: %w", i.line.Name(), bench.ErrNotStated)
+		return bench.Reading{}, fmt.Errorf("read %s: %w", i.Line.Name(), bench.ErrNotStated)
 	}
-	if i.unit.Name == "" {
-		return bench.Reading{}, fmt.Errorf("read %s: %q is no unit known here", i.line.Name(), i.s.Field.Unit)
+	if i.wrong != nil {
+		return bench.Reading{}, fmt.Errorf("read %s: %w", i.Line.Name(), i.wrong)
 	}
 	var x float64
-	a, err := i.ask(ctx, i.s.Read, func(text string) (err error) {
-		x, err = i.s.Field.Number(text)
-		if errors.Is(err, quantity.ErrOverRange) {
-			return &OverRangeError{i.line.Name(), text}
-		}
+	a, err := i.Ask(ctx, i.s.Read, func(text string) (err error) {
+		x, err = i.number.Number(text)
 		return err
 	})
 	if err != nil {
@@ -49,7 +35,7 @@ func (i *Instrument) Read(ctx context.Context) (bench.Reading, error) {
 // Zero makes the instrument take the present pressure for zero.
 func (i *Instrument) Zero(ctx context.Context) error {
 	if i.s.Zero == "" {
-		return fmt.Errorf("zero %s: %w", i.line.Name(), bench.ErrNotStated)
+		return fmt.Errorf("zero %s: %w", i.Line.Name(), bench.ErrNotStated)
 	}
 	return i.set(ctx, i.s.Zero)
 }
@@ -73,16 +59,16 @@ const longestQueue = 64
 
 // set sends a command and asks what the instrument has against it.
 func (i *Instrument) set(ctx context.Context, command string) error {
-	if err := i.line.Send(ctx, command, i.s.Within); err != nil {
+	if err := i.Line.Send(ctx, command, i.Within()); err != nil {
 		return err
 	}
 	if i.s.Errors == "" {
 		return nil
 	}
-	refused := &RefusedError{Name: i.line.Name(), Command: command}
+	refused := &RefusedError{Name: i.Line.Name(), Command: command}
 	for range longestQueue {
 		clean := false
-		a, err := i.ask(ctx, i.s.Errors, func(text string) (err error) {
+		a, err := i.Ask(ctx, i.s.Errors, func(text string) (err error) {
 			clean, err = isNoError(text)
 			return err
 		})
@@ -97,7 +83,7 @@ func (i *Instrument) set(ctx context.Context, command string) error {
 			return nil
 		}
 	}
-	return fmt.Errorf("read %s: %w after %q: %w", i.line.Name(), ErrEndless, command, refused)
+	return fmt.Errorf("read %s: %w after %q: %w", i.Line.Name(), ErrEndless, command, refused)
 }
 
 // isNoError reads the whole number that leads an answer to the errors

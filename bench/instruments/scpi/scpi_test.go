@@ -5,11 +5,13 @@ import (
 	"errors"
 	"math"
 	"reflect"
+	"strconv"
 	"strings"
 	"testing"
 	"time"
 
 	"kymobench/bench"
+	"kymobench/bench/instruments/asked"
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
 )
@@ -111,8 +113,8 @@ func TestIdentify(t *testing.T) {
 		t.Errorf("a late answer to another question came first: %q, %v", got, err)
 	}
 	_, _, l = wire(map[string][]string{"*IDN?": {identity + "2"}})
-	var other *IdentityError
-	if got, err := New(l, settings()).Identify(ctx); !errors.As(err, &other) || other.Got != identity+"2" || got != "" {
+	var other *asked.IdentityError
+	if got, err := New(l, settings()).Identify(ctx); !errors.As(err, &other) || other.Got != strconv.Quote(identity+"2") || got != "" {
 		t.Errorf("somebody else: %q, %v", got, err)
 	}
 	_, _, l = wire(map[string][]string{"*IDN?": {""}})
@@ -163,8 +165,8 @@ func TestOverRange(t *testing.T) {
 	for _, text := range []string{"9.9E37", "-9.9E+37", "+9.91E+37", "OL", " -OL", "Overload", "-----", "nan"} {
 		d, _, l := wire(map[string][]string{"MEAS:PRES?": {text, "1"}})
 		r, err := New(l, settings()).Read(context.Background())
-		var over *OverRangeError
-		if !errors.As(err, &over) || over.Text != text || r.Text != "" {
+		var over *asked.OverRangeError
+		if !errors.As(err, &over) || over.Text != strconv.Quote(text) || r.Text != "" {
 			t.Errorf("%q: %+v, %v", text, r, err)
 		}
 		heard(t, d, "MEAS:PRES?")
@@ -182,11 +184,11 @@ func TestGarbled(t *testing.T) {
 	for _, bad := range []string{"0x10", "1,5", "1_0", "--1", ".", identity, "-"} {
 		d, _, l := wire(map[string][]string{"MEAS:PRES?": {bad}})
 		r, err := New(l, settings()).Read(ctx)
-		var garbled *GarbledError
-		if !errors.As(err, &garbled) || !reflect.DeepEqual(garbled.Texts, []string{bad, bad, bad}) || r != (bench.Reading{}) {
+		var garbled *asked.GarbledError
+		if !errors.As(err, &garbled) || !reflect.DeepEqual(garbled.Texts, []string{strconv.Quote(bad), strconv.Quote(bad), strconv.Quote(bad)}) || r != (bench.Reading{}) {
 			t.Errorf("%q: %+v, %v", bad, r, err)
 		}
-		if err == nil || !strings.Contains(err.Error(), bad) || len(d.heard) != 4 {
+		if err == nil || !strings.Contains(err.Error(), strconv.Quote(bad)) || len(d.heard) != 4 {
 			t.Errorf("%q: %v after %q", bad, err, d.heard)
 		}
 	}
