@@ -39,9 +39,21 @@ type stageFile struct {
 	Bore                string   `toml:"bore"`
 	Fluid               string   `toml:"fluid"`
 	FlushDevice         string   `toml:"flush_device"`
+	FluidDensity        string   `toml:"fluid_density"`
+	FluidViscosity      string   `toml:"fluid_viscosity"`
+	DesignedFrequency   string   `toml:"designed_frequency"`
+	DesignedDamping     string   `toml:"designed_damping"`
 }
 
-// stageKeys lists the keys of each kind of stage, all of them required.
+// mayHave lists the keys that a kind of stage may have or not.
+func mayHave(kind string) []string {
+	if kind == "step" {
+		return []string{"fluid_density", "fluid_viscosity", "designed_frequency", "designed_damping"}
+	}
+	return nil
+}
+
+// stageKeys lists the keys that each kind of stage must have.
 func stageKeys(kind string) []string {
 	keys := map[string]string{
 		"warm_up":  "minimum longest_wait",
@@ -88,11 +100,11 @@ func (l *loader) stages(d *Definition) {
 
 // keysOf refuses keys that another kind of stage has and asks for all of its own.
 func (l *loader) keysOf(kind string, i int) {
-	own := stageKeys(kind)
+	own, optional := stageKeys(kind), mayHave(kind)
 	for _, key := range l.doc.Keys("stage", i) {
-		if key != "kind" && !slices.Contains(own, key) {
+		if key != "kind" && !slices.Contains(own, key) && !slices.Contains(optional, key) {
 			l.refuse(l.doc.RefuseKey(fmt.Sprintf("a %s stage has no key %q", kind, key),
-				"it has: "+strings.Join(own, ", "), "stage", i, key))
+				"it has: "+strings.Join(slices.Concat(own, optional), ", "), "stage", i, key))
 		}
 	}
 	for _, key := range own {
@@ -158,6 +170,28 @@ func (l *loader) static(d *Definition, i int) Static {
 	return s
 }
 
+// positive takes an optional quantity above zero, as stated.
+func (l *loader) positive(d quantity.Dimension, i int, key string) string {
+	return tomlfile.TakeIf(l.doc, &l.err, func(s string) (string, error) {
+		v, err := quantity.ParseAs(s, d)
+		if err == nil && !(v.SI > 0) {
+			err = fmt.Errorf("%q is not above zero", s)
+		}
+		return s, err
+	}, "stage", i, key)
+}
+
+// ratio takes an optional plain number above zero, as stated.
+func (l *loader) ratio(i int, key string) string {
+	return tomlfile.TakeIf(l.doc, &l.err, func(s string) (string, error) {
+		x, err := quantity.ParseDecimal(s)
+		if err == nil && !(x > 0) {
+			err = fmt.Errorf("%q is not above zero", s)
+		}
+		return s, err
+	}, "stage", i, key)
+}
+
 func (l *loader) step(d *Definition, i int) Step {
 	s := Step{
 		Count:       l.count(i, "count", l.file.Stages[i].Count, 100),
@@ -172,7 +206,15 @@ func (l *loader) step(d *Definition, i int) Step {
 		Bore:        l.text(tomlfile.LongestIdentity, "stage", i, "bore"),
 		Fluid:       l.text(tomlfile.LongestIdentity, "stage", i, "fluid"),
 		FlushDevice: l.text(longestText, "stage", i, "flush_device"),
+
+		FluidDensity:      l.positive(quantity.DimDensity, i, "fluid_density"),
+		FluidViscosity:    l.positive(quantity.DimViscosity, i, "fluid_viscosity"),
+		DesignedFrequency: l.positive(quantity.DimFrequency, i, "designed_frequency"),
+		DesignedDamping:   l.ratio(i, "designed_damping"),
 	}
+	known := func(key string) bool { return l.doc.Has("stage", i, key) }
+	l.demand(known("fluid_density") == known("fluid_viscosity"), "density without viscosity, or viscosity without density", "state both, or neither", "stage", i, "fluid")
+	l.demand(known("designed_frequency") || !known("designed_damping"), "a designed damping without a designed frequency", "", "stage", i, "designed_damping")
 	l.demand(s.Size > 0, "a release begins above atmosphere", "", "stage", i, "size")
 	l.demand(s.Before+s.After <= time.Minute, "a capture of more than a minute", "", "stage", i, "after")
 	return s

@@ -69,12 +69,20 @@ type Step struct {
 	After       time.Duration // captured after it
 	LongestWait time.Duration // for Size to be reached
 
-	// Printed in the report; the program does not check them.
+	// Printed in the report. Results read length, bore and fluid for their
+	// opinions where they can be read ("1.2 m", "1.6 mm", "water, degassed").
 	Place       string // where the step enters
 	LineLength  string
 	Bore        string
 	Fluid       string
 	FlushDevice string
+
+	// Optional, "" when not stated: of a fluid that is not known by name, and of
+	// the same line when it was clean and free of air.
+	FluidDensity      string
+	FluidViscosity    string
+	DesignedFrequency string
+	DesignedDamping   string
 }
 
 // Direction is which way a step goes.

@@ -22,6 +22,8 @@ const (
 	DimLength
 	DimSpan
 	DimPressureRate
+	DimDensity
+	DimViscosity
 )
 
 // Unit is a named unit: SI value = x*Factor + Offset (an offset for degC only).
@@ -73,6 +75,7 @@ var units = [...]Unit{
 	{"uV/V/mmHg", DimSensitivity, 1e-6 / mmHgPa, 0},
 	{"Hz", DimFrequency, 1, 0},
 	{"kHz", DimFrequency, 1e3, 0},
+	{"1/min", DimFrequency, 1.0 / 60, 0},
 	{"degC", DimTemperature, 1, 273.15},
 	{"K", DimTemperature, 1, 0},
 	{"mm", DimLength, 1e-3, 0},
@@ -85,6 +88,11 @@ var units = [...]Unit{
 	{"h", DimSpan, 3600, 0},
 	{"mmHg/s", DimPressureRate, mmHgPa, 0},
 	{"mmHg/min", DimPressureRate, mmHgPa / 60, 0},
+	{"kg/m3", DimDensity, 1, 0},
+	{"g/cm3", DimDensity, 1e3, 0},
+	{"mPa s", DimViscosity, 1e-3, 0},
+	{"Pa s", DimViscosity, 1, 0},
+	{"cP", DimViscosity, 1e-3, 0},
 }
 
 // UnitNamed returns the unit of that name; "µ" (both of them) is read as "u",

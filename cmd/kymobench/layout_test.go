@@ -44,7 +44,7 @@ func mayImport() map[string][]string {
 		"procedures/verdict":     {"bench/quantity"},
 		"procedures/record":      {"bench", "bench/line", "bench/quantity"},
 		"procedures/results": {"bench/line", "bench/quantity", "procedures", "procedures/record", "procedures/verdict",
-			"procedures/fit", "procedures/step", "procedures/ready", "procedures/uncertainty"},
+			"procedures/fit", "procedures/step", "procedures/pulse", "procedures/tubing", "procedures/ready", "procedures/uncertainty"},
 		"procedures/recorded": {"bench/line", "bench/quantity", "procedures/record"},
 		"procedures/run": {"bench", "bench/line", "bench/quantity", "procedures", "procedures/record", "procedures/ready",
 			"procedures/results"},

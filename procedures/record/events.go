@@ -30,6 +30,8 @@ const (
 	KindPoint       = "point"       // Point
 	KindHold        = "hold"        // Hold
 	KindCapture     = "capture"     // Capture
+	KindLine        = "line"        // Line
+	KindPulse       = "pulse"       // Pulse
 	KindVent        = "vent"        // Vent
 	KindFault       = "fault"       // Fault
 	KindReservation = "reservation" // Reservation
@@ -254,6 +256,32 @@ type Capture struct {
 	Blocks    []int64      `json:"blocks"`
 	Applied   []int64      `json:"applied,omitempty"`
 	Edge      string       `json:"edge,omitempty"` // stated for this data; "" fitted or measured, else a time ("0 s" ideal)
+}
+
+// Line is what is stated of the pressure line of data that come without a
+// procedure; a procedure's step stage says the same.
+type Line struct {
+	Place             string `json:"place,omitempty"` // where the step enters
+	Length            string `json:"length,omitempty"`
+	Bore              string `json:"bore,omitempty"`
+	Fluid             string `json:"fluid,omitempty"`
+	FlushDevice       string `json:"flush_device,omitempty"`
+	FluidDensity      string `json:"fluid_density,omitempty"`
+	FluidViscosity    string `json:"fluid_viscosity,omitempty"`
+	DesignedFrequency string `json:"designed_frequency,omitempty"` // clean and free of air
+	DesignedDamping   string `json:"designed_damping,omitempty"`
+	Barometer         string `json:"barometer,omitempty"` // absolute
+}
+
+// Pulse is the pulse wave that errors are worked out for, in place of what the
+// program would take.
+type Pulse struct {
+	Shape          string    `json:"shape,omitempty"` // one of the program's, or the name of Samples
+	Rate           string    `json:"rate,omitempty"`  // that the plane is drawn for, "120 1/min"
+	Tolerance      string    `json:"tolerance,omitempty"`
+	ToleranceShare string    `json:"tolerance_share,omitempty"`
+	Unit           string    `json:"unit,omitempty"` // of Samples
+	Samples        []float64 `json:"samples,omitempty"`
 }
 
 // Vent says that the volume was opened to atmosphere, and why.

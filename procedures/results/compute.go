@@ -28,18 +28,18 @@ func Compute(events []record.Event) (Results, error) {
 		return Results{}, err
 	}
 	r.Static = st.static
-	all, steps, err := g.stepResults(s)
+	dyn, steps, err := g.stepResults(s)
 	if err != nil {
 		return Results{}, err
 	}
-	r.Step, r.Traces = steps, traces(all)
+	r.Step, r.Traces = steps, traces(dyn.all)
 	if r.Leak, err = g.leak(s); err != nil {
 		return Results{}, err
 	}
 	if g.definition == nil {
 		return r, nil
 	}
-	j := &judge{g: g, s: s, st: st, all: all}
+	j := &judge{g: g, s: s, st: st, dyn: dyn}
 	if r.Limits, err = j.limits(); err != nil {
 		return Results{}, err
 	}

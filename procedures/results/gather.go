@@ -29,6 +29,8 @@ type gathered struct {
 	reservations []Reason
 	overrides    []record.Override
 	finished     *record.Finished
+	line         *record.Line  // of data without a procedure
+	pulse        *record.Pulse // asked for; nil: the program's
 }
 
 // reading is an asked reading with the time of its line.
@@ -86,6 +88,10 @@ func (g *gathered) take(e record.Event) error {
 		return add(e, &g.holds)
 	case record.KindCapture:
 		return add(e, &g.captures)
+	case record.KindLine:
+		return keep(e, &g.line)
+	case record.KindPulse:
+		return keep(e, &g.pulse)
 	case record.KindFault:
 		f, err := record.Decode[record.Fault](e)
 		g.faults = append(g.faults, Reason{Code: f.Code, Text: f.Text})

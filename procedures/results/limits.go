@@ -15,7 +15,7 @@ type judge struct {
 	g   *gathered
 	s   *scale
 	st  staticFigures
-	all []captured
+	dyn *dynamics
 }
 
 // found is a figure ready to be held against a limit: its value in the limit's
@@ -64,7 +64,7 @@ func (j *judge) find(name procedures.LimitName) (found, error) {
 	case procedures.Hysteresis:
 		return j.hysteresis(per), nil
 	case procedures.NaturalFrequency, procedures.DampingRatio:
-		return j.dynamic(name)
+		return j.dynamic(name), nil
 	}
 	return found{why: "this program does not measure it"}, nil
 }
@@ -121,21 +121,19 @@ func (j *judge) hysteresis(per float64) found {
 	return found{value: st.Hysteresis.Largest * per, budget: j.s.hysteresisBudget(*up, *down, j.st.noise).scaled(per), at: &atMmHg}
 }
 
-func (j *judge) dynamic(name procedures.LimitName) (found, error) {
-	if len(j.all) == 0 {
-		return found{why: "no step was captured"}, nil
+func (j *judge) dynamic(name procedures.LimitName) found {
+	combined := j.dyn.combined
+	switch {
+	case len(j.dyn.all) == 0:
+		return found{why: "no step was captured"}
+	case !combined.Determined:
+		return found{why: "the steps do not determine it: " + fmt.Sprint(combined.Reasons)}
 	}
-	combined, frequency, damping, err := dynamicBudgets(j.s, j.all)
-	if err != nil {
-		return found{}, err
-	}
-	if !combined.Determined {
-		return found{why: "the steps do not determine it: " + fmt.Sprint(combined.Reasons)}, nil
-	}
+	frequency, damping := j.dyn.budgets(j.s)
 	if name == procedures.NaturalFrequency {
-		return found{value: combined.Frequency.Value, budget: frequency}, nil
+		return found{value: combined.Frequency.Value, budget: frequency}
 	}
-	return found{value: combined.Damping.Value, budget: damping}, nil
+	return found{value: combined.Damping.Value, budget: damping}
 }
 
 // hold compares one figure with one pair of bounds.

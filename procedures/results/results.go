@@ -159,6 +159,11 @@ type Step struct {
 	Steps        []StepFigure `json:"steps"`
 	Combined     Combined     `json:"combined"`
 	Reservations []Reason     `json:"reservations"`
+	Line         *StatedLine  `json:"line"`     // nil when nothing is stated of it
+	Derived      *Derived     `json:"derived"`  // these and all below nil when undetermined
+	Response     *Response    `json:"response"` // of the line without a model, as a check
+	Pulse        *PulseErrors `json:"pulse"`
+	Opinions     *Opinions    `json:"opinions"`
 }
 
 // StepFigure is one step; its estimates are nil when undetermined.

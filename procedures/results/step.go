@@ -21,13 +21,20 @@ type captured struct {
 	steps    []step.Step
 }
 
+// dynamics is what all captures gave, before it is put into words and budgets.
+type dynamics struct {
+	all      []captured
+	combined step.Combined
+	edge     step.Tolerance // what the tolerance of the valve's edge can do
+}
+
 // stepResults analyses every capture. The second value is nil when there is none.
-func (g *gathered) stepResults(s *scale) ([]captured, *Step, error) {
+func (g *gathered) stepResults(s *scale) (*dynamics, *Step, error) {
 	if len(g.captures) == 0 {
-		return nil, nil, nil
+		return &dynamics{}, nil, nil
 	}
 	out := &Step{Unit: s.unit.Name, Steps: []StepFigure{}, Reservations: []Reason{}}
-	var all []captured
+	d := &dynamics{}
 	var steps []step.Step
 	for _, c := range g.captures {
 		one, reservations, err := g.analyse(s, c)
@@ -42,14 +49,20 @@ func (g *gathered) stepResults(s *scale) ([]captured, *Step, error) {
 			out.Reservations = addReason(out.Reservations, Reason{r.Code, r.Text})
 		}
 		steps = append(steps, one.steps...)
-		all = append(all, one)
+		d.all = append(d.all, one)
 	}
-	combined := step.Combine(steps)
-	out.Combined = Combined{Determined: combined.Determined, Reasons: notNil(combined.Reasons)}
-	if combined.Determined {
-		out.Combined.Frequency, out.Combined.Damping = estimateOf(combined.Frequency), estimateOf(combined.Damping)
+	d.combined = step.Combine(steps)
+	out.Combined = Combined{Determined: d.combined.Determined, Reasons: notNil(d.combined.Reasons)}
+	out.Line = g.statedLine()
+	if !d.combined.Determined {
+		return d, out, nil
 	}
-	return all, out, nil
+	out.Combined.Frequency, out.Combined.Damping = estimateOf(d.combined.Frequency), estimateOf(d.combined.Damping)
+	var err error
+	if d.edge, err = edgeShift(s, d.all, d.combined); err != nil {
+		return nil, nil, err
+	}
+	return d, out, g.derive(s, d, out)
 }
 
 // analyse reads the samples of a capture and fits the steps in them.
@@ -122,56 +135,46 @@ func addReason(all []Reason, r Reason) []Reason {
 }
 
 // edgeShift is how far the combined figures move when the edge is as much
-// slower as its tolerance allows: the half-widths of what the edge can do, as
-// a share of fn and in zeta.
-func edgeShift(s *scale, all []captured, combined step.Combined) (share, zeta float64, err error) {
+// slower as its tolerance allows: the half-widths of what the edge can do to
+// ln fn and to zeta, with their signs.
+func edgeShift(s *scale, all []captured, combined step.Combined) (step.Tolerance, error) {
+	var none step.Tolerance
 	if s.edgeTolerance == 0 || !combined.Determined {
-		return 0, 0, nil
+		return none, nil
 	}
 	var moved []step.Step
 	for _, c := range all {
 		if !c.settings.EdgeStated || c.Edge != "" {
-			return 0, 0, nil
+			return none, nil
 		}
 		settings := c.settings
 		settings.EdgeTime *= 1 + s.edgeTolerance
 		steps, _, _, err := step.Analyse(c.trace, settings)
 		if err != nil {
-			return 0, 0, err
+			return none, err
 		}
 		moved = append(moved, steps...)
 	}
 	other := step.Combine(moved)
 	if !other.Determined {
-		return 0, 0, nil
+		return none, nil
 	}
-	return math.Abs(other.Frequency.Value/combined.Frequency.Value - 1), math.Abs(other.Damping.Value - combined.Damping.Value), nil
+	return step.Tolerance{Log: math.Log(other.Frequency.Value / combined.Frequency.Value), Damping: other.Damping.Value - combined.Damping.Value}, nil
 }
 
-// dynamicBudgets are the uncertainties of natural frequency (Hz) and damping
-// ratio over all steps.
-func dynamicBudgets(s *scale, all []captured) (step.Combined, *budget, *budget, error) {
-	var steps []step.Step
-	for _, c := range all {
-		steps = append(steps, c.steps...)
-	}
-	combined := step.Combine(steps)
-	frequency, damping := &budget{}, &budget{}
-	if !combined.Determined {
-		return combined, frequency, damping, nil
-	}
-	share, zeta, err := edgeShift(s, all, combined)
-	if err != nil {
-		return combined, frequency, damping, err
-	}
-	fn := combined.Frequency.Value
+// budgets are the uncertainties of natural frequency (Hz) and damping ratio
+// over all steps, once they are determined.
+func (d *dynamics) budgets(s *scale) (frequency, damping *budget) {
+	frequency, damping = &budget{}, &budget{}
+	combined, fn := d.combined, d.combined.Frequency.Value
+	share, zeta := math.Abs(math.Expm1(d.edge.Log)), math.Abs(d.edge.Damping)
 	name := fmt.Sprintf("the fits and the spread of %d steps", combined.Steps)
 	frequency.add(name, fromRun, studentT, "Hz", combined.Frequency.StandardUncertainty, 1, combined.DegreesOfFreedom)
 	frequency.add("sample period, tolerance", fromBench, rectangular, "1", s.periodTolerance/math.Sqrt(3), fn, 0)
 	frequency.add("valve edge, tolerance", fromBench, rectangular, "1", share/math.Sqrt(3), fn, 0)
 	damping.add(name, fromRun, studentT, "1", combined.Damping.StandardUncertainty, 1, combined.DegreesOfFreedom)
 	damping.add("valve edge, tolerance", fromBench, rectangular, "1", zeta/math.Sqrt(3), 1, 0)
-	return combined, frequency, damping, nil
+	return frequency, damping
 }
 
 // traces cuts each capture down to what a chart shows: from a little before

@@ -110,7 +110,7 @@ func differ(at string, a, b any) string {
 	case string:
 		// Texts for people quote figures; codes and outcomes are compared where
 		// they stand alone.
-		if _, ok := b.(string); ok && (strings.HasSuffix(at, ".text") || strings.HasSuffix(at, ".reason")) {
+		if _, ok := b.(string); ok && (strings.HasSuffix(at, ".text") || strings.HasSuffix(at, ".reason") || strings.HasSuffix(at, ".note")) {
 			return ""
 		}
 		if a != b {

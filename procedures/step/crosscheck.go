@@ -182,7 +182,7 @@ type CrossCheck struct {
 	Points []CrossPoint
 	Steps  int
 	Agrees bool
-	Worst  CrossPoint // where measured and model differ most, in scatters
+	Worst  CrossPoint // where measured and model differ most, in scatters; where they disagree, among those frequencies
 }
 
 // CrossPoint is the mean over the steps at one frequency.
@@ -246,12 +246,11 @@ func Check(spectra [][]Transfer) CrossCheck {
 			p.Significance = 0
 		}
 		c.Points = append(c.Points, p)
-		if p.Difference > differenceTold && p.Significance*p.Significance > math.Log(float64(len(spectra[0]))/falseAlarm) {
-			c.Agrees = false
-		}
-		if p.Significance >= c.Worst.Significance {
+		plain := p.Difference > differenceTold && p.Significance*p.Significance > math.Log(float64(len(spectra[0]))/falseAlarm)
+		if plain == !c.Agrees && p.Significance >= c.Worst.Significance || plain && c.Agrees {
 			c.Worst = p
 		}
+		c.Agrees = c.Agrees && !plain
 	}
 	return c
 }

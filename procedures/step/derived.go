@@ -46,7 +46,7 @@ const branchShare = 0.005
 // gain and phase at the frequencies (Hz, above 0). Draws are those of the same
 // Joint. Each figure's formula stands with its function in figures.go.
 func (j Joint) Derive(d Draws, frequencies []float64) Derived {
-	s := sampler{joint: j, draws: d, coverage: j.coverage95(), values: make([]float64, len(d.Frequency))}
+	s := sampler{joint: j, draws: d, values: make([]float64, len(d.Frequency))}
 	seconds := func(f func(zeta float64) float64) func(fn, zeta float64) float64 {
 		return func(fn, zeta float64) float64 { return f(zeta) / (2 * math.Pi * fn) }
 	}
@@ -88,23 +88,28 @@ func (j Joint) Derive(d Draws, frequencies []float64) Derived {
 	return out
 }
 
+// Figure puts a figure of somebody else's making into the same form: its best
+// value and its value for every draw, which are sorted in place.
+func (j Joint) Figure(best float64, values []float64) Figure {
+	out := Figure{Exists: true}
+	out.Value = best
+	out.Low, out.High = interval95(values)
+	out.StandardUncertainty = (out.High - out.Low) / 2 / j.coverage95()
+	return out
+}
+
 // sampler carries a figure through the draws.
 type sampler struct {
-	joint    Joint
-	draws    Draws
-	coverage float64
-	values   []float64
+	joint  Joint
+	draws  Draws
+	values []float64
 }
 
 func (s *sampler) plain(f func(fn, zeta float64) float64) Figure {
 	for i, fn := range s.draws.Frequency {
 		s.values[i] = f(fn, s.draws.Damping[i])
 	}
-	out := Figure{Exists: true}
-	out.Value = f(s.joint.Frequency, s.joint.Damping)
-	out.Low, out.High = interval95(s.values)
-	out.StandardUncertainty = (out.High - out.Low) / 2 / s.coverage
-	return out
+	return s.joint.Figure(f(s.joint.Frequency, s.joint.Damping), s.values)
 }
 
 // lacking is a figure that some damping ratios do not have.
