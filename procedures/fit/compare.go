@@ -33,8 +33,7 @@ func (w *work) hysteresis(f *Figures) {
 		return
 	}
 	f.EachHysteresis = make([]Located, 0, pairs)
-	mean := make([]float64, len(w.levels))
-	n := make([]int, len(w.levels))
+	mean, n := make([]float64, len(w.levels)), w.ints(len(w.levels))
 	var most float64
 	for k := 1; k < len(w.cells); k++ {
 		if !w.paired(k) {
@@ -43,7 +42,7 @@ func (w *work) hysteresis(f *Figures) {
 		c := w.cells[k]
 		h := c.r - w.cells[k-1].r
 		f.EachHysteresis = append(f.EachHysteresis, Located{Value: h, At: w.levels[c.level], Cycle: w.cycles[c.cycle], Down: true})
-		most = math.Max(most, math.Abs(h))
+		most = max(most, math.Abs(h))
 		mean[c.level] += math.Abs(h)
 		n[c.level]++
 		if c.level == zero {
@@ -73,7 +72,7 @@ func (w *work) paired(k int) bool {
 // tie is by how much figures of this size may differ and be the same but for
 // rounding: where the largest lies must not depend on the last bits.
 func (w *work) tie(most float64) float64 {
-	return math.Max(1e-9*math.Abs(most), 1e-12*w.size)
+	return max(1e-9*math.Abs(most), 1e-12*w.size)
 }
 
 // zeroLevel is the set pressure nearest zero; of two as near, the lower.
@@ -101,16 +100,16 @@ func (s *series) add(x float64) {
 	}
 	s.n++
 	s.sum += x
-	s.low, s.high = math.Min(s.low, x), math.Max(s.high, x)
+	s.low, s.high = min(s.low, x), max(s.high, x)
 }
 
 // mountings numbers the mounting of each cycle.
 func (w *work) mountings() (of []int, n int) {
-	of = make([]int, len(w.cycles))
+	of = w.ints(len(w.cycles))
 	if w.Mounting == nil {
 		return of, 1
 	}
-	index, values := dense(w.Mounting)
+	index, values := w.dense(w.Mounting)
 	for i, c := range w.cycle {
 		of[c] = index[i]
 	}
@@ -120,11 +119,11 @@ func (w *work) mountings() (of []int, n int) {
 // repeatability compares the cycles of one mounting at each set pressure in
 // each leg, as read, and less the zero of its own cycle, read before the up leg.
 func (w *work) repeatability(f *Figures, zeros []float64, mounting []int) {
-	key := make([]int, len(w.cells))
+	key := w.ints(len(w.cells))
 	for k, c := range w.cells {
 		key[k] = (mounting[c.cycle]*len(w.levels)+c.level)*2 + c.leg
 	}
-	number, keys := dense(key)
+	number, keys := w.dense(key)
 	groups := make([]struct {
 		as, less series
 	}, len(keys))
@@ -152,7 +151,7 @@ func (w *work) repeatability(f *Figures, zeros []float64, mounting []int) {
 			continue
 		}
 		dof += int(g.as.n) - 1
-		largest = math.Max(largest, *g.as.spread())
+		largest = max(largest, *g.as.spread())
 		if keys[k]%2 == 0 {
 			at.RangeUp = larger(at.RangeUp, g.as.spread())
 		} else {
@@ -175,7 +174,7 @@ func larger(a, b *float64) *float64 {
 // zeros is the residual at zero of the up leg of each cycle, NaN without.
 func (w *work) zeros() []float64 {
 	zero := w.zeroLevel()
-	zeros := make([]float64, len(w.cycles))
+	zeros := w.floats(len(w.cycles))
 	for c := range zeros {
 		zeros[c] = math.NaN()
 	}
@@ -190,7 +189,7 @@ func (w *work) zeros() []float64 {
 // reproducibility compares the first cycles of the mountings, each less its own
 // zero.
 func (w *work) reproducibility(f *Figures, zeros []float64, mounting []int, mountings int) {
-	begins := make([]int, mountings)
+	begins := w.ints(mountings)
 	for c := len(mounting) - 1; c >= 0; c-- {
 		begins[mounting[c]] = c
 	}

@@ -79,7 +79,7 @@ func Line(x, y []float64) (Straight, error) {
 func scaleFor(x []float64, m float64) float64 {
 	var most float64
 	for _, v := range x {
-		most = math.Max(most, math.Abs(v-m))
+		most = max(most, math.Abs(v-m))
 	}
 	_, e := math.Frexp(most)
 	return math.Ldexp(1, -min(max(e, -1000), 1000))
@@ -103,7 +103,7 @@ func mean(x []float64) float64 {
 // Source: GUM H.3.4.
 func (l Straight) At(x float64) (y, u float64) {
 	v := l.UIntercept*l.UIntercept + x*x*l.USlope*l.USlope + 2*x*l.Covariance
-	return l.Intercept + l.Slope*x, math.Sqrt(math.Max(v, 0))
+	return l.Intercept + l.Slope*x, math.Sqrt(max(v, 0))
 }
 
 // Where is the x at which the mean of times further readings of y lies on the

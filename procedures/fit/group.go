@@ -9,6 +9,7 @@ import (
 // work is the data on their way to figures.
 type work struct {
 	Data
+	scratch
 	cycles []int // in rising order
 	cycle  []int // of each reading, in cycles
 	leg    []int // of each reading: 0 up, 1 down
@@ -21,6 +22,32 @@ type work struct {
 	size   float64   // the largest |y|
 }
 
+// scratch lends slices of zeros from a few large pieces, for asking the system
+// for each by itself takes a third of the time of a small analysis.
+type scratch struct {
+	whole []int
+	real  []float64
+	piece int // the least to ask for at a time
+}
+
+func (s *scratch) ints(n int) []int {
+	if len(s.whole) < n {
+		s.whole = make([]int, max(n, 8*s.piece))
+	}
+	out := s.whole[:n:n]
+	s.whole = s.whole[n:]
+	return out
+}
+
+func (s *scratch) floats(n int) []float64 {
+	if len(s.real) < n {
+		s.real = make([]float64, max(n, 4*s.piece))
+	}
+	out := s.real[:n:n]
+	s.real = s.real[n:]
+	return out
+}
+
 // cell is the readings of one cycle, leg and set pressure, by their mean
 // residual.
 type cell struct {
@@ -30,32 +57,32 @@ type cell struct {
 
 // number replaces cycles and legs by indices.
 func (w *work) number() {
-	w.cycle, w.cycles = dense(w.Cycle)
-	w.leg = make([]int, len(w.Down))
+	w.cycle, w.cycles = w.dense(w.Cycle)
+	w.leg = w.ints(len(w.Down))
 	for i, down := range w.Down {
 		if down {
 			w.leg[i] = 1
 		}
-		w.size = math.Max(w.size, math.Abs(w.UUT[i]))
+		w.size = max(w.size, math.Abs(w.UUT[i]))
 	}
 	w.oneLeg = !slices.Contains(w.leg, 1-w.leg[0])
 }
 
 // dense numbers the values of x from the lowest, 0, up. Linear in len(x) where
 // the values lie close, as numbers of cycles do.
-func dense(x []int) (index, values []int) {
+func (s *scratch) dense(x []int) (index, values []int) {
 	low, high := slices.Min(x), slices.Max(x)
-	index = make([]int, len(x))
+	index = s.ints(len(x))
 	if span := uint64(high) - uint64(low); span <= uint64(4*len(x)+64) {
-		seen := make([]int, span+1)
+		seen := s.ints(int(span) + 1)
 		distinct := 0
 		for _, v := range x {
 			distinct += 1 - seen[v-low]
 			seen[v-low] = 1
 		}
-		values = make([]int, 0, distinct)
-		for k, s := range seen {
-			if s == 1 {
+		values = s.ints(distinct)[:0]
+		for k, there := range seen {
+			if there == 1 {
 				seen[k] = len(values)
 				values = append(values, low+k)
 			}
@@ -125,7 +152,7 @@ func (w *work) group() bool {
 			level[i] = rank
 		}
 	}
-	means := means(w.Reference, level, len(longest))
+	means := w.means(w.Reference, level, len(longest))
 	for i, rank := range level {
 		w.sets[i] = means[rank]
 	}
@@ -167,30 +194,31 @@ func (w *work) lacksTop(ranked, longest []int) bool {
 
 // means averages x by group, two passes against rounding. Every group has at
 // least one x.
-func means(x []float64, group []int, groups int) []float64 {
-	m, of := make([]float64, groups), make([]struct{ n, rest float64 }, groups)
+func (s *scratch) means(x []float64, group []int, groups int) []float64 {
+	m, n, rest := s.floats(groups), s.floats(groups), s.floats(groups)
 	for i, g := range group {
 		m[g] += x[i]
-		of[g].n++
+		n[g]++
 	}
 	for g := range m {
-		m[g] /= of[g].n
+		m[g] /= n[g]
 	}
 	for i, g := range group {
-		of[g].rest += x[i] - m[g]
+		rest[g] += x[i] - m[g]
 	}
 	for g := range m {
-		m[g] += of[g].rest / of[g].n
+		m[g] += rest[g] / n[g]
 	}
 	return m
 }
 
 // rank numbers the set pressures from the lowest up, equal ones alike.
 func (w *work) rank() {
-	w.levels = slices.Clone(w.sets)
+	w.levels = w.floats(len(w.sets))
+	copy(w.levels, w.sets)
 	slices.Sort(w.levels)
 	w.levels = slices.Compact(w.levels)
-	w.level = make([]int, len(w.sets))
+	w.level = w.ints(len(w.sets))
 	for i, set := range w.sets {
 		w.level[i], _ = slices.BinarySearch(w.levels, set)
 	}
@@ -200,7 +228,7 @@ func (w *work) rank() {
 // lowest set pressure, a down leg from the highest. Those of one cell have one
 // number, when the readings are grouped.
 func (w *work) inTime(grouped bool) {
-	w.time = make([]int, len(w.leg))
+	w.time = w.ints(len(w.leg))
 	if !grouped {
 		k := 0
 		for _, leg := range w.ranked() {
@@ -225,15 +253,15 @@ func (w *work) inTime(grouped bool) {
 
 // inCells averages the residuals of each cell.
 func (w *work) inCells(line Straight) {
-	key, r := make([]int, len(w.UUT)), make([]float64, len(w.UUT))
+	key, r := w.ints(len(w.UUT)), w.floats(len(w.UUT))
 	n := len(w.levels)
 	for i := range key {
 		key[i] = (w.cycle[i]*n+w.level[i])*2 + w.leg[i]
 		r[i] = w.UUT[i] - line.Intercept - line.Slope*w.Reference[i]
 	}
-	number, keys := dense(key)
+	number, keys := w.dense(key)
 	w.cells = make([]cell, len(keys))
-	for k, r := range means(r, number, len(keys)) {
+	for k, r := range w.means(r, number, len(keys)) {
 		w.cells[k] = cell{cycle: keys[k] / 2 / n, level: keys[k] / 2 % n, leg: keys[k] % 2, r: r}
 	}
 }

@@ -108,7 +108,7 @@ func (m Model) At(row []float64) (y, u float64) {
 			v += a * m.Covariance[i][j] * b
 		}
 	}
-	return y, math.Sqrt(math.Max(v, 0))
+	return y, math.Sqrt(max(v, 0))
 }
 
 // DegreesOfFreedom are the effective ones of coefficient j by Welch and
@@ -317,7 +317,7 @@ func (n Noise) refuse(y []float64) error {
 	}
 	var size float64
 	for _, v := range y {
-		size = math.Max(size, math.Abs(v))
+		size = max(size, math.Abs(v))
 	}
 	for i, u := range n.SD {
 		if !(u > 0) || size > 0 && !(u > 1e-100*size && u < 1e100*size) {

@@ -13,8 +13,8 @@ type Linearities struct{ Independent, Terminal, ZeroBased, LeastSquares *Deviati
 // Deviation is the largest |deviation| of points from a line.
 type Deviation struct {
 	Value            float64
-	Intercept, Slope float64  // of the line
-	Standard         *float64 // what the noise of the points leaves in Value; nil when it was not stated
+	Intercept, Slope float64 // of the line
+	Standard         float64 // what the noise of the points leaves in Value; NaN when it was not stated
 }
 
 // Lines holds points against four lines: least squares (from three points on;
@@ -107,7 +107,8 @@ type points struct {
 
 func newPoints(x, y, u []float64) *points {
 	n := len(x)
-	p := &points{d: make([]float64, n), r: make([]float64, n), x0: x[0], y0: y[0], fx: scaleFor(x, x[0])}
+	all := make([]float64, 3*n)
+	p := &points{d: all[:n], r: all[n : 2*n], x0: x[0], y0: y[0], fx: scaleFor(x, x[0])}
 	p.chord = (y[n-1] - y[0]) / (x[n-1] - x[0])
 	for i := range x {
 		p.d[i] = (x[i] - x[0]) * p.fx
@@ -118,11 +119,11 @@ func newPoints(x, y, u []float64) *points {
 	var size float64 // of what was subtracted, whose rounding is left
 	for i := range p.r {
 		p.r[i] *= p.fy
-		size = math.Max(size, math.Max(math.Abs(y[i]), math.Abs(p.chord*(x[i]-x[0]))))
+		size = max(size, max(math.Abs(y[i]), math.Abs(p.chord*(x[i]-x[0]))))
 	}
 	p.tolerance = 1e-9 + 1e-14*size*p.fy
 	if u != nil {
-		p.u = make([]float64, n)
+		p.u = all[2*n:]
 		for i := range u {
 			p.u[i] = u[i] * p.fy
 		}
@@ -133,11 +134,10 @@ func newPoints(x, y, u []float64) *points {
 // deviation puts a line of r, intercept at x0 and slope over d, back into x
 // and y. squares are of weights times u.
 func (p *points) deviation(value, intercept, slope, squares float64) *Deviation {
-	d := &Deviation{Value: value / p.fy, Slope: p.chord + slope/p.fy*p.fx}
+	d := &Deviation{Value: value / p.fy, Slope: p.chord + slope/p.fy*p.fx, Standard: math.NaN()}
 	d.Intercept = p.y0 + intercept/p.fy - d.Slope*p.x0
 	if p.u != nil {
-		s := math.Sqrt(squares) / p.fy
-		d.Standard = &s
+		d.Standard = math.Sqrt(squares) / p.fy
 	}
 	return d
 }
@@ -147,7 +147,7 @@ func (p *points) deviation(value, intercept, slope, squares float64) *Deviation 
 func (p *points) farthest(intercept, slope float64) (most float64, first, last int) {
 	off := func(i int) float64 { return math.Abs(p.r[i] - intercept - slope*p.d[i]) }
 	for i := range p.r {
-		most = math.Max(most, off(i))
+		most = max(most, off(i))
 	}
 	first = -1
 	for i := range p.r {
@@ -173,11 +173,11 @@ func (p *points) terminal() *Deviation {
 	n := len(p.r)
 	var most, squares float64
 	for i := 1; i < n-1; i++ { // the ends lie on the chord
-		most = math.Max(most, math.Abs(p.r[i]))
+		most = max(most, math.Abs(p.r[i]))
 	}
 	for i := 1; i < n-1; i++ {
 		if share := p.d[i] / p.d[n-1]; math.Abs(p.r[i]) >= most-p.tolerance {
-			squares = math.Max(squares, p.square(i, 1)+p.square(0, 1-share)+p.square(n-1, share))
+			squares = max(squares, p.square(i, 1)+p.square(0, 1-share)+p.square(n-1, share))
 		}
 	}
 	return p.deviation(most, 0, 0, squares)
@@ -203,7 +203,7 @@ func (p *points) leastSquares() *Deviation {
 	var squares float64
 	for _, j := range []int{first, last} {
 		d := p.d[j] - m
-		squares = math.Max(squares, p.square(j, 1)*(1-2*(1/n+d*d/sxx))+a/n/n+2*d*b/n/sxx+d*d*c/sxx/sxx)
+		squares = max(squares, p.square(j, 1)*(1-2*(1/n+d*d/sxx))+a/n/n+2*d*b/n/sxx+d*d*c/sxx/sxx)
 	}
 	return p.deviation(most, line.Intercept, line.Slope, squares)
 }
@@ -258,7 +258,7 @@ func (p *points) zeroBased() *Deviation {
 				continue
 			}
 			a, b := p.d[i], p.d[j]
-			squares = math.Max(squares, p.square(i, b/(a+b))+p.square(j, a/(a+b))+p.square(0, (a-b)/(a+b)))
+			squares = max(squares, p.square(i, b/(a+b))+p.square(j, a/(a+b))+p.square(0, (a-b)/(a+b)))
 		}
 	}
 	return p.deviation(best, 0, slope, squares)
@@ -272,12 +272,12 @@ func (p *points) independent() *Deviation {
 		from, to, opposite int // an edge, and the point across
 		slope, width       float64
 	}
-	var all []contact
+	all := make([]contact, 0, len(upper)+len(lower))
 	best := math.Inf(1)
 	try := func(from, to, opposite int, b float64) {
 		w := math.Abs((p.r[from] - p.r[opposite]) - b*(p.d[from]-p.d[opposite]))
 		all = append(all, contact{from, to, opposite, b, w})
-		best = math.Min(best, w)
+		best = min(best, w)
 	}
 	for k := range len(upper) - 1 {
 		b := slope(upper, k)
@@ -293,7 +293,7 @@ func (p *points) independent() *Deviation {
 			continue
 		}
 		share := (p.d[c.opposite] - p.d[c.from]) / (p.d[c.to] - p.d[c.from])
-		squares = math.Max(squares, p.square(c.opposite, 0.5)+p.square(c.from, (1-share)/2)+p.square(c.to, share/2))
+		squares = max(squares, p.square(c.opposite, 0.5)+p.square(c.from, (1-share)/2)+p.square(c.to, share/2))
 		if c.width == best {
 			b = c.slope
 			middle = (p.r[c.from] + p.r[c.opposite] - b*(p.d[c.from]+p.d[c.opposite])) / 2
@@ -304,7 +304,7 @@ func (p *points) independent() *Deviation {
 
 // hull returns the indices of the upper (sign 1) or lower (-1) convex hull.
 func (p *points) hull(sign float64) []int {
-	var h []int
+	h := make([]int, 0, len(p.r))
 	for i := range p.r {
 		for len(h) > 1 {
 			a, b := h[len(h)-2], h[len(h)-1]

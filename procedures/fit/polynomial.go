@@ -144,3 +144,93 @@ func (f Polynomial) Straight() (Straight, bool) {
 		Covariance: v[0][1], Residual: f.Residual, DoF: f.DoF,
 	}, true
 }
+
+// highest is the highest order that describe knows.
+const highest = 3
+
+// describe is FitPolynomial without stated noise, up to the third order, in
+// float64 and a twentieth of the time: polynomials of t that are orthogonal
+// over the readings come one from the other, P' = (t - a) P - b P”, and each
+// coefficient is found from what the ones before it have left. Readings carry
+// far fewer digits than either has. Source: Forsythe, J. SIAM 5 (1957) 74, from
+// memory.
+func describe(x, y []float64, order int) (Model, error) {
+	n := len(x)
+	if order < 0 || order > highest || len(y) != n || n < order+2 {
+		return Model{}, fmt.Errorf("%w: order %d for %d readings", ErrModel, order, n)
+	}
+	low, high := slices.Min(x), slices.Max(x)
+	middle, half := low+(high-low)/2, (high-low)/2
+	work := make([]float64, 4*n)
+	t, left, p, before := work[:n], work[n:2*n], work[2*n:3*n], work[3*n:]
+	for i := range x {
+		t[i], p[i] = (x[i]-middle)/half, 1
+	}
+	copy(left, y)
+	var powers, last [highest + 1]float64 // of x, in P and the one before it
+	powers[0] = 1
+	var b [highest + 1]float64
+	var v [highest + 1][highest + 1]float64
+	norm := 0.0
+	for k := 0; ; k++ {
+		var square, turn, share float64
+		for i := range p {
+			square += p[i] * p[i]
+			turn += t[i] * p[i] * p[i]
+			share += left[i] * p[i]
+		}
+		if !(square > float64(n)*negligible*negligible) {
+			return Model{}, fmt.Errorf("%w: fewer distinct x than coefficients", ErrModel)
+		}
+		c := share / square
+		for i := range left {
+			left[i] -= c * p[i]
+		}
+		for i := range k + 1 {
+			b[i] += c * powers[i]
+			for j := range k + 1 {
+				v[i][j] += powers[i] * powers[j] / square
+			}
+		}
+		if k == order {
+			break
+		}
+		a, ratio := turn/square, 0.0
+		if k > 0 {
+			ratio = square / norm
+		}
+		norm = square
+		for i := range p {
+			p[i], before[i] = (t[i]-a)*p[i]-ratio*before[i], p[i]
+		}
+		next := powers
+		for j := range next {
+			next[j] = (-middle/half-a)*powers[j] - ratio*last[j]
+			if j > 0 {
+				next[j] += powers[j-1] / half
+			}
+		}
+		powers, last = next, powers
+	}
+	m := Model{Coefficients: slices.Clone(b[:order+1]), DoF: n - order - 1, Estimated: true}
+	var ss float64
+	for _, r := range left {
+		ss += r * r
+	}
+	m.Residual = math.Sqrt(ss / float64(m.DoF))
+	ok := usable(m.Residual) && usable(m.Coefficients...)
+	all := make([]float64, (order+1)*(order+1))
+	m.Covariance = make([][]float64, order+1)
+	for i := range m.Covariance {
+		row := all[i*(order+1) : (i+1)*(order+1)]
+		for j := range row {
+			row[j] = v[i][j] * m.Residual * m.Residual
+		}
+		m.Covariance[i] = row
+		ok = ok && usable(row...)
+	}
+	if !ok {
+		return Model{}, fmt.Errorf("%w: its figures are too large for the numbers of a computer", ErrModel)
+	}
+	return m, nil
+}

@@ -307,3 +307,54 @@ func TestLineRefuses(t *testing.T) {
 		t.Errorf("two readings gave %v", l)
 	}
 }
+
+// The description in float64 is the polynomial in 32 digits, to what readings
+// of such sizes hold.
+func TestDescribe(t *testing.T) {
+	r := rand.New(rand.NewPCG(11, 12))
+	for range 300 {
+		n, order := 6+r.IntN(40), r.IntN(4)
+		x, y := make([]float64, n), make([]float64, n)
+		at, wide := 400*r.NormFloat64(), math.Pow(10, 4*r.Float64()-1)
+		for i := range x {
+			x[i] = at + wide*r.Float64()
+			y[i] = 1 + 1.01*x[i] + r.NormFloat64()
+		}
+		got, err := describe(x, y, order)
+		if err != nil {
+			t.Fatal(err)
+		}
+		want, err := FitPolynomial(x, y, order, Noise{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		// Powers of x far from zero cancel: one digit in the values costs as many
+		// in the coefficients as their uncertainties exceed those of the values.
+		tol := 1e-12 * math.Pow(1+math.Abs(at)/wide, float64(order))
+		for i := range want.Coefficients {
+			u := math.Sqrt(want.Covariance[i][i])
+			if math.Abs(got.Coefficients[i]-want.Coefficients[i]) > tol*(math.Abs(want.Coefficients[i])+u) {
+				t.Errorf("at %v over %v, order %d, power %d: %v, want %v", at, wide, order, i, got.Coefficients[i], want.Coefficients[i])
+			}
+			for j := range want.Coefficients {
+				uu := u * math.Sqrt(want.Covariance[j][j])
+				if math.Abs(got.Covariance[i][j]-want.Covariance[i][j]) > tol*uu {
+					t.Errorf("covariance %d %d: %v, want %v", i, j, got.Covariance[i][j], want.Covariance[i][j])
+				}
+			}
+		}
+		if math.Abs(got.Residual-want.Residual) > 1e-10*want.Residual || got.DoF != want.DoF {
+			t.Errorf("residual %v, want %v", got.Residual, want.Residual)
+		}
+	}
+	for name, f := range map[string]func() (Model, error){
+		"two distinct x for three": func() (Model, error) { return describe([]float64{1, 2, 1, 2, 1}, make([]float64, 5), 2) },
+		"equal x":                  func() (Model, error) { return describe([]float64{1, 1, 1, 1, 1}, make([]float64, 5), 1) },
+		"none to spare":            func() (Model, error) { return describe([]float64{1, 2, 3}, make([]float64, 3), 2) },
+		"fourth order":             func() (Model, error) { return describe(make([]float64, 9), make([]float64, 9), 4) },
+	} {
+		if m, err := f(); !errors.Is(err, ErrModel) || m.Coefficients != nil {
+			t.Errorf("%s: %v", name, err)
+		}
+	}
+}

@@ -68,9 +68,9 @@ type Figures struct {
 	Points          []AtSet
 	LargestError    *Located
 	ErrorAfterZero  *Located
-	AsRead          Extremes // y - p
-	AfterZero       Extremes // the same, less the error at the zeroing
-	Curvature       *Polynomial
+	AsRead          Extremes  // y - p
+	AfterZero       Extremes  // the same, less the error at the zeroing
+	Curvature       *Model    // coefficients of the powers of p, from the constant up
 	Sets            []float64 // set pressure of each reading as used; NaN without one
 	Reservations    []Reservation
 	Undetermined    []Undetermined
@@ -137,7 +137,7 @@ func Static(d Data) (Figures, error) {
 	if err := refuse(d); err != nil {
 		return Figures{}, err
 	}
-	w := work{Data: d}
+	w := work{Data: d, scratch: scratch{piece: len(d.UUT) + 32}}
 	w.number()
 	grouped := w.group()
 	w.inTime(grouped)
@@ -226,9 +226,9 @@ func (w *work) extremes(zero float64) (Extremes, *Located) {
 	high, low := math.Inf(-1), math.Inf(1)
 	for i := range w.UUT {
 		e := w.UUT[i] - w.Reference[i] - zero
-		high, low = math.Max(high, e), math.Min(low, e)
+		high, low = max(high, e), min(low, e)
 	}
-	most := math.Max(high, -low)
+	most := max(high, -low)
 	highest, lowest, largest := -1, -1, -1
 	tie := w.tie(most)
 	for i := range w.UUT {
@@ -256,8 +256,8 @@ func (w *work) curvature(f *Figures) {
 	if order < 2 {
 		return
 	}
-	if p, err := FitPolynomial(w.Reference, w.UUT, order, Noise{}); err == nil {
-		f.Curvature = &p
+	if m, err := describe(w.Reference, w.UUT, order); err == nil {
+		f.Curvature = &m
 	}
 }
 
@@ -287,7 +287,7 @@ func (w *work) linearity(f *Figures) {
 // its standard uncertainty when that of a cell is 1. Not-a-number for a set
 // pressure between the ends that was read in one leg only though there are two.
 func (w *work) averages(line Straight) (y, u []float64) {
-	y, u = make([]float64, len(w.levels)), make([]float64, len(w.levels))
+	y, u = make([]float64, len(w.levels)), w.floats(len(w.levels))
 	legs := make([]struct{ sum, n float64 }, 2*len(w.levels))
 	for _, c := range w.cells {
 		leg := &legs[2*c.level+c.leg]

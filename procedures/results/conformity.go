@@ -95,7 +95,11 @@ func linearityOf(l fit.Linearities) (Linearity, Lines) {
 		if d == nil {
 			return nil, nil
 		}
-		return &d.Value, &Line{d.Intercept, d.Slope, d.Standard}
+		line := &Line{Intercept: d.Intercept, Slope: d.Slope}
+		if !math.IsNaN(d.Standard) {
+			line.Standard = &d.Standard
+		}
+		return &d.Value, line
 	}
 	var values Linearity
 	var lines Lines
