@@ -5,11 +5,7 @@
 // Sample it.
 package uncertainty
 
-import (
-	"math"
-
-	"gonum.org/v1/gonum/stat/distuv"
-)
+import "math"
 
 // The distributions that an Input may name.
 const (
@@ -69,18 +65,4 @@ func Combine(inputs []Input) Combined {
 	r.Coverage = coverage(r.DegreesOfFreedom)
 	r.Expanded = r.Coverage * r.Standard
 	return r
-}
-
-// manyDegrees is from where on the normal distribution stands for Student's t:
-// the factor is then 2.4e-8 too small, while the library's own t loses its
-// digits and at 1e15 is wrong altogether (3.23 for 1.96). Degrees of freedom
-// like that are met: one small noise beside large contributions.
-const manyDegrees = 1e8
-
-// coverage is the 97.5 % quantile of Student's t.
-func coverage(dof float64) float64 {
-	if !(dof < manyDegrees) {
-		return 1.959963984540054
-	}
-	return distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Quantile(0.975)
 }

@@ -62,14 +62,25 @@ func TestCombineEndGauge(t *testing.T) {
 	})
 }
 
-// Student's t for 95 % (one to ten as tables print them, many degrees of freedom by scipy
-// 1.10.1), out to degrees of freedom where the library's own t breaks down.
+// Student's t for 95 % by mpmath 1.3.0, those of one, two, three, twelve also as
+// tables print them; out to degrees of freedom where other ways break down
+// (1e9 and more: 1.959963984540054 + 2.3722712/dof).
 func TestCoverage(t *testing.T) {
 	for dof, want := range map[float64]float64{
-		1: 12.706204736432095, 2: 4.302652729749464, 5: 2.570581835636314, 10: 2.2281388519649385, 1e4: 1.960201239890626,
-		1e6: 1.9599663568141066, 1e9: 1.959963986912325, 1e15: 1.959963984540054, 1e20: 1.959963984540054, math.Inf(1): 1.959963984540054,
+		1: 12.7062047361747046, 1.3: 7.50052932556203375, 2: 4.30265272974946385, 2.5: 3.57465484200368322,
+		3: 3.18244630528370959, 4: 2.77644510519779436, 5: 2.570581835636314, 7.77: 2.31793992989155228, 10: 2.22813885198627475,
+		12: 2.17881282966722887, 28: 2.04840714179524516, 100.5: 1.9838506553357998, 1047.28429: 1.96223172468381314,
+		1e4: 1.96020123989062626, 1e6: 1.95996635681410704, 1e9: 1.959963986912325, 1e15: 1.959963984540054,
+		1e20: 1.959963984540054, math.Inf(1): 1.959963984540054,
 	} {
-		compare(t, []figure{{"k", coverage(dof), want, 2e-8}})
+		compare(t, []figure{{"k", coverage(dof), want, 4e-15}})
+	}
+	// Below one, and where none is.
+	compare(t, []figure{{"k", coverage(0.5), 164.55767348048853, 1e-9}})
+	for _, dof := range []float64{0, -1, math.NaN()} {
+		if k := coverage(dof); !math.IsInf(k, 1) {
+			t.Errorf("%v degrees of freedom gave %v", dof, k)
+		}
 	}
 	// A noise of a ten-thousandth beside a certificate: nu_eff is 9e16.
 	got := Combine([]Input{{Standard: 1, Sensitivity: 1}, {Standard: 1e-4, Sensitivity: 1, DegreesOfFreedom: 9}})
