@@ -39,6 +39,13 @@ func (r Reading) Middle() line.Instant { return r.Sent + (r.At-r.Sent)/2 }
 // asked of an instrument.
 var ErrNotStated = errors.New("the bench file states no way to ask for it")
 
+// Refusal is the error of an instrument that understood that it was told
+// something, and did not do it; Refused gives what it had against it.
+type Refusal interface {
+	error
+	Refused() []string
+}
+
 // Identified is an instrument that can say who it is.
 type Identified interface {
 	// Identify asks for the identity and refuses one that is not expected.
@@ -105,9 +112,12 @@ type Rig struct {
 	// Role names the instrument on a port as the operator knows it, and says
 	// which UUT's it is: an index of UUTs, or -1 for an instrument of all.
 	Role func(line.PortID) (role string, uut int)
-	// Reconnect opens a port that is gone once more, under the name in the
-	// bench file. Who answers there must be asked again.
-	Reconnect func(line.PortID) error
+	// Reconnect opens a port that is gone once more, under its name or, when
+	// one is given, under another. Who answers there must be asked again.
+	Reconnect func(id line.PortID, name string) error
+	// Moved names the port where an instrument that is gone is now, as far as
+	// the system tells; false when it does not.
+	Moved func(line.PortID) (name string, ok bool)
 	// EmergencyVent writes the vent commands of source and valve at once, on
 	// every port, without waiting for answers or for the record.
 	EmergencyVent func()

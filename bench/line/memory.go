@@ -3,6 +3,7 @@ package line
 import (
 	"container/heap"
 	"context"
+	"slices"
 	"time"
 )
 
@@ -82,12 +83,29 @@ func (m *Memory) Next(ctx context.Context, until Instant) (Event, error) {
 			break
 		}
 		m.now = max(m.now, at)
-		if data := w.machine.Emit(at); len(data) > 0 {
+		data := w.machine.Emit(at)
+		if l, ok := w.machine.(Leaving); ok && l.Left() {
+			m.unplug(w)
+		}
+		if len(data) > 0 {
 			return Event{At: m.now, Kind: KindBytes, Port: w.port, Data: data}, nil
 		}
 	}
 	m.now = max(m.now, until)
 	return Event{}, ErrDeadline
+}
+
+// Leaving is a machine that can be unplugged: after an Emit, Left says so, and
+// the port is gone until it is connected again.
+type Leaving interface {
+	Machine
+	Left() bool
+}
+
+// unplug takes a wire away and tells that its port is gone.
+func (m *Memory) unplug(w *wire) {
+	m.wires = slices.DeleteFunc(m.wires, func(x *wire) bool { return x == w })
+	m.Post(0, Event{Kind: KindGone, Port: w.port, Err: ErrGone})
 }
 
 // due finds the wire whose machine puts out next.
@@ -112,13 +130,23 @@ func (m *Memory) Send(port PortID, data []byte) int64 {
 		return m.writes
 	}
 	data = append([]byte(nil), data...)
-	if w.transit == 0 {
+	takes := w.transit
+	if b, ok := w.machine.(Blocking); ok {
+		takes += b.Blocks(m.now)
+	}
+	if takes == 0 {
 		w.machine.Receive(m.now, data)
 	} else {
-		m.push(w.transit, Event{Data: data}, w.machine)
+		m.push(takes, Event{Data: data}, w.machine)
 	}
-	m.Post(w.transit, written)
+	m.Post(takes, written)
 	return m.writes
+}
+
+// Blocking is a machine whose port may take nothing for a while.
+type Blocking interface {
+	Machine
+	Blocks(at Instant) time.Duration
 }
 
 // Post puts an event into the inbox after a delay of virtual time.

@@ -73,7 +73,7 @@ func (w *opening) dialogue(role string, uut int, d Dialogue) (*line.Line, scpi.S
 
 func (f *File) open(o Opener) (*bench.Rig, error) {
 	w := &opening{o: o, engine: line.NewEngine(o.Inbox()), shared: map[string]*lines.Port{}}
-	rig := &bench.Rig{Engine: w.engine, Inbox: o.Inbox(), Close: o.Close, Role: w.role, Reconnect: w.reconnect}
+	rig := &bench.Rig{Engine: w.engine, Inbox: o.Inbox(), Close: o.Close, Role: w.role, Reconnect: w.reconnect, Moved: w.moved}
 	l, s, err := w.dialogue("reference", -1, f.Reference.Dialogue)
 	if err != nil {
 		return nil, err
@@ -166,15 +166,33 @@ func (w *opening) role(id line.PortID) (string, int) {
 // ErrNoSuchPort: a port that the bench file does not name.
 var ErrNoSuchPort = errors.New("the bench has no such port")
 
-// reconnect opens a port that has gone, under its name in the bench file.
-func (w *opening) reconnect(id line.PortID) error {
+// reconnect opens a port that has gone, under its name or another.
+func (w *opening) reconnect(id line.PortID, name string) error {
 	if id < 1 || int(id) > len(w.ports) {
 		return ErrNoSuchPort
 	}
-	p := w.ports[id-1]
-	if err := w.o.Connect(id, p.port, p.baud); err != nil {
-		return fmt.Errorf("open the %s on %s once more: %w", p.role, p.port, err)
+	p := &w.ports[id-1]
+	if name == "" {
+		name = p.port
 	}
+	if err := w.o.Connect(id, name, p.baud); err != nil {
+		return fmt.Errorf("open the %s on %s once more: %w", p.role, name, err)
+	}
+	p.port = name
 	p.line.Again()
 	return nil
+}
+
+// Mover is an Opener that can tell where an instrument is now whose port has
+// gone, by what the system knows of the adapter.
+type Mover interface {
+	Moved(name string) (now string, ok bool)
+}
+
+func (w *opening) moved(id line.PortID) (string, bool) {
+	m, ok := w.o.(Mover)
+	if !ok || id < 1 || int(id) > len(w.ports) {
+		return "", false
+	}
+	return m.Moved(w.ports[id-1].port)
 }

@@ -105,10 +105,12 @@ func newReference(v *volume, d drawn) *dialogue {
 		g.taken += x + 0.003*g.zeroed.NormFloat64()
 		return nil
 	}
-	return newDialogue(v, d.seed, RoleReference, identityReference,
+	reference := newDialogue(v, d.seed, RoleReference, identityReference,
 		command{header: "MEASure:PRESsure?", ask: read, takes: [2]time.Duration{20 * time.Millisecond, 60 * time.Millisecond}},
 		command{header: "CALibration:ZERO", do: zero},
 	)
+	reference.forget = func(line.Instant) { g.taken = 0 }
+	return reference
 }
 
 // signed writes two decimals and always a sign.
@@ -131,11 +133,13 @@ func newSource(v *volume, d drawn) *dialogue {
 		v.set(at, p)
 		return nil
 	}
-	return newDialogue(v, d.seed, RoleSource, identitySource,
+	source := newDialogue(v, d.seed, RoleSource, identitySource,
 		command{header: "SOURce:PRESsure", number: true, do: set},
 		command{header: "SOURce:HOLD", do: func(at line.Instant, _ float64) *fault { v.hold(at); return nil }},
 		command{header: "SOURce:VENT", do: func(at line.Instant, _ float64) *fault { v.vent(at); return nil }},
 	)
+	source.forget = v.vent // it vents when it is switched on
+	return source
 }
 
 func newValve(v *volume, d drawn) *dialogue {

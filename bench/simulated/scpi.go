@@ -31,6 +31,17 @@ type dialogue struct {
 	errors   []string
 	answers  []answer
 	finished line.Instant // of the last answer
+	on       line.Instant // when it was switched on, if not before the start
+	forget   func(line.Instant)
+}
+
+// restart switches the instrument off and on.
+func (d *dialogue) restart(at line.Instant) {
+	d.message, d.overrun, d.errors, d.answers = nil, false, nil, nil
+	d.on, d.finished = at, at
+	if d.forget != nil {
+		d.forget(at)
+	}
 }
 
 // command is one header and what it does. A question has ask, else do is set.
@@ -76,6 +87,9 @@ func newDialogue(v *volume, seed uint64, role, identity string, commands ...comm
 		command{header: "SYSTem:ERRor?", ask: nextError, takes: quick},
 		command{header: "SYSTem:ERRor:NEXT?", ask: nextError, takes: quick},
 		command{header: "SYSTem:UPTime?", takes: quick, ask: func(at line.Instant) func() string {
+			if d.on > 0 {
+				return fixed(strconv.Itoa(int(at.Sub(d.on).Seconds())))
+			}
 			return fixed(strconv.Itoa(int(poweredBefore + at.Seconds())))
 		}},
 	)

@@ -33,6 +33,7 @@ const (
 	KindLine        = "line"        // Line
 	KindPulse       = "pulse"       // Pulse
 	KindVent        = "vent"        // Vent
+	KindVoid        = "void"        // Void
 	KindFault       = "fault"       // Fault
 	KindReservation = "reservation" // Reservation
 	KindOverride    = "override"    // Override
@@ -287,6 +288,13 @@ type Pulse struct {
 // Vent says that the volume was opened to atmosphere, and why.
 type Vent struct {
 	Why string `json:"why"`
+}
+
+// Void says that what was taken from a line on does not count: the run was
+// interrupted there and took it again. The lines stay in the record.
+type Void struct {
+	Since int64  `json:"since"` // points, holds and captures of this line or later
+	Why   string `json:"why"`
 }
 
 // Fault is something of the bench or the run, never of the UUT, that leaves

@@ -36,6 +36,9 @@ func Compute(events []record.Event) (Results, error) {
 	if r.Leak, err = g.leak(s); err != nil {
 		return Results{}, err
 	}
+	if g.outliers > 0 {
+		r.Reservations = append(r.Reservations, Reason{"outliers", fmt.Sprintf("%d readings that lie far from their neighbours, as a byte damaged on the line makes them, were left out", g.outliers)})
+	}
 	if g.definition == nil {
 		return r, nil
 	}
@@ -78,6 +81,10 @@ func (g *gathered) leak(s *scale) (*Leak, error) {
 			}
 		}
 	}
+	if keep, n := withoutOutliersOfTrend(t, p, s.resolutionReference/s.perMmHg()); n > 0 {
+		t, p = kept(t, keep), kept(p, keep)
+		g.outliers += n
+	}
 	fitted, err := ready.LeakRate(t, p)
 	if err != nil {
 		out.Reason = err.Error()
@@ -112,6 +119,10 @@ func (j *judge) verdict(limits []Limit) (verdict.Verdict, []Reason) {
 			reasons = append(reasons, Reason{"incomplete", "the run was not finished"})
 		}
 		fault = true
+	}
+	if doubt, ok := j.doubtfulUnit(); ok {
+		fault = true
+		reasons = append(reasons, doubt)
 	}
 	outcomes := make([]verdict.Outcome, 0, len(limits))
 	for _, l := range limits {

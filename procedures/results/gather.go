@@ -2,6 +2,7 @@ package results
 
 import (
 	"fmt"
+	"slices"
 	"time"
 
 	"kymobench/bench/line"
@@ -25,12 +26,14 @@ type gathered struct {
 	points       []record.Point
 	holds        []record.Hold
 	captures     []record.Capture
+	lines        takenLines
 	faults       []Reason
 	reservations []Reason
 	overrides    []record.Override
 	finished     *record.Finished
 	line         *record.Line  // of data without a procedure
 	pulse        *record.Pulse // asked for; nil: the program's
+	outliers     int           // readings left out
 }
 
 // reading is an asked reading with the time of its line.
@@ -83,15 +86,22 @@ func (g *gathered) take(e record.Event) error {
 		g.blocks[e.Line] = b
 		return err
 	case record.KindPoint:
+		g.lines.points = append(g.lines.points, e.Line)
 		return add(e, &g.points)
 	case record.KindHold:
+		g.lines.holds = append(g.lines.holds, e.Line)
 		return add(e, &g.holds)
 	case record.KindCapture:
+		g.lines.captures = append(g.lines.captures, e.Line)
 		return add(e, &g.captures)
 	case record.KindLine:
 		return keep(e, &g.line)
 	case record.KindPulse:
 		return keep(e, &g.pulse)
+	case record.KindVoid:
+		v, err := record.Decode[record.Void](e)
+		g.void(v.Since)
+		return err
 	case record.KindFault:
 		f, err := record.Decode[record.Fault](e)
 		g.faults = append(g.faults, Reason{Code: f.Code, Text: f.Text})
@@ -106,6 +116,25 @@ func (g *gathered) take(e record.Event) error {
 		return keep(e, &g.finished)
 	}
 	return nil
+}
+
+// takenLines are the lines in which points, holds and captures stand.
+type takenLines struct{ points, holds, captures []int64 }
+
+// void forgets what was taken from a line on.
+func (g *gathered) void(since int64) {
+	n := before(g.lines.points, since)
+	g.points, g.lines.points = g.points[:n], g.lines.points[:n]
+	n = before(g.lines.holds, since)
+	g.holds, g.lines.holds = g.holds[:n], g.lines.holds[:n]
+	n = before(g.lines.captures, since)
+	g.captures, g.lines.captures = g.captures[:n], g.lines.captures[:n]
+}
+
+// before counts the lines before since; lines rise.
+func before(lines []int64, since int64) int {
+	n, _ := slices.BinarySearch(lines, since)
+	return n
 }
 
 func keep[T any](e record.Event, into **T) error {

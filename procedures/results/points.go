@@ -57,6 +57,10 @@ func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
 	if len(ps) == 0 {
 		return t, fmt.Errorf("point without a reading of the reference")
 	}
+	if keep, n := withoutOutliers(ps, s.resolutionReference); n > 0 {
+		times, ps = kept(times, keep), kept(ps, keep)
+		g.outliers += n
+	}
 	t.nP = len(ps)
 	t.p, t.slope, t.vP, t.dofP = trend(times, ps)
 	if pt.UUT != "" {
@@ -71,6 +75,8 @@ func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
 	if len(ys) == 0 {
 		return t, fmt.Errorf("point without a reading of the UUT")
 	}
+	ys, n := dropOutliers(ys, s.resolutionUUT)
+	g.outliers += n
 	t.nY = len(ys)
 	t.y = mean(ys)
 	means := blockMeans(ys, blockMean)

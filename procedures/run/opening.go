@@ -180,7 +180,7 @@ func (s *session) warmUp(ctx context.Context, stage procedures.WarmUp) error {
 			return nil
 		}
 		if err != nil {
-			return &Fault{Code: "uptime", Text: "the " + role + " does not say how long it has been on", Err: err}
+			return s.stopOr(ctx, &Fault{Code: "uptime", Text: "the " + role + " does not say how long it has been on", Err: err}, err)
 		}
 		told++
 		shortest = min(shortest, up)

@@ -2,10 +2,12 @@ package run
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"time"
 
+	"kymobench/bench"
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
 	"kymobench/procedures"
@@ -30,18 +32,28 @@ type asked struct {
 	uuts   []float64 // Pa, mean since the reading before; NaN if it sent nothing
 }
 
-// read asks the reference once, records the answer and holds it against the
-// pressures never to be exceeded.
+// read asks the reference, records the answer and holds it against the
+// pressures never to be exceeded. A reading that jumps and that no UUT confirms
+// is asked for again: it stands in the record, and the second one counts.
 func (s *session) read(ctx context.Context) (asked, error) {
-	r, err := s.Rig.Reference.Read(ctx)
+	r, err := s.readOnce(ctx)
 	if err != nil {
-		if ctx.Err() != nil || isStop(err) {
-			return asked{}, err
-		}
-		return asked{}, &Fault{Code: "reference_lost", Text: "the reference gives no reading", Err: err}
+		return asked{}, err
 	}
 	p := quantity.Pressure(r.Value.SI)
-	if err := s.watchPressure("reference", p, r.Text); err != nil {
+	if jump := math.Abs(float64(p - s.last)); jump > alonePa && !s.confirmed(p) {
+		if err := s.append(record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text}); err != nil {
+			return asked{}, err
+		}
+		if r, err = s.readOnce(ctx); err != nil {
+			return asked{}, err
+		}
+		p = quantity.Pressure(r.Value.SI)
+	}
+	if err := s.checkFollows(r.Text, p); err != nil {
+		return asked{}, err
+	}
+	if err := s.checkDisk(); err != nil {
 		return asked{}, err
 	}
 	n := len(s.units)
@@ -66,18 +78,40 @@ func (s *session) read(ctx context.Context) (asked, error) {
 	return a, nil
 }
 
+// readOnce asks the reference for one reading and watches it.
+func (s *session) readOnce(ctx context.Context) (bench.Reading, error) {
+	r, err := s.Rig.Reference.Read(ctx)
+	if err != nil {
+		return r, s.stopOr(ctx, &Fault{Code: "reference_lost", Text: "the reference gives no reading", Err: err}, err)
+	}
+	p := quantity.Pressure(r.Value.SI)
+	return r, s.watchPressure("reference", p, r.Text, !s.confirmed(p))
+}
+
+// checkDisk holds the disk against the longest it may lag behind.
+func (s *session) checkDisk() error {
+	for _, u := range s.live() {
+		if late := u.writer.Behind(s.now()); late > record.LongestUnsynced {
+			return &Fault{Code: "disk_slow", Text: fmt.Sprintf("the disk has not taken what was written %v ago", late.Round(100*time.Millisecond))}
+		}
+	}
+	return nil
+}
+
 // next waits until it is time for the reading after this one.
 func (s *session) next(ctx context.Context, a asked) error {
 	return s.pause(ctx, a.sent.Add(readEvery))
 }
 
 // reach asks the source for a pressure and reads the reference until it is
-// within the window of it.
+// within the window of it. The reference decides, not the source's word: a
+// source that has not brought the pressure in a third of the time is told once
+// more, and once more after another.
 func (s *session) reach(ctx context.Context, p, window quantity.Pressure, longest time.Duration) (asked, error) {
-	if err := s.Rig.Source.Set(ctx, p); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Source.Set(ctx, p) }); err != nil {
 		return asked{}, s.sourceFault(ctx, err)
 	}
-	until := s.now().Add(longest)
+	until, tell := s.now().Add(longest), s.now().Add(longest/3)
 	for {
 		a, err := s.read(ctx)
 		if err != nil {
@@ -86,9 +120,18 @@ func (s *session) reach(ctx context.Context, p, window quantity.Pressure, longes
 		if math.Abs(float64(a.p-p)) <= float64(window) {
 			return a, nil
 		}
-		if s.now() > until {
+		switch now := s.now(); {
+		case now > until:
 			return a, &Fault{Code: "not_reached", Text: fmt.Sprintf("%.0f mmHg were asked for and the reference reads %.1f mmHg after %v: the source says done and is not, or the volume is open",
 				p.MmHg(), a.p.MmHg(), longest)}
+		case now > tell:
+			tell = now.Add(longest / 3)
+			if err := s.closeValve(ctx); err != nil {
+				return a, err
+			}
+			if err := s.command(ctx, func() error { return s.Rig.Source.Set(ctx, p) }); err != nil {
+				return a, s.sourceFault(ctx, err)
+			}
 		}
 		if err := s.next(ctx, a); err != nil {
 			return a, err
@@ -96,11 +139,25 @@ func (s *session) reach(ctx context.Context, p, window quantity.Pressure, longes
 	}
 }
 
-func (s *session) sourceFault(ctx context.Context, err error) error {
-	if ctx.Err() != nil || isStop(err) {
-		return err
+// commandTries is how often a command is given that the instrument refuses: it
+// may have been damaged on its way.
+const commandTries = 3
+
+// command gives a command, again when the instrument had something against it.
+func (s *session) command(ctx context.Context, give func() error) error {
+	var err error
+	for range commandTries {
+		err = give()
+		var r bench.Refusal
+		if err == nil || ctx.Err() != nil || !errors.As(err, &r) {
+			return err
+		}
 	}
-	return &Fault{Code: "source", Text: "the pressure source did not do as asked", Err: err}
+	return err
+}
+
+func (s *session) sourceFault(ctx context.Context, err error) error {
+	return s.stopOr(ctx, &Fault{Code: "source", Text: "the pressure source did not do as asked", Err: err}, err)
 }
 
 // settled is the window of one UUT's point.

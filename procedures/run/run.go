@@ -76,6 +76,8 @@ type Fault struct {
 	Code string
 	Text string
 	Err  error
+
+	again again
 }
 
 func (f *Fault) Error() string {
@@ -136,22 +138,56 @@ func (s *session) work(ctx context.Context) error {
 	if err := s.closeValve(ctx); err != nil {
 		return err
 	}
-	for i, stage := range s.Definition.Stages {
-		number := i + 1
-		s.stage = number
-		s.Operator.Tell(fmt.Sprintf("stage %d of %d: %s", number, len(s.Definition.Stages), inWords(stage)))
-		if err := s.append(record.KindStage, record.Stage{Number: number, Kind: stage.Kind(), Phase: "begin"}); err != nil {
+	return s.stages(ctx)
+}
+
+// stages carries the stages out in order. A fault that may be taken again sends
+// the run back to the stage it spoils; what was taken from there on is void.
+func (s *session) stages(ctx context.Context) error {
+	begun := make([][]int64, len(s.Definition.Stages))
+	for i := 0; i < len(s.Definition.Stages); {
+		begun[i] = s.mark()
+		err := s.whole(ctx, i)
+		for f := spoilt(err); f != nil; f = spoilt(err) {
+			i = s.whereFrom(f, i)
+			err = s.interrupt(ctx, f, begun[i])
+			if err == nil {
+				break
+			}
+			if err == error(f) { // it may not be taken again once more
+				return err
+			}
+		}
+		if err != nil {
 			return err
 		}
-		if err := s.carry(ctx, stage); err != nil {
-			_ = s.append(record.KindStage, record.Stage{Number: number, Kind: stage.Kind(), Phase: "abandoned", Why: err.Error()})
-			return err
-		}
-		if err := s.append(record.KindStage, record.Stage{Number: number, Kind: stage.Kind(), Phase: "end"}); err != nil {
-			return err
+		if s.taken {
+			i++
 		}
 	}
 	return nil
+}
+
+// whole carries one stage out, from its first line to its last. taken says
+// afterwards whether it was; after an interruption it was not.
+func (s *session) whole(ctx context.Context, i int) error {
+	stage := s.Definition.Stages[i]
+	s.stage, s.taken = i+1, false
+	s.Operator.Tell(fmt.Sprintf("stage %d of %d: %s", s.stage, len(s.Definition.Stages), inWords(stage)))
+	if err := s.append(record.KindStage, record.Stage{Number: s.stage, Kind: stage.Kind(), Phase: "begin"}); err != nil {
+		return err
+	}
+	err := s.carry(ctx, stage)
+	if err == nil {
+		err = s.checkRestarts(ctx)
+	}
+	if err != nil {
+		s.Rig.EmergencyVent()
+		_ = s.append(record.KindStage, record.Stage{Number: s.stage, Kind: stage.Kind(), Phase: "abandoned", Why: err.Error()})
+		return err
+	}
+	s.taken = true
+	return s.append(record.KindStage, record.Stage{Number: s.stage, Kind: stage.Kind(), Phase: "end"})
 }
 
 func (s *session) carry(ctx context.Context, stage procedures.Stage) error {

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"math"
 	"time"
 
 	"kymobench/bench"
@@ -19,16 +20,22 @@ type session struct {
 	broken error // the records' first error; nothing is written after it
 	stage  int
 
+	taken         bool // the stage was, whole
+	interruptions int
+	gone          []line.PortID // ports to be opened again
+	booted        booted
+
 	answers   []record.Answer
-	releasing bool // a good line rings below zero after a release; only the reference is watched
-	last      quantity.Pressure
+	releasing bool              // a good line rings below zero after a release; only the reference is watched
+	last      quantity.Pressure // of the reference; not a number before its first reading
+	still     still             // of the reference
 }
 
 // within is how long the bookkeeping on a vented bench may take.
 const within = 10 * time.Second
 
 func newSession(settings Settings) *session {
-	s := &session{Settings: settings}
+	s := &session{Settings: settings, booted: booted{}, last: quantity.Pressure(math.NaN())}
 	for i, subject := range settings.Subjects {
 		s.units = append(s.units, newUnit(i, subject, settings.Rig.UUTs[i]))
 	}
@@ -114,14 +121,11 @@ func (s *session) tookDurable(e line.Event) error {
 	return nil
 }
 
-// tookGone hears that a port went away. A UUT's own port ends its own part.
+// tookGone hears that a port went away.
 func (s *session) tookGone(e line.Event) error {
-	role, uut := s.Rig.Role(e.Port)
-	f := &Fault{Code: "port_gone", Text: "the port of the " + role + " went away", Err: e.Err}
-	if uut >= 0 && s.units[uut].fault == nil && s.units[uut].writer != nil {
-		return s.leaveOut(s.units[uut], f)
-	}
-	return f
+	role, _ := s.Rig.Role(e.Port)
+	s.gone = append(s.gone, e.Port)
+	return &Fault{Code: "port_gone", Text: "the port of the " + role + " went away", Err: e.Err, again: fromZero}
 }
 
 // pause lets the time pass, taking what comes meanwhile.

@@ -29,7 +29,7 @@ func isStop(err error) bool {
 // zero vents, zeroes the reference, reads the UUT as it stands and takes that
 // reading for its zero, by arithmetic.
 func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
-	if err := s.Rig.Source.Vent(ctx); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Source.Vent(ctx) }); err != nil {
 		return s.sourceFault(ctx, err)
 	}
 	rule := s.rule(procedures.Static{ShareOfLimit: 0.05, StandardUncertainty: quantity.MmHg(0.2), LeastReadings: 8})
@@ -41,11 +41,8 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 	if p := readings[len(readings)-1].p.MmHg(); math.Abs(p) > ventedWithin {
 		return &Fault{Code: "not_vented", Text: fmt.Sprintf("the reference reads %.1f mmHg with the vent open: is the volume open to atmosphere?", p)}
 	}
-	if err := s.Rig.Reference.Zero(ctx); err != nil {
-		if isStop(err) || ctx.Err() != nil {
-			return err
-		}
-		return &Fault{Code: "reference_zero", Text: "the reference could not be zeroed", Err: err}
+	if err := s.command(ctx, func() error { return s.Rig.Reference.Zero(ctx) }); err != nil {
+		return s.stopOr(ctx, &Fault{Code: "reference_zero", Text: "the reference could not be zeroed", Err: err}, err)
 	}
 	if err := s.append(record.KindZeroing, record.Zeroing{Role: "reference", How: "device"}); err != nil {
 		return err
@@ -122,7 +119,7 @@ func (s *session) leak(ctx context.Context, stage procedures.Leak) error {
 	if _, err := s.reach(ctx, stage.At, quantity.MmHg(reachWindow), stage.LongestWait); err != nil {
 		return err
 	}
-	if err := s.Rig.Source.Hold(ctx); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Source.Hold(ctx) }); err != nil {
 		return s.sourceFault(ctx, err)
 	}
 	if err := s.readFor(ctx, stage.Settle, nil); err != nil {
@@ -174,10 +171,50 @@ func inMmHg(p quantity.Pressure) string {
 	return fmt.Sprintf("%v mmHg", math.Round(p.MmHg()*1e6)/1e6)
 }
 
-// static takes the points of every cycle, each as soon as it is ready.
+// static takes the points of every cycle, each as soon as it is ready. A fault
+// that spoils a part spoils its cycle, which is taken again after the UUT has
+// been exercised again: what it remembers of its last pressures is part of its
+// hysteresis.
 func (s *session) static(ctx context.Context, stage procedures.Static) error {
+	points := stage.Points()
+	each := len(stage.SetPressures)
+	for i := 0; i < len(points); i += each {
+		marks := s.mark()
+		err := s.cycle(ctx, stage, points, i, i+each)
+		for f := spoilt(err); f != nil && f.again == thisPart; f = spoilt(err) {
+			if err = s.interrupt(ctx, f, marks); err == error(f) {
+				return err
+			}
+			if err == nil {
+				err = s.exerciseAgain(ctx)
+			}
+			if err == nil {
+				marks = s.mark()
+				err = s.cycle(ctx, stage, points, i, i+each)
+			}
+		}
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// exerciseAgain does what the procedure's exercise stage does, if it has one.
+func (s *session) exerciseAgain(ctx context.Context) error {
+	for _, stage := range s.Definition.Stages {
+		if e, ok := stage.(procedures.Exercise); ok {
+			return s.exercise(ctx, e)
+		}
+	}
+	return nil
+}
+
+// cycle takes the points from one index to another.
+func (s *session) cycle(ctx context.Context, stage procedures.Static, all []procedures.Point, from, to int) error {
 	rule := s.rule(stage)
-	for i, point := range stage.Points() {
+	for i := from; i < to; i++ {
+		point := all[i]
 		if _, err := s.approach(ctx, stage, point, first(stage, i)); err != nil {
 			return err
 		}
@@ -199,7 +236,7 @@ func (s *session) static(ctx context.Context, stage procedures.Static) error {
 		}
 		readings := points[0].readings
 		s.Operator.Tell(fmt.Sprintf("  point %d of %d: %s at %.0f mmHg taken, reference %.2f mmHg",
-			i+1, len(stage.Points()), point.Leg, point.Set.MmHg(), readings[len(readings)-1].p.MmHg()))
+			i+1, len(all), point.Leg, point.Set.MmHg(), readings[len(readings)-1].p.MmHg()))
 	}
 	return nil
 }
@@ -256,7 +293,7 @@ func (s *session) step(ctx context.Context, stage procedures.Step) error {
 		}
 		s.Operator.Tell(fmt.Sprintf("  step %d of %d captured", number, stage.Count))
 	}
-	if err := s.Rig.Source.Vent(ctx); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Source.Vent(ctx) }); err != nil {
 		return s.sourceFault(ctx, err)
 	}
 	return s.durable(ctx)
@@ -280,7 +317,7 @@ func (s *session) release(ctx context.Context, stage procedures.Step, number int
 	if err := s.readFor(ctx, stage.Settle, nil); err != nil {
 		return err
 	}
-	if err := s.Rig.Source.Hold(ctx); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Source.Hold(ctx) }); err != nil {
 		return s.sourceFault(ctx, err)
 	}
 	if err := s.pause(ctx, s.now().Add(stage.Before)); err != nil {
@@ -289,7 +326,7 @@ func (s *session) release(ctx context.Context, stage procedures.Step, number int
 	commanded := s.now()
 	s.releasing = true
 	defer func() { s.releasing = false }()
-	if err := s.Rig.Valve.Release(ctx); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Valve.Release(ctx) }); err != nil {
 		return s.valveFault(ctx, err)
 	}
 	until := commanded.Add(stage.After)
@@ -319,7 +356,7 @@ func (s *session) capture(u *unit, stage procedures.Step, number int, commanded,
 	if !ok || len(samples) == 0 {
 		return false, s.leaveOut(u, &Fault{Code: "uut_silent", Text: fmt.Sprintf("%s sent nothing during the step", u.name())})
 	}
-	if !u.stream.whole(from, end) {
+	if !u.stream.whole(from, end) || frozen(samples) {
 		return false, nil
 	}
 	lines, err := s.blocks(u, samples)
@@ -333,15 +370,12 @@ func (s *session) capture(u *unit, stage procedures.Step, number int, commanded,
 }
 
 func (s *session) closeValve(ctx context.Context) error {
-	if err := s.Rig.Valve.Shut(ctx); err != nil {
+	if err := s.command(ctx, func() error { return s.Rig.Valve.Shut(ctx) }); err != nil {
 		return s.valveFault(ctx, err)
 	}
 	return nil
 }
 
 func (s *session) valveFault(ctx context.Context, err error) error {
-	if ctx.Err() != nil || isStop(err) {
-		return err
-	}
-	return &Fault{Code: "valve", Text: "the valve did not do as asked", Err: err}
+	return s.stopOr(ctx, &Fault{Code: "valve", Text: "the valve did not do as asked", Err: err}, err)
 }

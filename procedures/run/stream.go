@@ -15,6 +15,7 @@ type stream struct {
 	dropped int64   // samples before samples[0]
 	gaps    []int64 // numbers of the samples before which a line was refused
 	since   summary
+	still   still
 }
 
 type sample struct {
@@ -26,7 +27,9 @@ type sample struct {
 // keepSamples is how many samples are kept at least: half a minute at 1 kHz.
 const keepSamples = 32768
 
-func (s *stream) add(at line.Instant, text string, p float64) {
+// add takes a sample; reference is the reference's last reading, in Pa.
+func (s *stream) add(at line.Instant, text string, p, reference float64) {
+	s.still.says(text, reference)
 	if len(s.samples) >= 2*keepSamples {
 		n := copy(s.samples, s.samples[len(s.samples)-keepSamples:])
 		s.dropped += int64(len(s.samples) - n)
@@ -34,6 +37,14 @@ func (s *stream) add(at line.Instant, text string, p float64) {
 	}
 	s.samples = append(s.samples, sample{at, text, p})
 	s.since.add(p)
+}
+
+// latest is the last sample's pressure, in Pa; not a number before the first.
+func (s *stream) latest() float64 {
+	if len(s.samples) == 0 {
+		return math.NaN()
+	}
+	return s.samples[len(s.samples)-1].p
 }
 
 func (s *stream) gap() {

@@ -102,7 +102,7 @@ func (s *session) silent(u *unit) *Fault {
 	if n > 0 && s.now().Sub(u.stream.samples[n-1].at) <= silentAfter {
 		return nil
 	}
-	return &Fault{Code: "uut_silent", Text: fmt.Sprintf("the readings of %s have not come for %v: check cable, port and rate", u.name(), silentAfter)}
+	return &Fault{Code: "uut_silent", again: thisPart, Text: fmt.Sprintf("the readings of %s have not come for %v: check cable, port and rate", u.name(), silentAfter)}
 }
 
 // tookSample takes one of a UUT's lines as it comes, wherever the run waits,
@@ -117,26 +117,61 @@ func (s *session) tookSample(u *unit, r bench.Reading, err error) error {
 	if err != nil {
 		return &Fault{Code: "unit", Text: err.Error()}
 	}
-	u.stream.add(r.At, r.Text, p)
+	before := u.stream.latest()
+	u.stream.add(r.At, r.Text, p, float64(s.last))
 	if u.zeroed && !s.releasing && u.fault == nil {
-		return s.watchPressure(u.name(), quantity.Pressure(p-u.zero), r.Text)
+		alone := math.Abs(p-before) > alonePa && s.inside(quantity.Pressure(before-u.zero))
+		return s.watchPressure(u.name(), quantity.Pressure(p-u.zero), r.Text, alone)
 	}
 	return nil
 }
 
+// alonePa is how far a reading must lie from what confirms it to stand alone:
+// 10 mmHg, more than a pressure moves between two samples, and more than
+// reference and UUT differ on any UUT that is worth a run.
+const alonePa = 10 * 133.322387415
+
+// inside says that a pressure is one that may be.
+func (s *session) inside(p quantity.Pressure) bool {
+	return p <= s.Facts.Highest && p >= s.Facts.Lowest
+}
+
 // watchPressure vents at the first reading outside the pressures never to be
-// exceeded, before anything is written.
-func (s *session) watchPressure(role string, p quantity.Pressure, text string) error {
-	if p <= s.Facts.Highest && p >= s.Facts.Lowest && !math.IsNaN(float64(p)) {
+// exceeded, before anything is written. One that stands alone, with nothing
+// else that says so, may have been damaged on its way: then the part is taken
+// again, vented all the same.
+func (s *session) watchPressure(role string, p quantity.Pressure, text string, alone bool) error {
+	if s.inside(p) {
 		return nil
 	}
 	s.Rig.EmergencyVent()
-	code := "overpressure"
+	s.releasing = true // what rings now is the vent's doing; the reference is watched on
+	f := &Fault{Code: "overpressure"}
 	if p < s.Facts.Lowest {
-		code = "underpressure"
+		f.Code = "underpressure"
 	}
-	return &Fault{Code: code, Text: fmt.Sprintf("the %s read %.1f mmHg (%q), outside %.0f to %.0f mmHg never to be left: vented",
-		role, p.MmHg(), text, s.Facts.Lowest.MmHg(), s.Facts.Highest.MmHg())}
+	if alone {
+		f.again = thisPart
+	}
+	f.Text = fmt.Sprintf("the %s read %.1f mmHg (%q), outside %.0f to %.0f mmHg never to be left: vented",
+		role, p.MmHg(), text, s.Facts.Lowest.MmHg(), s.Facts.Highest.MmHg())
+	return f
+}
+
+// confirmed says whether a UUT that is zeroed reads about this pressure; true
+// when there is none to ask.
+func (s *session) confirmed(p quantity.Pressure) bool {
+	asked := false
+	for _, u := range s.live() {
+		if !u.zeroed {
+			continue
+		}
+		asked = true
+		if math.Abs(u.stream.latest()-u.zero-float64(p)) <= alonePa {
+			return true
+		}
+	}
+	return !asked
 }
 
 // keep writes the UUT's samples that belong to the readings as blocks, then

@@ -50,6 +50,9 @@ func (e *RefusedError) Error() string {
 	return fmt.Sprintf("%s refused %q: %s", e.Name, e.Command, strings.Join(e.Errors, "; "))
 }
 
+// Refused gives the errors as received.
+func (e *RefusedError) Refused() []string { return e.Errors }
+
 // ErrEndless: an error queue that had no end.
 var ErrEndless = errors.New("the error queue has no end")
 
