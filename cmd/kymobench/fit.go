@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"io"
 	"os"
-	"text/tabwriter"
 
 	"github.com/spf13/cobra"
 
@@ -90,59 +89,6 @@ func runFitStatic(path string, o fitStaticOptions, io streams) error {
 	return printStatic(io.out, r.Static)
 }
 
-type fitStepOptions struct {
-	edge string
-	json bool
-}
-
-func newFitStepCommand(io streams) *cobra.Command {
-	var o fitStepOptions
-	cmd := &cobra.Command{
-		Use:   "step FILE.csv",
-		Short: "Natural frequency and damping ratio from step responses",
-		Long: `Reads columns time_s, pressure_UNIT and an optional applied_UNIT; one or more
-steps in a file. Without --edge-time and without an applied column the width of
-the edge is fitted. Exit 4 when natural frequency and damping are undetermined.`,
-		Example: `  kymobench fit step release.csv --edge-time "2 ms"`,
-		Args:    oneFile,
-		RunE: func(cmd *cobra.Command, args []string) error {
-			if cmd.Flags().Changed("edge-time") && o.edge == "" {
-				return usagef("--edge-time is empty")
-			}
-			return runFitStep(args[0], o, io)
-		},
-	}
-	cmd.Flags().StringVar(&o.edge, "edge-time", "", `10-90 % time of the step itself, as "2 ms"; 0 for an ideal step`)
-	cmd.Flags().BoolVar(&o.json, "json", false, "one JSON document on stdout")
-	return cmd
-}
-
-func runFitStep(path string, o fitStepOptions, io streams) error {
-	file, err := os.Open(path)
-	if err != nil {
-		return err
-	}
-	defer file.Close()
-	events, err := recorded.Step(path, file, o.edge)
-	if err != nil {
-		return usageError{err}
-	}
-	r, err := results.Compute(events)
-	if err != nil {
-		return usageError{fmt.Errorf("%s: %w", path, err)}
-	}
-	r.Step.Reservations = append(r.Step.Reservations, r.Reservations...)
-	if o.json {
-		err = encode(io.out, fitStep{"kymobench/fit-step/1", r.Step})
-	} else {
-		err = printStep(io.out, r.Step)
-	}
-	if err == nil && !r.Step.Combined.Determined {
-		return ended{exitInconclusive}
-	}
-	return err
-}
-
 // encode writes one JSON document.
 func encode(w io.Writer, v any) error {
 	e := json.NewEncoder(w)
@@ -154,24 +100,4 @@ func reservations(w io.Writer, all []results.Reason) {
 	for _, r := range all {
 		fmt.Fprintf(w, "reservation: %s (%s)\n", r.Text, r.Code)
 	}
-}
-
-func printStep(w io.Writer, s *results.Step) error {
-	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
-	fmt.Fprintf(t, "sample rate\t%.6g Hz\n", s.SampleRate)
-	for i, st := range s.Steps {
-		estimates(t, fmt.Sprintf("step %d at %.4f s, height %.4g %s", i+1, st.At, *st.Height, s.Unit), st.Determined, st.Reasons, st.Frequency, st.Damping)
-	}
-	estimates(t, "all steps", s.Combined.Determined, s.Combined.Reasons, s.Combined.Frequency, s.Combined.Damping)
-	reservations(t, s.Reservations)
-	return t.Flush()
-}
-
-func estimates(w io.Writer, name string, determined bool, reasons []string, f, d *results.Estimate) {
-	if !determined {
-		fmt.Fprintf(w, "%s\tundetermined: %v\n", name, reasons)
-		return
-	}
-	fmt.Fprintf(w, "%s\tnatural frequency %.4g Hz\t95 %% interval %.4g to %.4g\n", name, f.Value, f.Interval[0], f.Interval[1])
-	fmt.Fprintf(w, "\tdamping ratio %.4g\t95 %% interval %.4g to %.4g\n", d.Value, d.Interval[0], d.Interval[1])
 }

@@ -12,10 +12,12 @@ import (
 	"kymobench/procedures/record"
 )
 
-// Step reads time_s, pressure_UNIT and an optional applied_UNIT. edge is the
-// step's own 10-90 % time ("2 ms", or "0" for an ideal step); "" when not
-// stated.
-func Step(file string, r io.Reader, edge string) ([]record.Event, error) {
+// Step reads time_s, pressure_UNIT and an optional applied_UNIT.
+func Step(file string, r io.Reader, o StepOptions) ([]record.Event, error) {
+	if err := o.check(); err != nil {
+		return nil, err
+	}
+	edge := o.Edge
 	if edge == "0" {
 		edge = "0 s"
 	}
@@ -87,6 +89,10 @@ func Step(file string, r io.Reader, edge string) ([]record.Event, error) {
 		capture.Applied = e.blocks(appliedTexts, start, period)
 	}
 	e.add(0, record.KindCapture, capture)
+	if o.Line != (record.Line{}) {
+		e.add(0, record.KindLine, o.Line)
+	}
+	e.add(0, record.KindPulse, o.Pulse)
 	return e.done()
 }
 

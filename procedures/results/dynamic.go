@@ -162,7 +162,7 @@ func (d *dynamics) crossCheck() *Response {
 		out.Agrees = false
 		out.Text = "no step could be looked at without the model"
 	case check.Agrees:
-		out.Text = fmt.Sprintf("without the model the response is the same up to %.3g Hz, within %.1f %% of what goes in; noise makes no more of it plain",
+		out.Text = fmt.Sprintf("without the model the response is the same: up to %.3g Hz it differs by at most %.1f %% of what goes in, which noise explains or which is under 1 %%",
 			check.Points[len(check.Points)-1].Frequency, 100*largest)
 	default:
 		out.Text = fmt.Sprintf("without the model the response is another: at %.3g Hz a gain of %.3f (phase %.0f degrees), the fitted line gives %.3f (%.0f degrees); it differs by %.1f %% of what goes in, %.1f times what noise explains. Natural frequency and damping are not all of this line",
