@@ -168,6 +168,10 @@ func (d *drawn) worsen(s Settings) {
 		product := between(r, 32, 40) * between(r, 0.3, 0.4)
 		d.fn = between(r, 10, 15)
 		d.zeta = product / d.fn
+	case Overdamped:
+		// A narrowing, or a restrictor of the wrong kind. Above 1.7 the fits'
+		// own uncertainty of fn nears 5 % at this noise.
+		d.zeta = between(r, 1.35, 1.7)
 	}
 }
 

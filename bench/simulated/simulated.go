@@ -37,6 +37,7 @@
 //	  air-bubble                  a line of U(32, 40) Hz and U(0.3, 0.4) whose
 //	                              bubble lowers fn to U(10, 15) Hz, fn x zeta
 //	                              as it was; damping ratio then 0.64 to 1.6
+//	  overdamped                  damping ratio U(1.35, 1.7)
 //	the bench
 //	  reference, scale            N(0.03 %), common to all readings
 //	  reference, at each 50 mmHg  N(0.02 mmHg), linear between, 0 at 0
@@ -92,11 +93,12 @@ const (
 	Hysteresis       = "hysteresis"
 	Leak             = "leak"
 	AirBubble        = "air-bubble"
+	Overdamped       = "overdamped"
 )
 
 // Conditions lists the names that Settings.Condition takes.
 func Conditions() []string {
-	return []string{Good, WrongSensitivity, Offset, Hysteresis, Leak, AirBubble}
+	return []string{Good, WrongSensitivity, Offset, Hysteresis, Leak, AirBubble, Overdamped}
 }
 
 // Roles of the bench, the names of its machines and of its ports.
@@ -230,8 +232,11 @@ func (b *Bench) SerialNumber() string { return serialNumber(b.settings.Condition
 
 func serialNumber(condition string, seed uint64) string {
 	code := strings.ToUpper(condition[:1])
-	if condition == AirBubble {
+	switch condition {
+	case AirBubble:
 		code = "B"
+	case Overdamped:
+		code = "D"
 	}
 	return fmt.Sprintf("SIM-%s%06d", code, seed)
 }

@@ -194,6 +194,7 @@ func truths(b *Bench) map[string]float64 {
 func TestRanges(t *testing.T) {
 	outside := map[string]string{
 		WrongSensitivity: "sensitivity", Offset: "zero_offset", Hysteresis: "hysteresis", Leak: "leak", AirBubble: "natural_frequency",
+		Overdamped: "damping_ratio",
 	}
 	for _, condition := range Conditions() {
 		for seed := range uint64(400) {
@@ -234,6 +235,8 @@ func TestConditionsChangeOnlyTheirs(t *testing.T) {
 					t.Errorf("seed %d: fn x zeta = %g, zeta = %g", seed, product, d.zeta)
 				}
 				d.fn, d.zeta = good.fn, good.zeta
+			case Overdamped:
+				d.zeta = good.zeta
 			}
 			if d != good {
 				t.Errorf("seed %d: %s changes more than its own", seed, condition)
