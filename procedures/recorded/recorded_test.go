@@ -79,7 +79,7 @@ func TestStepRefusals(t *testing.T) {
 		{"time_s,pressure_mmHg\n0,1\n0.001,1\n0.003,1\n0.004,1\n0.005,1\n", "", 4, 1, "time step"},
 		{"time_s,pressure_mmHg\n0,1\n0,1\n0,1\n", "", 3, 1, "time step"},
 	} {
-		events, err := Step("f.csv", strings.NewReader(c.text), c.edge)
+		events, err := Step("f.csv", strings.NewReader(c.text), StepOptions{Edge: c.edge})
 		var e *FileError
 		if !errors.As(err, &e) || events != nil {
 			t.Errorf("%q: %v, %v", c.text, events, err)
@@ -104,7 +104,7 @@ func FuzzStatic(f *testing.F) {
 		if (err == nil) == (events == nil) {
 			t.Fatalf("%v with %d events", err, len(events))
 		}
-		events, err = Step("f.csv", strings.NewReader(text), "")
+		events, err = Step("f.csv", strings.NewReader(text), StepOptions{Edge: ""})
 		if (err == nil) == (events == nil) {
 			t.Fatalf("%v with %d events", err, len(events))
 		}
