@@ -90,7 +90,7 @@ func TestStepRefusals(t *testing.T) {
 		}
 	}
 	for _, edge := range []string{"2", "-1 ms", "2 mmHg", "nan s"} {
-		if events, err := Step("f.csv", strings.NewReader("time_s,pressure_mmHg\n0,1\n0.001,1\n"), edge); err == nil {
+		if events, err := Step("f.csv", strings.NewReader("time_s,pressure_mmHg\n0,1\n0.001,1\n"), StepOptions{Edge: edge}); err == nil {
 			t.Errorf("edge %q taken: %v", edge, events)
 		}
 	}
