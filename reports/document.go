@@ -110,7 +110,37 @@ type Step struct {
 	Traces []Trace
 	Table  []StepRow
 	Facts  []Row
-	Plane  *Plane // nil when nothing was determined
+	Plane  *Plane // nil when nothing was determined; so are those below
+
+	Amplitude *Amplitude
+	Derived   []FigureRow
+	Pulse     *Pulse
+	Opinions  []string // apart from the results
+}
+
+// Amplitude is the gain of the line against frequency in hertz.
+type Amplitude struct {
+	Frequency, Gain, Low, High []float64 // of the fitted line, with its 95 % band
+	Points                     []AmplitudePoint
+	Caption                    string
+}
+
+// AmplitudePoint is the gain found without a model, with the half-width of its
+// 95 % interval.
+type AmplitudePoint struct{ Frequency, Gain, U float64 }
+
+// Pulse is what the line does to pulse waves.
+type Pulse struct {
+	Head  [3]string // rates of the columns of errors
+	Rows  []PulseRow
+	Notes []string
+}
+
+// PulseRow is one shape; errors of systolic and diastolic pressure at three
+// rates.
+type PulseRow struct {
+	Name, Pressure, Fastest string
+	Errors                  [3]string
 }
 
 // Trace is one step as drawn: time from the edge in seconds.
@@ -137,6 +167,15 @@ type Plane struct {
 	FrequencyLow *float64
 	DampingLow   *float64
 	DampingHigh  *float64
+	Contours     []Contour
+	Caption      string
+}
+
+// Contour bounds the lines that follow a pulse: those of a natural frequency
+// not below the curve's at their damping ratio.
+type Contour struct {
+	Name               string
+	Frequency, Damping []float64
 }
 
 // PlanePoint is a natural frequency in hertz and a damping ratio, with their

@@ -2,6 +2,7 @@ package reports
 
 import (
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -77,9 +78,28 @@ func (d *Document) step(res results.Results) {
 	r.add("Sample rate", withUnit(stated(s.SampleRate), "Hz")+", as the bench file states it")
 	r.add("Model", "second-order line, one natural frequency and one damping ratio, fitted to every step on its own")
 	r.add("± in the table", "half-width of the 95 % interval; of single steps from the fit alone. Height and noise (the scatter before the step) describe the trace and carry no budget")
+	if l := s.Line; l != nil {
+		r.add("Step enters", l.Place)
+		r.add("Line", strings.Join(stringsOf(worded(quantityText(l.Length), " long"), worded(quantityText(l.Bore), " bore"), l.Fluid), ", "))
+		r.add("Flush device", l.FlushDevice)
+	}
 	out.Facts = r
 	out.Plane = plane(s, res.Limits)
+	out.follow(s)
 	d.Step = out
+}
+
+// worded adds a word to a text that is there.
+func worded(text, word string) string {
+	if text == "" {
+		return ""
+	}
+	return text + word
+}
+
+// stringsOf leaves out what is empty.
+func stringsOf(all ...string) []string {
+	return slices.DeleteFunc(all, func(s string) bool { return s == "" })
 }
 
 // trace chooses how much of a step is worth drawing: until the ringing has

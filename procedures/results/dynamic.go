@@ -26,6 +26,14 @@ type Derived struct {
 	Flat5              DerivedFigure `json:"flat_band_5_percent_hz"`
 	Product            DerivedFigure `json:"frequency_damping_product_hz"`
 	At                 []AtFrequency `json:"at"`
+	Curve              []CurvePoint  `json:"amplitude_curve"`
+}
+
+// CurvePoint is the gain of the line at one frequency, for the chart.
+type CurvePoint struct {
+	Frequency float64    `json:"frequency_hz"`
+	Gain      float64    `json:"gain"`
+	Interval  [2]float64 `json:"interval95"`
 }
 
 // DerivedFigure is one figure; the value is nil, with the reason, where there
@@ -96,6 +104,7 @@ func (g *gathered) derive(s *scale, d *dynamics, out *Step) error {
 		return err
 	}
 	out.Derived = derivedOf(joint.Derive(drawn, statedAt()))
+	out.Derived.Curve = amplitudeCurve(joint, drawn)
 	out.Response = d.crossCheck()
 	if !out.Response.Agrees {
 		out.Reservations = addReason(out.Reservations, Reason{"response_disagrees", out.Response.Text})
@@ -127,6 +136,22 @@ func derivedFigure(f step.Figure, scale float64) DerivedFigure {
 	if f.Exists {
 		v, u := f.Value*scale, f.StandardUncertainty*scale
 		out.Value, out.Standard, out.Interval = &v, &u, &[2]float64{f.Low * scale, f.High * scale}
+	}
+	return out
+}
+
+// amplitudeCurve goes from a twentieth of fn to twice fn in equal ratios.
+func amplitudeCurve(joint step.Joint, drawn step.Draws) []CurvePoint {
+	var out []CurvePoint
+	const points = 81
+	gains := make([]float64, errorDraws)
+	for i := range points {
+		f := joint.Frequency / 20 * math.Pow(40, float64(i)/(points-1))
+		for k := range gains {
+			gains[k] = step.Amplitude(drawn.Frequency[k], drawn.Damping[k], f)
+		}
+		g := joint.Figure(step.Amplitude(joint.Frequency, joint.Damping, f), gains)
+		out = append(out, CurvePoint{f, g.Value, [2]float64{g.Low, g.High}})
 	}
 	return out
 }

@@ -223,21 +223,21 @@ func (o *Opinions) conclude(moved *DerivedFigure, missing string, k lineKnown, s
 	}
 	switch {
 	case o.Designed != nil && finding == tubing.More:
-		say("narrowing", "fn x zeta is %.2f times that of the designed line (95 %%: %.2f to %.2f). Air leaves it alone: look for a narrowing (kink, clot, a stopcock not quite open) or another loss", *o.Designed.Value, o.Designed.Interval[0], o.Designed.Interval[1])
+		say("narrowing", "the product fn x zeta is %.2f times that of the designed line (95 %%: %.2f to %.2f). Air leaves it alone: look for a narrowing (kink, clot, a stopcock not quite open) or another loss", *o.Designed.Value, o.Designed.Interval[0], o.Designed.Interval[1])
 	case o.Designed != nil && finding == tubing.AsStated:
-		say("as_designed", "fn x zeta is that of the designed line within %.0f %%: nothing is narrower; what has changed, if anything, yields", 100*changed)
+		say("as_designed", "the product fn x zeta is that of the designed line within %.0f %%: nothing is narrower; what has changed, if anything, yields", 100*changed)
 	case o.Designed != nil && finding == tubing.Less:
-		say("less_damped", "fn x zeta is below that of the designed line (%.2f of it; 95 %%: %.2f to %.2f): a wider or shorter line, a thinner fluid, or a loss that was taken out", *o.Designed.Value, o.Designed.Interval[0], o.Designed.Interval[1])
+		say("less_damped", "the product fn x zeta is below that of the designed line (%.2f of it; 95 %%: %.2f to %.2f): a wider or shorter line, a thinner fluid, or a loss that was taken out", *o.Designed.Value, o.Designed.Interval[0], o.Designed.Interval[1])
 	case o.Designed != nil:
 		say("undetermined", "whether fn x zeta is that of the designed line cannot be told: %.2f of it, 95 %% interval %.2f to %.2f", *o.Designed.Value, o.Designed.Interval[0], o.Designed.Interval[1])
 	case o.Steady == nil:
 		say("undetermined", "what damps the line cannot be told: %s", missing)
 	case finding == tubing.More:
-		say("narrowing", "fn x zeta is %.1f times what steady flow through the stated bore of %.3g mm gives, %.1f times that of oscillating flow: something else than the stated bore damps. That is a dome, a restrictor, a filter or the transducer itself; or, where a line of this kind used to damp less, a narrowing (kink, clot, a stopcock not quite open). It is not air", *o.Steady.Value, 1000*k.Bore, *o.Oscillating.Value)
+		say("narrowing", "the product fn x zeta is %.1f times what steady flow through the stated bore of %.3g mm gives, %.1f times that of oscillating flow: something else than the stated bore damps. That is a dome, a restrictor, a filter or the transducer itself; or, where a line of this kind used to damp less, a narrowing (kink, clot, a stopcock not quite open). It is not air", *o.Steady.Value, 1000*k.Bore, *o.Oscillating.Value)
 	case finding == tubing.AsStated:
-		say("as_stated", "fn x zeta is what the stated bore of %.3g mm gives (%.2f of steady, %.2f of oscillating laminar flow): nothing points to a narrowing; if the natural frequency is too low, it is air or something soft", 1000*k.Bore, *o.Steady.Value, *o.Oscillating.Value)
+		say("as_stated", "the product fn x zeta is what the stated bore of %.3g mm gives (%.2f of steady, %.2f of oscillating laminar flow): nothing points to a narrowing; if the natural frequency is too low, it is air or something soft", 1000*k.Bore, *o.Steady.Value, *o.Oscillating.Value)
 	case finding == tubing.Less:
-		say("less_damped", "fn x zeta is below what any line of the stated bore of %.3g mm and fluid gives (%.2f of steady flow): bore, length or fluid are not as stated", 1000*k.Bore, *o.Steady.Value)
+		say("less_damped", "the product fn x zeta is below what any line of the stated bore of %.3g mm and fluid gives (%.2f of steady flow): bore, length or fluid are not as stated", 1000*k.Bore, *o.Steady.Value)
 	default:
 		say("undetermined", "whether the damping is that of the stated bore of %.3g mm cannot be told: fn x zeta is %.2f (95 %%: %.2f to %.2f) of steady and %.2f (%.2f to %.2f) of oscillating laminar flow, and real lines lie up to twice above", 1000*k.Bore,
 			*o.Steady.Value, o.Steady.Interval[0], o.Steady.Interval[1], *o.Oscillating.Value, o.Oscillating.Interval[0], o.Oscillating.Interval[1])

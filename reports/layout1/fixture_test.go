@@ -217,6 +217,7 @@ func steps(fn, zeta float64, count int, missing ...int) (*results.Step, []result
 		traces = append(traces, trace(i, f, zeta, 100, 0.001, 700, determined))
 	}
 	s.Combined = results.Combined{Determined: true, Reasons: []string{}, Frequency: estimate(fn, 0.002*fn), Damping: estimate(zeta, 0.003)}
+	follow(s, fn, zeta)
 	return s, traces
 }
 

@@ -73,6 +73,7 @@ func Render(d *reports.Document, attachments []Attachment) ([]byte, error) {
 	p.front()
 	p.pressure()
 	p.response()
+	p.follow()
 	p.budgets()
 	p.back()
 	p.finish()

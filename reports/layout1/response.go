@@ -25,9 +25,6 @@ func (p *paper) response() {
 	}
 	p.steps(s)
 	p.y = p.pairs(left, width, 30, rowPairs(s.Facts), 7.5)
-	if s.Plane != nil {
-		p.plane(s.Plane)
-	}
 }
 
 // mainTrace is the first step that was determined, else the first.
@@ -223,90 +220,4 @@ func (p *paper) steps(s *reports.Step) {
 		{title: "Natural frequency", w: 31}, {title: "Damping ratio", w: 27}, {title: "", w: 55},
 	}}.write(p, rows)
 	p.y += 1
-}
-
-// plane draws the UUT among natural frequency and damping ratio: the limits
-// as thick lines, what they leave as a white field on grey.
-func (p *paper) plane(pl *reports.Plane) {
-	const h = 46.0
-	p.need(h + 9)
-	p.y += 2
-	c := pl.Combined
-	chart := newPlot(7.5)
-	xs := []float64{0, c.FrequencyInterval[1] * 1.15}
-	ys := []float64{0, c.DampingInterval[1] * 1.15}
-	for _, s := range pl.Singles {
-		xs, ys = append(xs, s.FrequencyInterval[1]), append(ys, s.DampingInterval[1])
-	}
-	if pl.FrequencyLow != nil {
-		xs = append(xs, *pl.FrequencyLow*1.4)
-	}
-	for _, b := range []*float64{pl.DampingLow, pl.DampingHigh} {
-		if b != nil {
-			ys = append(ys, *b*1.15)
-		}
-	}
-	_, x1 := spread(xs)
-	_, y1 := spread(ys)
-	scaled(&chart.X, 0, x1, 7)
-	scaled(&chart.Y, 0, y1, 6)
-	chart.X.Label.Text = "Natural frequency in Hz"
-	chart.Add(plotter(func(c draw.Canvas, x, y func(float64) vg.Length) { planeField(c, x, y, pl, x1, y1) }))
-	p.charts(left, 96, plotted{chart, "Damping ratio", h})
-	end := p.y
-	x, w := left+104, width-104
-	p.y -= h
-	p.paragraph(x, w, "Where the UUT stands", bold, 8.5, ink())
-	p.y += 1
-	p.paragraph(x, w, "The dot is what all determined steps say together, with its 95 % intervals; small open circles are single steps. Thick lines are the limits of the procedure; what they refuse is grey.", sans, 8, ink())
-	p.y = math.Max(end, p.y)
-}
-
-func planeField(c draw.Canvas, x, y func(float64) vg.Length, pl *reports.Plane, x1, y1 float64) {
-	x0, z0, z1 := 0.0, 0.0, y1
-	if pl.FrequencyLow != nil {
-		x0 = *pl.FrequencyLow
-	}
-	if pl.DampingLow != nil {
-		z0 = *pl.DampingLow
-	}
-	if pl.DampingHigh != nil {
-		z1 = *pl.DampingHigh
-	}
-	box := func(a, b, d, e float64) []vg.Point {
-		return []vg.Point{{X: x(a), Y: y(b)}, {X: x(d), Y: y(b)}, {X: x(d), Y: y(e)}, {X: x(a), Y: y(e)}}
-	}
-	area(c, pale(), box(0, 0, x1, y1))
-	area(c, colour{255, 255, 255}, box(x0, z0, x1, z1))
-	thick := style(ink(), 1.4)
-	if pl.FrequencyLow != nil {
-		poly(c, thick, []vg.Point{{X: x(x0), Y: y(z0)}, {X: x(x0), Y: y(z1)}})
-	}
-	for _, b := range []*float64{pl.DampingLow, pl.DampingHigh} {
-		if b != nil {
-			poly(c, thick, []vg.Point{{X: x(x0), Y: y(*b)}, {X: x(x1), Y: y(*b)}})
-		}
-	}
-	for _, s := range pl.Singles {
-		c.SetColor(quiet().rgb())
-		c.SetLineWidth(0.6)
-		c.SetLineDash(nil, 0)
-		var path vg.Path
-		at := vg.Point{X: x(s.Frequency), Y: y(s.Damping)}
-		path.Move(vg.Point{X: at.X + 2, Y: at.Y})
-		path.Arc(at, 2, 0, 2*math.Pi)
-		path.Close()
-		c.Stroke(path)
-	}
-	m := pl.Combined
-	s := style(accent(), 1)
-	poly(c, s, []vg.Point{{X: x(m.FrequencyInterval[0]), Y: y(m.Damping)}, {X: x(m.FrequencyInterval[1]), Y: y(m.Damping)}})
-	poly(c, s, []vg.Point{{X: x(m.Frequency), Y: y(m.DampingInterval[0])}, {X: x(m.Frequency), Y: y(m.DampingInterval[1])}})
-	var path vg.Path
-	at := vg.Point{X: x(m.Frequency), Y: y(m.Damping)}
-	path.Move(vg.Point{X: at.X + 2.4, Y: at.Y})
-	path.Arc(at, 2.4, 0, 2*math.Pi)
-	path.Close()
-	c.SetColor(accent().rgb())
-	c.Fill(path)
 }
