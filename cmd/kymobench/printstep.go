@@ -90,7 +90,7 @@ func pulses(w io.Writer, p *results.PulseErrors) error {
 	fmt.Fprintln(t)
 	var notes []string
 	for _, s := range p.Shapes {
-		rate := s.Fastest.Reason
+		var rate string
 		switch f := s.Fastest; {
 		case f.Value != nil:
 			rate = fmt.Sprintf("%.0f (95 %%: %.0f to %.0f)", *f.Value, f.Interval[0], f.Interval[1])
