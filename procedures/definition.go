@@ -10,6 +10,7 @@
 package procedures
 
 import (
+	"fmt"
 	"math"
 
 	"kymobench/bench/quantity"
@@ -44,6 +45,23 @@ const (
 	Channel               UUTKind = "channel"
 )
 
+// PutsOut says why a unit under test of this kind cannot put out the unit that
+// the bench file states; nil when it can. A bare transducer puts out a voltage
+// or a ratio, which the bench's readout turns into numbers; one with its
+// channel, or a channel alone, shows pressure.
+func (k UUTKind) PutsOut(unit string) error {
+	u, ok := quantity.UnitNamed(unit)
+	switch pressure := u.Dimension == quantity.DimPressure; {
+	case !ok:
+		return fmt.Errorf("%q is no unit known here", unit)
+	case k == BareTransducer && pressure:
+		return fmt.Errorf("the limits are those of a %s, and the bench file says that the UUT puts out %s, which a %s does", k, unit, TransducerWithChannel)
+	case k != BareTransducer && !pressure:
+		return fmt.Errorf("the limits are those of a %s, and the bench file says that the UUT puts out %s, which a %s does", k, unit, BareTransducer)
+	}
+	return nil
+}
+
 // Decision is how an uncertainty counts against a limit, and what the middle
 // outcomes mean for the verdict of the run.
 type Decision struct {
@@ -59,10 +77,20 @@ type LimitName string
 
 // The figures that can have a limit.
 const (
-	ZeroOffset       LimitName = "zero_offset"       // mmHg, as read before zeroing
-	Sensitivity      LimitName = "sensitivity"       // uV/V/mmHg
-	Accuracy         LimitName = "accuracy"          // mmHg, the error after zero at any set pressure
-	Hysteresis       LimitName = "hysteresis"        // mmHg, down minus up
+	ZeroOffset    LimitName = "zero_offset"   // mmHg, as read before zeroing
+	Sensitivity   LimitName = "sensitivity"   // uV/V/mmHg
+	Accuracy      LimitName = "accuracy"      // mmHg, the error after zero at any set pressure
+	Hysteresis    LimitName = "hysteresis"    // mmHg, down minus up
+	ZeroReturn    LimitName = "zero_return"   // mmHg, at the end of a cycle less at its beginning
+	Repeatability LimitName = "repeatability" // mmHg, largest range over the cycles
+	Noise         LimitName = "noise"         // mmHg, standard deviation of its readings at a still pressure
+
+	// mmHg, the largest deviation from the line named
+	LinearityIndependent  LimitName = "linearity_independent"
+	LinearityTerminal     LimitName = "linearity_terminal"
+	LinearityZeroBased    LimitName = "linearity_zero_based"
+	LinearityLeastSquares LimitName = "linearity_least_squares"
+
 	NaturalFrequency LimitName = "natural_frequency" // Hz
 	DampingRatio     LimitName = "damping_ratio"     // 1
 )
@@ -100,11 +128,18 @@ const (
 	OriginDepartment OriginStatus = "department"
 )
 
+// LimitNames lists every figure that can have a limit.
+func LimitNames() []LimitName {
+	return []LimitName{ZeroOffset, Sensitivity, Accuracy, Hysteresis, ZeroReturn, Repeatability, Noise, LinearityIndependent,
+		LinearityTerminal, LinearityZeroBased, LinearityLeastSquares, NaturalFrequency, DampingRatio}
+}
+
 // LimitUnit returns the unit in which the limit of that name is stated,
 // compared and reported; false for a name that is none.
 func LimitUnit(name LimitName) (string, bool) {
 	switch name {
-	case ZeroOffset, Accuracy, Hysteresis:
+	case ZeroOffset, Accuracy, Hysteresis, ZeroReturn, Repeatability, Noise,
+		LinearityIndependent, LinearityTerminal, LinearityZeroBased, LinearityLeastSquares:
 		return "mmHg", true
 	case Sensitivity:
 		return "uV/V/mmHg", true

@@ -100,11 +100,15 @@ func (l *loader) head(d *Definition) {
 	l.demand(d.Revision >= 1, "the revision is counted from 1", "revision = 1", "revision")
 	d.Title = l.text(tomlfile.LongestIdentity, "title")
 	d.Purpose = l.text(longestText, "purpose")
-	d.UUTKind = tomlfile.TakeWord(l.doc, &l.err, []UUTKind{BareTransducer, TransducerWithChannel, Channel}, "uut_kind")
+	l.kind(d)
 	d.Highest = l.pressure("pressure", "highest")
 	d.Lowest = l.pressure("pressure", "lowest")
 	l.demand(d.Lowest < d.Highest, "the lowest pressure is not below the highest", "", "pressure", "lowest")
 	l.demand(d.Lowest <= 0, "the lowest pressure is above atmosphere, where every run begins", "", "pressure", "lowest")
+}
+
+func (l *loader) kind(d *Definition) {
+	d.UUTKind = tomlfile.TakeWord(l.doc, &l.err, []UUTKind{BareTransducer, TransducerWithChannel, Channel}, "uut_kind")
 }
 
 func parseID(s string) (string, error) {
@@ -147,10 +151,9 @@ func parseVerdict(s string) (verdict.Verdict, error) {
 }
 
 func (l *loader) limits(d *Definition) {
-	names := []LimitName{ZeroOffset, Sensitivity, Accuracy, Hysteresis, NaturalFrequency, DampingRatio}
 	l.demand(len(l.file.Limits) > 0, "the procedure has no limits, so nothing can be judged", "", "limit")
 	for i := range l.file.Limits {
-		lim := Limit{Name: tomlfile.TakeWord(l.doc, &l.err, names, "limit", i, "name")}
+		lim := Limit{Name: tomlfile.TakeWord(l.doc, &l.err, LimitNames(), "limit", i, "name")}
 		_, twice := d.Limit(lim.Name)
 		l.demand(!twice, fmt.Sprintf("a second limit for %s", lim.Name), "", "limit", i, "name")
 		if l.err != nil {
@@ -166,6 +169,8 @@ func (l *loader) limits(d *Definition) {
 		lim.OriginStatus = tomlfile.TakeWord(l.doc, &l.err, []OriginStatus{OriginSeen, OriginSecondHand,
 			OriginMemory, OriginPractice, OriginDepartment}, "limit", i, "origin_status")
 		l.limitMakesSense(lim, i)
+		l.demand(lim.Name != Sensitivity || d.UUTKind == BareTransducer, fmt.Sprintf("a limit for the sensitivity of a %s, which shows pressure", d.UUTKind),
+			"its accuracy holds it", "limit", i, "name")
 		d.Limits = append(d.Limits, lim)
 	}
 }

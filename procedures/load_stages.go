@@ -238,7 +238,8 @@ func (l *loader) together(d *Definition) {
 		at[s.Kind()] = i
 	}
 	needs := map[LimitName]string{
-		ZeroOffset: "zero", Sensitivity: "static", Accuracy: "static", Hysteresis: "static",
+		ZeroOffset: "zero", Sensitivity: "static", Accuracy: "static", Hysteresis: "static", ZeroReturn: "static", Repeatability: "static",
+		Noise: "static", LinearityIndependent: "static", LinearityTerminal: "static", LinearityZeroBased: "static", LinearityLeastSquares: "static",
 		NaturalFrequency: "step", DampingRatio: "step",
 	}
 	for i, lim := range d.Limits {
@@ -247,10 +248,26 @@ func (l *loader) together(d *Definition) {
 		if l.err != nil {
 			return
 		}
-		if s, ok := d.Stages[stage].(Static); ok && lim.Name == Hysteresis {
-			points := s.Points()
-			l.demand(points[len(points)-1].Leg == Down, "no down leg, which the limit for hysteresis needs", "", "stage", stage, "set_pressures")
+		if s, ok := d.Stages[stage].(Static); ok {
+			l.carries(s, lim.Name, stage)
 		}
+	}
+}
+
+// carries refuses a static stage that cannot give what a limit is about.
+func (l *loader) carries(s Static, name LimitName, stage int) {
+	points := s.Points()
+	last := points[len(points)-1]
+	needs := func(ok bool, what, key string) {
+		l.demand(ok, fmt.Sprintf("no %s, which the limit for %s needs", what, name), "", "stage", stage, key)
+	}
+	switch name {
+	case Hysteresis:
+		needs(last.Leg == Down, "down leg", "set_pressures")
+	case ZeroReturn:
+		needs(last.Leg == Down && last.Set == points[0].Set, "down leg back to where the cycle began", "set_pressures")
+	case Repeatability:
+		needs(s.Cycles > 1, "second cycle", "cycles")
 	}
 }
 

@@ -47,6 +47,11 @@ func (j job) carry(ctx context.Context) ([]outcome, error) {
 	if f := j.file; f.Highest < j.definition.HighestPressure() {
 		return nil, usagef("the procedure goes to %.0f mmHg, the bench file allows %.0f mmHg", j.definition.HighestPressure().MmHg(), f.Highest.MmHg())
 	}
+	for _, p := range j.file.Places() {
+		if err := j.definition.UUTKind.PutsOut(p.UUT.Field.Unit); err != nil {
+			return nil, usageError{fmt.Errorf("procedure %s: %w", j.definition.ID, err)}
+		}
+	}
 	if n := len(j.file.Places()); len(j.uuts) > n {
 		return nil, usagef("%d serial numbers, and the bench file has %d places for a UUT", len(j.uuts), n)
 	}
