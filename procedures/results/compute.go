@@ -7,6 +7,7 @@ import (
 	"kymobench/procedures"
 	"kymobench/procedures/ready"
 	"kymobench/procedures/record"
+	"kymobench/procedures/uncertainty"
 	"kymobench/procedures/verdict"
 )
 
@@ -22,7 +23,7 @@ func Compute(events []record.Event) (Results, error) {
 	if err != nil {
 		return Results{}, err
 	}
-	r := Results{Reasons: []Reason{}, Limits: []Limit{}, Reservations: append([]Reason{}, g.reservations...), Curve: []ErrorPoint{}, Traces: []StepTrace{}}
+	r := Results{Reasons: []Reason{}, Limits: []Limit{}, Reservations: append([]Reason{}, g.reservations...), Curve: []ErrorPoint{}, Budgets: []Budget{}, Traces: []StepTrace{}}
 	st, err := g.staticResults(s)
 	if err != nil {
 		return Results{}, err
@@ -39,6 +40,14 @@ func Compute(events []record.Event) (Results, error) {
 	if g.outliers > 0 {
 		r.Reservations = append(r.Reservations, Reason{"outliers", fmt.Sprintf("%d readings that lie far from their neighbours, as a byte damaged on the line makes them, were left out", g.outliers)})
 	}
+	for _, m := range st.measured(s) {
+		b, err := m.stated(g.seed())
+		if err != nil {
+			return Results{}, err
+		}
+		r.Budgets = append(r.Budgets, b)
+	}
+	r.NotStated = g.notStated(s)
 	if g.definition == nil {
 		return r, nil
 	}
@@ -46,7 +55,9 @@ func Compute(events []record.Event) (Results, error) {
 	if r.Limits, err = j.limits(); err != nil {
 		return Results{}, err
 	}
-	r.Curve = j.curve()
+	if r.Curve, err = j.curve(); err != nil {
+		return Results{}, err
+	}
 	r.Verdict, r.Reasons = j.verdict(r.Limits)
 	return r, nil
 }
@@ -93,7 +104,7 @@ func (g *gathered) leak(s *scale) (*Leak, error) {
 	out.Seconds = t[len(t)-1] - t[0]
 	u := &budget{}
 	u.add("fit of the hold", fromRun, studentT, "mmHg/s", fitted.Standard, 1, fitted.DoF)
-	expanded := u.combine().Expanded
+	expanded := uncertainty.Combine(u.inputs()).Expanded
 	out.Rate, out.Expanded = &fitted.Rate, &expanded
 	switch {
 	case fitted.Rate-expanded > out.Highest:

@@ -1,6 +1,8 @@
 package results
 
 import (
+	"crypto/sha256"
+	"encoding/binary"
 	"fmt"
 	"slices"
 	"time"
@@ -34,6 +36,9 @@ type gathered struct {
 	line         *record.Line  // of data without a procedure
 	pulse        *record.Pulse // asked for; nil: the program's
 	outliers     int           // readings left out
+
+	zeroedReference bool    // in the run, by its own function
+	repeatability   float64 // of a single reading, stated, in the reference's unit; 0 when not
 }
 
 // reading is an asked reading with the time of its line.
@@ -110,6 +115,10 @@ func (g *gathered) take(e record.Event) error {
 		r, err := record.Decode[record.Reservation](e)
 		g.reservations = append(g.reservations, Reason{Code: r.Code, Text: r.Text})
 		return err
+	case record.KindZeroing:
+		z, err := record.Decode[record.Zeroing](e)
+		g.zeroedReference = g.zeroedReference || z.Role == "reference"
+		return err
 	case record.KindOverride:
 		return add(e, &g.overrides)
 	case record.KindFinished:
@@ -153,6 +162,17 @@ func add[T any](e record.Event, into *[]T) error {
 	}
 	*into = append(*into, v)
 	return nil
+}
+
+// seed is that of every Monte Carlo over this record: from its run id, so that
+// who computes it again draws the same numbers.
+func (g *gathered) seed() uint64 {
+	if g.opened == nil || g.opened.Run == "" {
+		return 1
+	}
+	sum := sha256.Sum256([]byte(g.opened.Run))
+	// Whole numbers up to 2^53 pass through every reader of JSON unharmed.
+	return binary.BigEndian.Uint64(sum[:]) >> 11
 }
 
 // parsed reads a quantity that a record states as text; an empty text is zero.

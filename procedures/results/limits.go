@@ -6,7 +6,7 @@ import (
 
 	"kymobench/bench/quantity"
 	"kymobench/procedures"
-	"kymobench/procedures/uncertainty"
+	"kymobench/procedures/fit"
 	"kymobench/procedures/verdict"
 )
 
@@ -18,13 +18,11 @@ type judge struct {
 	dyn *dynamics
 }
 
-// found is a figure ready to be held against a limit: its value in the limit's
-// unit, its budget, or why there is none.
+// found is a figure ready to be held against a limit: in the limit's unit, its
+// set pressure in mmHg, or why there is none.
 type found struct {
-	value  float64
-	budget *budget
-	at     *float64 // set pressure, mmHg
-	why    string   // undetermined because
+	measured
+	why string // undetermined because
 }
 
 func (j *judge) limits() ([]Limit, error) {
@@ -44,81 +42,112 @@ func (j *judge) limits() ([]Limit, error) {
 
 func (j *judge) limit(l procedures.Limit) (Limit, error) {
 	if l.Name == procedures.Accuracy {
-		return j.accuracy(l), nil
+		return j.accuracy(l)
 	}
 	f, err := j.find(l.Name)
 	if err != nil {
 		return Limit{}, err
 	}
-	return j.hold(l, f, l.Low, l.High), nil
+	return j.hold(l, f, l.Low, l.High)
 }
 
 // find looks up the figure that a limit is about.
 func (j *judge) find(name procedures.LimitName) (found, error) {
-	per := 1 / j.s.perMmHg()
 	switch name {
-	case procedures.ZeroOffset:
-		return j.zeroOffset(), nil
-	case procedures.Sensitivity:
-		return j.sensitivity(), nil
-	case procedures.Hysteresis:
-		return j.hysteresis(per), nil
 	case procedures.NaturalFrequency, procedures.DampingRatio:
 		return j.dynamic(name), nil
+	case procedures.ZeroOffset:
+		if j.st.zero == nil {
+			return found{why: "the UUT was not read vented before its zeroing"}, nil
+		}
+		m, _ := j.st.zeroOffset(j.s)
+		return j.inMmHg(m), nil
 	}
-	return found{why: "this program does not measure it"}, nil
+	if why := j.unread(name); why != "" {
+		return found{why: why}, nil
+	}
+	var m measured
+	ok := false
+	switch name {
+	case procedures.Sensitivity:
+		if m, ok = j.st.sensitivity(j.s); ok {
+			return found{measured: m}, nil
+		}
+	case procedures.Hysteresis:
+		m, ok = j.st.hysteresis(j.s)
+	case procedures.Noise:
+		m, ok = j.st.roughness(j.s)
+	case procedures.ZeroReturn:
+		m, ok = farthest(j.st.zeroReturns(j.s))
+	case procedures.Repeatability:
+		m, ok = named(j.st.repeatability(j.s), FigureRepeatability)
+	default:
+		m, ok = named(j.st.linearities(j.s), string(name))
+	}
+	if !ok {
+		return found{why: j.missing(name)}, nil
+	}
+	return j.inMmHg(m), nil
 }
 
-func (j *judge) zeroOffset() found {
-	z := j.st.zero
-	if z == nil {
-		return found{why: "the UUT was not read vented before its zeroing"}
-	}
-	per := 1 / j.s.perMmHg()
-	return found{value: (z.y - z.p) * per, budget: j.s.zeroBudget(*z, j.st.noise).scaled(per)}
-}
-
-func (j *judge) sensitivity() found {
+// unread says why no static figure can be judged.
+func (j *judge) unread(name procedures.LimitName) string {
 	st := j.st.static
 	switch {
 	case st == nil:
-		return found{why: "no set pressure was read"}
-	case j.s.nominal == 0:
-		return found{why: "the UUT puts out pressure; its sensitivity is its channel's affair"}
-	case st.Sensitivity == nil:
-		return found{why: "the readings give no straight line"}
-	case j.st.short != "":
-		return found{why: j.st.short}
+		return "no set pressure was read"
+	case name == procedures.Sensitivity && j.s.nominal == 0:
+		return "the UUT puts out pressure; its sensitivity is its channel's affair"
 	}
-	slope := st.Slope.Value
-	return found{value: st.Sensitivity.Value, budget: j.s.slopeBudget(j.st.points, slope, j.st.noise).scaled(st.Sensitivity.Value)}
+	return j.st.short
 }
 
-func (j *judge) hysteresis(per float64) found {
-	st := j.st.static
-	if st == nil || st.Hysteresis == nil {
-		return found{why: "no set pressure was read in both legs"}
-	}
-	if j.st.short != "" {
-		return found{why: j.st.short}
-	}
-	at := st.Hysteresis.At
-	var up, down *taken
-	for i, t := range j.st.points {
-		if t.set != at {
-			continue
-		}
-		if t.Leg == legDown {
-			down = &j.st.points[i]
-		} else {
-			up = &j.st.points[i]
+// missing says why the readings do not give a figure.
+func (j *judge) missing(name procedures.LimitName) string {
+	figure := map[procedures.LimitName]string{
+		procedures.Sensitivity: fit.FigureLine, procedures.Hysteresis: fit.FigureHysteresis, procedures.ZeroReturn: fit.FigureZeroReturn,
+		procedures.Repeatability: fit.FigureRepeatability, procedures.LinearityIndependent: fit.FigureLinearity,
+		procedures.LinearityTerminal: fit.FigureLinearity, procedures.LinearityZeroBased: fit.FigureLinearity,
+		procedures.LinearityLeastSquares: fit.FigureLinearity,
+	}[name]
+	for _, u := range j.st.figures.Undetermined {
+		if u.Figure == figure {
+			return u.Reason
 		}
 	}
-	if up == nil || down == nil {
-		return found{why: "no set pressure was read in both legs"}
+	return "the readings do not give it"
+}
+
+// farthest is the figure with the largest value by magnitude.
+func farthest(all []measured) (measured, bool) {
+	var out measured
+	for i, m := range all {
+		if i == 0 || math.Abs(m.value) > math.Abs(out.value) {
+			out = m
+		}
 	}
-	atMmHg := at * per
-	return found{value: st.Hysteresis.Largest * per, budget: j.s.hysteresisBudget(*up, *down, j.st.noise).scaled(per), at: &atMmHg}
+	return out, len(all) > 0
+}
+
+func named(all []measured, figure string) (measured, bool) {
+	for _, m := range all {
+		if m.figure == figure {
+			return m, true
+		}
+	}
+	return measured{}, false
+}
+
+// inMmHg turns a figure in the scale's unit into one in mmHg.
+func (j *judge) inMmHg(m measured) found {
+	per := 1 / j.s.perMmHg()
+	m.value *= per
+	m.budget = m.budget.scaled(per)
+	if m.set != nil {
+		at := *m.set * per
+		m.set = &at
+	}
+	return found{measured: m}
 }
 
 func (j *judge) dynamic(name procedures.LimitName) found {
@@ -131,81 +160,96 @@ func (j *judge) dynamic(name procedures.LimitName) found {
 	}
 	frequency, damping := j.dyn.budgets(j.s)
 	if name == procedures.NaturalFrequency {
-		return found{value: combined.Frequency.Value, budget: frequency}
+		return found{measured: measured{value: combined.Frequency.Value, budget: frequency}}
 	}
-	return found{value: combined.Damping.Value, budget: damping}
+	return found{measured: measured{value: combined.Damping.Value, budget: damping}}
 }
 
 // hold compares one figure with one pair of bounds.
-func (j *judge) hold(l procedures.Limit, f found, low, high *float64) Limit {
+func (j *judge) hold(l procedures.Limit, f found, low, high *float64) (Limit, error) {
 	d := j.g.definition.Decision
 	out := Limit{
-		Name: string(l.Name), Unit: l.Unit, Bounds: Bounds{low, high}, At: f.at, Rule: string(d.Rule), Resolution: l.Resolution,
+		Name: string(l.Name), Unit: l.Unit, Bounds: Bounds{low, high}, At: f.set, Rule: string(d.Rule), Resolution: l.Resolution,
 		Origin: l.Origin, Known: string(l.OriginStatus), Budget: []BudgetLine{},
 	}
 	if f.why != "" {
 		out.Reason = f.why
-		return out
+		return out, nil
 	}
-	u := f.budget.combine()
 	out.Budget = f.budget.lines()
+	if f.budget.why != "" {
+		out.Reason = f.budget.why
+		return out, nil
+	}
+	u, err := f.budget.sum(j.g.seed())
+	if err != nil {
+		return out, err
+	}
 	decision := verdict.Judge(f.value, u.Expanded, u.Standard, u.DegreesOfFreedom,
 		verdict.Limit{Low: low, High: high, Resolution: l.Resolution}, d.Rule, d.GuardFactor)
 	out.Outcome, out.FalseAccept, out.GuardBand, out.Reason = decision.Outcome, decision.FalseAccept, decision.GuardBand, decision.Reason
-	out.Value, out.Expanded, out.Standard, out.Coverage = &f.value, &u.Expanded, &u.Standard, &u.Coverage
+	out.Value, out.Expanded, out.Standard, out.Coverage, out.Sampled = &f.value, &u.Expanded, &u.Standard, &u.Coverage, u.sampled
 	if !math.IsInf(u.DegreesOfFreedom, 1) {
 		out.DoF = &u.DegreesOfFreedom
 	}
-	return out
+	return out, nil
 }
 
 // accuracy holds the error after zeroing of every reading against the limit at
 // its set pressure. The largest error by magnitude stands for all, unless the
 // outcome of another reading is worse: then that reading does, and the reason
 // says so.
-func (j *judge) accuracy(l procedures.Limit) Limit {
-	st := j.st.static
-	if st == nil || st.ErrorAfterZero == nil || len(j.st.points) == 0 {
-		return j.hold(l, found{why: "no set pressure was read"}, l.Low, l.High)
-	}
-	if j.st.short != "" {
-		return j.hold(l, found{why: j.st.short}, l.Low, l.High)
+func (j *judge) accuracy(l procedures.Limit) (Limit, error) {
+	if why := j.unread(l.Name); why != "" {
+		return j.hold(l, found{why: why}, l.Low, l.High)
 	}
 	var shown, worst Limit
 	var largest, risk float64
+	some := false
 	for i := range j.st.points {
-		one := j.errorAt(l, j.st.points[i])
+		if counts(j.st.errorOf([]int{i})) == 0 {
+			continue // the zero, where the error is zero by definition
+		}
+		one, err := j.errorAt(l, i)
+		if err != nil {
+			return one, err
+		}
+		if one.Value == nil {
+			return one, nil
+		}
 		if one.FalseAccept != nil {
 			risk = math.Max(risk, *one.FalseAccept)
 		}
-		if i == 0 || math.Abs(*one.Value) > largest {
+		if !some || math.Abs(*one.Value) > largest {
 			largest, shown = math.Abs(*one.Value), one
 		}
-		if i == 0 || severity(one.Outcome) > severity(worst.Outcome) {
+		if !some || severity(one.Outcome) > severity(worst.Outcome) {
 			worst = one
 		}
+		some = true
+	}
+	if !some {
+		return j.hold(l, found{why: "nothing but the zero was read"}, l.Low, l.High)
 	}
 	if severity(worst.Outcome) > severity(shown.Outcome) {
-		worst.Reason = fmt.Sprintf("the reading at %.0f mmHg decides, though the error at %.0f mmHg is larger", *worst.At, *shown.At)
+		text := fmt.Sprintf("the reading at %.0f mmHg decides, though the error at %.0f mmHg is larger", *worst.At, *shown.At)
+		if worst.Reason != "" {
+			text += ": " + worst.Reason
+		}
+		worst.Reason = text
 		shown = worst
 	}
 	if shown.FalseAccept != nil {
 		shown.FalseAccept = &risk
 	}
-	return shown
+	return shown, nil
 }
 
-func (j *judge) errorAt(l procedures.Limit, t taken) Limit {
-	per := 1 / j.s.perMmHg()
-	zero := j.st.points[j.st.first]
-	value := (t.y - t.p - (zero.y - zero.p)) * per
-	b := j.s.errorBudget(t, zero, j.st.noise).scaled(per)
-	at := t.p * per
-	if t.hasSet {
-		at = t.set * per
-	}
-	low, high := l.At(quantity.MmHg(at))
-	return j.hold(l, found{value: value, budget: b, at: &at}, low, high)
+// errorAt holds the error of one reading against the limit at its set pressure.
+func (j *judge) errorAt(l procedures.Limit, i int) (Limit, error) {
+	f := j.inMmHg(j.st.errorAt(j.s, i))
+	low, high := l.At(quantity.MmHg(*f.set))
+	return j.hold(l, f, low, high)
 }
 
 // severity orders outcomes from good to bad for one figure of many readings.
@@ -224,20 +268,26 @@ func severity(o verdict.Outcome) int {
 }
 
 // curve is every static reading for the error chart.
-func (j *judge) curve() []ErrorPoint {
+func (j *judge) curve() ([]ErrorPoint, error) {
 	out := []ErrorPoint{}
 	l, limited := j.g.definition.Limit(procedures.Accuracy)
-	per := 1 / j.s.perMmHg()
-	for _, t := range j.st.points {
-		one := j.errorAt(l, t)
-		p := ErrorPoint{Set: *one.At, Pressure: t.p * per, Error: *one.Value, Expanded: *one.Expanded, Guard: one.GuardBand, Cycle: t.Cycle, Leg: t.Leg}
+	d := j.g.definition.Decision
+	for i := range j.st.points {
+		t := &j.st.points[i]
+		f := j.inMmHg(j.st.errorAt(j.s, i))
+		p := ErrorPoint{Set: *f.set, Pressure: t.p / j.s.perMmHg(), Error: f.value, Cycle: t.Cycle, Leg: t.Leg}
+		if f.budget.why == "" {
+			u, err := f.budget.sum(j.g.seed())
+			if err != nil {
+				return nil, err
+			}
+			p.Expanded = u.Expanded
+		}
 		if limited {
-			p.Low, p.High = one.Bounds.Low, one.Bounds.High
+			p.Low, p.High = l.At(quantity.MmHg(*f.set))
+			p.Guard = d.GuardFactor * p.Expanded
 		}
 		out = append(out, p)
 	}
-	return out
+	return out, nil
 }
-
-// combine is the uncertainty that the budget adds up to.
-func (b *budget) combine() uncertainty.Combined { return uncertainty.Combine(b.inputs) }

@@ -29,6 +29,15 @@ type taken struct {
 	kY     int     // block means
 	dofY   float64
 	slope  float64 // of the reference, per second
+
+	lag, lags float64 // sum of products of neighbouring block means about their mean, and how many
+	vRaw      float64 // variance of single samples of the UUT about their slope
+	dofRaw    float64
+	lagRaw    float64 // sum of products of neighbours
+
+	level  int  // index of its set pressure, from the lowest
+	cell   int  // readings of one cycle, leg and set pressure
+	zeroed bool // at the pressure at which the reference was zeroed in the run
 }
 
 // takePoint reads the texts of a point.
@@ -81,13 +90,9 @@ func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
 	t.y = mean(ys)
 	means := blockMeans(ys, blockMean)
 	t.kY = len(means)
-	if t.kY > 1 {
-		m := mean(means)
-		for _, x := range means {
-			t.vY += (x - m) * (x - m) / float64(t.kY-1)
-		}
-		t.dofY = float64(t.kY - 1)
-	}
+	t.vY, t.dofY, t.lag = roughness(means)
+	t.lags = math.Max(0, float64(t.kY-1))
+	t.vRaw, t.dofRaw, t.lagRaw = roughness(ys)
 	return t, nil
 }
 
@@ -162,21 +167,65 @@ func blockMeans(x []float64, size int) []float64 {
 	return means
 }
 
+// roughness is the variance of values about their least-squares slope, its
+// degrees of freedom, and the sum of products of neighbours so reduced. Three
+// values or two are taken about their mean, one gives nothing.
+func roughness(y []float64) (variance, dof, lag float64) {
+	n := float64(len(y))
+	if len(y) < 2 {
+		return 0, 0, 0
+	}
+	m, mt := mean(y), (n-1)/2
+	slope := 0.0
+	dof = n - 1
+	if len(y) > 3 {
+		for i, v := range y {
+			slope += (float64(i) - mt) * (v - m)
+		}
+		slope /= n * (n*n - 1) / 12
+		dof = n - 2
+	}
+	before := 0.0
+	for i, v := range y {
+		r := v - m - slope*(float64(i)-mt)
+		variance += r * r / dof
+		lag += r * before
+		before = r
+	}
+	return variance, dof, lag
+}
+
 // noise is what the points of a run say together about the scatter of their
 // means: the variances pooled over points, for the scatter at one point alone
 // has few degrees of freedom.
 type noise struct {
 	vP, dofP float64 // of one reading of the reference
 	vY, dofY float64 // of one block mean of the UUT
+
+	// Where points are single readings: the variance of y - p.
+	vSingle, dofSingle float64
+	how                string // it is known
+	from               string
+	// What cells of different cycles vary by beyond all that.
+	vCell, dofCell float64
+
+	why string // nothing shows the noise
 }
 
+// pool combines what the points say about their own scatter. Neighbouring block
+// means that vary together, as those of a slow noise do, leave more in a mean
+// than their scatter alone says: (1 + r)/(1 - r) times its variance with r
+// their correlation, when it is more than chance gives (textbook, for noise
+// whose correlation falls off geometrically).
 func pool(points []taken) noise {
 	var n noise
+	var lag, lags float64
 	for _, t := range points {
 		n.vP += t.vP * t.dofP
 		n.dofP += t.dofP
 		n.vY += t.vY * t.dofY
 		n.dofY += t.dofY
+		lag, lags = lag+t.lag, lags+t.lags
 	}
 	if n.dofP > 0 {
 		n.vP /= n.dofP
@@ -184,12 +233,19 @@ func pool(points []taken) noise {
 	if n.dofY > 0 {
 		n.vY /= n.dofY
 	}
+	if lags > 0 && n.vY > 0 {
+		r := math.Min(0.9, lag/lags/n.vY)
+		if r > 2/math.Sqrt(lags) {
+			n.vY *= (1 + r) / (1 - r)
+			n.dofY *= (1 - r) / (1 + r)
+		}
+	}
 	return n
 }
 
-// of returns the standard uncertainty that noise leaves in the point's UUT
-// minus reference.
-func (n noise) of(t taken) float64 {
+// of is the variance that noise leaves in the mean of one point, as its own
+// readings show it.
+func (n noise) of(t *taken) float64 {
 	v := 0.0
 	if t.nP > 0 {
 		v += n.vP / float64(t.nP)
@@ -197,29 +253,7 @@ func (n noise) of(t taken) float64 {
 	if t.kY > 0 {
 		v += n.vY / float64(t.kY)
 	}
-	return math.Sqrt(v)
-}
-
-// dof is that of the mean's noise by Welch and Satterthwaite.
-func (n noise) dof(t taken) float64 {
-	var a, b float64
-	if t.nP > 0 {
-		a = n.vP / float64(t.nP)
-	}
-	if t.kY > 0 {
-		b = n.vY / float64(t.kY)
-	}
-	var d float64
-	if a > 0 && n.dofP > 0 {
-		d += a * a / n.dofP
-	}
-	if b > 0 && n.dofY > 0 {
-		d += b * b / n.dofY
-	}
-	if d == 0 {
-		return 0
-	}
-	return (a + b) * (a + b) / d
+	return v
 }
 
 // mmHg is the unit in which limits on pressures are compared.

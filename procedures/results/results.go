@@ -23,6 +23,8 @@ type Results struct {
 	Leak         *Leak           `json:"leak"`
 	Reservations []Reason        `json:"reservations"` // of the run; Static and Step hold their own
 	Curve        []ErrorPoint    `json:"error_curve"`
+	Budgets      []Budget        `json:"budgets"`    // of every static figure
+	NotStated    []Reason        `json:"not_stated"` // what would belong into them and nobody stated
 	Traces       []StepTrace     `json:"step_traces"`
 }
 
@@ -58,6 +60,7 @@ type Limit struct {
 	Standard   *float64     `json:"standard_uncertainty"`
 	DoF        *float64     `json:"degrees_of_freedom"` // nil: infinite
 	Coverage   *float64     `json:"coverage_factor"`
+	Sampled    *MonteCarlo  `json:"monte_carlo"` // set when Expanded is by Monte Carlo
 	Budget     []BudgetLine `json:"budget"`
 }
 
@@ -68,6 +71,8 @@ type BudgetLine struct {
 	Distribution string   `json:"distribution"`
 	Standard     float64  `json:"standard_uncertainty"` // of the input, in Unit
 	Unit         string   `json:"unit"`
+	Stated       float64  `json:"stated"`  // the number it was made from, in Unit
+	Divisor      float64  `json:"divisor"` // and what that was divided by
 	Sensitivity  float64  `json:"sensitivity"`
 	Contribution float64  `json:"contribution"` // in the limit's unit
 	DoF          *float64 `json:"degrees_of_freedom"`

@@ -8,6 +8,7 @@ import (
 	"kymobench/bench/quantity"
 	"kymobench/procedures/fit"
 	"kymobench/procedures/record"
+	"kymobench/procedures/uncertainty"
 )
 
 // AssumedSensitivity is taken for an electrical output whose nominal
@@ -40,16 +41,16 @@ type scale struct {
 	corrected  bool    // there is a curve
 	low, high  float64 // the range of the certificate
 
-	// standard uncertainties
-	uReference float64 // at each set pressure
-	uShare     float64 // of the reading, common
-	drift      float64 // of the reading, half-width
-	driftAt    float64 // at each pressure but a zeroed zero, half-width
-	warmth     float64 // of the reading, half-width: temperature
-	uGain      float64 // of the reading, the readout's
-	uVolts     float64 // of the reading, the excitation's
-	uZero      float64 // the readout's zero
-	uHead      float64
+	pointwise stated  // of the reference, at each set pressure
+	share     stated  // of its reading, common
+	drift     float64 // of the reading, half-width
+	driftAt   float64 // at each pressure but a zeroed zero, half-width
+	warmth    float64 // of the reading, half-width: temperature
+	gain      stated  // of the reading, the readout's
+	volts     stated  // of the reading, the excitation's
+	zeroOf    stated  // the readout's zero
+	headOf    stated
+	noiseOf   float64 // of the readout, the most its standard deviation may be
 
 	resolutionReference float64
 	resolutionUUT       float64
@@ -93,10 +94,10 @@ func newScale(g *gathered) (*scale, error) {
 	s.heads(g, &r)
 	if g.readout != nil && g.readout.CoverageFactor > 0 {
 		k := g.readout.CoverageFactor
-		s.uGain = r.si(g.readout.GainUncertainty, quantity.DimNone) / k
-		s.uVolts = r.si(g.readout.ExcitationUncertainty, quantity.DimNone) / k
+		s.gain = certified(r.si(g.readout.GainUncertainty, quantity.DimNone), k)
+		s.volts = certified(r.si(g.readout.ExcitationUncertainty, quantity.DimNone), k)
 		if s.nominal > 0 {
-			s.uZero = s.output(r.si(g.readout.ZeroUncertainty, s.uutUnit.Dimension), s.excitation) / k
+			s.zeroOf = certified(s.output(r.si(g.readout.ZeroUncertainty, s.uutUnit.Dimension), s.excitation), k)
 		}
 	}
 	s.delay = r.si(g.reference.ResponseTime, quantity.DimSpan) + r.si(g.reference.ResponseTimeTolerance, quantity.DimSpan) +
@@ -113,10 +114,8 @@ func newScale(g *gathered) (*scale, error) {
 // date to the beginning of the run.
 func (s *scale) certificate(ref *record.Reference, began time.Time, r *reader) {
 	c := ref.Certificate
-	if c.CoverageFactor > 0 {
-		s.uReference = s.unit.FromSI(r.si(c.Uncertainty, quantity.DimPressure)) / c.CoverageFactor
-		s.uShare = r.si(c.UncertaintyOfReading, quantity.DimNone) / c.CoverageFactor
-	}
+	s.pointwise = certified(s.unit.FromSI(r.si(c.Uncertainty, quantity.DimPressure)), c.CoverageFactor)
+	s.share = certified(r.si(c.UncertaintyOfReading, quantity.DimNone), c.CoverageFactor)
 	years := 0.0
 	if date, err := time.Parse(time.DateOnly, c.Date); err == nil && !began.IsZero() {
 		years = math.Abs(began.Sub(date).Hours()) / hoursInYear
@@ -154,7 +153,8 @@ func (s *scale) heads(g *gathered, r *reader) {
 	}
 	perMetre := s.unit.FromSI((g.uut.FluidDensity - airDensity) * standardGravity)
 	s.head = perMetre * (r.si(g.reference.Height, quantity.DimLength) - r.si(g.uut.Height, quantity.DimLength))
-	s.uHead = math.Abs(perMetre) * r.si(g.uut.HeightUncertainty, quantity.DimLength)
+	u := math.Abs(perMetre) * r.si(g.uut.HeightUncertainty, quantity.DimLength)
+	s.headOf = stated{u, 1, u, uncertainty.Normal}
 }
 
 // output turns an electrical output in SI into pressure in the scale's unit.

@@ -3,6 +3,7 @@ package results
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"kymobench/bench/quantity"
 	"kymobench/procedures"
@@ -13,12 +14,15 @@ const legDown = "down"
 
 // staticFigures is what the points of a run gave, with what the limits need.
 type staticFigures struct {
-	static *Static
-	points []taken
-	first  int    // index in points of the first reading at the pressure nearest zero
-	zero   *taken // read before zeroing, in the zero stage
-	noise  noise
-	short  string // why the points cannot be judged, though there are some
+	static  *Static
+	figures fit.Figures
+	points  []taken
+	levels  []float64 // set pressures, from the lowest
+	zeros   []int     // the points of the zero that the errors after zeroing are counted from
+	zero    *taken    // read before zeroing, in the zero stage
+	noise   noise
+	short   string // why the points cannot be judged, though there are some
+	slope   float64
 }
 
 // staticResults reads the points and computes their figures.
@@ -32,6 +36,7 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 			return out, fmt.Errorf("point %d: %w", i+1, err)
 		}
 		if pt.Purpose == "zero" {
+			t.zeroed = g.zeroedReference
 			out.zero = &t
 			continue
 		}
@@ -58,11 +63,12 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 	if err != nil {
 		return out, err
 	}
-	for i, t := range out.points {
-		if math.Abs(at(t)) < math.Abs(at(out.points[out.first])) {
-			out.first = i
-		}
+	out.figures, out.slope = figures, 1
+	if figures.Line != nil {
+		out.slope = figures.Line.Slope
 	}
+	out.file(g.zeroedReference)
+	out.repeated(g.repeatability)
 	out.static = s.staticOf(figures)
 	out.static.Readings = len(out.points)
 	if s.assumed {
@@ -77,12 +83,150 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 	return out, nil
 }
 
-// at is the pressure a point is filed under.
-func at(t taken) float64 {
-	if t.hasSet {
-		return t.set
+// nearZero is the share of the span within which the set pressure nearest zero
+// is zero: ranked readings have their mean for a set pressure.
+const nearZero = 0.01
+
+// file gives every point its set pressure and its cell, and finds the zero that
+// errors after zeroing are counted from: the first cell at the set pressure
+// nearest zero, up before down, as fit has it.
+func (st *staticFigures) file(zeroed bool) {
+	sets := st.figures.Sets
+	grouped := !math.IsNaN(sets[0])
+	if grouped {
+		st.levels = slices.Clone(sets)
+		slices.Sort(st.levels)
+		st.levels = slices.Compact(st.levels)
 	}
-	return t.p
+	type key struct {
+		cycle, level int
+		down         bool
+	}
+	cells := map[key]int{}
+	key0, best := key{}, math.Inf(1)
+	span := 0.0
+	for i := range st.points {
+		span = math.Max(span, math.Abs(st.points[i].p))
+	}
+	for i := range st.points {
+		t := &st.points[i]
+		t.level = i
+		set := t.p
+		if grouped {
+			set = sets[i]
+			t.level, _ = slices.BinarySearch(st.levels, set)
+		}
+		t.zeroed = zeroed && math.Abs(set) <= nearZero*span
+		k := key{t.Cycle, t.level, t.Leg == legDown}
+		if !grouped {
+			k = key{cycle: i}
+		}
+		if _, known := cells[k]; !known {
+			cells[k] = len(cells)
+		}
+		t.cell = cells[k]
+		earlier := k.cycle < key0.cycle || k.cycle == key0.cycle && !k.down && key0.down
+		if d := math.Abs(set); d < best || d == best && k.level == key0.level && earlier {
+			best, key0 = d, k
+		}
+	}
+	for i := range st.points {
+		if st.points[i].cell == cells[key0] {
+			st.zeros = append(st.zeros, i)
+		}
+	}
+}
+
+// repeated completes the noise by what readings of different cycles, or about a
+// smooth curve, show. Where points are single readings it is all there is.
+func (st *staticFigures) repeated(known float64) {
+	n := &st.noise
+	within, dofWithin, size := st.within()
+	spread, dof := 0.0, 0.0
+	if r := st.figures.Repeatability; r.PooledSD != nil {
+		spread, dof = *r.PooledSD**r.PooledSD, float64(*r.DoF)
+	}
+	if single := st.points[0].UUT != ""; !single {
+		own := 0.0
+		for i := range st.points {
+			own += n.of(&st.points[i]) / float64(len(st.points))
+		}
+		n.vCell, n.dofCell = math.Max(0, spread-own), dof
+		return
+	}
+	n.from = fromRun
+	switch {
+	case known > 0:
+		n.vSingle, n.how, n.from = known*known, "stated", "stated"
+	case dofWithin > 0:
+		n.vSingle, n.dofSingle, n.how = within, dofWithin, "within one cell"
+		n.vCell, n.dofCell = math.Max(0, spread-within/size), dof
+	case dof > 0:
+		n.vSingle, n.dofSingle, n.how = spread, dof, "spread between cycles"
+	default:
+		if n.vSingle, n.dofSingle = st.aboutCurves(); n.dofSingle > 0 {
+			n.how = "about a curve through each leg"
+			return
+		}
+		n.why = "nothing shows the noise of a single reading: a second cycle would"
+	}
+}
+
+// within is the pooled variance of readings of one cell, its degrees of freedom,
+// and how many readings a cell has on average.
+func (st *staticFigures) within() (variance, dof, size float64) {
+	cells := 0
+	for i := range st.points {
+		cells = max(cells, st.points[i].cell+1)
+	}
+	if cells == len(st.points) {
+		return 0, 0, 1
+	}
+	sum, n := make([]float64, cells), make([]float64, cells)
+	residual := func(t *taken) float64 { return t.y - st.slope*t.p }
+	for i := range st.points {
+		t := &st.points[i]
+		sum[t.cell] += residual(t)
+		n[t.cell]++
+	}
+	for i := range st.points {
+		t := &st.points[i]
+		d := residual(t) - sum[t.cell]/n[t.cell]
+		variance += d * d
+	}
+	dof = float64(len(st.points) - cells)
+	return variance / dof, dof, float64(len(st.points)) / float64(cells)
+}
+
+// aboutCurves is the variance of single readings about a polynomial through
+// each leg of each cycle, of third order or as high as leaves two degrees of
+// freedom. What the curve does not follow counts as noise, so that it is the
+// most that the noise can be. Common practice, no source.
+func (st *staticFigures) aboutCurves() (variance, dof float64) {
+	type leg struct{ p, y []float64 }
+	legs := map[bool]*leg{false: {}, true: {}}
+	for i := range st.points {
+		t := &st.points[i]
+		l := legs[t.Leg == legDown]
+		l.p, l.y = append(l.p, t.p), append(l.y, t.y)
+	}
+	for _, down := range []bool{false, true} {
+		l := legs[down]
+		order := min(3, len(l.p)-3)
+		if order < 1 {
+			continue
+		}
+		c, err := fit.FitPolynomial(l.p, l.y, order, fit.Noise{})
+		if err != nil || c.DoF < 1 {
+			continue
+		}
+		variance += c.Residual * c.Residual * float64(c.DoF)
+		dof += float64(c.DoF)
+	}
+	if dof == 0 {
+		return 0, 0
+	}
+	return variance / dof, dof
 }
 
 // short says why a run's points cannot be judged: some are missing, or lie
