@@ -102,44 +102,6 @@ func (n noise) named() string {
 	return "noise of a reading: " + n.how
 }
 
-// common is the covariance that two figures of the same points have: Sum over
-// all that is uncertain of what it does to the one times what it does to the
-// other, in the scale's unit squared.
-func (s *scale) common(points []taken, a, b []weight, factorA, factorB float64, n noise) float64 {
-	ma, mb := s.sumsOf(points, a), s.sumsOf(points, b)
-	square := func(x stated) float64 { return x.standard * x.standard }
-	v := factorA * factorB * ma.p * mb.p * (square(s.share) + square(halfWidth(s.drift)) + square(halfWidth(s.warmth)))
-	for _, k := range ma.where {
-		v += factorA * factorB * ma.at[k] * mb.at[k] * square(s.pointwise)
-	}
-	v += factorA * factorB * ma.aged * mb.aged * square(halfWidth(s.driftAt))
-	v += ma.y * mb.y * (square(s.gain) + square(s.volts))
-	single := map[int]float64{}
-	cell := map[int]float64{}
-	for _, x := range b {
-		single[x.i] += x.g
-		cell[points[x.i].cell] += x.g
-	}
-	for _, x := range a {
-		t := &points[x.i]
-		if g, ok := single[x.i]; ok {
-			own := square(fullWidth(s.resolutionUUT)) + factorA*factorB*square(fullWidth(s.resolutionReference)) + n.vSingle
-			own += square(halfWidth(t.slope * s.delay))
-			if t.nP > 0 {
-				own += factorA * factorB * n.vP / float64(t.nP)
-			}
-			if t.kY > 0 {
-				own += n.vY / float64(t.kY)
-			}
-			v += x.g * g * own
-		}
-		if g, ok := cell[t.cell]; ok {
-			v += x.g * g * n.vCell
-		}
-	}
-	return v
-}
-
 // errorOf is the weights of the error of some points after zeroing: their mean
 // less that of the zero.
 func (st *staticFigures) errorOf(points []int) []weight {
