@@ -192,7 +192,7 @@ func TestScaleAndRepetition(t *testing.T) {
 			t.Errorf("by 2^%d: %+v, want %+v", e, *b.Line, want)
 		}
 	}
-	const times = 20_000
+	const times = 5_000
 	var many Data
 	for k := range times {
 		for i := range one.UUT {

@@ -189,7 +189,8 @@ func (w *work) lacksTop(ranked, longest []int) bool {
 		return false
 	}
 	highest := w.Reference[ranked[n-2]]
-	return math.Abs(highest-w.Reference[longest[n-2]]) <= math.Abs(highest-w.Reference[longest[n-1]])
+	below, top := math.Abs(highest-w.Reference[longest[n-2]]), math.Abs(highest-w.Reference[longest[n-1]])
+	return 2*below <= top*(1+1e-9) // but for rounding; between the two it may be either
 }
 
 // means averages x by group, two passes against rounding. Every group has at

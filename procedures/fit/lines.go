@@ -268,38 +268,63 @@ func (p *points) zeroBased() *Deviation {
 func (p *points) independent() *Deviation {
 	upper, lower := p.hull(1), p.hull(-1)
 	slope := func(h []int, k int) float64 { return (p.r[h[k+1]] - p.r[h[k]]) / (p.d[h[k+1]] - p.d[h[k]]) }
-	type contact struct {
-		from, to, opposite int // an edge, and the point across
-		slope, width       float64
-	}
-	all := make([]contact, 0, len(upper)+len(lower))
-	best := math.Inf(1)
-	try := func(from, to, opposite int, b float64) {
-		w := math.Abs((p.r[from] - p.r[opposite]) - b*(p.d[from]-p.d[opposite]))
-		all = append(all, contact{from, to, opposite, b, w})
-		best = min(best, w)
+	best, middle, steepness := math.Inf(1), 0.0, 0.0
+	try := func(on, opposite int, b float64) {
+		if w := math.Abs((p.r[on] - p.r[opposite]) - b*(p.d[on]-p.d[opposite])); w < best {
+			best, steepness = w, b
+			middle = (p.r[on] + p.r[opposite] - b*(p.d[on]+p.d[opposite])) / 2
+		}
 	}
 	for k := range len(upper) - 1 {
 		b := slope(upper, k)
-		try(upper[k], upper[k+1], lower[sort.Search(len(lower)-1, func(m int) bool { return slope(lower, m) >= b })], b)
+		try(upper[k], lower[sort.Search(len(lower)-1, func(m int) bool { return slope(lower, m) >= b })], b)
 	}
 	for k := range len(lower) - 1 {
 		b := slope(lower, k)
-		try(lower[k], lower[k+1], upper[sort.Search(len(upper)-1, func(m int) bool { return slope(upper, m) <= b })], b)
+		try(lower[k], upper[sort.Search(len(upper)-1, func(m int) bool { return slope(upper, m) <= b })], b)
 	}
-	var squares, middle, b float64
-	for _, c := range all {
-		if c.width > best+p.tolerance {
-			continue
-		}
-		share := (p.d[c.opposite] - p.d[c.from]) / (p.d[c.to] - p.d[c.from])
-		squares = max(squares, p.square(c.opposite, 0.5)+p.square(c.from, (1-share)/2)+p.square(c.to, share/2))
-		if c.width == best {
-			b = c.slope
-			middle = (p.r[c.from] + p.r[c.opposite] - b*(p.d[c.from]+p.d[c.opposite])) / 2
+	return p.deviation(best/2, middle, steepness, p.carried(best/2, middle, steepness))
+}
+
+// carried is the largest sum of squares of weights and noise over the threes of
+// points that carry the independent line: one on one side, and its nearest
+// neighbours on the other side.
+func (p *points) carried(e, intercept, slope float64) float64 {
+	if p.u == nil {
+		return 0
+	}
+	n := len(p.r)
+	touches := func(i, side int) bool { // 0 above, 1 below
+		off := p.r[i] - intercept - slope*p.d[i]
+		return math.Abs(off-e*float64(1-2*side)) <= p.tolerance
+	}
+	right := make([][2]int, n) // the next point that touches, by side; n: none
+	next := [2]int{n, n}
+	for i := n - 1; i >= 0; i-- {
+		right[i] = next
+		for side := range next {
+			if touches(i, side) {
+				next[side] = i
+			}
 		}
 	}
-	return p.deviation(best/2, middle, b, squares)
+	var squares float64
+	left := [2]int{-1, -1}
+	for i := range n {
+		for side := range left {
+			from, to := left[1-side], right[i][1-side]
+			if touches(i, side) && from >= 0 && to < n {
+				share := (p.d[i] - p.d[from]) / (p.d[to] - p.d[from])
+				squares = max(squares, p.square(i, 0.5)+p.square(from, (1-share)/2)+p.square(to, share/2))
+			}
+		}
+		for side := range left {
+			if touches(i, side) {
+				left[side] = i
+			}
+		}
+	}
+	return squares
 }
 
 // hull returns the indices of the upper (sign 1) or lower (-1) convex hull.

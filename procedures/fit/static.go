@@ -187,8 +187,9 @@ func refuse(d Data) error {
 
 // errors fills in y - p as read and after the zeroing.
 func (w *work) errors(f *Figures) {
-	zero := w.zeroOffset()
-	f.ZeroOffset = &zero
+	offset := w.zeroOffset()
+	f.ZeroOffset = &offset
+	zero := offset
 	if w.Zero != nil {
 		zero = *w.Zero
 	}
@@ -221,7 +222,7 @@ func (w *work) zeroOffset() float64 {
 }
 
 // extremes finds the highest, the lowest and the largest y - p - zero; of
-// equals the first in time.
+// equals the first in time, of those of one cell the higher.
 func (w *work) extremes(zero float64) (Extremes, *Located) {
 	high, low := math.Inf(-1), math.Inf(1)
 	for i := range w.UUT {
@@ -234,7 +235,7 @@ func (w *work) extremes(zero float64) (Extremes, *Located) {
 	for i := range w.UUT {
 		e := w.UUT[i] - w.Reference[i] - zero
 		take := func(at *int, near bool) {
-			if near && (*at < 0 || w.time[i] < w.time[*at]) {
+			if near && (*at < 0 || w.time[i] < w.time[*at] || w.time[i] == w.time[*at] && e > w.UUT[*at]-w.Reference[*at]-zero) {
 				*at = i
 			}
 		}

@@ -4,7 +4,6 @@ import (
 	"encoding/csv"
 	"errors"
 	"math"
-	"math/rand/v2"
 	"os"
 	"strconv"
 	"testing"
@@ -124,63 +123,6 @@ func TestRepeatability(t *testing.T) {
 	d.Cycle = []int{1, 1, 1, 1, 1, 1}
 	if f, err = Static(d); err != nil || f.Hysteresis != nil || f.Linearity.Independent != nil || !math.IsNaN(f.LargestError.At) {
 		t.Errorf("four up and two down were grouped: %+v, %v", f, err)
-	}
-}
-
-// Laws: a line added to the UUT's output moves no linearity and no hysteresis;
-// everything scales with the unit; the order of the rows does not matter.
-func TestLaws(t *testing.T) {
-	r := rand.New(rand.NewPCG(3, 4))
-	for range 200 {
-		var d Data
-		for cycle := 1; cycle <= 1+r.IntN(3); cycle++ {
-			for _, down := range []bool{false, true} {
-				for i := range 6 {
-					set := float64(60 * i)
-					p := set + r.NormFloat64()
-					d.Reference, d.Set = append(d.Reference, p), append(d.Set, set)
-					d.UUT = append(d.UUT, 1+1.01*p+0.3*r.NormFloat64())
-					d.Cycle, d.Down = append(d.Cycle, cycle), append(d.Down, down)
-				}
-			}
-		}
-		a, err := Static(d)
-		if err != nil {
-			t.Fatal(err)
-		}
-		moved, scaled := d, d
-		moved.UUT = append([]float64(nil), d.UUT...)
-		scaled.Reference, scaled.UUT, scaled.Set = nil, nil, nil
-		for i := range d.UUT {
-			moved.UUT[i] += 7 + 0.02*d.Reference[i]
-			scaled.Reference = append(scaled.Reference, d.Reference[i]*0.133322387415)
-			scaled.UUT, scaled.Set = append(scaled.UUT, d.UUT[i]*0.133322387415), append(scaled.Set, d.Set[i]*0.133322387415)
-		}
-		order := r.Perm(len(d.UUT))
-		var mixed Data
-		for _, i := range order {
-			mixed.Reference, mixed.UUT, mixed.Set = append(mixed.Reference, d.Reference[i]), append(mixed.UUT, d.UUT[i]), append(mixed.Set, d.Set[i])
-			mixed.Cycle, mixed.Down = append(mixed.Cycle, d.Cycle[i]), append(mixed.Down, d.Down[i])
-		}
-		for name, c := range map[string]struct {
-			d  Data
-			by float64
-		}{"line added": {moved, 1}, "unit changed": {scaled, 0.133322387415}, "rows mixed": {mixed, 1}} {
-			b, err := Static(c.d)
-			if err != nil {
-				t.Fatal(err)
-			}
-			for what, pair := range map[string][2]float64{
-				"independent": {a.Linearity.Independent.Value, b.Linearity.Independent.Value}, "terminal": {a.Linearity.Terminal.Value, b.Linearity.Terminal.Value},
-				"zero-based": {a.Linearity.ZeroBased.Value, b.Linearity.ZeroBased.Value}, "least squares": {a.Linearity.LeastSquares.Value, b.Linearity.LeastSquares.Value},
-				"hysteresis": {a.Hysteresis.Value, b.Hysteresis.Value},
-			} {
-				if name == "line added" && what != "hysteresis" && math.Abs(pair[0]-pair[1]) > 300e-9 ||
-					math.Abs(pair[0]*c.by-pair[1]) > 300e-9 {
-					t.Errorf("%s, %s: %v and %v", name, what, pair[0], pair[1])
-				}
-			}
-		}
 	}
 }
 
