@@ -197,7 +197,7 @@ func TestStaticOracle(t *testing.T) {
 			}
 		}
 		sets = append(sets, d)
-		ask.Static = append(ask.Static, staticTask{d.Reference, d.UUT, d.Cycle, d.Down, d.Set, d.Mounting, d.Zero})
+		ask.Static = append(ask.Static, staticTask(d))
 	}
 	var a answer
 	python(t, "oracle.py", ask, &a)
