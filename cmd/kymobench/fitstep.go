@@ -13,12 +13,15 @@ import (
 	"kymobench/procedures/record"
 	"kymobench/procedures/recorded"
 	"kymobench/procedures/results"
+	"kymobench/reports"
+	"kymobench/reports/layout1"
 )
 
 type fitStepOptions struct {
 	edge  string
 	line  record.Line
 	pulse record.Pulse
+	chart string
 	json  bool
 }
 
@@ -58,6 +61,7 @@ Exit 4 when natural frequency and damping are undetermined.`,
 	f.StringVar(&o.pulse.Rate, "pulse-rate", "", `that the plane of the chart is drawn for, as "120 1/min"`)
 	f.StringVar(&o.pulse.Tolerance, "tolerance", "", `of systolic and diastolic errors, as "2 mmHg"`)
 	f.StringVar(&o.pulse.ToleranceShare, "tolerance-share", "", `of the pressure, as "2 %"; with --tolerance the larger counts`)
+	f.StringVar(&o.chart, "chart", "", "draw response, fit and residuals into a file, .svg or .pdf")
 	f.BoolVar(&o.json, "json", false, "one JSON document on stdout")
 	return cmd
 }
@@ -65,13 +69,17 @@ Exit 4 when natural frequency and damping are undetermined.`,
 func stepFlags() []string {
 	return []string{
 		"edge-time", "line-length", "bore", "fluid", "density", "viscosity", "designed-frequency", "designed-damping", "barometer",
-		"pulse", "pulse-rate", "tolerance", "tolerance-share",
+		"pulse", "pulse-rate", "tolerance", "tolerance-share", "chart",
 	}
 }
 
 func runFitStep(path string, o fitStepOptions, io streams) error {
 	if err := o.readPulse(); err != nil {
 		return err
+	}
+	as := strings.TrimPrefix(filepath.Ext(o.chart), ".")
+	if o.chart != "" && as != "svg" && as != "pdf" {
+		return usagef("--chart %q is neither .svg nor .pdf", o.chart)
 	}
 	if o.line.Length == "" && o.line.Bore == "" && o.line.FluidDensity == "" {
 		o.line.Fluid = "" // the usual fluid of a line that nobody stated
@@ -88,6 +96,15 @@ func runFitStep(path string, o fitStepOptions, io streams) error {
 	r, err := results.Compute(events)
 	if err != nil {
 		return usageError{fmt.Errorf("%s: %w", path, err)}
+	}
+	if o.chart != "" {
+		drawn, err := layout1.StepChart(reports.StepOf(r), filepath.Base(path), as)
+		if err != nil {
+			return fmt.Errorf("chart: %w", err)
+		}
+		if err := writeWhole(o.chart, drawn); err != nil {
+			return err
+		}
 	}
 	r.Step.Reservations = append(r.Step.Reservations, r.Reservations...)
 	if o.json {

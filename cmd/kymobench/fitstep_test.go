@@ -161,3 +161,20 @@ func TestFitStepRefusals(t *testing.T) {
 		}
 	}
 }
+
+// A chart appears whole; the result is printed as without it.
+func TestFitStepChart(t *testing.T) {
+	path := ringing(t, 15, 0.4, 0.2)
+	for name, begins := range map[string]string{"c.svg": "<svg ", "c.pdf": "%PDF-"} {
+		chart := filepath.Join(t.TempDir(), name)
+		if _, err := fittedStep(t, path, "--edge-time", "0", "--chart", chart); err != nil {
+			t.Fatal(err)
+		}
+		if data, err := os.ReadFile(chart); err != nil || !strings.HasPrefix(string(data), begins) {
+			t.Errorf("%s: %v, %.20q", name, err, data)
+		}
+	}
+	if _, err := fittedStep(t, path, "--chart", filepath.Join(t.TempDir(), "c.png")); err == nil || !strings.Contains(err.Error(), "neither") {
+		t.Errorf("png: %v", err)
+	}
+}

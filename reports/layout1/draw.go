@@ -82,7 +82,11 @@ func (p *paper) point(x, y float64, op string) {
 }
 
 func (p *paper) emit() {
-	if p.err == nil {
+	switch {
+	case p.err != nil:
+	case p.svg != nil:
+		p.err = p.svg.operators(p.raw)
+	default:
 		p.pdf.RawWriteStr(string(p.raw))
 	}
 }

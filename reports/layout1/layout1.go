@@ -16,6 +16,7 @@ import (
 	"fmt"
 	"slices"
 	"strings"
+	"time"
 
 	"github.com/jung-kurt/gofpdf"
 
@@ -43,23 +44,13 @@ func Render(d *reports.Document, attachments []Attachment) ([]byte, error) {
 	if d.Layout != Number {
 		return nil, fmt.Errorf("%w: %d, this is layout %d", ErrOtherLayout, d.Layout, Number)
 	}
-	pdf := gofpdf.New("P", "mm", "A4", "")
-	pdf.SetCatalogSort(true)
-	pdf.SetCreationDate(d.Made)
-	pdf.SetModificationDate(d.Made)
+	pdf := blank(d.Made)
 	pdf.SetTitle("Report "+d.Run, true)
 	author := d.Department
 	if author == "" {
 		author = "Kymobench"
 	}
 	pdf.SetAuthor(author, true)
-	pdf.SetProducer("Kymobench, page layout 1", true)
-	pdf.SetAutoPageBreak(false, 0)
-	pdf.SetMargins(0, 0, 0)
-	pdf.SetCellMargin(0)
-	for _, f := range faces() {
-		pdf.AddUTF8FontFromBytes(f.family, "", bytes.Clone(f.ttf))
-	}
 	p := &paper{pdf: pdf, d: d, cover: newCoverage()}
 	p.check(d.Department)
 	attachments = slices.SortedFunc(slices.Values(attachments), func(a, b Attachment) int { return strings.Compare(a.Name, b.Name) })
@@ -90,4 +81,20 @@ func Render(d *reports.Document, attachments []Attachment) ([]byte, error) {
 		return nil, fmt.Errorf("report %s: write the pages: %w", d.Run, err)
 	}
 	return out.Bytes(), nil
+}
+
+// blank is a PDF without a page, with the layout's fonts.
+func blank(made time.Time) *gofpdf.Fpdf {
+	pdf := gofpdf.New("P", "mm", "A4", "")
+	pdf.SetCatalogSort(true)
+	pdf.SetCreationDate(made)
+	pdf.SetModificationDate(made)
+	pdf.SetProducer("Kymobench, page layout 1", true)
+	pdf.SetAutoPageBreak(false, 0)
+	pdf.SetMargins(0, 0, 0)
+	pdf.SetCellMargin(0)
+	for _, f := range faces() {
+		pdf.AddUTF8FontFromBytes(f.family, "", bytes.Clone(f.ttf))
+	}
+	return pdf
 }

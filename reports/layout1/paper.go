@@ -2,6 +2,7 @@ package layout1
 
 import (
 	"fmt"
+	"math"
 	"strings"
 
 	"github.com/jung-kurt/gofpdf"
@@ -50,6 +51,8 @@ type paper struct {
 	raw     []byte
 	marked  []byte // the operators of the mark, the same on every page
 	cover   *coverage
+	svg     *drawing // not nil: what is drawn and written goes there, and pdf only measures
+	fill    colour   // of text
 	err     error
 }
 
@@ -68,6 +71,10 @@ func (p *paper) newPage() {
 func (p *paper) turned(x, y, sin, cos float64, text string) {
 	p.check(text)
 	if p.err != nil {
+		return
+	}
+	if p.svg != nil {
+		p.svg.text(p, x, y, -math.Atan2(sin, cos)*180/math.Pi, text)
 		return
 	}
 	p.pdf.TransformBegin()
@@ -124,13 +131,20 @@ func (p *paper) font(family string, size float64) {
 	}
 }
 
-func (p *paper) colour(c colour) { p.pdf.SetTextColor(int(c.r), int(c.g), int(c.b)) }
+func (p *paper) colour(c colour) {
+	p.fill = c
+	p.pdf.SetTextColor(int(c.r), int(c.g), int(c.b))
+}
 
 // text writes one line with its baseline at y. Blanks that do not break are
 // plain blanks on paper, so that a search finds "24 Hz".
 func (p *paper) text(x, y float64, text string) {
 	p.check(text)
 	if p.err != nil || text == "" {
+		return
+	}
+	if p.svg != nil {
+		p.svg.text(p, x, y, 0, text)
 		return
 	}
 	p.pdf.Text(x, y, strings.ReplaceAll(text, "\u00a0", " "))

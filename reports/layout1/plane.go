@@ -30,6 +30,13 @@ func (p *paper) plane(pl *reports.Plane) {
 			ys = append(ys, *b*1.15)
 		}
 	}
+	for _, curve := range pl.Contours {
+		for i, f := range curve.Frequency {
+			if z := curve.Damping[i]; z >= 0.1 && z <= 1 {
+				xs, ys = append(xs, 1.05*f), append(ys, 1.15)
+			}
+		}
+	}
 	_, x1 := spread(xs)
 	_, y1 := spread(ys)
 	scaled(&chart.X, 0, x1, 7)
