@@ -22,6 +22,16 @@ func reasonText(code string) string {
 		return "the step's own edge is too slow for this frequency"
 	case "uncertainty_too_large":
 		return "the uncertainty is too large"
+	case "bounced":
+		return "the pressure turned back for a while, as behind a valve that bounces"
+	case "overlapping":
+		return "another step follows before this one is over"
+	case "truncated":
+		return "too little of the trace lies before or after it"
+	case "lag":
+		return "a slow edge or a filter that was not stated lies before the samples"
+	case "second_mode":
+		return "a second mode swings beside the line"
 	}
 	return strings.ReplaceAll(code, "_", " ")
 }

@@ -17,14 +17,15 @@ const (
 // aliases searches the full problem from the aliases of a minimum and returns
 // the best of them, if one explains the samples about as well or better. The
 // damping of a pole is kept, its frequency becomes 2 pi k rate +- wd for k = 1
-// and 2. Time t0 is tried at places between the samples around half, where
-// the trace is half way. Source: the sampling theorem; search by hand.
-func aliases(full *problem, f found, half float64) (best found, ok bool) {
+// and 2. Time t0 is tried at places between the samples around that of the
+// slow answer, whose first sample is the fast one's too. Source: the sampling
+// theorem; search by hand.
+func aliases(full *problem, f found) (best found, ok bool) {
 	w, zeta := math.Exp(f.theta[lnOmega]), math.Exp(f.theta[lnZeta])
 	if full.applied != nil || zeta > 1.3 || 2*math.Pi/(w*full.dt) > aliasSamples {
 		return found{}, false
 	}
-	near := full.around(half)
+	near := full.around(f.theta[delay])
 	sigma, wd := zeta*w, w*DampedFrequency(zeta)
 	around := 2 * math.Pi / full.dt
 	var n normal
@@ -43,7 +44,7 @@ func aliases(full *problem, f found, half float64) (best found, ok bool) {
 			s.theta = f.theta
 			s.theta[lnOmega] = math.Log(math.Hypot(sigma, other))
 			s.theta[lnZeta] = math.Log(sigma / math.Hypot(sigma, other))
-			s.theta[delay] = (math.Floor(half/full.dt) - 1 + 2*float64(k)/aliasPhases) * full.dt
+			s.theta[delay] = f.theta[delay] + (3*float64(k)/aliasPhases-1)*full.dt
 			near.normalAt(&s.theta, &n)
 			if n.cost < lowest.cost {
 				s.cost = n.cost
@@ -69,7 +70,7 @@ func aliases(full *problem, f found, half float64) (best found, ok bool) {
 // around is the part of a problem near a time, at the full rate.
 func (p *problem) around(at float64) *problem {
 	centre := int(math.Round((at - p.first) / p.dt))
-	from := max(0, centre-aliasReach/3)
+	from := max(0, centre-aliasReach/4)
 	to := min(len(p.y), from+aliasReach)
 	part := &problem{
 		one: p.one[from:to], tau: p.tau[from:to], y: p.y[from:to],

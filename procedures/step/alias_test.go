@@ -14,7 +14,7 @@ func TestAlias(t *testing.T) {
 	for range trials(150, 3000) {
 		p := plan{fn: 40 + 20*r.Float64(), zeta: 0.1 + 0.1*r.Float64(), before: 0.8, spacing: 1.5, heights: []float64{100}, sigma: 0.4, phase: r.Float64()}
 		p.rate = p.fn * (1.05 + 0.2*r.Float64())
-		_, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
+		_, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -30,7 +30,7 @@ func TestAlias(t *testing.T) {
 		t.Errorf("%d silent answers, %d told to be sampled too slowly", silent, slow)
 	}
 	p := plan{fn: 5, zeta: 0.7, rate: 60, before: 0.8, spacing: 1.5, heights: []float64{100}, sigma: 0.4}
-	if s := one(t, p.make(r), Settings{EdgeStated: true, MinimumStep: 8}); !s.Determined || s.has(SamplingSlow) || !near(s.Frequency.Value, 5, 0.1) {
+	if s := one(t, p.make(r), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8}); !s.Determined || s.has(SamplingSlow) || !near(s.Frequency.Value, 5, 0.1) {
 		t.Errorf("twelve samples a period: %v %v %+v", s.Reasons, s.Reservations, s.Frequency)
 	}
 }

@@ -40,7 +40,7 @@ func TestGoodTraces(t *testing.T) {
 	var sum tally
 	for range trials(25, 2000) {
 		p := goodPlan(r)
-		steps, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
+		steps, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if err != nil {
 			t.Fatal(err)
 		}

@@ -28,7 +28,7 @@ func TestCoverage(t *testing.T) {
 		count int
 	}
 	var rows []row
-	known := Settings{EdgeStated: true, MinimumStep: 8}
+	known := Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8}
 	base := func(fn, zeta float64) plan {
 		return plan{fn: fn, zeta: zeta, rate: max(250, 20*fn), before: 0.4, spacing: 25*slowest(fn, zeta) + 0.2, heights: []float64{100}, sigma: 0.5}
 	}

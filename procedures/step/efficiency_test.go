@@ -159,7 +159,7 @@ func (c effCase) trace(r *rand.Rand) Trace {
 }
 
 func (c effCase) settings() Settings {
-	return Settings{EdgeStated: c.edge == "known", MinimumStep: 8}
+	return Settings{EdgeStated: c.edge == "known", ReadoutStated: true, MinimumStep: 8}
 }
 
 // effRow is what a case came to.

@@ -15,19 +15,21 @@ const (
 )
 
 // judge turns a fit into a Step: uncertainties, reasons and reservations. It
-// reports false when what was fitted is no step at all.
-func (a *analysis) judge(f fitted) (Step, bool) {
+// reports false when what was fitted is no step at all. Only with name are
+// other models fitted to say in which way this one is wrong.
+func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	p := f.problem
 	s := Step{From: f.from, To: f.to, EdgeWidth: f.width()}
 	height := f.scale * f.beta[response]
 	n := float64(f.to - f.from)
 	s.Height = height
 	s.Drift = f.scale * f.beta[1] * 2 / (n - 1) * a.trace.Rate
-	at := float64(f.origin) * a.dt
+	at, middle := float64(f.origin)*a.dt, f.theta[delay]
 	if p.applied == nil {
 		at += f.theta[delay]
 	} else {
 		at += a.appliedMiddle(f)
+		middle += a.appliedMiddle(f)
 		s.Delay = f.theta[delay]
 	}
 	s.At = a.trace.Start + at
@@ -88,6 +90,8 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 	if !(uLog <= largestUncertainty) || float64(f.to-f.post)*a.dt < settling(2*math.Pi*fn, zeta) {
 		add(UncertaintyTooLarge)
 	}
+	s.trial = q.try(j, c, middle, fn, zeta, name)
+	q.sentence(s.trial, a.settings.ReadoutStated)
 	q.reserve(fn, zeta)
 	if p.fitWidth {
 		s.reserve(EdgeNotStated, "the edge of the step was neither stated nor measured; its width was fitted, its shape is not known")
@@ -105,6 +109,11 @@ func (a *analysis) judge(f fitted) (Step, bool) {
 
 func (s *Step) reserve(code, text string) {
 	s.Reservations = append(s.Reservations, Reservation{code, text})
+}
+
+// doubted tells whether the model was found wrong.
+func (s *Step) doubted() bool {
+	return s.has(Misfit) || s.has(Bounced) || s.has(Overlapping) || s.has(Lag) || s.has(SecondMode)
 }
 
 func (s *Step) has(code string) bool {

@@ -150,7 +150,7 @@ func TestManySteps(t *testing.T) {
 	for _, spacing := range []float64{0.15, 0.3, 0.6, 0.7, 2} {
 		for _, zeta := range []float64{0.1, 0.64, 1.1} {
 			p := plan{fn: 30, zeta: zeta, rate: 1000, before: 0.5, spacing: spacing, heights: []float64{100, -100, 150, 50, -200, 300}, sigma: 0.2, phase: 0.2}
-			steps, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
+			steps, c, reservations, err := Analyse(p.make(r), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 			if err != nil {
 				t.Fatal(err)
 			}

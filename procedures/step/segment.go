@@ -66,7 +66,7 @@ func (a *analysis) steps() []Step {
 		var s Step
 		is := false
 		if fits {
-			s, is = a.judge(f)
+			s, is = a.judge(f, true)
 		}
 		if split && !s.Determined {
 			steps[len(steps)-1].reserve(Misfit, "the trace leaves the fit soon after the step, and not by another step")
@@ -117,7 +117,7 @@ func (a *analysis) hidden(w window, f fitted, fits bool) (onset int, found bool)
 			continue
 		}
 		reach := 2 * settling(math.Exp(g.theta[lnOmega]), math.Exp(g.theta[lnZeta]))
-		if s, is := a.judge(g); !is || !s.Determined || s.has(Misfit) || float64(to-g.post)*a.dt < reach {
+		if s, is := a.judge(g, false); !is || !s.Determined || s.doubted() || float64(to-g.post)*a.dt < reach {
 			return 0, false
 		}
 		rest := make([]float64, w.to-to)

@@ -36,6 +36,10 @@ type Trace struct {
 type Settings struct {
 	EdgeStated bool    // EdgeTime is known; without it, and without Trace.Applied, the width is fitted
 	EdgeTime   float64 // 10 to 90 % time of the edge, s; 0 an ideal step. Held as a ramp of full width EdgeTime/0.8
+	// ReadoutStated: nothing lies between the line and the samples but a filter
+	// too fast to matter. Without it, a lag that the trace cannot exclude and
+	// that would move fn by over 20 % is a reservation.
+	ReadoutStated bool
 	// MinimumStep is the least departure taken for a step, in the unit of
 	// the trace (common practice here: 8 mmHg). 0: a twentieth of the range
 	// of the trace. Six times the noise is required in any case.
@@ -54,9 +58,14 @@ const (
 	SamplingTooSlow     = "sampling_too_slow"
 	EdgeTooSlow         = "edge_too_slow"
 	UncertaintyTooLarge = "uncertainty_too_large"
+	Bounced             = "bounced"     // the pressure turned back for a while
+	Overlapping         = "overlapping" // another step follows before this one is over
+	Truncated           = "truncated"   // too little of the trace before or after the step
+	Lag                 = "lag"         // a lag that nobody stated
 )
 
-// Codes of reservations.
+// Codes of reservations, besides Bounced, Overlapping and Lag where they move
+// the figures little.
 const (
 	Misfit        = "misfit"
 	ColouredNoise = "coloured_noise"
@@ -64,6 +73,11 @@ const (
 	Drift         = "drift"
 	EdgeNotStated = "edge_not_stated"
 	SamplingSlow  = "sampling_slow"
+	SecondMode    = "second_mode"
+	// ReadoutNotStated: a filter nobody stated could move fn by over 20 %
+	// without a trace.
+	ReadoutNotStated = "readout_not_stated"
+	ResidualWave     = "residual_wave" // a pulse still there after the step
 )
 
 // Reservation weakens a figure without stopping it.
@@ -94,6 +108,8 @@ type Step struct {
 	DegreesOfFreedom float64   // of the standard uncertainties
 	Autocorrelation  float64   // of the residuals from sample to sample
 	Reservations     []Reservation
+
+	trial trial
 }
 
 // ErrTrace is wrapped by every refusal of Analyse.

@@ -24,7 +24,7 @@ func TestNotClipped(t *testing.T) {
 		if r.IntN(2) == 0 {
 			p.heights[0] = -100
 		}
-		steps, _, _, err := Analyse(p.make(r), Settings{EdgeStated: true, MinimumStep: 8})
+		steps, _, _, err := Analyse(p.make(r), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -75,7 +75,7 @@ func TestClipped(t *testing.T) {
 				trace.Pressure[i] = 300 - trace.Pressure[i]
 			}
 		}
-		steps, c, _, err := Analyse(trace, Settings{EdgeStated: true, MinimumStep: 8})
+		steps, c, _, err := Analyse(trace, Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -98,14 +98,14 @@ func TestTruncated(t *testing.T) {
 	r := rand.New(rand.NewPCG(23, 1))
 	wrong, all := 0, trials(120, 3000)
 	for range all {
-		trace, s, fn, note := hostile("truncated", r)
-		_, c, _, err := Analyse(trace, s)
+		h := hostile("truncated", r)
+		_, c, _, err := Analyse(h.trace, h.settings)
 		if err != nil {
 			t.Fatal(err)
 		}
-		if c.Determined && math.Abs(math.Log(c.Frequency.Value/fn)) > math.Max(0.05, 5*c.Frequency.StandardUncertainty/c.Frequency.Value) {
+		if c.Determined && math.Abs(math.Log(c.Frequency.Value/h.fn)) > math.Max(0.05, 5*c.Frequency.StandardUncertainty/c.Frequency.Value) {
 			wrong++
-			t.Logf("fn %.4g u %.2g: %s", c.Frequency.Value, c.Frequency.StandardUncertainty, note)
+			t.Logf("fn %.4g u %.2g: %s", c.Frequency.Value, c.Frequency.StandardUncertainty, h.note)
 		}
 	}
 	if wrong > all/150 {
@@ -117,11 +117,11 @@ func TestTruncated(t *testing.T) {
 func TestSpikesLeftOut(t *testing.T) {
 	p := plan{fn: 20, zeta: 0.5, rate: 800, before: 0.5, spacing: 1, heights: []float64{100}, sigma: 0.3}
 	trace := p.make(rand.New(rand.NewPCG(24, 1)))
-	clean := one(t, trace, Settings{EdgeStated: true, MinimumStep: 8})
+	clean := one(t, trace, Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 	for _, i := range []int{100, 250, 407, 430, 900} {
 		trace.Pressure[i] += 60
 	}
-	spiked := one(t, trace, Settings{EdgeStated: true, MinimumStep: 8})
+	spiked := one(t, trace, Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 	if !spiked.Determined || !spiked.has(Misfit) || math.Abs(spiked.Frequency.Value-clean.Frequency.Value) > clean.Frequency.StandardUncertainty/2 ||
 		!near(spiked.Frequency.StandardUncertainty, clean.Frequency.StandardUncertainty, 0.1) {
 		t.Errorf("%v %v with spikes %+v, without %+v", spiked.Reasons, spiked.Reservations, spiked.Frequency, clean.Frequency)
@@ -157,7 +157,7 @@ func TestSampling(t *testing.T) {
 		{5.5, 0.3, false, false}, {6, 1.4, true, false}, {9, 1.4, true, false}, {11, 1.4, false, false},
 	} {
 		p := plan{fn: 50, zeta: c.zeta, rate: 50 * c.ratio, before: 0.6, spacing: 1.5, heights: []float64{100}, sigma: 0.05, phase: 0.4}
-		s := one(t, p.make(rand.New(rand.NewPCG(26, 1))), Settings{EdgeStated: true, MinimumStep: 8})
+		s := one(t, p.make(rand.New(rand.NewPCG(26, 1))), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if slices.Contains(s.Reasons, SamplingTooSlow) != c.refused || s.has(SamplingSlow) != c.reserve || s.Determined == c.refused {
 			t.Errorf("%g samples a period, zeta %g: %v %v", c.ratio, c.zeta, s.Reasons, s.Reservations)
 		}
@@ -219,7 +219,7 @@ func TestOnsets(t *testing.T) {
 		for range 5 {
 			trace.Pressure[r.IntN(len(trace.Pressure))] += 100 * (r.Float64() - 0.5)
 		}
-		found, c, reservations, err := Analyse(trace, Settings{EdgeStated: true, MinimumStep: 8})
+		found, c, reservations, err := Analyse(trace, Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -250,14 +250,14 @@ func TestMisfitTold(t *testing.T) {
 	for range n {
 		p := plan{fn: 20, zeta: 0.3, rate: 1000, before: 0.5, spacing: 1.5, heights: []float64{100}, sigma: 0.5, phase: r.Float64(), phi: 0.5}
 		trace := p.make(r)
-		if s := one(t, trace, Settings{EdgeStated: true, MinimumStep: 8}); s.has(Misfit) {
+		if s := one(t, trace, Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8}); s.has(Misfit) {
 			falsely++
 		}
 		for i := range trace.Pressure {
 			since := float64(i)/p.rate - p.at(0)
 			trace.Pressure[i] += 8 * (trueEdge(since, 0, 50, 0.1) - trueEdge(since, 0, p.fn, p.zeta))
 		}
-		if s := one(t, trace, Settings{EdgeStated: true, MinimumStep: 8}); s.has(Misfit) {
+		if s := one(t, trace, Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8}); s.has(Misfit) {
 			told++
 		}
 	}
@@ -278,7 +278,7 @@ func TestUncertaintyTooLarge(t *testing.T) {
 		if c.refused != (bound > 0.07) || !c.refused && bound > 0.03 {
 			t.Fatalf("sigma %g: bound %g", c.sigma, bound)
 		}
-		s := one(t, p.make(rand.New(rand.NewPCG(29, 1))), Settings{EdgeStated: true, MinimumStep: 8})
+		s := one(t, p.make(rand.New(rand.NewPCG(29, 1))), Settings{EdgeStated: true, ReadoutStated: true, MinimumStep: 8})
 		if s.Determined == c.refused || slices.Contains(s.Reasons, UncertaintyTooLarge) != c.refused || c.refused && s.Frequency != (Estimate{}) {
 			t.Errorf("sigma %g: %v %+v", c.sigma, s.Reasons, s.Frequency)
 		}

@@ -38,7 +38,7 @@ func (a *analysis) fit(w window) (fitted, bool) {
 	if !any {
 		return f, false
 	}
-	f.alias, f.aliased = aliases(f.problem, f.found, half)
+	f.alias, f.aliased = aliases(f.problem, f.found)
 	f.place(a)
 	// Cut a window that is far longer than the answer, and fit again.
 	tau := settling(math.Exp(f.theta[lnOmega]), math.Exp(f.theta[lnZeta]))
