@@ -2,15 +2,39 @@ package step
 
 import "math"
 
-// appliedInput is a measured applied pressure on the same samples as the
-// trace, less its level before the step and divided by its own height, so
-// that the fitted height is the height of the answer.
+// appliedInput is what drives the line, on the same samples as the trace: a
+// measured applied pressure, less its level before the step and divided by its
+// own height so that the fitted height is the height of the answer; or the
+// shape that a stated readout gives the edge. Between samples it is straight,
+// but for some intervals that are divided into finer ones.
 type appliedInput struct {
-	u []float64
+	u    []float64
+	from int       // first divided interval
+	fine []float64 // at from, from + 1/divisions, ...; one more than its divisions
+
+	// shaped: the input is made anew for every width of the edge.
+	shape  *readout
+	anchor float64   // time of the middle of the edge in u, s from the origin
+	du     []float64 // derivatives of u and fine by the square of the width
+	dfine  []float64
+	lower  []float64 // room
 }
 
-func (a *appliedInput) at(i int) float64 {
-	return a.u[max(0, min(i, len(a.u)-1))]
+// divisions of a refined interval.
+const divisions = 8
+
+func (a *appliedInput) at(i int) float64 { return clamped(a.u, i) }
+
+func clamped(u []float64, i int) float64 { return u[max(0, min(i, len(u)-1))] }
+
+// inside returns the fine values of the interval that begins at node, nil
+// where it is not divided.
+func (a *appliedInput) inside(fine []float64, node int) []float64 {
+	k := (node - a.from) * divisions
+	if k < 0 || k+divisions >= len(fine) {
+		return nil
+	}
+	return fine[k : k+divisions+1]
 }
 
 // hold is the exact step over delta = w dt radians of the state (p, q = p'/w)
@@ -67,45 +91,92 @@ func newTriple(delta, zeta float64) triple {
 	return t
 }
 
-// recursor carries the state and its two sensitivities along the applied
-// pressure. Column g at sample i is p at t_i - t0: the state at the sample
-// before that instant, advanced by the part of a sample that is left.
+// recursor carries the state and its sensitivities along the input. Column g
+// at sample i is p at t_i - t0: the state at the sample before that instant,
+// advanced by the part of a sample that is left.
 type recursor struct {
 	whole, part triple
+	fine, rest  triple // the same over one division, and over what is left of one
 	omega       float64
 	fraction    float64 // of a sample that is left
+	divided     int     // whole divisions in it
+	left        float64 // of a division
 	lag         int     // sample i needs the state at node i - lag
 	state       [3][2]float64
+	width       [2]float64 // sensitivity to the square of the width
 }
 
 func (r *recursor) start(a *appliedInput, theta *[most]float64, dt float64) {
 	w, zeta := math.Exp(theta[lnOmega]), math.Exp(theta[lnZeta])
-	lag := math.Ceil(theta[delay] / dt)
+	behind := theta[delay] - a.anchor
+	lag := math.Ceil(behind / dt)
 	r.lag = int(lag)
 	r.omega = w
 	r.whole = newTriple(w*dt, zeta)
-	r.fraction = lag - theta[delay]/dt
+	r.fraction = lag - behind/dt
 	r.part = newTriple(w*dt*r.fraction, zeta)
-	r.state = [3][2]float64{}
+	if a.fine != nil {
+		r.divided = min(int(r.fraction*divisions), divisions-1)
+		r.left = r.fraction*divisions - float64(r.divided)
+		r.fine = newTriple(w*dt/divisions, zeta)
+		r.rest = newTriple(w*dt/divisions*r.left, zeta)
+	}
+	r.state, r.width = [3][2]float64{}, [2]float64{}
 	// With a negative delay the first sample needs a later node.
 	for node := 0; node < -r.lag; node++ {
-		r.state = r.whole.advance(&r.state, a.at(node), a.at(node+1))
+		r.over(a, node)
 	}
+}
+
+// over takes the state from a node to the next and returns it as it was the
+// fraction on the way.
+func (r *recursor) over(a *appliedInput, node int) (out [3][2]float64, width [2]float64) {
+	if fine := a.inside(a.fine, node); fine != nil {
+		dfine := a.inside(a.dfine, node)
+		for k := range divisions {
+			if k == r.divided {
+				out = r.rest.advance(&r.state, fine[k], fine[k]+r.left*(fine[k+1]-fine[k]))
+				if dfine != nil {
+					width = r.rest.value.advance(r.width, dfine[k], dfine[k]+r.left*(dfine[k+1]-dfine[k]))
+				}
+			}
+			r.state = r.fine.advance(&r.state, fine[k], fine[k+1])
+			if dfine != nil {
+				r.width = r.fine.value.advance(r.width, dfine[k], dfine[k+1])
+			}
+		}
+		return out, width
+	}
+	u0, u1 := a.at(node), a.at(node+1)
+	out = r.part.advance(&r.state, u0, u0+r.fraction*(u1-u0))
+	r.state = r.whole.advance(&r.state, u0, u1)
+	if a.du != nil {
+		u0, u1 = clamped(a.du, node), clamped(a.du, node+1)
+		width = r.part.value.advance(r.width, u0, u0+r.fraction*(u1-u0))
+		r.width = r.whole.value.advance(r.width, u0, u1)
+	}
+	return out, width
 }
 
 func (r *recursor) fill(a *appliedInput, start, k int, g *[blockSize]float64, d *[4][blockSize]float64) {
 	for i := range k {
-		node := start + i - r.lag
-		out := r.state
-		if node >= 0 {
-			u0, u1 := a.at(node), a.at(node+1)
-			out = r.part.advance(&r.state, u0, u0+r.fraction*(u1-u0))
-			r.state = r.whole.advance(&r.state, u0, u1)
+		out, width := r.state, r.width
+		if node := start + i - r.lag; node >= 0 {
+			out, width = r.over(a, node)
 		}
 		g[i] = out[0][0]
 		d[lnOmega][i] = out[1][0]
 		d[lnZeta][i] = out[2][0]
 		d[delay][i] = -r.omega * out[0][1]
+		d[squared][i] = width[0]
+	}
+}
+
+// advance takes one state over one hold.
+func (h *hold) advance(x [2]float64, u0, u1 float64) [2]float64 {
+	return [2]float64{
+		h.phi[0][0]*x[0] + h.phi[0][1]*x[1] + h.b0[0]*u0 + h.b1[0]*u1,
+		h.phi[1][0]*x[0] + h.phi[1][1]*x[1] + h.b0[1]*u0 + h.b1[1]*u1,
 	}
 }
 
@@ -198,4 +269,67 @@ func (p *problem) run(u []float64, theta *[most]float64) []float64 {
 		copy(out[start:], g[:k])
 	}
 	return out
+}
+
+// form makes the input of a shaped edge for one width: the step response of
+// the readout, with a ramp before it, centred on the anchor. Values are taken
+// a twelfth of their second difference down, so that the straight lines
+// between them have the means of what they stand for; not at the first, where
+// the corner of the edge lies.
+func (a *appliedInput) form(width float64, first, dt float64, derivative bool) {
+	n := len(a.u)
+	long := float64(len(a.shape.value)) * a.shape.h
+	start := a.anchor - width/2
+	a.from = max(0, int(math.Floor((start-first)/dt))-1)
+	to := min(n-1, int(math.Ceil((start+width+long-first)/dt))+2)
+	cells := max(0, to-a.from) * divisions
+	if cap(a.fine) < cells+1 {
+		a.fine = make([]float64, 0, cells+1+64*divisions)
+	}
+	if derivative && cap(a.dfine) < cells+1 {
+		a.dfine, a.lower = make([]float64, 0, cap(a.fine)), make([]float64, 0, cap(a.fine))
+	}
+	a.fine = a.fine[:cells+1]
+	h := dt / divisions
+	at := func(k int, width float64) float64 {
+		return a.shape.edge(first+float64(a.from)*dt+float64(k)*h-a.anchor, width)
+	}
+	values := func(out []float64, width float64) {
+		before, here := at(-1, width), at(0, width)
+		for k := range out {
+			next := at(k+1, width)
+			out[k] = here
+			if before > 0 {
+				out[k] -= (next - 2*here + before) / 12
+			}
+			before, here = here, next
+		}
+	}
+	values(a.fine, width)
+	for i := range a.u {
+		switch {
+		case i <= a.from:
+			a.u[i] = 0
+		case i >= to:
+			a.u[i] = 1
+		default:
+			a.u[i] = a.fine[(i-a.from)*divisions]
+		}
+	}
+	if !derivative {
+		return
+	}
+	// By difference, from a width that is not lost in the divisions.
+	a.dfine = a.dfine[:cells+1]
+	low := math.Max(width, h)
+	high := math.Sqrt(low*low + h*h)
+	values(a.dfine, high)
+	a.lower = a.lower[:cells+1]
+	values(a.lower, low)
+	for k := range a.dfine {
+		a.dfine[k] = (a.dfine[k] - a.lower[k]) / (high*high - low*low)
+	}
+	if a.du == nil {
+		a.du = make([]float64, n) // 0 outside the divided intervals
+	}
 }

@@ -146,7 +146,7 @@ func (q *quality) misfit(fn, zeta float64) (string, bool) {
 	length := max(1, int(math.Round(q.rate/(8*fn))))
 	tau := settling(2*math.Pi*fn, zeta)
 	split := q.post - q.from - 1
-	if q.problem.applied == nil {
+	if !q.problem.measured {
 		split -= int(q.width() / 2 * q.rate)
 	}
 	split = max(0, min(split, len(s.Residuals)))

@@ -26,7 +26,8 @@ type problem struct {
 	first, dt   float64   // time of sample 0 and spacing, s
 	width       float64   // edge held at this full width, s
 	fitWidth    bool
-	applied     *appliedInput // nil: the edge is ideal or a ramp
+	applied     *appliedInput // what drives the line; nil: an ideal edge or a ramp, in closed form
+	measured    bool          // applied was measured, not made from the readout
 
 	nonlinear int // 3, or 4 with a fitted width
 	low, high [2]float64
@@ -51,6 +52,16 @@ func (p *problem) prepare() {
 			p.fixed[i][j] = dot(base[i], base[j])
 		}
 	}
+}
+
+// hold keeps a fitted width at zero for a while, or frees it again.
+func (p *problem) hold(held bool) {
+	p.fitWidth = !held
+	if held {
+		p.applied.form(0, p.first, p.dt, false)
+		p.applied.du, p.applied.dfine = nil, nil
+	}
+	p.prepare()
 }
 
 // normalAt fills the normal equations of the nonlinear parameters: one pass
@@ -152,6 +163,9 @@ func (p *problem) wholeOf(k int, m *[most][most]float64) float64 {
 // begin sets what one pass needs at its first sample.
 func (p *problem) begin(theta *[most]float64) {
 	if p.applied != nil {
+		if p.applied.shape != nil && p.fitWidth {
+			p.applied.form(math.Sqrt(math.Max(0, theta[squared])), p.first, p.dt, true)
+		}
 		p.recursor.start(p.applied, theta, p.dt)
 	}
 }

@@ -25,14 +25,21 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	s.Height = height
 	s.Drift = f.scale * f.beta[1] * 2 / (n - 1) * a.trace.Rate
 	at, middle := float64(f.origin)*a.dt, f.theta[delay]
-	if p.applied == nil {
+	if !p.measured {
 		at += f.theta[delay]
+		middle += a.readout.lag()
 	} else {
 		at += a.appliedMiddle(f)
 		middle += a.appliedMiddle(f)
 		s.Delay = f.theta[delay]
+		if a.settings.AppliedUnfiltered && a.readout != nil {
+			s.Delay -= a.readout.delay
+		}
 	}
 	s.At = a.trace.Start + at
+	if !p.measured && a.readout != nil {
+		s.At -= a.readout.delay
+	}
 	s.Baseline = f.base + f.scale*(f.beta[0]+f.beta[1]*(2*(at*a.trace.Rate-float64(f.from))/(n-1)-1))
 	j := f.jacobian()
 	s.Residuals = f.residuals(j)
@@ -48,7 +55,7 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	}
 	s.Noise = lineScatter(a.y[f.from:f.pre])
 	var through passed
-	if p.applied != nil {
+	if p.measured {
 		through = f.passThrough(j, a.trace.Applied)
 	}
 	c := sandwich(j, f.withoutSpikes(s.Residuals), f.scale, through)
@@ -60,7 +67,7 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	fn := math.Exp(f.theta[lnOmega]) / (2 * math.Pi)
 	zeta := math.Exp(f.theta[lnZeta])
 	uLog, uZeta := c.deviation[linear+lnOmega], zeta*c.deviation[linear+lnZeta]
-	if p.applied != nil {
+	if p.measured {
 		shiftLog, shiftZeta := f.betweenSamples()
 		own := uLog * uZeta
 		uLog, uZeta = math.Hypot(uLog, shiftLog), math.Hypot(uZeta, shiftZeta)
@@ -82,7 +89,7 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	case fn*samplesComfort*math.Exp(-2*uLog) > rate:
 		s.reserve(SamplingSlow, fmt.Sprintf("%.3g samples a period of the natural frequency, fewer than %d", rate/fn, samplesComfort))
 	}
-	if p.applied == nil && f.width()*fn > widestEdge {
+	if !p.measured && f.width()*fn > widestEdge {
 		add(EdgeTooSlow)
 	}
 	// With less than one time constant of answer the uncertainty is not to be
@@ -91,7 +98,7 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 		add(UncertaintyTooLarge)
 	}
 	s.trial = q.try(j, c, middle, fn, zeta, name)
-	q.sentence(s.trial, a.settings.ReadoutStated)
+	q.sentence(s.trial, a.settings.ReadoutStated || len(a.settings.Readout) > 0)
 	q.reserve(fn, zeta)
 	if p.fitWidth {
 		s.reserve(EdgeNotStated, "the edge of the step was neither stated nor measured; its width was fitted, its shape is not known")

@@ -95,7 +95,9 @@ func (l search) solve(at *normal, damping float64, theta, delta *[most]float64) 
 		return false
 	}
 	if k := l.floor; k >= 0 && theta[k]+delta[k] < 0 {
-		return damped(at, damping, k, -theta[k], delta)
+		ok := damped(at, damping, k, -theta[k], delta)
+		delta[k] = -theta[k] // to the last bit: a square below zero has no root
+		return ok
 	}
 	return true
 }

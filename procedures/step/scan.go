@@ -39,7 +39,7 @@ func scan(coarse *problem, half float64) []start {
 			s.theta[lnOmega] = coarse.low[lnOmega] + (float64(j)+0.5)*span/float64(count)
 			s.theta[lnZeta] = math.Log(zeta)
 			w := math.Exp(s.theta[lnOmega])
-			if coarse.applied == nil {
+			if !coarse.measured {
 				s.theta[delay] = half - x50/w
 			}
 			if coarse.fitWidth {
@@ -124,7 +124,8 @@ type found struct {
 // searchAll refines the starting points on coarse, then the best distinct two
 // on full. The second minimum is kept (ok2) because sampled too slowly a
 // trace can have two that explain it equally well.
-func searchAll(coarse, full *problem, half float64) (best found, second found, ok, ok2 bool) {
+// What is found on coarse lies later than on full by late, the readout's own.
+func searchAll(coarse, full *problem, half, late float64) (best found, second found, ok, ok2 bool) {
 	refine := search{floor: floorOf(coarse), iterations: 25, tolerance: 1e-6}
 	var refined []start
 	var n normal
@@ -157,6 +158,17 @@ func searchAll(coarse, full *problem, half float64) (best found, second found, o
 	for k, s := range refined {
 		if k == 2 {
 			break
+		}
+		if full.applied != nil && !full.measured {
+			s.theta[delay] -= late
+			s.theta[squared] = 0
+			if full.fitWidth {
+				// First as if the edge were ideal: the stand-in was a rough one.
+				full.hold(true)
+				s.theta = polish(full, s.theta).theta
+				full.hold(false)
+				s.theta[squared] = math.Pow(0.05*math.Exp(-s.theta[lnOmega]), 2)
+			}
 		}
 		f := polish(full, s.theta)
 		switch {

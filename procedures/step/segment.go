@@ -10,7 +10,8 @@ type analysis struct {
 	trace    Trace
 	settings Settings
 	dt       float64
-	quantum  float64 // step of the readout's digits, 0 if none is seen
+	quantum  float64  // step of the readout's digits, 0 if none is seen
+	readout  *readout // nil when none is stated
 	// y is the pressure less what the steps already fitted still move, so
 	// that a step need not wait for the one before to settle.
 	y []float64
@@ -142,13 +143,17 @@ func (f *fitted) foretell(a *analysis, i int) float64 {
 	return f.base + f.scale*(level+f.beta[response]*f.answer(a, i))
 }
 
-// answer is g at sample i for a step whose edge is ideal or a ramp.
+// answer is g at sample i for a step whose edge is ideal or a ramp; a ramp as
+// wide in its variance stands in for a readout.
 func (f *fitted) answer(a *analysis, i int) float64 {
-	if f.problem.applied != nil {
+	if f.problem.measured {
 		return 1
 	}
-	w := math.Exp(f.theta[lnOmega])
-	return Ramp(w*(float64(i-f.origin)*a.dt-f.theta[delay]), w*f.width(), math.Exp(f.theta[lnZeta]))
+	w, width := math.Exp(f.theta[lnOmega]), f.width()
+	if a.readout.shaped() {
+		width = math.Sqrt(width*width + 12*a.readout.variance)
+	}
+	return Ramp(w*(float64(i-f.origin)*a.dt-f.theta[delay]-a.readout.lag()), w*width, math.Exp(f.theta[lnZeta]))
 }
 
 // settle takes what a determined step still moves out of the samples after
@@ -167,7 +172,7 @@ func (a *analysis) settle(f fitted, latest int) int {
 // explains tells whether the model, carried on past its window, foretells
 // what was taken for a further onset.
 func (a *analysis) explains(f fitted, onset, next int) bool {
-	if f.problem.applied != nil {
+	if f.problem.measured {
 		return false
 	}
 	var miss, swing float64

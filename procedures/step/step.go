@@ -36,10 +36,16 @@ type Trace struct {
 type Settings struct {
 	EdgeStated bool    // EdgeTime is known; without it, and without Trace.Applied, the width is fitted
 	EdgeTime   float64 // 10 to 90 % time of the edge, s; 0 an ideal step. Held as a ramp of full width EdgeTime/0.8
-	// ReadoutStated: nothing lies between the line and the samples but a filter
-	// too fast to matter. Without it, a lag that the trace cannot exclude and
-	// that would move fn by over 20 % is a reservation.
+	// Readout is what lies between the line and the samples, in any order. It
+	// is in the model, so that the figures are the line's own.
+	Readout []Filter
+	// ReadoutStated: Readout is known to be all, also when it is empty. Without
+	// it and without Readout, a lag that the noise could hide and that would
+	// move fn by over 20 % is a reservation.
 	ReadoutStated bool
+	// AppliedUnfiltered: Readout does not act on Trace.Applied. Without it the
+	// two pass the same readout, which then takes no part in the fit.
+	AppliedUnfiltered bool
 	// MinimumStep is the least departure taken for a step, in the unit of
 	// the trace (common practice here: 8 mmHg). 0: a twentieth of the range
 	// of the trace. Six times the noise is required in any case.
@@ -128,6 +134,7 @@ func Analyse(t Trace, s Settings) ([]Step, Combined, []Reservation, error) {
 	}
 	a := analysis{trace: t, settings: s, dt: 1 / t.Rate}
 	a.quantum = quantum(t.Pressure)
+	a.readout = newReadout(s.Readout, a.dt)
 	steps := a.steps()
 	combined := Combine(steps)
 	return steps, combined, gather(steps), nil
@@ -145,6 +152,11 @@ func refuse(t Trace, s Settings) error {
 		return fmt.Errorf("%w: edge time %g s", ErrTrace, s.EdgeTime)
 	case !(s.MinimumStep >= 0) || math.IsInf(s.MinimumStep, 0):
 		return fmt.Errorf("%w: minimum step %g", ErrTrace, s.MinimumStep)
+	}
+	for _, f := range s.Readout {
+		if err := f.refuse(); err != nil {
+			return err
+		}
 	}
 	for _, channel := range [][]float64{t.Pressure, t.Applied} {
 		for i, v := range channel {

@@ -98,7 +98,6 @@ func (b *blocks) correlatedSquare(d []float64, phi float64) float64 {
 // tribunal holds what every suspect is tried against.
 type tribunal struct {
 	blocks
-	freedom    float64   // degrees of freedom of sigma
 	x          []float64 // radians of fn since the middle of the edge, of each block
 	root       []float64 // of the block's length
 	c, s       []float64 // the kernel there, 1 and 0 before

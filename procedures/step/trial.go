@@ -125,7 +125,7 @@ func (q *quality) sentence(t trial, readoutStated bool) {
 			return
 		}
 	}
-	if most := t.undetected(); most > gravest && !readoutStated && q.problem.applied == nil {
+	if most := t.undetected(); most > gravest && !readoutStated && !q.problem.measured {
 		s.reserve(ReadoutNotStated, fmt.Sprintf("a filter in the readout that nobody stated could hide in this noise and make the natural frequency read up to %.2g %% low", 100*-math.Expm1(-most)))
 	}
 }

@@ -34,7 +34,7 @@ func (a *analysis) fit(w window) (fitted, bool) {
 	}
 	coarse := a.coarse(f.problem, w, f.origin)
 	var any bool
-	f.found, f.second, any, f.rival = searchAll(coarse, f.problem, half)
+	f.found, f.second, any, f.rival = searchAll(coarse, f.problem, half, a.readout.lag())
 	if !any {
 		return f, false
 	}
@@ -68,8 +68,8 @@ func (a *analysis) fit(w window) (fitted, bool) {
 // place finds the first sample after the middle of the edge.
 func (f *fitted) place(a *analysis) {
 	at := float64(f.origin)
-	if f.problem.applied == nil {
-		at += f.theta[delay] * a.trace.Rate
+	if !f.problem.measured {
+		at += (f.theta[delay] + a.readout.lag()) * a.trace.Rate
 	}
 	f.post = max(f.from, min(int(math.Ceil(at)), f.to))
 }
@@ -101,7 +101,7 @@ func (a *analysis) set(w window) (f fitted, half float64, ok bool) {
 		part = math.Min((0.5-here)/(there-here), 1)
 	}
 	half = (float64(crossing-1-f.origin) + part) * a.dt
-	f.problem = a.problem(w, f.base, f.scale, f.origin)
+	f.problem = a.problem(w, f.base, f.scale, f.origin, half)
 	if a.trace.Applied != nil && f.problem.applied == nil {
 		return f, 0, false
 	}
@@ -109,7 +109,7 @@ func (a *analysis) set(w window) (f fitted, half float64, ok bool) {
 }
 
 // problem makes the least-squares problem of the samples of w.
-func (a *analysis) problem(w window, base, scale float64, origin int) *problem {
+func (a *analysis) problem(w window, base, scale float64, origin int, half float64) *problem {
 	n := w.to - w.from
 	p := &problem{
 		one: make([]float64, n), tau: make([]float64, n), y: make([]float64, n),
@@ -122,11 +122,18 @@ func (a *analysis) problem(w window, base, scale float64, origin int) *problem {
 	}
 	switch {
 	case a.trace.Applied != nil:
-		p.applied = a.appliedIn(w)
+		p.applied, p.measured = a.appliedIn(w), true
 	case a.settings.EdgeStated:
 		p.width = a.settings.EdgeTime / 0.8
 	default:
 		p.fitWidth = true
+	}
+	if !p.measured && a.readout.shaped() {
+		// The first corner of the edge is put on a division.
+		cell := a.dt / divisions
+		corner := p.first + math.Round((half-a.readout.centre-p.width/2-p.first)/cell)*cell
+		p.applied = &appliedInput{u: make([]float64, n), shape: a.readout, anchor: corner + p.width/2}
+		p.applied.form(p.width, p.first, p.dt, false)
 	}
 	after := float64(w.to-w.onset) * a.dt
 	p.low = [2]float64{math.Log(2 * math.Pi * 0.15 / after), math.Log(0.005)}
@@ -138,6 +145,9 @@ func (a *analysis) problem(w window, base, scale float64, origin int) *problem {
 // appliedIn scales the applied pressure of w, nil when it does not move.
 func (a *analysis) appliedIn(w window) *appliedInput {
 	u := a.trace.Applied[w.from:w.to]
+	if a.settings.AppliedUnfiltered && a.readout.shaped() {
+		u = a.readout.through(u, a.dt)
+	}
 	base, height := appliedLevels(u, w)
 	if !(math.Abs(height) > 0) {
 		return nil
@@ -164,7 +174,7 @@ const mostCoarse = 4096
 // answer keeps its samples and a long trace costs little. With an applied
 // pressure the recursion needs every sample, and the window is cut instead.
 func (a *analysis) coarse(full *problem, w window, origin int) *problem {
-	if full.applied != nil {
+	if full.measured {
 		cut := w
 		cut.from = max(w.from, w.pre-mostCoarse/4)
 		cut.to = min(w.to, cut.from+mostCoarse)
@@ -175,13 +185,17 @@ func (a *analysis) coarse(full *problem, w window, origin int) *problem {
 		p := &problem{
 			one: full.one[offset : offset+n], tau: full.tau[offset : offset+n], y: full.y[offset : offset+n],
 			first: full.first + float64(offset)*a.dt, dt: a.dt,
-			applied: &appliedInput{u: full.applied.u[offset : offset+n]},
-			low:     full.low, high: full.high,
+			applied:  &appliedInput{u: full.applied.u[offset : offset+n]},
+			measured: true, low: full.low, high: full.high,
 		}
 		p.prepare()
 		return p
 	}
 	p := &problem{width: full.width, fitWidth: full.fitWidth, low: full.low, high: full.high}
+	if full.applied != nil {
+		// A ramp as wide in its variance stands in for the readout.
+		p.width, p.fitWidth = math.Sqrt(p.width*p.width+12*a.readout.variance), false
+	}
 	centre := w.onset - w.from
 	for i := 0; i < len(full.y); {
 		distance := max(i-centre, centre-i)
