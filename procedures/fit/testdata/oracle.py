@@ -11,12 +11,13 @@ import sys
 from collections import defaultdict
 
 import numpy as np
-import statsmodels.api as sm
 from scipy import odr, stats
 from scipy.optimize import linprog
 
 
 def model(task):
+    from statsmodels.regression.linear_model import GLS, WLS  # slow to load
+
     x = np.array(task["x"]).T
     y = np.array(task["y"])
     n, p = x.shape
@@ -24,13 +25,13 @@ def model(task):
     if task["sd"] is not None and not task["relative"]:
         sd = np.array(task["sd"])
         v = np.diag(sd**2) + common @ common.T
-        fit = sm.GLS(y, x, sigma=v).fit(cov_type="fixed scale")
+        fit = GLS(y, x, sigma=v).fit(cov_type="fixed scale")
         r = y - x @ fit.params
         residual = math.sqrt(r @ np.linalg.solve(v, r) / (n - p))
         dof = n - p
     else:
         w = np.ones(n) if task["sd"] is None else 1 / np.array(task["sd"])
-        fit = sm.WLS(y, x, weights=w**2).fit()
+        fit = WLS(y, x, weights=w**2).fit()
         both = np.column_stack([x, common])
         rank = np.linalg.matrix_rank(both / np.linalg.norm(both, axis=0), tol=1e-9)
         left = (y - both @ np.linalg.lstsq(both * w[:, None], y * w, rcond=1e-11)[0]) * w
@@ -235,10 +236,12 @@ def static(task):
     if order >= 2 and n > order + 1 and len(set(task["reference"])) > order:
         half = (p.max() - p.min()) / 2
         middle = (p.max() + p.min()) / 2
-        fit = sm.OLS(y, np.vander((p - middle) / half, order + 1, increasing=True)).fit()
-        curve = np.polynomial.Polynomial(fit.params, domain=[p.min(), p.max()]).convert().coef
+        powers = np.vander((p - middle) / half, order + 1, increasing=True)
+        fitted, *_ = np.linalg.lstsq(powers, y, rcond=None)
+        curve = np.polynomial.Polynomial(fitted, domain=[p.min(), p.max()]).convert().coef
         out["curve"] = np.pad(curve, (0, order + 1 - len(curve))).tolist()
-        out["curve_residual"] = math.sqrt(fit.mse_resid)
+        left = y - powers @ fitted
+        out["curve_residual"] = math.sqrt(left @ left / (n - order - 1))
     return out
 
 
