@@ -190,12 +190,18 @@ func counts(w []weight) int {
 
 // half is the mean of two figures.
 func half(a, b []weight) []weight {
-	var out []weight
-	for _, x := range a {
-		out = append(out, weight{x.i, x.g / 2})
-	}
-	for _, x := range b {
-		out = merge(out, []int{x.i}, x.g/2)
+	out := make([]weight, 0, len(a)+len(b))
+	place := make(map[int]int, len(a)+len(b))
+	for _, w := range [][]weight{a, b} {
+		for _, x := range w {
+			k, known := place[x.i]
+			if !known {
+				k = len(out)
+				place[x.i] = k
+				out = append(out, weight{i: x.i})
+			}
+			out[k].g += x.g / 2
+		}
 	}
 	return out
 }
