@@ -11,6 +11,7 @@ import (
 	"testing"
 
 	"kymobench/bench/line"
+	"kymobench/bench/setup"
 	"kymobench/bench/simulated"
 	"kymobench/procedures/record"
 )
@@ -219,5 +220,29 @@ func TestLineFaults(t *testing.T) {
 	t.Logf("of %d recoverable runs %d ended in the true verdict", could, did)
 	if float64(did) < 0.99*float64(could) {
 		t.Errorf("of %d recoverable runs %d ended in the true verdict", could, did)
+	}
+}
+
+// A sample period stated wrongly would put every natural frequency out by as
+// much: the recovered clock tells, and it is the bench's fault.
+func TestWrongSamplePeriod(t *testing.T) {
+	for stated, want := range map[string]string{`"1 ms"`: "accepted", `"1.01 ms"`: "sample_rate", `"2 ms"`: "sample_rate", `"0.9 ms"`: "sample_rate"} {
+		j, b := simulatedJob(t, t.TempDir(), 21, simulated.Good)
+		text := strings.Replace(string(b.BenchFile(nil)), `sample_period = "1 ms"`, "sample_period = "+stated, 1)
+		var err error
+		if j.file, err = setup.Load("bench.toml", []byte(text)); err != nil {
+			t.Fatal(err)
+		}
+		out, err := j.carryOne(t.Context())
+		if err != nil {
+			t.Fatal(err)
+		}
+		got := out.Results.Verdict.String()
+		if len(out.Results.Reasons) > 0 {
+			got = out.Results.Reasons[0].Code
+		}
+		if got != want {
+			t.Errorf("a period stated as %s: %s, %v", stated, got, out.Results.Reasons)
+		}
 	}
 }

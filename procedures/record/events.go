@@ -32,6 +32,7 @@ const (
 	KindCapture     = "capture"     // Capture
 	KindLine        = "line"        // Line
 	KindPulse       = "pulse"       // Pulse
+	KindClock       = "clock"       // Clock
 	KindVent        = "vent"        // Vent
 	KindVoid        = "void"        // Void
 	KindFault       = "fault"       // Fault
@@ -288,6 +289,22 @@ type Pulse struct {
 // Vent says that the volume was opened to atmosphere, and why.
 type Vent struct {
 	Why string `json:"why"`
+}
+
+// Clock is the sample clock of an instrument that sends by itself, as recovered
+// from when its readings arrived at this machine.
+type Clock struct {
+	Role        string    `json:"role"`
+	Period      string    `json:"period"`
+	Uncertainty string    `json:"uncertainty"` // standard, against this machine's clock
+	Readings    int64     `json:"readings"`
+	Suspects    []Suspect `json:"suspects,omitempty"`
+}
+
+// Suspect is a place where readings seem to be missing, or below 0 doubled.
+type Suspect struct {
+	After    int64   `json:"after"` // noticed after this reading of the stream
+	Readings float64 `json:"readings"`
 }
 
 // Void says that what was taken from a line on does not count: the run was

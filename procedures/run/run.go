@@ -181,6 +181,9 @@ func (s *session) whole(ctx context.Context, i int) error {
 	if err == nil {
 		err = s.checkRestarts(ctx)
 	}
+	if err == nil {
+		err = s.checkRates()
+	}
 	if err != nil {
 		s.Rig.EmergencyVent()
 		_ = s.append(record.KindStage, record.Stage{Number: s.stage, Kind: stage.Kind(), Phase: "abandoned", Why: err.Error()})

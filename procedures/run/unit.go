@@ -7,6 +7,7 @@ import (
 	"time"
 
 	"kymobench/bench"
+	"kymobench/bench/clock"
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
 	"kymobench/procedures/record"
@@ -27,6 +28,7 @@ type unit struct {
 	closed bool // its record is, or could not be
 
 	stream  stream
+	clock   clock.Recovery
 	refused int
 
 	nominal    float64 // V/V/Pa, 0 for a pressure output
@@ -108,6 +110,7 @@ func (s *session) silent(u *unit) *Fault {
 // tookSample takes one of a UUT's lines as it comes, wherever the run waits,
 // and holds it against the pressures never to be exceeded.
 func (s *session) tookSample(u *unit, r bench.Reading, err error) error {
+	u.clock.Add(r.At.Seconds())
 	if err != nil {
 		u.refused++
 		u.stream.gap()
@@ -220,6 +223,9 @@ func (s *session) close(ctx context.Context, u *unit, finished record.Finished) 
 	put := func(kind string, payload any) error {
 		_, err := s.put(u, kind, payload)
 		return err
+	}
+	if err := s.writeClock(u); err != nil {
+		return Outcome{}, err
 	}
 	if u.refused > 0 {
 		text := fmt.Sprintf("%d lines of the UUT were refused as no number and not used", u.refused)
