@@ -186,7 +186,7 @@ func (w *opening) reconnect(id line.PortID, name string) error {
 // Mover is an Opener that can tell where an instrument is now whose port has
 // gone, by what the system knows of the adapter.
 type Mover interface {
-	Moved(name string) (now string, ok bool)
+	Moved(id line.PortID, name string) (now string, ok bool)
 }
 
 func (w *opening) moved(id line.PortID) (string, bool) {
@@ -194,5 +194,5 @@ func (w *opening) moved(id line.PortID) (string, bool) {
 	if !ok || id < 1 || int(id) > len(w.ports) {
 		return "", false
 	}
-	return m.Moved(w.ports[id-1].port)
+	return m.Moved(id, w.ports[id-1].port)
 }

@@ -28,6 +28,7 @@ type job struct {
 	seed       uint64
 	layout     int
 	covered    func(text string) error // the report can print it
+	opened     []record.Opened         // of records that are made again; none for a new run
 	overdue    string                  // why a certificate past its due date may be used, "" when it may not
 }
 
@@ -43,6 +44,10 @@ func (j job) carry(ctx context.Context) ([]outcome, error) {
 	counter, previous, err := j.folder.latest()
 	if err != nil {
 		return nil, err
+	}
+	if len(j.opened) > 0 {
+		counter, previous = j.opened[0].Counter-1, j.opened[0].Previous
+		j.operator, j.seed = j.opened[0].Operator, j.opened[0].Seed
 	}
 	if f := j.file; f.Highest < j.definition.HighestPressure() {
 		return nil, usagef("the procedure goes to %.0f mmHg, the bench file allows %.0f mmHg", j.definition.HighestPressure().MmHg(), f.Highest.MmHg())

@@ -24,6 +24,7 @@ type demoOptions struct {
 	uuts  []string
 	ports string
 	out   string
+	kept  string // transcript
 	json  bool
 }
 
@@ -47,6 +48,7 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive.`,
 	cmd.Flags().StringSliceVar(&o.uuts, "uut", []string{simulated.Good}, conditionsHelp())
 	cmd.Flags().StringVar(&o.ports, "ports", "memory", "memory (virtual time) or pty (pseudo-terminals, real time)")
 	cmd.Flags().StringVar(&o.out, "out", "", "folder to make, default kymobench-demo-SEED")
+	cmd.Flags().StringVar(&o.kept, "transcript", "", "new file that keeps the bytes of every port")
 	cmd.Flags().BoolVar(&o.json, "json", false, "one JSON document on stdout")
 	return cmd
 }
@@ -106,6 +108,9 @@ func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
 		j.ports = newMemoryPorts(b)
 		j.committer = func(i record.Poster) record.Committer { return record.NewSimulated(i, b.CommitLatency) }
 		j.console = func(i line.Inbox) run.Operator { return script{inbox: i, err: io.err, after: 500 * time.Millisecond} }
+	}
+	if j.ports, err = kept(j.ports, o.kept); err != nil {
+		return err
 	}
 	text := b.BenchFile(names)
 	if err := writeWhole(filepath.Join(f.dir, "bench.toml"), text); err != nil {

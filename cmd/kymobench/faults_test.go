@@ -40,7 +40,7 @@ func (p *faultyPorts) Connect(id line.PortID, name string, baud int) error {
 }
 
 // Moved finds an adapter by what the system knows of it.
-func (p *faultyPorts) Moved(name string) (string, bool) {
+func (p *faultyPorts) Moved(_ line.PortID, name string) (string, bool) {
 	return "new-" + name, name == p.role && p.faulty.Plugged(p.inbox.Now(), true)
 }
 

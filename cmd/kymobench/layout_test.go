@@ -27,6 +27,7 @@ func mayImport() map[string][]string {
 		"bench/clock":      {},
 		"bench/tomlfile":   {},
 		"bench/serialport": {"bench/line"},
+		"bench/transcript": {"bench/line"},
 		"bench/simulated":  {"bench/line", "bench/quantity"},
 		"bench/setup":      {"bench", "bench/line", "bench/quantity", "bench/tomlfile", "bench/instruments/scpi", "bench/instruments/lines"},
 

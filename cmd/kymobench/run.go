@@ -19,9 +19,10 @@ import (
 )
 
 type runOptions struct {
-	bench, procedure, out, operator, model, lot, overdue string
-	serials                                              []string
-	json                                                 bool
+	bench, procedure, out, operator, model, lot, overdue, transcript string
+
+	serials []string
+	json    bool
 }
 
 func newRunCommand(io streams) *cobra.Command {
@@ -52,6 +53,7 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive or stopped.`,
 	f.StringVar(&o.operator, "operator", "", "who carries it out")
 	f.StringVar(&o.out, "out", ".", "folder for runs and reports")
 	f.StringVar(&o.overdue, "allow-overdue", "", "why a certificate past its due date is used; the verdict is then inconclusive at best")
+	f.StringVar(&o.transcript, "transcript", "", "new file that keeps the bytes of every port")
 	f.BoolVar(&o.json, "json", false, "one JSON document on stdout")
 	return cmd
 }
@@ -105,8 +107,12 @@ func runRun(ctx context.Context, o runOptions, io streams) error {
 	if err := f.make(); err != nil {
 		return err
 	}
+	ports, err := kept(newSerialPorts(), o.transcript)
+	if err != nil {
+		return err
+	}
 	return finish(ctx, job{
-		file: file, ports: newSerialPorts(), definition: d, folder: f, uuts: uuts, operator: operator,
+		file: file, ports: ports, definition: d, folder: f, uuts: uuts, operator: operator,
 		layout: layout1.Number, covered: layout1.Covered, overdue: strings.TrimSpace(o.overdue),
 		committer: func(i record.Poster) record.Committer { return record.NewDisk(i) },
 		console:   func(i line.Inbox) run.Operator { return newConsole(io.in, io.err, i) },
