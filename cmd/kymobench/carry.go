@@ -195,7 +195,7 @@ type truth struct {
 func documentOf(r results.Results, recordPath string) runDocument {
 	d := runDocument{Schema: "kymobench/run/1", Verdict: r.Verdict.String(), Reasons: r.Reasons, Limits: r.Limits, Record: recordPath}
 	if r.Static != nil {
-		d.Results.Static = fitStatic{"kymobench/fit-static/1", r.Static}
+		d.Results.Static = fitStatic{Schema: "kymobench/fit-static/1", Static: r.Static}
 	}
 	if r.Step != nil {
 		d.Results.Step = fitStep{"kymobench/fit-step/1", r.Step}

@@ -95,6 +95,7 @@ type UUT struct {
 	Resolution            string         `json:"resolution,omitempty"`
 	Excitation            string         `json:"excitation,omitempty"`
 	NominalSensitivity    string         `json:"nominal_sensitivity,omitempty"`
+	Repeatability         string         `json:"repeatability,omitempty"` // of a single reading, a standard deviation stated beforehand
 	SamplePeriod          string         `json:"sample_period,omitempty"`
 	SamplePeriodTolerance string         `json:"sample_period_tolerance,omitempty"` // half-width, a share ("0.01 %")
 	Height                string         `json:"height,omitempty"`

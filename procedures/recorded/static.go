@@ -6,6 +6,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"time"
 
 	"kymobench/bench/quantity"
 	"kymobench/procedures/record"
@@ -17,6 +18,17 @@ type StaticOptions struct {
 	// Corrections is "0:0.02,100:0.04": what to add to a reading of the
 	// reference, in its unit; linear between.
 	Corrections string
+
+	// What a bench file states of the instruments the readings were taken with;
+	// nil for nothing. Fields are those of the file.
+	Reference *record.Reference
+	UUT       *record.UUT
+	Readout   *record.Readout
+	Date      time.Time // of the readings; zero when not stated
+	// ReferenceZeroed says that the reference was zeroed, vented, before the
+	// first reading.
+	ReferenceZeroed bool
+	Repeatability   string // standard deviation of a single reading; "" when not stated
 }
 
 // Static reads cycle, leg, set_UNIT (optional), mounting (optional, from 1),
@@ -69,8 +81,9 @@ func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 			return nil, fmt.Errorf("nominal sensitivity %q is not above zero", o.NominalSensitivity)
 		}
 	}
-	e.add(0, record.KindReference, record.Reference{Field: quantity.Field{Unit: referenceUnit.Name}, Certificate: record.Certificate{Corrections: corrections}})
-	e.add(0, record.KindUUT, record.UUT{Field: quantity.Field{Unit: uutUnit.Name}, NominalSensitivity: o.NominalSensitivity})
+	if err := o.facts(e, referenceUnit.Name, uutUnit.Name, corrections); err != nil {
+		return nil, err
+	}
 	used := []int{cycle, leg, mounting, set, reference, uut}
 	if uutUnit.Dimension == quantity.DimVoltage {
 		used = append(used, excitation)
@@ -129,6 +142,50 @@ func Static(file string, r io.Reader, o StaticOptions) ([]record.Event, error) {
 		return nil, &FileError{file, 2, 1, "there are no readings below the header"}
 	}
 	return e.done()
+}
+
+// facts puts what was stated of the instruments before the readings.
+func (o *StaticOptions) facts(e *events, referenceUnit, uutUnit string, corrections []record.Correction) error {
+	if !o.Date.IsZero() {
+		e.add(0, record.KindOpened, record.Opened{Schema: record.Schema})
+		e.all[len(e.all)-1].Wall = o.Date
+	}
+	reference, uut := record.Reference{}, record.UUT{}
+	if o.Reference != nil {
+		reference = *o.Reference
+	}
+	if o.UUT != nil {
+		uut = *o.UUT
+	}
+	reference.Field, uut.Field = quantity.Field{Unit: referenceUnit}, quantity.Field{Unit: uutUnit}
+	if corrections != nil {
+		if reference.Certificate.Corrections != nil {
+			return fmt.Errorf("corrections of the reference are stated twice, in the bench file and apart from it")
+		}
+		reference.Certificate.Corrections = corrections
+	}
+	if o.NominalSensitivity != "" {
+		uut.NominalSensitivity = o.NominalSensitivity
+	}
+	if o.Repeatability != "" {
+		s, err := quantity.ParsePressure(o.Repeatability)
+		if err != nil {
+			return fmt.Errorf("repeatability: %w", err)
+		}
+		if !(s > 0) {
+			return fmt.Errorf("repeatability %q is not above zero", o.Repeatability)
+		}
+		uut.Repeatability = o.Repeatability
+	}
+	e.add(0, record.KindReference, reference)
+	e.add(0, record.KindUUT, uut)
+	if o.Readout != nil {
+		e.add(0, record.KindReadout, *o.Readout)
+	}
+	if o.ReferenceZeroed {
+		e.add(0, record.KindZeroing, record.Zeroing{Role: "reference", How: "device"})
+	}
+	return nil
 }
 
 // whole reads a number that counts from 1.

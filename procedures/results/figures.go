@@ -3,6 +3,8 @@ package results
 import (
 	"math"
 
+	"gonum.org/v1/gonum/stat/distuv"
+
 	"kymobench/procedures/fit"
 )
 
@@ -251,7 +253,7 @@ func (st *staticFigures) repeatability(s *scale) []measured {
 	if st.points[0].UUT == "" {
 		widest = s.linear(st.points, []weight{{0, 1}, {len(st.points) - 1, -1}}, st.slope, st.noise.within())
 		widest.cancel("reference, share of reading", "reference, at the set pressure", "reference, drift since its date",
-			"reference, drift at every pressure", "reference, temperature", "readout, gain", "readout, excitation")
+			"reference, drift as a pressure", "reference, temperature", "readout, gain", "readout, excitation")
 	} else {
 		widest.why = "noise and repeatability of single readings cannot be told apart"
 	}
@@ -260,8 +262,16 @@ func (st *staticFigures) repeatability(s *scale) []measured {
 	pooled.put("few cycles", fromRun, u, stated{*r.PooledSD, math.Sqrt(2 * dof), *r.PooledSD / math.Sqrt(2*dof), "normal"}, 1, 0)
 	return []measured{
 		{figure: FigureRepeatability, unit: u, readings: len(st.points), value: *r.LargestRange, budget: widest},
-		{figure: FigurePooled, unit: u, readings: len(st.points), value: *r.PooledSD, budget: pooled},
+		{figure: FigurePooled, unit: u, readings: len(st.points), value: *r.PooledSD, budget: pooled, interval: ofSpread(*r.PooledSD, dof)},
 	}
+}
+
+// ofSpread is the 95 % interval of a standard deviation s of normal noise, found
+// with so many degrees of freedom: s sqrt(dof/chi2), chi2 the 97.5 and 2.5 %
+// quantiles of chi-square (textbook).
+func ofSpread(s, dof float64) *[2]float64 {
+	chi2 := distuv.ChiSquared{K: dof}
+	return &[2]float64{s * math.Sqrt(dof/chi2.Quantile(0.975)), s * math.Sqrt(dof/chi2.Quantile(0.025))}
 }
 
 // cancel takes contributions out by name.

@@ -37,8 +37,7 @@ type gathered struct {
 	pulse        *record.Pulse // asked for; nil: the program's
 	outliers     int           // readings left out
 
-	zeroedReference bool    // in the run, by its own function
-	repeatability   float64 // of a single reading, stated, in the reference's unit; 0 when not
+	zeroedReference bool // in the run, by its own function
 }
 
 // reading is an asked reading with the time of its line.

@@ -79,7 +79,7 @@ func (s *scale) linear(points []taken, w []weight, b float64, n noise) *budget {
 	out.put("reference, share of reading", fromCertificate, "1", s.share, b*m.p, 0)
 	out.put("reference, at the set pressure", fromCertificate, u, s.pointwise, b*m.each(), 0)
 	out.put("reference, drift since its date", fromCertificate, "1", halfWidth(s.drift), b*m.p, 0)
-	out.put("reference, drift at every pressure", fromCertificate, u, halfWidth(s.driftAt), b*m.aged, 0)
+	out.put("reference, drift as a pressure", fromCertificate, u, halfWidth(s.driftAt), b*m.aged, 0)
 	out.put("reference, temperature", fromCertificate, "1", halfWidth(s.warmth), b*m.p, 0)
 	out.put("reference, resolution", fromBench, u, fullWidth(s.resolutionReference), b*math.Sqrt(m.points), 0)
 	out.put("readout, gain", fromCertificate, "1", s.gain, m.y, 0)
@@ -91,7 +91,25 @@ func (s *scale) linear(points []taken, w []weight, b float64, n noise) *budget {
 	out.put("spread between cycles", fromRun, u, scatter(math.Sqrt(n.vCell)), math.Sqrt(m.cells), n.dofCell)
 	out.put("settling left: slope x delay", fromRun, u, halfWidth(m.settling), 1, 0)
 	out.why = n.why
+	out.tidy()
 	return out
+}
+
+// tidy drops what cancels but for the last bits. Whether these are exactly zero
+// differs between processors, and with it the number of contributions that a
+// Monte Carlo draws.
+func (b *budget) tidy() {
+	var most float64
+	for _, e := range b.entries {
+		most = math.Max(most, math.Abs(e.Standard*e.Sensitivity))
+	}
+	kept := b.entries[:0]
+	for _, e := range b.entries {
+		if math.Abs(e.Standard*e.Sensitivity) > 1e-9*most {
+			kept = append(kept, e)
+		}
+	}
+	b.entries = kept
 }
 
 // named says how the noise of a single reading is known.
@@ -99,7 +117,7 @@ func (n noise) named() string {
 	if n.how == "" {
 		return "noise of a reading"
 	}
-	return "noise of a reading: " + n.how
+	return "noise of a reading, " + n.how
 }
 
 // errorOf is the weights of the error of some points after zeroing: their mean

@@ -293,8 +293,8 @@ func TestCertificateAges(t *testing.T) {
 	found := 0
 	for _, b := range r.limit(t, "accuracy").Budget {
 		want := map[string]float64{
-			"reference, drift since its date":    years * 0.0004 / math.Sqrt(3),
-			"reference, drift at every pressure": years * 0.1 / math.Sqrt(3),
+			"reference, drift since its date": years * 0.0004 / math.Sqrt(3),
+			"reference, drift as a pressure":  years * 0.1 / math.Sqrt(3),
 		}
 		if u, ok := want[b.Name]; ok {
 			found++

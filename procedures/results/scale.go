@@ -54,6 +54,7 @@ type scale struct {
 
 	resolutionReference float64
 	resolutionUUT       float64
+	repeatability       float64 // of a single reading, stated; 0 when not
 	delay               float64 // s: response time, its tolerance and the skew, for slopes
 	periodTolerance     float64 // share, half-width
 	edge                string
@@ -79,26 +80,24 @@ func newScale(g *gathered) (*scale, error) {
 		return nil, fmt.Errorf("the UUT's unit %q is not known", g.uut.Field.Unit)
 	}
 	r := reader{}
+	nominal := g.uut.NominalSensitivity
 	if s.uutUnit.Dimension != quantity.DimPressure {
-		nominal := g.uut.NominalSensitivity
 		if nominal == "" {
 			nominal, s.assumed = AssumedSensitivity, true
 		}
 		s.nominal = r.si(nominal, quantity.DimSensitivity)
-		s.excitation = r.si(g.uut.Excitation, quantity.DimVoltage)
-		s.resolutionUUT = s.output(r.si(g.uut.Resolution, s.uutUnit.Dimension), s.excitation)
-	} else {
-		s.resolutionUUT = s.unit.FromSI(r.si(g.uut.Resolution, quantity.DimPressure))
 	}
+	s.excitation = r.si(g.uut.Excitation, quantity.DimVoltage)
+	per := r.si(nominal, quantity.DimSensitivity)
+	s.resolutionUUT = s.equivalent(g.uut.Resolution, per, &r)
+	s.repeatability = s.unit.FromSI(r.si(g.uut.Repeatability, quantity.DimPressure))
 	s.certificate(g.reference, g.began, &r)
 	s.heads(g, &r)
 	if g.readout != nil && g.readout.CoverageFactor > 0 {
 		k := g.readout.CoverageFactor
 		s.gain = certified(r.si(g.readout.GainUncertainty, quantity.DimNone), k)
 		s.volts = certified(r.si(g.readout.ExcitationUncertainty, quantity.DimNone), k)
-		if s.nominal > 0 {
-			s.zeroOf = certified(s.output(r.si(g.readout.ZeroUncertainty, s.uutUnit.Dimension), s.excitation), k)
-		}
+		s.zeroOf = certified(s.equivalent(g.readout.ZeroUncertainty, per, &r), k)
 	}
 	s.delay = r.si(g.reference.ResponseTime, quantity.DimSpan) + r.si(g.reference.ResponseTimeTolerance, quantity.DimSpan) +
 		r.si(g.uut.Delay, quantity.DimSpan) + r.si(g.uut.DelayUncertainty, quantity.DimSpan)
@@ -155,6 +154,35 @@ func (s *scale) heads(g *gathered, r *reader) {
 	s.head = perMetre * (r.si(g.reference.Height, quantity.DimLength) - r.si(g.uut.Height, quantity.DimLength))
 	u := math.Abs(perMetre) * r.si(g.uut.HeightUncertainty, quantity.DimLength)
 	s.headOf = stated{u, 1, u, uncertainty.Normal}
+}
+
+// equivalent is what is stated of the UUT's output as a pressure in the scale's
+// unit, whether it is stated as a pressure, a ratio or a voltage: readings that
+// were turned into pressure elsewhere still came from a readout. per is the
+// sensitivity in SI.
+func (s *scale) equivalent(text string, per float64, r *reader) float64 {
+	if text == "" {
+		return 0
+	}
+	v, err := quantity.Parse(text)
+	si := v.SI
+	switch {
+	case err != nil:
+	case v.Unit.Dimension == quantity.DimPressure:
+	case v.Unit.Dimension == quantity.DimRatio && per > 0:
+		si /= per
+	case v.Unit.Dimension == quantity.DimVoltage && per > 0 && s.excitation > 0:
+		si /= s.excitation * per
+	default:
+		err = fmt.Errorf("%q is no pressure, and without sensitivity and excitation it is the equivalent of none", text)
+	}
+	if err != nil {
+		if r.err == nil {
+			r.err = err
+		}
+		return 0
+	}
+	return s.unit.FromSI(si)
 }
 
 // output turns an electrical output in SI into pressure in the scale's unit.

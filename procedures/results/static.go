@@ -68,7 +68,7 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 		out.slope = figures.Line.Slope
 	}
 	out.file(g.zeroedReference)
-	out.repeated(g.repeatability)
+	out.repeated(s.repeatability)
 	out.static = s.staticOf(figures)
 	out.static.Readings = len(out.points)
 	if s.assumed {
@@ -157,15 +157,15 @@ func (st *staticFigures) repeated(known float64) {
 	n.from = fromRun
 	switch {
 	case known > 0:
-		n.vSingle, n.how, n.from = known*known, "stated", "stated"
+		n.vSingle, n.how, n.from = known*known, "stated", fromStatement
 	case dofWithin > 0:
-		n.vSingle, n.dofSingle, n.how = within, dofWithin, "within one cell"
+		n.vSingle, n.dofSingle, n.how = within, dofWithin, "in a cell"
 		n.vCell, n.dofCell = math.Max(0, spread-within/size), dof
 	case dof > 0:
-		n.vSingle, n.dofSingle, n.how = spread, dof, "spread between cycles"
+		n.vSingle, n.dofSingle, n.how = spread, dof, "by cycles"
 	default:
 		if n.vSingle, n.dofSingle = st.aboutCurves(); n.dofSingle > 0 {
-			n.how = "about a curve through each leg"
+			n.how = "by curves"
 			return
 		}
 		n.why = "nothing shows the noise of a single reading: a second cycle would"
