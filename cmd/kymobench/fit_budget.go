@@ -43,7 +43,7 @@ func printBudget(b *strings.Builder, x results.Budget) {
 	}
 	for _, l := range x.Lines {
 		fmt.Fprintf(b, budgetRow, l.Name, l.Source, distributionText(l.Distribution), plainUnit(l.Stated, l.Unit), divisorText(l),
-			fmt.Sprintf("%.4g", l.Sensitivity), fmt.Sprintf("%.3g", l.Contribution), dofText(l.DoF))
+			fmt.Sprintf("%.3g", l.Sensitivity), fmt.Sprintf("%.3g", l.Contribution), dofText(l.DoF))
 	}
 	if x.Reason != "" {
 		b.WriteString(wrapped("  no interval: "+x.Reason, budgetWidth, "  "))
