@@ -49,6 +49,7 @@ type drawn struct {
 	bow         float64 // mmHg at half range
 	hysteresis  float64 // mmHg
 	fn, zeta    float64
+	dry         float64 // fn without the bubble, 0 where there is none
 	noise       float64 // mmHg
 	warmUp      float64 // mmHg at power-on
 
@@ -165,7 +166,8 @@ func (d *drawn) worsen(s Settings) {
 		// bubble leaves it alone. The dry line is drawn with low damping: with
 		// more, the bubble's damping ratio passes 2, where no step response of
 		// this noise gives fn within 5 %, and the run could decide nothing.
-		product := between(r, 32, 40) * between(r, 0.3, 0.4)
+		d.dry = between(r, 32, 40)
+		product := d.dry * between(r, 0.3, 0.4)
 		d.fn = between(r, 10, 15)
 		d.zeta = product / d.fn
 	case Overdamped:

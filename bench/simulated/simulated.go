@@ -209,6 +209,17 @@ func (b *Bench) UUTs() []UUT {
 	return append([]UUT{first}, b.others...)
 }
 
+// Flush is what a person does with their hands: it drives air out of the line
+// of every UUT, with effect from the next release on. The known truth is that
+// of the line as it was. It may be called from any goroutine.
+func (b *Bench) Flush() {
+	for role, m := range b.machines {
+		if u, ok := m.(*transducer); ok && strings.HasPrefix(role, RoleUUT) {
+			u.flushes.Add(1)
+		}
+	}
+}
+
 // Machine returns the instrument of a role, nil for a role that is not there.
 // It is the same machine each time.
 func (b *Bench) Machine(role string) line.Machine { return b.machines[role] }

@@ -234,7 +234,7 @@ func TestConditionsChangeOnlyTheirs(t *testing.T) {
 				if product := d.fn * d.zeta; product < 32*0.3 || product > 40*0.4 || d.zeta > 1.6001 {
 					t.Errorf("seed %d: fn x zeta = %g, zeta = %g", seed, product, d.zeta)
 				}
-				d.fn, d.zeta = good.fn, good.zeta
+				d.fn, d.zeta, d.dry = good.fn, good.zeta, good.dry
 			case Overdamped:
 				d.zeta = good.zeta
 			}

@@ -3,6 +3,7 @@ package simulated
 import (
 	"math"
 	"math/rand/v2"
+	"sync/atomic"
 	"time"
 
 	"kymobench/bench/line"
@@ -76,6 +77,26 @@ type transducer struct {
 	last   line.Instant // the line's state is of this instant
 	input  float64      // mmHg at the line's beginning, then
 	burst  line.Instant // the next one
+
+	flushes atomic.Int64 // asked for
+	flushed int64        // done
+}
+
+// bubbleLeft is the share of a bubble that a flush leaves in the line.
+const bubbleLeft = 0.15
+
+// flush does what was asked for since the last release: the compliance of the
+// bubble, which 1/fn^2 goes by, shrinks; fn x zeta stays.
+func (u *transducer) flush() {
+	for ; u.flushed < u.flushes.Load(); u.flushed++ {
+		if u.d.dry == 0 {
+			continue
+		}
+		product := u.d.fn * u.d.zeta
+		dry := 1 / (u.d.dry * u.d.dry)
+		u.d.fn = 1 / math.Sqrt(dry+bubbleLeft*(1/(u.d.fn*u.d.fn)-dry))
+		u.d.zeta = product / u.d.fn
+	}
 }
 
 func newTransducer(v *volume, m *diaphragm, d drawn) *transducer {
@@ -132,6 +153,7 @@ func (u *transducer) follow(t line.Instant) {
 		u.to(next.from, next.p0)
 		c.index++
 		if next.fn != 0 {
+			u.flush()
 			u.line.tune(u.d.fn*next.fn, u.d.zeta*next.zeta, u.period/1e9)
 		}
 	}

@@ -57,7 +57,12 @@ func (e *extremes) of(mean float64, cos, sin []float64) (low, high float64) {
 	}
 	top, bottom := v[0], v[0]
 	for _, x := range v {
-		top, bottom = math.Max(top, x), math.Min(bottom, x)
+		if x > top {
+			top = x
+		}
+		if x < bottom {
+			bottom = x
+		}
 	}
 	// The range is that of the places looked at, up to 8 % short of the true one.
 	slack := 0.1 * (top - bottom) / 2

@@ -240,7 +240,7 @@ func TestAdequateDamping(t *testing.T) {
 	}
 }
 
-// Many lines at once are those one by one, to half a per cent; about a jump a few
+// Many lines at once are those one by one, to a hundredth; about a jump a few
 // may be off, or on its other side.
 func TestRates(t *testing.T) {
 	r := rand.New(rand.NewPCG(5, 5))
@@ -255,11 +255,11 @@ func TestRates(t *testing.T) {
 		}
 		off := 0
 		for i, got := range reach.Rates(fn, zeta) {
-			if want := reach.Rate(fn[i], zeta[i]); math.Abs(got-want) > 5e-3*want {
+			if want := reach.Rate(fn[i], zeta[i]); math.Abs(got-want) > 1e-2*want {
 				off++
 			}
 		}
-		if off > 8 {
+		if off > 16 {
 			t.Errorf("%s: %d of 400 differ", w.Name, off)
 		}
 		if reach.Rate(0.1, 0.6) != 0 || !math.IsInf(reach.Rate(500, 0.6), 1) {

@@ -155,10 +155,10 @@ func clipped(rate float64) float64 {
 }
 
 // nodes is at how many damping ratios Rates solves.
-const nodes = 48
+const nodes = 24
 
 // Rates is Rate for many lines at once (draws of one line: fn and zeta, of
-// equal length). The limits are solved at 48 damping ratios, evenly among those
+// equal length). The limits are solved at 24 damping ratios, evenly among those
 // given, and taken straight between them; where they jump, nothing is taken
 // between and the nearer one stands.
 func (r *Reach) Rates(fn, zeta []float64) []float64 {

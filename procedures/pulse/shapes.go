@@ -53,7 +53,7 @@ type Bump struct{ Height, At, Width float64 }
 //
 //	2 h w sqrt(2 pi) exp(-2 (pi k w)^2) cos and sin of (2 pi k At)
 //
-// and end where the exponential is below 1e-12. Widths 0.02 to 0.5 beats.
+// and end where the exponential is below 1e-8. Widths 0.02 to 0.5 beats.
 // Source: Fourier transform of a Gaussian, textbook.
 func Bumps(name string, diastolic, systolic float64, bumps []Bump) (Wave, error) {
 	var cos, sin []float64
@@ -66,7 +66,7 @@ func Bumps(name string, diastolic, systolic float64, bumps []Bump) (Wave, error)
 		for k := 1; ; k++ {
 			x := math.Pi * float64(k) * b.Width
 			e := math.Exp(-2 * x * x)
-			if e < 1e-12 {
+			if e < 1e-8 {
 				break
 			}
 			if k > len(cos) {

@@ -72,7 +72,7 @@ const (
 
 	// Intervals of errors come from the first of the draws, which are spread as
 	// evenly as all of them.
-	errorDraws = 512
+	errorDraws = 192
 
 	harmonicsOfRule = 8
 	optimumDamping  = 0.64
@@ -204,8 +204,8 @@ func (g *gathered) pulseErrors(joint step.Joint, drawn step.Draws) (*PulseErrors
 // contourDamping are the damping ratios of a contour, closer where curves turn.
 func contourDamping() []float64 {
 	var z []float64
-	for i := range 66 {
-		x := 0.04 * math.Pow(50, float64(i)/65) // 0.04 to 2
+	for i := range 48 {
+		x := 0.04 * math.Pow(50, float64(i)/47) // 0.04 to 2
 		z = append(z, math.Round(x*1e4)/1e4)
 	}
 	return z

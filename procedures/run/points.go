@@ -91,6 +91,9 @@ func (s *session) readOnce(ctx context.Context) (bench.Reading, error) {
 // checkDisk holds the disk against the longest it may lag behind.
 func (s *session) checkDisk() error {
 	for _, u := range s.live() {
+		if u.writer == nil {
+			continue
+		}
 		if late := u.writer.Behind(s.now()); late > record.LongestUnsynced {
 			return &Fault{Code: "disk_slow", Text: fmt.Sprintf("the disk has not taken what was written %v ago", late.Round(100*time.Millisecond))}
 		}
