@@ -75,7 +75,7 @@ func derivedRows(d *results.Derived) []FigureRow {
 	add("Gain ±5 % up to", d.Flat5, 1, "Hz")
 	add("\u22123 dB at", d.Bandwidth3dB, 1, "Hz")
 	for _, a := range d.At {
-		if a.Frequency >= 5 {
+		if a.Frequency >= 5 || len(d.At) < 4 {
 			add("Phase at "+withUnit(stated(a.Frequency), "Hz"), a.Phase, 1, "°")
 		}
 	}

@@ -61,6 +61,7 @@ Exit 4 when natural frequency and damping are undetermined.`,
 	f.StringVar(&o.pulse.Rate, "pulse-rate", "", `that the plane of the chart is drawn for, as "120 1/min"`)
 	f.StringVar(&o.pulse.Tolerance, "tolerance", "", `of systolic and diastolic errors, as "2 mmHg"`)
 	f.StringVar(&o.pulse.ToleranceShare, "tolerance-share", "", `of the pressure, as "2 %"; with --tolerance the larger counts`)
+	f.StringSliceVar(&o.pulse.At, "at", nil, `frequencies that gain and phase are wanted at, as "5 Hz,10 Hz"`)
 	f.StringVar(&o.chart, "chart", "", "draw response, fit and residuals into a file, .svg or .pdf")
 	f.BoolVar(&o.json, "json", false, "one JSON document on stdout")
 	return cmd
@@ -143,7 +144,7 @@ func (o *fitStepOptions) readPulse() error {
 		return usageError{err}
 	}
 	read.Shape = filepath.Base(o.pulse.Shape)
-	read.Rate, read.Tolerance, read.ToleranceShare = o.pulse.Rate, o.pulse.Tolerance, o.pulse.ToleranceShare
+	read.Rate, read.Tolerance, read.ToleranceShare, read.At = o.pulse.Rate, o.pulse.Tolerance, o.pulse.ToleranceShare, o.pulse.At
 	o.pulse = read
 	return nil
 }

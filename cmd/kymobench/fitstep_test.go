@@ -101,13 +101,17 @@ func TestAirIsFoundAgain(t *testing.T) {
 // 79.6247 mmHg, 0.42099 and -0.39429 from what there is.
 func TestPulseErrorsOfAFit(t *testing.T) {
 	path := ringing(t, 24, 0.15, 0.2)
-	s, err := fittedStep(t, path, "--edge-time", "0", "--pulse", "three harmonics", "--pulse-rate", "100 1/min", "--tolerance", "1 mmHg")
+	s, err := fittedStep(t, path, "--edge-time", "0", "--pulse", "three harmonics", "--pulse-rate", "100 1/min", "--tolerance", "1 mmHg", "--at", "24 Hz,3 Hz")
 	if err != nil {
 		t.Fatal(err)
 	}
 	p := s.Pulse
 	if p.Tolerance != 1 || p.ToleranceShare != 0 || p.Plane.Rate < 99.999 || p.Plane.Rate > 100.001 || len(p.Plane.Contours) != 1 || p.Plane.Contours[0].Shape != "three harmonics" {
 		t.Errorf("%+v", p)
+	}
+	// At its natural frequency every line lags by a quarter and gains 1/(2 zeta).
+	if a := s.Derived.At; len(a) != 2 || a[1].Frequency != 3 || math.Abs(*a[0].Phase.Value+90) > 0.3 || math.Abs(*a[0].Gain.Value*2*0.15-1) > 0.01 {
+		t.Errorf("%+v", a)
 	}
 	e := p.Shapes[0].Errors[4]
 	for _, c := range []struct {
@@ -152,6 +156,7 @@ func TestFitStepRefusals(t *testing.T) {
 		{"--line-length|1.2", "line length"}, {"--line-length|1.2 m", "belong together"}, {"--bore|1.6 Hz|--line-length|1 m", "bore"}, {"--bore|", "--bore is empty"},
 		{"--density|998 kg/m3", "belong together"}, {"--designed-damping|0.3", "designed frequency"}, {"--designed-frequency|-3 Hz", "not above zero"},
 		{"--pulse|square", "no pulse"}, {"--pulse|" + open, "does not close"}, {"--pulse|" + path, "does not close"}, {"--tolerance|0 mmHg", "not above zero"}, {"--tolerance|2 Hz", "tolerance"},
+		{"--at|5 Hz,ten", "frequency"}, {"--at|-1 Hz", "frequency"},
 		{"--barometer|760 kPa", "barometer"}, {"--pulse-rate|120", "pulse rate"},
 	} {
 		_, err := fittedStep(t, append([]string{path, "--edge-time", "0"}, strings.Split(c.args, "|")...)...)

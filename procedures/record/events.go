@@ -276,8 +276,8 @@ type Line struct {
 	Barometer         string `json:"barometer,omitempty"` // absolute
 }
 
-// Pulse is the pulse wave that errors are worked out for, in place of what the
-// program would take.
+// Pulse is what somebody wants to know of the line in place of what the program
+// would tell: the pulse wave that errors are worked out for, and frequencies.
 type Pulse struct {
 	Shape          string    `json:"shape,omitempty"` // one of the program's, or the name of Samples
 	Rate           string    `json:"rate,omitempty"`  // that the plane is drawn for, "120 1/min"
@@ -285,6 +285,7 @@ type Pulse struct {
 	ToleranceShare string    `json:"tolerance_share,omitempty"`
 	Unit           string    `json:"unit,omitempty"` // of Samples
 	Samples        []float64 `json:"samples,omitempty"`
+	At             []string  `json:"at,omitempty"` // frequencies that gain and phase are wanted at
 }
 
 // Vent says that the volume was opened to atmosphere, and why.

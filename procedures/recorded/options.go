@@ -40,6 +40,14 @@ func (o StepOptions) check() error {
 			return fmt.Errorf("%s %q is not above zero", v.name, v.text)
 		}
 	}
+	if len(o.Pulse.At) > mostFrequencies {
+		return fmt.Errorf("%d frequencies, at most %d are taken", len(o.Pulse.At), mostFrequencies)
+	}
+	for _, text := range o.Pulse.At {
+		if f, err := quantity.ParseFrequency(text); err != nil || !(f > 0) {
+			return fmt.Errorf("frequency %q: one above zero is expected, as \"10 Hz\"", text)
+		}
+	}
 	l := o.Line
 	if l.DesignedDamping != "" {
 		if x, err := quantity.ParseDecimal(l.DesignedDamping); err != nil || !(x > 0) {
@@ -108,6 +116,9 @@ func Pulse(file string, r io.Reader) (record.Pulse, error) {
 	}
 	return out, nil
 }
+
+// mostFrequencies bounds what is printed.
+const mostFrequencies = 20
 
 // longestBeat bounds the transform of a beat: 10 kHz at 40/min is 15,000.
 const longestBeat = 20000

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 
+	"kymobench/bench/quantity"
 	"kymobench/procedures"
 	"kymobench/procedures/record"
 	"kymobench/procedures/step"
@@ -91,9 +92,22 @@ const (
 	drawSeed = 1
 )
 
-// statedAt are the frequencies that gain and phase are given for: a pulse of
-// 60/min, and what its fifth, tenth and twentieth harmonic are.
-func statedAt() []float64 { return []float64{1, 5, 10, 20} }
+// statedAt are the frequencies that gain and phase are given for: those asked
+// for, else a pulse of 60/min and its fifth, tenth and twentieth harmonic.
+func (g *gathered) statedAt() ([]float64, error) {
+	if g.pulse == nil || len(g.pulse.At) == 0 {
+		return []float64{1, 5, 10, 20}, nil
+	}
+	var out []float64
+	for _, text := range g.pulse.At {
+		f, err := parsed(text, quantity.DimFrequency)
+		if err != nil || !(f > 0) {
+			return nil, fmt.Errorf("%q is no frequency above zero", text)
+		}
+		out = append(out, f)
+	}
+	return out, nil
+}
 
 // derive fills in everything that follows from the determined figures.
 func (g *gathered) derive(s *scale, d *dynamics, out *Step) error {
@@ -103,7 +117,11 @@ func (g *gathered) derive(s *scale, d *dynamics, out *Step) error {
 	if err != nil {
 		return err
 	}
-	out.Derived = derivedOf(joint.Derive(drawn, statedAt()))
+	at, err := g.statedAt()
+	if err != nil {
+		return err
+	}
+	out.Derived = derivedOf(joint.Derive(drawn, at))
 	out.Derived.Curve = amplitudeCurve(joint, drawn)
 	out.Response = d.crossCheck()
 	if !out.Response.Agrees {
