@@ -25,15 +25,17 @@ func printStep(w io.Writer, s *results.Step) error {
 	if err := t.Flush(); err != nil {
 		return err
 	}
+	if s.Pulse != nil || s.Opinions != nil {
+		fmt.Fprintln(w, "opinions (no results, and held against no limit):")
+	}
 	if s.Pulse != nil {
 		if err := pulses(w, s.Pulse); err != nil {
 			return err
 		}
 	}
 	if s.Opinions != nil {
-		fmt.Fprintln(w, "opinions (no results, and held against no limit):")
 		for _, o := range s.Opinions.Texts {
-			fmt.Fprintf(w, "  %s\n", o.Text)
+			fmt.Fprintln(w, o.Text)
 		}
 	}
 	reservations(w, s.Reservations)

@@ -8,6 +8,7 @@ import (
 	"strings"
 
 	"kymobench/bench/quantity"
+	"kymobench/procedures"
 	"kymobench/procedures/record"
 	"kymobench/procedures/step"
 	"kymobench/procedures/tubing"
@@ -233,7 +234,7 @@ func (o *Opinions) conclude(moved *DerivedFigure, missing string, k lineKnown, s
 	case o.Steady == nil:
 		say("undetermined", "what damps the line cannot be told: %s", missing)
 	case finding == tubing.More:
-		say("narrowing", "the product fn x zeta is %.1f times what steady flow through the stated bore of %.3g mm gives, %.1f times that of oscillating flow: something else than the stated bore damps. That is a dome, a restrictor, a filter or the transducer itself; or, where a line of this kind used to damp less, a narrowing (kink, clot, a stopcock not quite open). It is not air", *o.Steady.Value, 1000*k.Bore, *o.Oscillating.Value)
+		say("narrowing", "the product fn x zeta is %.1f times what steady flow through the stated bore of %.3g mm gives, %.1f times that of oscillating flow: something else than the stated bore damps. That is a dome, a restrictor, a filter or the transducer itself; or, where a line of this kind used to damp less, a narrowing (kink, clot, a stopcock not quite open). Air would leave the product alone", *o.Steady.Value, 1000*k.Bore, *o.Oscillating.Value)
 	case finding == tubing.AsStated:
 		say("as_stated", "the product fn x zeta is what the stated bore of %.3g mm gives (%.2f of steady, %.2f of oscillating laminar flow): nothing points to a narrowing; if the natural frequency is too low, it is air or something soft", 1000*k.Bore, *o.Steady.Value, *o.Oscillating.Value)
 	case finding == tubing.Less:
@@ -300,7 +301,10 @@ func surroundings(l record.Line, s *scale, d *dynamics) surrounding {
 		for _, st := range c.steps {
 			if st.Determined {
 				n++
-				level += s.unit.ToSI(st.Baseline + st.Height)
+				// A release ends at atmosphere, whatever the UUT's zero reads.
+				if c.Direction != string(procedures.Release) {
+					level += s.unit.ToSI(st.Baseline + st.Height)
+				}
 			}
 		}
 	}

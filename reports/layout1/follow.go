@@ -18,7 +18,7 @@ func (p *paper) follow() {
 	if s == nil {
 		return
 	}
-	if s.Amplitude != nil || s.Plane != nil || s.Pulse != nil {
+	if s.Amplitude != nil || s.Plane != nil {
 		p.heading("What the line does", 70)
 		if s.Amplitude != nil {
 			p.amplitude(s.Amplitude, s.Derived)
@@ -26,14 +26,14 @@ func (p *paper) follow() {
 		if s.Plane != nil {
 			p.plane(s.Plane)
 		}
+	}
+	if len(s.Opinions) > 0 || s.Pulse != nil {
+		p.heading("Opinions", 40)
+		p.paragraph(left, width, "Not results: no limit is held against what follows, and it holds for the line on this bench with stated or published pulses.", sans, 7.5, quiet())
 		if s.Pulse != nil {
 			p.pulse(s.Pulse)
 		}
-	}
-	if len(s.Opinions) > 0 {
-		p.heading("Opinions", 24)
-		p.paragraph(left, width, "Not results: no limit is held against what follows.", sans, 7.5, quiet())
-		p.y += 0.6
+		p.y += 1
 		p.bullets(s.Opinions, 7.8)
 	}
 }
@@ -159,7 +159,7 @@ func (p *paper) pulse(s *reports.Pulse) {
 	for _, r := range s.Rows {
 		rows = append(rows, []string{r.Name, r.Pressure, r.Fastest, r.Errors[0], r.Errors[1], r.Errors[2]})
 	}
-	p.y += 2
+	p.y += 1
 	table{size: 7.3, gap: 0.3, columns: []column{
 		{title: "Pulse", w: 34}, {title: "mmHg", w: 15}, {title: "Fastest rate (95 %)", w: 30},
 		{title: "Error " + s.Head[0], w: 29}, {title: s.Head[1], w: 29}, {title: s.Head[2], w: 29},
