@@ -28,6 +28,11 @@ func printStatic(w io.Writer, s *results.Static) error {
 		dof = fmt.Sprintf("%d degrees of freedom", *s.ResidualDoF)
 	}
 	t.row("residual standard deviation", "line", s.ResidualSD, u, dof)
+	if g := s.Weighted; g != nil {
+		fmt.Fprintf(t, "noise grows with the pressure\t%.3g\t%s\tand %.3g %% of it, each squared and added\n", g.Constant, u, 100*g.Share)
+		t.figure("intercept, weighted by it", "line", &g.Intercept, u)
+		t.figure("slope, weighted by it", "line", &g.Slope, "1")
+	}
 	if s.Sensitivity != nil {
 		t.figure("sensitivity", "line", &results.Figure{Value: s.Sensitivity.Value, Standard: s.Sensitivity.Standard}, s.Sensitivity.Unit)
 	}

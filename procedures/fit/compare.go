@@ -134,13 +134,13 @@ func (w *work) repeatability(f *Figures, zeros []float64, mounting []int) {
 			g.less.add(x)
 		}
 	}
-	var squares, largest float64
+	squares, n := make([]float64, len(w.levels)), w.ints(len(w.levels))
 	for k, c := range w.cells {
 		g := &groups[number[k]]
 		d := c.r - g.as.sum/g.as.n
-		squares += d * d
+		squares[c.level] += d * d
 	}
-	dof := 0
+	var largest float64
 	for k := range groups {
 		g := &groups[k]
 		at := &f.Points[keys[k]/2%len(w.levels)]
@@ -150,7 +150,7 @@ func (w *work) repeatability(f *Figures, zeros []float64, mounting []int) {
 		if g.as.n < 2 {
 			continue
 		}
-		dof += int(g.as.n) - 1
+		n[keys[k]/2%len(w.levels)] += int(g.as.n) - 1
 		largest = max(largest, *g.as.spread())
 		if keys[k]%2 == 0 {
 			at.RangeUp = larger(at.RangeUp, g.as.spread())
@@ -158,9 +158,26 @@ func (w *work) repeatability(f *Figures, zeros []float64, mounting []int) {
 			at.RangeDown = larger(at.RangeDown, g.as.spread())
 		}
 	}
-	if dof > 0 {
-		sd := math.Sqrt(squares / float64(dof))
-		f.Repeatability = Repeatability{LargestRange: &largest, PooledSD: &sd, DoF: &dof}
+	var all float64
+	dof := 0
+	for l := range squares {
+		all += squares[l]
+		dof += n[l]
+		if n[l] > 0 {
+			squares[l] /= float64(n[l]) // a variance
+		}
+	}
+	if dof == 0 {
+		return
+	}
+	sd := math.Sqrt(all / float64(dof))
+	f.Repeatability = Repeatability{LargestRange: &largest, PooledSD: &sd, DoF: &dof}
+	w.growing(f, squares, n)
+	for l := range squares {
+		if f.Points[l].DoF = n[l]; n[l] > 0 {
+			squares[l] = math.Sqrt(squares[l])
+			f.Points[l].SD = &squares[l]
+		}
 	}
 }
 

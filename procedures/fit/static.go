@@ -50,6 +50,8 @@ type AtSet struct {
 	RangeUp, RangeDown *float64 // over the cycles of one mounting
 	Repeatability      *float64 // the larger range of the two legs, each cycle less its own zero
 	Reproducibility    *float64 // the same over the first cycles of the mountings
+	SD                 *float64 // pooled over the legs and mountings, with DoF
+	DoF                int
 }
 
 // Figures are what static readings give. What they cannot give is nil, and
@@ -70,6 +72,7 @@ type Figures struct {
 	ErrorAfterZero  *Located
 	AsRead          Extremes  // y - p
 	AfterZero       Extremes  // the same, less the error at the zeroing
+	Growing         *Growing  // nil unless the scatter shows that the noise grows with the pressure
 	Curvature       *Model    // coefficients of the powers of p, from the constant up
 	Sets            []float64 // set pressure of each reading as used; NaN without one
 	Reservations    []Reservation
@@ -107,6 +110,8 @@ var ErrData = errors.New("static readings not usable")
 //	zero return    r(down) - r(up) there, for each cycle
 //	errors         y - p, as read, and less the error at the one zeroing:
 //	               highest, lowest, and the larger of them by magnitude
+//	growing noise  where the scatter at the set pressures shows it beyond chance:
+//	               the line weighted by it, beside the ordinary one
 //	curvature      polynomial of y on p, of third order or as high as the set
 //	               pressures carry, over all readings: a description
 //

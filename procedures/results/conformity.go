@@ -41,6 +41,20 @@ type SetPressure struct {
 	RangeDown       *float64 `json:"range_down"`
 	Repeatability   *float64 `json:"repeatability_less_zero"`
 	Reproducibility *float64 `json:"reproducibility_less_zero"`
+	SD              *float64 `json:"standard_deviation"` // of one reading about its leg's mean
+	DoF             int      `json:"degrees_of_freedom"`
+}
+
+// WeightedLine is the least-squares line in which each reading weighs by its
+// noise, where the scatter shows that this grows with the pressure:
+// sigma^2 = constant^2 + (share x pressure)^2.
+type WeightedLine struct {
+	Intercept  Figure  `json:"intercept"`
+	Slope      Figure  `json:"slope"`
+	Covariance float64 `json:"covariance_intercept_slope"`
+	Constant   float64 `json:"noise_constant"`
+	Share      float64 `json:"noise_share"`
+	DoF        int     `json:"residual_degrees_of_freedom"`
 }
 
 // Extremes are the highest and the lowest error.
@@ -73,12 +87,16 @@ func (out *Static) conformity(f fit.Figures) {
 	}
 	out.Points = []SetPressure{}
 	for _, p := range f.Points {
-		out.Points = append(out.Points, SetPressure{p.Set, p.Average, p.Hysteresis, p.RangeUp, p.RangeDown, p.Repeatability, p.Reproducibility})
+		out.Points = append(out.Points, SetPressure{p.Set, p.Average, p.Hysteresis, p.RangeUp, p.RangeDown, p.Repeatability, p.Reproducibility, p.SD, p.DoF})
 	}
 	out.AsRead, out.AfterZero = extremesOf(f.AsRead), extremesOf(f.AfterZero)
 	out.Reproducibility = f.Reproducibility
 	if c := f.Curvature; c != nil {
 		out.Curvature = &Curvature{c.Coefficients, c.Covariance, c.Residual, c.DoF}
+	}
+	if g := f.Growing; g != nil {
+		l := g.Line
+		out.Weighted = &WeightedLine{Figure{l.Intercept, l.UIntercept}, Figure{l.Slope, l.USlope}, l.Covariance, g.Constant, g.Share, l.DoF}
 	}
 	if s := f.Repeatability.PooledSD; s != nil {
 		of := math.Sqrt2 * *s

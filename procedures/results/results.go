@@ -113,6 +113,7 @@ type Static struct {
 	AsRead          *Extremes      `json:"errors_as_read"`
 	AfterZero       *Extremes      `json:"errors_after_zero"`
 	Curvature       *Curvature     `json:"curvature"`
+	Weighted        *WeightedLine  `json:"weighted_line"` // nil unless the noise grows with the pressure
 	Undetermined    []Undetermined `json:"undetermined"`
 }
 
