@@ -58,10 +58,7 @@ func (g *gathered) stepResults(s *scale) (*dynamics, *Step, error) {
 		return d, out, nil
 	}
 	out.Combined.Frequency, out.Combined.Damping = estimateOf(d.combined.Frequency), estimateOf(d.combined.Damping)
-	var err error
-	if d.edge, err = edgeShift(s, d.all, d.combined); err != nil {
-		return nil, nil, err
-	}
+	d.edge = edgeShift(s, d.all, d.combined)
 	return d, out, g.derive(s, d, out)
 }
 
@@ -99,6 +96,9 @@ func (g *gathered) analyse(s *scale, c record.Capture) (captured, []step.Reserva
 			return one, nil, fmt.Errorf("edge time: %w", err)
 		}
 		one.settings.EdgeStated, one.settings.EdgeTime = true, float64(span)
+		if c.Edge == "" {
+			one.settings.EdgeTolerance = s.edgeTolerance
+		}
 	}
 	var reservations []step.Reservation
 	one.steps, _, reservations, err = step.Analyse(one.trace, one.settings)
@@ -134,32 +134,19 @@ func addReason(all []Reason, r Reason) []Reason {
 	return append(all, r)
 }
 
-// edgeShift is how far the combined figures move when the edge is as much
-// slower as its tolerance allows: the half-widths of what the edge can do to
-// ln fn and to zeta, with their signs.
-func edgeShift(s *scale, all []captured, combined step.Combined) (step.Tolerance, error) {
-	var none step.Tolerance
+// edgeShift is what the valve's edge may do to ln fn and zeta when it is as
+// much slower or faster as its tolerance allows: half-widths, with their signs.
+// An edge time without a tolerance is a bound and in the intervals already.
+func edgeShift(s *scale, all []captured, combined step.Combined) step.Tolerance {
 	if s.edgeTolerance == 0 || !combined.Determined {
-		return none, nil
+		return step.Tolerance{}
 	}
-	var moved []step.Step
 	for _, c := range all {
 		if !c.settings.EdgeStated || c.Edge != "" {
-			return none, nil
+			return step.Tolerance{}
 		}
-		settings := c.settings
-		settings.EdgeTime *= 1 + s.edgeTolerance
-		steps, _, _, err := step.Analyse(c.trace, settings)
-		if err != nil {
-			return none, err
-		}
-		moved = append(moved, steps...)
 	}
-	other := step.Combine(moved)
-	if !other.Determined {
-		return none, nil
-	}
-	return step.Tolerance{Log: math.Log(other.Frequency.Value / combined.Frequency.Value), Damping: other.Damping.Value - combined.Damping.Value}, nil
+	return combined.Edge
 }
 
 // budgets are the uncertainties of natural frequency (Hz) and damping ratio

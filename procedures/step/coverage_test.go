@@ -52,7 +52,7 @@ func TestCoverage(t *testing.T) {
 			rows = append(rows, row{"width fitted, T fn 0", p, Settings{MinimumStep: 8}, 400})
 			p.width = 0.2 / fn
 			rows = append(rows, row{"width fitted, T fn 0.2", p, Settings{MinimumStep: 8}, 400})
-			rows = append(rows, row{"ramp stated, T fn 0.2", p, Settings{EdgeStated: true, EdgeTime: 0.8 * p.width, MinimumStep: 8}, 400})
+			rows = append(rows, row{"ramp stated, T fn 0.2", p, Settings{EdgeStated: true, EdgeTime: 0.8 * p.width, EdgeTolerance: 0.01, ReadoutStated: true, MinimumStep: 8}, 400})
 			p = base(fn, zeta)
 			p.quantum, p.sigma = 0.5, 0.2
 			rows = append(rows, row{"quantised, sigma/LSB 0.4", p, known, 400})

@@ -89,7 +89,10 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	case fn*samplesComfort*math.Exp(-2*uLog) > rate:
 		s.reserve(SamplingSlow, fmt.Sprintf("%.3g samples a period of the natural frequency, fewer than %d", rate/fn, samplesComfort))
 	}
-	if !p.measured && f.width()*fn > widestEdge {
+	s.trial = q.try(j, c, middle, fn, zeta, name, a.settings)
+	s.Edge = s.trial.edge
+	bound := a.settings.EdgeTolerance == 0
+	if !p.measured && f.width()*fn > widestEdge || bound && math.Abs(s.Edge.Log) > largestUncertainty {
 		add(EdgeTooSlow)
 	}
 	// With less than one time constant of answer the uncertainty is not to be
@@ -97,7 +100,6 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	if !(uLog <= largestUncertainty) || float64(f.to-f.post)*a.dt < settling(2*math.Pi*fn, zeta) {
 		add(UncertaintyTooLarge)
 	}
-	s.trial = q.try(j, c, middle, fn, zeta, name)
 	q.sentence(s.trial, a.settings.ReadoutStated || len(a.settings.Readout) > 0)
 	q.reserve(fn, zeta)
 	if p.fitWidth {
@@ -110,6 +112,10 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	s.Determined = true
 	s.Frequency = logEstimate(math.Log(fn), uLog, t)
 	s.Damping = Estimate{zeta, uZeta, math.Max(0, zeta-t*uZeta), zeta + t*uZeta}
+	if bound {
+		s.bound = true
+		s.Frequency, s.Damping = s.Frequency.widen(true, s.Edge.Log), s.Damping.widen(false, s.Edge.Damping)
+	}
 	s.Correlation = c.together
 	return s, true
 }

@@ -59,7 +59,7 @@ func TestExactTraces(t *testing.T) {
 			for _, width := range []float64{0, 0.1 / fn, 0.3 / fn} {
 				p := plan{fn: fn, zeta: zeta, rate: 20 * fn * math.Max(1, zeta), before: 0.5 + 1/fn, spacing: 15*slowest(fn, zeta) + 0.5, heights: []float64{-100}, level: 250, drift: 0.2, width: width, phase: 0.37, start: 12}
 				trace := p.make(rand.New(rand.NewPCG(1, 1)))
-				for _, s := range []Settings{{EdgeStated: true, EdgeTime: 0.8 * width, MinimumStep: 8}, {MinimumStep: 8}} {
+				for _, s := range []Settings{{EdgeStated: true, EdgeTime: 0.8 * width, EdgeTolerance: 0.01, ReadoutStated: true, MinimumStep: 8}, {MinimumStep: 8}} {
 					got := one(t, trace, s)
 					// The Gram matrix squares the condition number, which is worst
 					// for the two unequal decays of zeta 2.

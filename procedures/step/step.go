@@ -36,6 +36,10 @@ type Trace struct {
 type Settings struct {
 	EdgeStated bool    // EdgeTime is known; without it, and without Trace.Applied, the width is fitted
 	EdgeTime   float64 // 10 to 90 % time of the edge, s; 0 an ideal step. Held as a ramp of full width EdgeTime/0.8
+	// EdgeTolerance is how far EdgeTime may be wrong, a share of it: the edge is
+	// a ramp, and the caller carries Step.Edge. 0: EdgeTime is a bound, the edge
+	// any usual one up to it, and what it can do widens the intervals.
+	EdgeTolerance float64
 	// Readout is what lies between the line and the samples, in any order. It
 	// is in the model, so that the figures are the line's own.
 	Readout []Filter
@@ -113,9 +117,11 @@ type Step struct {
 	Delay            float64   // behind the applied pressure, s; 0 without one
 	DegreesOfFreedom float64   // of the standard uncertainties
 	Autocorrelation  float64   // of the residuals from sample to sample
+	Edge             Tolerance // what the stated edge may do: in the intervals if EdgeTime is a bound, else not
 	Reservations     []Reservation
 
 	trial trial
+	bound bool // Edge is in the intervals
 }
 
 // ErrTrace is wrapped by every refusal of Analyse.
@@ -150,6 +156,8 @@ func refuse(t Trace, s Settings) error {
 		return fmt.Errorf("%w: %d samples of applied pressure for %d of pressure", ErrTrace, len(t.Applied), len(t.Pressure))
 	case !(s.EdgeTime >= 0) || math.IsInf(s.EdgeTime, 0):
 		return fmt.Errorf("%w: edge time %g s", ErrTrace, s.EdgeTime)
+	case !(s.EdgeTolerance >= 0 && s.EdgeTolerance < 1):
+		return fmt.Errorf("%w: tolerance of the edge time %g", ErrTrace, s.EdgeTolerance)
 	case !(s.MinimumStep >= 0) || math.IsInf(s.MinimumStep, 0):
 		return fmt.Errorf("%w: minimum step %g", ErrTrace, s.MinimumStep)
 	}

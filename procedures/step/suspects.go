@@ -159,14 +159,8 @@ func (t *tribunal) try(kind suspicion, place, from float64, shape func(k int) fl
 		}
 		whole += d[k] * d[k]
 	}
-	var taken [most]float64
-	size := len(t.columns)
-	for i := range size {
-		taken[i] = dot(t.columns[i], d) / t.unit[i]
-	}
-	substitute(&t.gram, &taken, size)
-	for i := range size {
-		taken[i] /= t.unit[i]
+	taken := t.taken()
+	for i := range t.columns {
 		for k, v := range t.columns[i] {
 			d[k] -= taken[i] * v
 		}

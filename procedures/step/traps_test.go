@@ -140,7 +140,7 @@ func TestSpikesLeftOut(t *testing.T) {
 func TestEdgeTooSlow(t *testing.T) {
 	for _, part := range []float64{0.33, 0.37} {
 		p := plan{fn: 20, zeta: 0.5, rate: 1000, before: 0.5, spacing: 1, heights: []float64{100}, sigma: 0.1, width: part / 20}
-		s := one(t, p.make(rand.New(rand.NewPCG(25, 1))), Settings{EdgeStated: true, EdgeTime: 0.8 * p.width, MinimumStep: 8})
+		s := one(t, p.make(rand.New(rand.NewPCG(25, 1))), Settings{EdgeStated: true, EdgeTime: 0.8 * p.width, EdgeTolerance: 0.01, ReadoutStated: true, MinimumStep: 8})
 		if refused := slices.Contains(s.Reasons, EdgeTooSlow); refused != (part > 0.35) || s.Determined == refused {
 			t.Errorf("width x fn %g: %v", part, s.Reasons)
 		}

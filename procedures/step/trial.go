@@ -31,6 +31,7 @@ type trial struct {
 	sure    bool    // worst is there beyond doubt
 	explanation
 	explained bool
+	edge      Tolerance // what the stated edge may do
 }
 
 // beyond is the size of z that chance exceeds, to one side, with p.
@@ -78,7 +79,7 @@ func (q *quality) calm(c covariance, tau float64) (sigma, phi, freedom float64) 
 }
 
 // try puts the suspects before the fit of a step.
-func (q *quality) try(j [][]float64, c covariance, middle, fn, zeta float64, name bool) trial {
+func (q *quality) try(j [][]float64, c covariance, middle, fn, zeta float64, name bool, s Settings) trial {
 	sigma, phi, freedom := q.calm(c, settling(2*math.Pi*fn, zeta))
 	scaled := make([]float64, len(q.step.Residuals))
 	for i, r := range q.withoutSpikes(q.step.Residuals) {
@@ -88,6 +89,9 @@ func (q *quality) try(j [][]float64, c covariance, middle, fn, zeta float64, nam
 	t, ok := q.tribunal(j, scaled, middle, sigma/math.Abs(q.scale), phi)
 	if !ok {
 		return out
+	}
+	if s.EdgeStated && s.EdgeTime > 0 && !q.problem.measured {
+		out.edge = t.edgeBias(2*math.Pi*fn, s.EdgeTime, s.EdgeTolerance)
 	}
 	out.all = t.hear()
 	for _, s := range out.all {
