@@ -21,7 +21,7 @@ type appliedInput struct {
 }
 
 // divisions of a refined interval.
-const divisions = 8
+const divisions = 16
 
 func (a *appliedInput) at(i int) float64 { return clamped(a.u, i) }
 
@@ -195,27 +195,20 @@ func (t *triple) advance(x *[3][2]float64, u0, u1 float64) [3][2]float64 {
 	return y
 }
 
-// betweenSamples tells by how much ln w and zeta could be wrong because the
-// applied pressure is not known between its samples: straight lines blur a
-// sharper edge by a triangle of variance dt^2/6, and the fit is made again
-// with that blur taken out to first order (u - second difference/12). The
-// shift is what a sharp edge costs on average over its place between two
-// samples, and is taken for a standard uncertainty.
-func (f *fitted) betweenSamples() (lnW, zeta float64) {
-	sharp := *f.problem
-	u := f.problem.applied.u
-	sharp.applied = &appliedInput{u: append([]float64{}, u...)}
-	for i := 1; i+1 < len(u); i++ {
-		// Only the edge: elsewhere the second difference is noise.
-		if i >= f.pre-f.from && math.Abs(u[i+1]-u[i-1]) > 0.05 {
-			sharp.applied.u[i] -= (u[i+1] - 2*u[i] + u[i-1]) / 12
+// halfway is the time of sample i and part at which an applied pressure, from
+// the sample from on, is half way; 0 when it never is.
+func (p *problem) halfway(from int) float64 {
+	u := p.applied.u
+	for i := max(1, from); i < len(u); i++ {
+		if u[i] >= 0.5 {
+			part := (0.5 - u[i-1]) / (u[i] - u[i-1])
+			if !(part >= 0 && part <= 1) {
+				part = 1
+			}
+			return p.first + (float64(i-1)+part)*p.dt
 		}
 	}
-	g := polish(&sharp, f.theta)
-	if math.IsInf(g.at.cost, 1) {
-		return 0, 0
-	}
-	return math.Abs(g.theta[lnOmega] - f.theta[lnOmega]), math.Abs(math.Exp(g.theta[lnZeta]) - math.Exp(f.theta[lnZeta]))
+	return 0
 }
 
 // passed is noise of the applied pressure as it arrives in the fit, in the

@@ -43,7 +43,7 @@ func TestSpectrumIsTheTransferFunction(t *testing.T) {
 		} {
 			s := Settings{EdgeStated: true, MinimumStep: 8}
 			if name == "edge" {
-				s.EdgeTime = 0.8 * 0.005
+				s.EdgeTime, s.EdgeTolerance = 0.8*0.005, 0.01
 			}
 			c, steps := spectraOf(t, trace, s, 20)
 			if c.Steps != 1 || !c.Agrees {

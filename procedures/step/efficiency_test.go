@@ -35,7 +35,7 @@ type effCase struct {
 // beyond the step, at least 64 samples and 0.1 s; before it 0.4 s.
 func effCases() []effCase {
 	var all []effCase
-	for _, edge := range []string{"known", "fitted"} {
+	for _, edge := range []string{"known", "applied", "fitted"} {
 		for _, fn := range []float64{8, 15, 24, 40, 200} {
 			for _, zeta := range []float64{0.1, 0.2, 0.4, 0.64, 1, 1.5} {
 				for _, rate := range []float64{250, 1000, 4000} {
@@ -259,7 +259,7 @@ func TestEfficiency(t *testing.T) {
 		t.Logf("%s: bound %.3g %.3g, rmse over bound %.3f %.3f, refused %d gross %d reserved %d", row, row.boundFn, row.boundZeta, row.ratioFn, row.ratioZeta, row.refused, row.gross, row.reserved)
 		rows = append(rows, row)
 	}
-	for _, edge := range []string{"known", "fitted"} {
+	for _, edge := range []string{"known", "applied", "fitted"} {
 		if full() && !slices.ContainsFunc(rows, func(r effRow) bool { return r.edge == edge }) {
 			continue
 		}

@@ -29,9 +29,9 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 		at += f.theta[delay]
 		middle += a.readout.lag()
 	} else {
-		at += a.appliedMiddle(f)
-		middle += a.appliedMiddle(f)
-		s.Delay = f.theta[delay]
+		at += f.appliedMiddle
+		s.Delay = f.behind()
+		middle = f.appliedMiddle + s.Delay
 		if a.settings.AppliedUnfiltered && a.readout != nil {
 			s.Delay -= a.readout.delay
 		}
@@ -55,7 +55,7 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	}
 	s.Noise = lineScatter(a.y[f.from:f.pre])
 	var through passed
-	if p.measured {
+	if p.measured && p.applied != nil {
 		through = f.passThrough(j, a.trace.Applied)
 	}
 	c := sandwich(j, f.withoutSpikes(s.Residuals), f.scale, through)
@@ -64,13 +64,12 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	if !q.isStep() {
 		return s, false
 	}
-	fn := math.Exp(f.theta[lnOmega]) / (2 * math.Pi)
-	zeta := math.Exp(f.theta[lnZeta])
+	fn := math.Exp(f.theta[lnOmega]+f.course.log) / (2 * math.Pi)
+	zeta := math.Exp(f.theta[lnZeta] + f.course.zeta)
 	uLog, uZeta := c.deviation[linear+lnOmega], zeta*c.deviation[linear+lnZeta]
 	if p.measured {
-		shiftLog, shiftZeta := f.betweenSamples()
 		own := uLog * uZeta
-		uLog, uZeta = math.Hypot(uLog, shiftLog), math.Hypot(uZeta, shiftZeta)
+		uLog, uZeta = math.Hypot(uLog, f.course.uLog), math.Hypot(uZeta, zeta*f.course.uZeta)
 		if own > 0 {
 			c.together *= own / (uLog * uZeta)
 		}
@@ -131,22 +130,6 @@ func (s *Step) doubted() bool {
 
 func (s *Step) has(code string) bool {
 	return slices.ContainsFunc(s.Reservations, func(r Reservation) bool { return r.Code == code })
-}
-
-// appliedMiddle is the time, from the origin, at which the applied pressure
-// is half way.
-func (a *analysis) appliedMiddle(f fitted) float64 {
-	u := f.problem.applied.u
-	for i := 1; i < len(u); i++ {
-		if u[i] >= 0.5 && i >= f.pre-f.from {
-			part := (0.5 - u[i-1]) / (u[i] - u[i-1])
-			if !(part >= 0 && part <= 1) {
-				part = 1
-			}
-			return f.problem.first + (float64(i-1)+part)*a.dt
-		}
-	}
-	return 0
 }
 
 // jacobian returns the columns of 1, drift, g and A dg/dtheta at the

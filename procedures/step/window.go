@@ -16,6 +16,9 @@ type fitted struct {
 	origin  int   // sample at which time is 0
 	post    int   // first sample after the edge's middle
 	spikes  []int // samples left out, from f.from
+
+	appliedMiddle float64      // of a measured applied pressure, s from the origin
+	course        courseSpread // of it between its samples
 }
 
 func (f *fitted) width() float64 {
@@ -59,6 +62,9 @@ func (a *analysis) fit(w window) (fitted, bool) {
 				f = g
 			}
 		}
+	}
+	if f.problem.measured {
+		f.betweenSamples()
 	}
 	f.leaveOutSpikes()
 	f.place(a)
@@ -104,6 +110,9 @@ func (a *analysis) set(w window) (f fitted, half float64, ok bool) {
 	f.problem = a.problem(w, f.base, f.scale, f.origin, half)
 	if a.trace.Applied != nil && f.problem.applied == nil {
 		return f, 0, false
+	}
+	if f.problem.measured {
+		f.appliedMiddle = f.problem.halfway(w.pre - w.from)
 	}
 	return f, half, true
 }
