@@ -187,7 +187,7 @@ func (d *dynamics) crossCheck() *Response {
 	var spectra [][]step.Transfer
 	for _, c := range d.all {
 		for _, s := range c.steps {
-			if x := step.Spectrum(c.trace, s, frequencies); x != nil {
+			if x := step.Spectrum(c.trace, s, c.settings, frequencies); x != nil {
 				spectra = append(spectra, x)
 			}
 		}

@@ -32,11 +32,13 @@ type Transfer struct {
 // pressure, its levels from the means before the edge and over the last
 // quarter.
 //
-// Baseline, drift, height and time of the edge are the fit's; nothing else is.
+// What the readout's stated filters do, and the delay behind an applied
+// pressure, is taken out of both. Baseline, drift, height and time of the edge
+// are the fit's; nothing else is.
 // What is sampled too slowly is folded in: hold Measured against Model, which
 // has the same, and not against the gain of the model. Isolated samples far out
 // are left out. Source: discrete Fourier transform, textbook; summed by parts.
-func Spectrum(t Trace, s Step, frequencies []float64) []Transfer {
+func Spectrum(t Trace, s Step, settings Settings, frequencies []float64) []Transfer {
 	n := len(s.Fitted)
 	if !s.Determined || n < 8 || len(s.Residuals) != n || s.From < 0 || s.From+n > len(t.Pressure) {
 		return nil
@@ -62,6 +64,16 @@ func Spectrum(t Trace, s Step, frequencies []float64) []Transfer {
 	// What lies long before the edge, or more than fourteen time constants after it,
 	// is noise alone.
 	slowest := settling(2*math.Pi*s.Frequency.Value, s.Damping.Value) + s.EdgeWidth + math.Abs(s.Delay)
+	readout := settings.Readout
+	if t.Applied != nil && !settings.AppliedUnfiltered {
+		readout = nil // both pass it
+	}
+	for _, f := range readout {
+		slowest += f.Length * math.Max(1, float64(f.Order))
+		if f.Kind == LowPass {
+			slowest += 1 / (2 * math.Pi * f.Corner)
+		}
+	}
 	first, last := max(0, edge-int(2*s.EdgeWidth*t.Rate)-4), min(n, edge+int(math.Ceil(14*slowest*t.Rate))+4)
 	if applied != nil {
 		first, last = 0, n // the edge takes as long as it takes
@@ -88,12 +100,33 @@ func Spectrum(t Trace, s Step, frequencies []float64) []Transfer {
 			x = math.Min(0.98, math.Max(0, x))
 			coloured = math.Max(coloured, (1-x*x)/(1-2*x*math.Cos(w*dt)+x*x))
 		}
+		in *= cmplx.Rect(1, -w*s.Delay)
+		for _, f := range readout {
+			in *= f.gain(w)
+		}
 		out = append(out, Transfer{
 			Frequency: f, Measured: (of + noise) / in, Model: of / in,
 			Scatter: cmplx.Abs(by) * math.Sqrt(variance*coloured/2) / cmplx.Abs(in),
 		})
 	}
 	return out
+}
+
+// gain is the filter's gain and phase at w rad/s: 1/(1 + i w tau) of a low-pass,
+// the sinc of each mean about its middle, a bare delay. Source: textbook.
+func (f Filter) gain(w float64) complex128 {
+	switch f.Kind {
+	case LowPass:
+		return 1 / complex(1, w/(2*math.Pi*f.Corner))
+	case Average:
+		one := complex(sinc(w*f.Length/(2*math.Pi)), 0) * cmplx.Rect(1, -w*f.Length/2)
+		all := complex(1, 0)
+		for range max(1, f.Order) {
+			all *= one
+		}
+		return all
+	}
+	return cmplx.Rect(1, -w*f.Length)
 }
 
 // quietNoise is the variance of the noise and how it is correlated from sample
