@@ -92,6 +92,14 @@ func (d *Document) step(res results.Results) {
 		r.add("Step enters", l.Place)
 		r.add("Line", strings.Join(stringsOf(worded(quantityText(l.Length), " long"), worded(quantityText(l.Bore), " bore"), l.Fluid), ", "))
 		r.add("Flush device", l.FlushDevice)
+		filters := strings.ReplaceAll(l.Filters, "_", "-")
+		switch {
+		case filters == "":
+			filters = "not stated; what it delays or smooths would be taken for the line's"
+		case filters != "none":
+			filters += ", in the model"
+		}
+		r.add("Readout's filters", filters)
 	}
 	out.Facts = r
 	out.Plane = plane(s, res.Limits)

@@ -111,6 +111,8 @@ type Readout struct {
 	ExcitationUncertainty            string // expanded, "" when not stated
 	CoverageFactor                   float64
 	Certificate, Due                 string
+	Filters                          []string // as stated, "low_pass 200 Hz"
+	FiltersStated                    bool     // they are all, also when there are none
 }
 
 // Source makes the pressure.

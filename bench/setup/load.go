@@ -91,6 +91,8 @@ type readoutTable struct {
 	CoverageFactor  float64 `toml:"coverage_factor"`
 	Certificate     string  `toml:"certificate"`
 	Due             string  `toml:"due"`
+
+	Filters []string `toml:"filters"`
 }
 
 // dialogue is the part that every asked instrument has.

@@ -99,6 +99,8 @@ func TestRefusals(t *testing.T) {
 
 		{`gain_uncertainty = "`, `gain_uncertainty = «"-`, `gain_uncertainty is below zero`, ""},
 		{`gain_uncertainty = "`, "excitation_uncertainty = «\"-0.1 %\"\ngain_uncertainty = \"", `excitation_uncertainty is below zero`, ""},
+		{"filters = []", "filters = [«\"low_pass 200\"]", `"200": a number, a blank and a unit are expected, as in "300 mmHg"`, ""},
+		{"filters = []", "filters = [\"delay 2 ms\", «\"notch 50 Hz\"]", `"notch 50 Hz": there is no filter "notch"; there are low_pass, average and delay`, ""},
 		{`port = "readout"`, `port = «"uut"`, `the port of the readout is that of the uut`, "one port, one instrument"},
 
 		{`set = "SOUR:PRES {mmHg}"`, `set = «"SOUR:PRES {mmHg} {kPa}"`, `"SOUR:PRES {mmHg} {kPa}" needs one place for the pressure, as in "SOUR:PRES {mmHg}"`, ""},

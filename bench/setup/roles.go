@@ -86,6 +86,9 @@ func (l *loader) readout(f *File) {
 	f.Readout = l.readoutAt(in, unit, "readout")
 }
 
+// mostFilters of one readout.
+const mostFilters = 8
+
 // readoutAt takes the readout that stands at a path.
 func (l *loader) readoutAt(in *readoutTable, unit quantity.Unit, path ...any) *Readout {
 	key := func(name string) []any { return append(slices.Clone(path), name) }
@@ -97,6 +100,14 @@ func (l *loader) readoutAt(in *readoutTable, unit quantity.Unit, path ...any) *R
 	r.CoverageFactor = l.coverage(in.CoverageFactor, key("coverage_factor")...)
 	r.Certificate = l.text(key("certificate")...)
 	r.Due = tomlfile.Take(l.doc, &l.err, day, key("due")...)
+	r.FiltersStated = l.doc.Has(key("filters")...)
+	l.demand(len(in.Filters) <= mostFilters, fmt.Sprintf("more than %d filters", mostFilters), "", key("filters")...)
+	for i := range in.Filters {
+		r.Filters = append(r.Filters, tomlfile.Take(l.doc, &l.err, func(s string) (string, error) {
+			_, err := quantity.ParseFilter(s)
+			return s, err
+		}, append(key("filters"), i)...))
+	}
 	return r
 }
 

@@ -96,6 +96,7 @@ zero_uncertainty = "%g uV/V"
 coverage_factor = %.1f
 certificate = "HI-2026-0118"
 due = "%s"
+filters = []
 
 [source]
 family = "scpi"
@@ -143,6 +144,7 @@ zero_uncertainty = "%g uV/V"
 coverage_factor = %.1f
 certificate = "HI-2026-0118"
 due = "%s"
+filters = []
 `, port(numbered(RoleUUT, i+2)), i+2, port(numbered(RoleReadout, i+2)), quoted(identityOfReadout(i+2)), readoutGain*100, readoutZero, readoutK, b.day(273))
 	}
 	return w.Bytes()

@@ -54,6 +54,7 @@ func subjectOf(p setup.Place, d *procedures.Definition, m marks) run.Subject {
 		subject.Readout = &record.Readout{
 			Instrument: instrumentOf("readout", r.Dialogue), Certificate: r.Certificate, Due: r.Due, CoverageFactor: r.CoverageFactor,
 			GainUncertainty: r.GainUncertainty, ZeroUncertainty: r.ZeroUncertainty, ExcitationUncertainty: r.ExcitationUncertainty,
+			Filters: r.Filters, FiltersStated: r.FiltersStated,
 		}
 	}
 	return subject

@@ -22,7 +22,10 @@ type fitStepOptions struct {
 	line  record.Line
 	pulse record.Pulse
 	chart string
-	json  bool
+
+	filters    []string
+	unfiltered bool
+	json       bool
 }
 
 func newFitStepCommand(io streams) *cobra.Command {
@@ -49,6 +52,8 @@ Exit 4 when natural frequency and damping are undetermined.`,
 	}
 	f := cmd.Flags()
 	f.StringVar(&o.edge, "edge-time", "", `10-90 % time of the step itself, as "2 ms"; 0 for an ideal step`)
+	f.StringSliceVar(&o.filters, "readout", nil, `filters in the signal path, as "low_pass 200 Hz,average 4 ms x3,delay 2 ms", or none`)
+	f.BoolVar(&o.unfiltered, "applied-unfiltered", false, "the readout's filters do not act on the applied column")
 	f.StringVar(&o.line.Length, "line-length", "", `of the line, as "1.2 m"`)
 	f.StringVar(&o.line.Bore, "bore", "", `inner diameter of the line, as "1.6 mm"; taken within half of its last digit`)
 	f.StringVar(&o.line.Fluid, "fluid", "water", "in the line: water or saline, or anything with --density and --viscosity")
@@ -85,12 +90,18 @@ func runFitStep(path string, o fitStepOptions, io streams) error {
 	if o.line.Length == "" && o.line.Bore == "" && o.line.FluidDensity == "" {
 		o.line.Fluid = "" // the usual fluid of a line that nobody stated
 	}
+	stated := len(o.filters) > 0
+	if len(o.filters) == 1 && o.filters[0] == "none" {
+		o.filters = nil
+	}
 	file, err := os.Open(path)
 	if err != nil {
 		return err
 	}
 	defer file.Close()
-	events, err := recorded.Step(path, file, recorded.StepOptions{Edge: o.edge, Line: o.line, Pulse: o.pulse})
+	events, err := recorded.Step(path, file, recorded.StepOptions{
+		Edge: o.edge, Line: o.line, Pulse: o.pulse, Filters: o.filters, FiltersStated: stated, AppliedUnfiltered: o.unfiltered,
+	})
 	if err != nil {
 		return usageError{err}
 	}

@@ -183,3 +183,46 @@ func TestFitStepChart(t *testing.T) {
 		t.Errorf("png: %v", err)
 	}
 }
+
+// A readout that smooths is stated and taken out: a line of 30 Hz behind a mean
+// over 10 ms, made here by adding up 320 values of the textbook answer. Unstated
+// it would read 26 Hz or less.
+func TestFitStepBehindAReadout(t *testing.T) {
+	const fn, zeta, mean, parts = 30.0, 0.4, 0.010, 320
+	r := rand.New(rand.NewPCG(5, 1))
+	w, root := 2*math.Pi*fn, math.Sqrt(1-zeta*zeta)
+	var b strings.Builder
+	b.WriteString("time_s,pressure_mmHg\n")
+	for i := range 2000 {
+		p := 100.0
+		for k := range parts {
+			if x := w * (float64(i)/1000 - mean*(float64(k)+0.5)/parts - 0.7003); x > 0 {
+				p -= 100.0 / parts * (1 - math.Exp(-zeta*x)*(math.Cos(root*x)+zeta/root*math.Sin(root*x)))
+			}
+		}
+		fmt.Fprintf(&b, "%.3f,%.3f\n", float64(i)/1000, p+0.1*r.NormFloat64())
+	}
+	path := filepath.Join(t.TempDir(), "smoothed.csv")
+	if err := os.WriteFile(path, []byte(b.String()), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	s, err := fittedStep(t, path, "--edge-time", "0", "--readout", "average 10 ms")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if f, z := s.Combined.Frequency.Value, s.Combined.Damping.Value; math.Abs(f-fn) > 0.1 || math.Abs(z-zeta) > 0.005 || !s.Response.Agrees || s.Line.Filters != "average 10 ms" {
+		t.Errorf("%.3f Hz, %.4f, %+v, %s", f, z, s.Line, s.Response.Text)
+	}
+	for _, p := range s.Response.Points {
+		u := p.Frequency / fn
+		if want := 1 / math.Hypot(1-u*u, 2*zeta*u); math.Abs(p.Gain-want) > 0.02*want+0.005 {
+			t.Errorf("%.2f Hz: gain %.4f without the model, want %.4f", p.Frequency, p.Gain, want)
+		}
+	}
+	if u, err := fittedStep(t, path, "--edge-time", "0"); err == nil && math.Abs(u.Combined.Frequency.Value-fn) < 1 {
+		t.Errorf("unstated it reads %.2f Hz", u.Combined.Frequency.Value)
+	}
+	if _, err := fittedStep(t, path, "--readout", "notch 50 Hz"); err == nil || !strings.Contains(err.Error(), "no filter") {
+		t.Errorf("a notch was taken: %v", err)
+	}
+}

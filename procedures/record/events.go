@@ -152,6 +152,10 @@ type Readout struct {
 	ZeroUncertainty string  `json:"zero_uncertainty,omitempty"` // expanded
 	// ExcitationUncertainty is expanded, a share; of a voltage output it counts like a gain.
 	ExcitationUncertainty string `json:"excitation_uncertainty,omitempty"`
+	// Filters of its signal path, "low_pass 200 Hz", "average 4 ms x3", "delay
+	// 2 ms"; FiltersStated: they are known to be all, also when there are none.
+	Filters       []string `json:"filters,omitempty"`
+	FiltersStated bool     `json:"filters_stated,omitempty"`
 }
 
 // Valve is what makes the step.
@@ -258,7 +262,9 @@ type Capture struct {
 	Commanded line.Instant `json:"commanded,omitempty"`
 	Blocks    []int64      `json:"blocks"`
 	Applied   []int64      `json:"applied,omitempty"`
-	Edge      string       `json:"edge,omitempty"` // stated for this data; "" fitted or measured, else a time ("0 s" ideal)
+	// AppliedUnfiltered: the readout's filters do not act on the applied pressure.
+	AppliedUnfiltered bool   `json:"applied_unfiltered,omitempty"`
+	Edge              string `json:"edge,omitempty"` // stated for this data; "" fitted or measured, else a time ("0 s" ideal)
 }
 
 // Line is what is stated of the pressure line of data that come without a

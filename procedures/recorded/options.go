@@ -12,9 +12,15 @@ import (
 // StepOptions say what is known of a step trace beside its samples. The zero
 // value states nothing.
 type StepOptions struct {
-	Edge  string // the step's own 10-90 % time ("2 ms", or "0" for an ideal step); "" when not stated
-	Line  record.Line
-	Pulse record.Pulse // what errors on pulse waves are worked out for, where not the program's own choice
+	Edge string // the step's own 10-90 % time ("2 ms", or "0" for an ideal step); "" when not stated
+	Line record.Line
+	// Filters of the readout ("low_pass 200 Hz"); FiltersStated: they are all,
+	// also when there are none.
+	Filters       []string
+	FiltersStated bool
+	// AppliedUnfiltered: they do not act on the applied pressure.
+	AppliedUnfiltered bool
+	Pulse             record.Pulse // what errors on pulse waves are worked out for, where not the program's own choice
 }
 
 // check refuses values that cannot be read, by the option's name.
@@ -38,6 +44,11 @@ func (o StepOptions) check() error {
 		}
 		if !(x.SI > 0) {
 			return fmt.Errorf("%s %q is not above zero", v.name, v.text)
+		}
+	}
+	for _, text := range o.Filters {
+		if _, err := quantity.ParseFilter(text); err != nil {
+			return fmt.Errorf("readout: %w", err)
 		}
 	}
 	if len(o.Pulse.At) > mostFrequencies {

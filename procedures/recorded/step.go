@@ -82,7 +82,10 @@ func Step(file string, r io.Reader, o StepOptions) ([]record.Event, error) {
 	e.add(0, record.KindReference, record.Reference{Field: field})
 	e.add(0, record.KindUUT, record.UUT{Field: field})
 	e.ignored(t, clock, pressure, applied)
-	capture := record.Capture{Number: 1, Edge: edge}
+	if o.FiltersStated || len(o.Filters) > 0 {
+		e.add(0, record.KindReadout, record.Readout{Filters: o.Filters, FiltersStated: o.FiltersStated})
+	}
+	capture := record.Capture{Number: 1, Edge: edge, AppliedUnfiltered: o.AppliedUnfiltered}
 	start := line.Instant(math.Round(times[0] * 1e9))
 	capture.Blocks = e.blocks(texts, start, period)
 	if applied >= 0 {

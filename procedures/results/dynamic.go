@@ -3,6 +3,7 @@ package results
 import (
 	"fmt"
 	"math"
+	"strings"
 
 	"kymobench/bench/quantity"
 	"kymobench/procedures"
@@ -83,6 +84,7 @@ type StatedLine struct {
 	Bore        string `json:"bore"`
 	Fluid       string `json:"fluid"`
 	FlushDevice string `json:"flush_device"`
+	Filters     string `json:"readout_filters"` // in the model; "none" when stated so, "" when not stated
 }
 
 // Draws of natural frequency and damping. The seed is fixed: who computes the
@@ -236,7 +238,12 @@ func (g *gathered) stated() record.Line {
 
 func (g *gathered) statedLine() *StatedLine {
 	l := g.stated()
-	out := StatedLine{l.Place, l.Length, l.Bore, l.Fluid, l.FlushDevice}
+	out := StatedLine{Place: l.Place, Length: l.Length, Bore: l.Bore, Fluid: l.Fluid, FlushDevice: l.FlushDevice}
+	if r := g.readout; r != nil {
+		if out.Filters = strings.Join(r.Filters, ", "); out.Filters == "" && r.FiltersStated {
+			out.Filters = "none"
+		}
+	}
 	if out == (StatedLine{}) {
 		return nil
 	}

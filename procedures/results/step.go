@@ -85,7 +85,10 @@ func (g *gathered) analyse(s *scale, c record.Capture) (captured, []step.Reserva
 			return one, nil, err
 		}
 	}
-	one.settings = step.Settings{MinimumStep: minimumStep * s.perMmHg()}
+	one.settings = step.Settings{MinimumStep: minimumStep * s.perMmHg(), AppliedUnfiltered: c.AppliedUnfiltered}
+	if one.settings.Readout, one.settings.ReadoutStated, err = g.filters(); err != nil {
+		return one, nil, err
+	}
 	edge := c.Edge
 	if edge == "" {
 		edge = s.edge
@@ -103,6 +106,24 @@ func (g *gathered) analyse(s *scale, c record.Capture) (captured, []step.Reserva
 	var reservations []step.Reservation
 	one.steps, _, reservations, err = step.Analyse(one.trace, one.settings)
 	return one, reservations, err
+}
+
+// filters are what the readout is stated to do between its input and its
+// numbers; the second value says that they are known to be all.
+func (g *gathered) filters() ([]step.Filter, bool, error) {
+	if g.readout == nil {
+		return nil, false, nil
+	}
+	var out []step.Filter
+	for _, text := range g.readout.Filters {
+		f, err := quantity.ParseFilter(text)
+		if err != nil {
+			return nil, false, fmt.Errorf("readout: %w", err)
+		}
+		kind := map[quantity.FilterKind]step.FilterKind{quantity.LowPass: step.LowPass, quantity.Average: step.Average, quantity.Lag: step.Delay}[f.Kind]
+		out = append(out, step.Filter{Kind: kind, Corner: float64(f.Corner), Length: float64(f.Length), Order: f.Order})
+	}
+	return out, g.readout.FiltersStated, nil
 }
 
 func figureOf(st step.Step) StepFigure {
