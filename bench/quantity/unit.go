@@ -24,6 +24,7 @@ const (
 	DimPressureRate
 	DimDensity
 	DimViscosity
+	DimSpeed
 )
 
 // Unit is a named unit: SI value = x*Factor + Offset (an offset for degC only).
@@ -93,6 +94,8 @@ var units = [...]Unit{
 	{"mPa s", DimViscosity, 1e-3, 0},
 	{"Pa s", DimViscosity, 1, 0},
 	{"cP", DimViscosity, 1e-3, 0},
+	{"mm/s", DimSpeed, 1e-3, 0},
+	{"m/s", DimSpeed, 1, 0},
 }
 
 // UnitNamed returns the unit of that name; "µ" (both of them) is read as "u",

@@ -18,9 +18,9 @@ import (
 func newFitCommand(io streams) *cobra.Command {
 	cmd := &cobra.Command{Use: "fit", Short: "Fit recorded readings in a CSV file", Args: cobra.NoArgs,
 		RunE: func(*cobra.Command, []string) error {
-			return usagef("fit what? fit static FILE.csv or fit step FILE.csv")
+			return usagef("fit what? fit static FILE.csv, fit step FILE.csv or fit flush")
 		}}
-	cmd.AddCommand(newFitStaticCommand(io), newFitStepCommand(io))
+	cmd.AddCommand(newFitStaticCommand(io), newFitStepCommand(io), newFitFlushCommand(io))
 	return cmd
 }
 

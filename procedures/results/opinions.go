@@ -60,12 +60,14 @@ type lineKnown struct {
 // halfDigit is the half-width of a stated length as a share: half of its last
 // digit ("1.6 mm" lies between 1.55 and 1.65 mm).
 func halfDigit(text string, v quantity.Value) float64 {
+	return 0.5 * lastDigit(text) / math.Abs(v.Stated)
+}
+
+// lastDigit is one of the last digit of a number that is stated with its unit.
+func lastDigit(text string) float64 {
 	number, _, _ := strings.Cut(text, " ")
-	decimals := 0
-	if _, after, found := strings.Cut(number, "."); found {
-		decimals = len(after)
-	}
-	return 0.5 * math.Pow10(-decimals) / math.Abs(v.Stated)
+	_, after, _ := strings.Cut(number, ".")
+	return math.Pow10(-len(after))
 }
 
 // known reads the stated line; the second value says what is missing.
