@@ -23,6 +23,7 @@ const (
 type problem struct {
 	one, tau, y []float64 // the column of ones, of drift (-1..1), the pressure
 	times       []float64 // of block means, s; nil for equally spaced samples
+	runs        []run     // of block means
 	first, dt   float64   // time of sample 0 and spacing, s
 	width       float64   // edge held at this full width, s
 	fitWidth    bool
@@ -202,18 +203,23 @@ func (p *problem) fill(theta *[most]float64, start, k int) bool {
 	return true
 }
 
-// fillTimes does the same for block means, each at its own time and scaled
-// by the root of its weight.
+// fillTimes does the same for block means, each run of them by recursion and
+// scaled by the root of its weight.
 func (p *problem) fillTimes(theta *[most]float64, w, zeta, width float64, start, k int) {
 	narrow := width < smallWidth
-	for i := range k {
-		x := w * (p.times[start+i] - theta[delay])
-		if narrow {
-			p.a.single(i, x, zeta)
+	for _, r := range p.runs {
+		from, to := max(r.from, start), min(r.to, start+k)
+		if from >= to {
 			continue
 		}
-		p.a.single(i, x+width/2, zeta)
-		p.b.single(i, x-width/2, zeta)
+		x, d := w*(p.times[from]-theta[delay]), w*r.spacing
+		cd, sd := kernel(d, zeta)
+		if narrow {
+			p.a.fillFrom(from-start, x, d, zeta, cd, sd, to-from)
+			continue
+		}
+		p.a.fillFrom(from-start, x+width/2, d, zeta, cd, sd, to-from)
+		p.b.fillFrom(from-start, x-width/2, d, zeta, cd, sd, to-from)
 	}
 	if narrow {
 		p.narrow(w, zeta, width, k)
@@ -226,15 +232,6 @@ func (p *problem) fillTimes(theta *[most]float64, w, zeta, width float64, start,
 		for j := range p.nonlinear {
 			p.d[j][i] *= weight
 		}
-	}
-}
-
-// single sets entry i exactly.
-func (v *waves) single(i int, x, zeta float64) {
-	v.x[i], v.c[i], v.s[i] = 0, 1, 0
-	if x > 0 {
-		v.x[i] = x
-		v.c[i], v.s[i] = kernel(x, zeta)
 	}
 }
 

@@ -59,6 +59,7 @@ func problems() map[string]*problem {
 	for i := range n {
 		blocks.times = append(blocks.times, blocks.first+float64(i)*blocks.dt)
 	}
+	blocks.runs = []run{{0, len(blocks.times), 1, blocks.dt}}
 	all["blocks"] = blocks
 	driven := base()
 	driven.applied = &appliedInput{u: make([]float64, n)}

@@ -26,7 +26,9 @@ func onsets(y []float64, rate, least float64, from int) (at int, found bool) {
 	var low, high float64
 	scratch := make([]float64, 0, 64)
 	for i := from + 4 + away; i+m <= len(y); i++ {
-		if k := i - from - 4 - away; k%renew == 0 {
+		// What stays within half of what a departure needs has no need of a level
+		// that is newer; one that drifts leaves it and gets one.
+		if k := i - from - 4 - away; k%renew == 0 && (k == 0 || !within(y[i:min(len(y), i+renew+m)], level, threshold/4)) {
 			scratch = scratch[:0]
 			start := max(from, i-away-back)
 			stride := max(1, (i-away-start)/64)
@@ -49,6 +51,16 @@ func onsets(y []float64, rate, least float64, from int) (at int, found bool) {
 		}
 	}
 	return 0, false
+}
+
+// within says that all values lie that near to the level.
+func within(y []float64, level, near float64) bool {
+	for _, v := range y {
+		if !(math.Abs(v-level) <= near) {
+			return false
+		}
+	}
+	return true
 }
 
 func departs(y []float64, level, threshold, low, high float64) bool {

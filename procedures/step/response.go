@@ -104,11 +104,15 @@ type waves struct {
 // fill sets the first n entries for x = x0, x0 + d, ... by the addition
 // theorem C' = C Cd + q2 s sd, s' = s Cd + C sd. Entries with x <= 0, before
 // the step, get x = 0, C = 1, s = 0, for which g and all derivatives vanish.
-func (v *waves) fill(x0, d, zeta, cd, sd float64, n int) {
+func (v *waves) fill(x0, d, zeta, cd, sd float64, n int) { v.fillFrom(0, x0, d, zeta, cd, sd, n) }
+
+// fillFrom is fill for n entries from one on.
+func (v *waves) fillFrom(from int, x0, d, zeta, cd, sd float64, n int) {
 	q2 := zeta*zeta - 1
+	xs, cs, ss := v.x[from:from+n], v.c[from:from+n], v.s[from:from+n]
 	i := 0
 	for ; i < n && x0+float64(i)*d <= 0; i++ {
-		v.x[i], v.c[i], v.s[i] = 0, 1, 0
+		xs[i], cs[i], ss[i] = 0, 1, 0
 	}
 	if i == n {
 		return
@@ -117,7 +121,7 @@ func (v *waves) fill(x0, d, zeta, cd, sd float64, n int) {
 	c, s := kernel(x, zeta)
 	qs := q2 * sd
 	for ; i < n; i++ {
-		v.x[i], v.c[i], v.s[i] = x, c, s
+		xs[i], cs[i], ss[i] = x, c, s
 		c, s = c*cd+s*qs, s*cd+c*sd
 		x += d
 	}

@@ -93,16 +93,45 @@ func (p *problem) costAt(theta *[most]float64, n *normal) float64 {
 	}
 	m[linear][0], m[linear][1], m[linear][linear] = m[2][0], m[2][1], m[2][2]
 	m[2] = [most]float64{}
-	for i, t := range p.times {
-		x := w * (t - theta[delay])
-		if x+w*width/2 <= 0 {
+	xw := w * width
+	narrow := xw < smallWidth
+	for _, r := range p.runs {
+		d := w * r.spacing
+		if w*(p.times[r.to-1]-theta[delay])+xw/2 <= 0 {
 			continue
 		}
-		g := Ramp(x, w*width, zeta) * p.one[i]
-		m[2][0] += g * p.one[i]
-		m[2][1] += g * p.tau[i]
-		m[2][2] += g * g
-		m[linear][2] += g * p.y[i]
+		cd, sd := kernel(d, zeta)
+		root := p.one[r.from]
+		for from := r.from; from < r.to; from += blockSize {
+			k := min(blockSize, r.to-from)
+			x := w * (p.times[from] - theta[delay])
+			g := p.g[:k]
+			if narrow { // for a scan an edge that narrow is ideal
+				p.a.fill(x, d, zeta, cd, sd, k)
+				for i := range g {
+					g[i] = 1 - p.a.c[i] - zeta*p.a.s[i]
+				}
+			} else {
+				p.a.fill(x+xw/2, d, zeta, cd, sd, k)
+				p.b.fill(x-xw/2, d, zeta, cd, sd, k)
+				for i := range g {
+					xa, sa, xb, sb := p.a.x[i], p.a.s[i], p.b.x[i], p.b.s[i]
+					g[i] = ((xa - sa - 2*zeta*(1-p.a.c[i]-zeta*sa)) - (xb - sb - 2*zeta*(1-p.b.c[i]-zeta*sb))) / xw
+				}
+			}
+			var sum, drift, square, product float64
+			tau, y := p.tau[from:from+k], p.y[from:from+k]
+			for i, v := range g {
+				sum += v
+				drift += v * tau[i]
+				square += v * v
+				product += v * y[i]
+			}
+			m[2][0] += sum * root * root
+			m[2][1] += drift * root
+			m[2][2] += square * root * root
+			m[linear][2] += product * root
+		}
 	}
 	held := p.nonlinear
 	p.nonlinear = 0

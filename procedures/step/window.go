@@ -205,14 +205,35 @@ func (a *analysis) coarse(full *problem, w window, origin int) *problem {
 		// A ramp as wide in its variance stands in for the readout.
 		p.width, p.fitWidth = math.Sqrt(p.width*p.width+12*a.readout.variance), false
 	}
-	centre := w.onset - w.from
-	for i := 0; i < len(full.y); {
-		distance := max(i-centre, centre-i)
-		length := max(1, distance/50)
+	p.blocks(full, w.onset-w.from, a.dt, 50, 20)
+	p.prepare()
+	return p
+}
+
+// blocks fills p with means of the samples of full: alone near the centre,
+// further off of 2, 4, 8 ... together, so that their length stays between a
+// half and the whole of the distance over after (before, ahead of the centre).
+// Blocks of one length follow each other evenly, which a recursion can use.
+func (p *problem) blocks(full *problem, centre int, dt float64, after, before int) {
+	size := func(i int) int {
+		over := (i - centre) / after
 		if i < centre {
-			length = max(1, distance/20)
+			over = (centre - i) / before
 		}
-		length = min(length, len(full.y)-i)
+		length := 1
+		for 2*length <= over {
+			length *= 2
+		}
+		return length
+	}
+	for i := 0; i < len(full.y); {
+		length := min(size(i), len(full.y)-i)
+		if i < centre {
+			length = min(size(i), centre-i) // from the far end down, so that a block does not reach into finer ones
+			for length > 1 && length > size(i+length-1) {
+				length /= 2
+			}
+		}
 		var sum, tau float64
 		for j := i; j < i+length; j++ {
 			sum += full.y[j]
@@ -222,9 +243,18 @@ func (a *analysis) coarse(full *problem, w window, origin int) *problem {
 		p.one = append(p.one, root)
 		p.tau = append(p.tau, tau/root)
 		p.y = append(p.y, sum/root)
-		p.times = append(p.times, full.first+(float64(i)+float64(length-1)/2)*a.dt)
+		p.times = append(p.times, full.first+(float64(i)+float64(length-1)/2)*dt)
+		if n := len(p.runs); n == 0 || p.runs[n-1].length != length {
+			p.runs = append(p.runs, run{from: len(p.times) - 1, length: length, spacing: float64(length) * dt})
+		}
+		p.runs[len(p.runs)-1].to = len(p.times)
 		i += length
 	}
-	p.prepare()
-	return p
+}
+
+// run is a stretch of blocks of one length.
+type run struct {
+	from, to int // blocks from <= i < to
+	length   int // samples
+	spacing  float64
 }
