@@ -71,7 +71,10 @@ func (w *work) number() {
 // dense numbers the values of x from the lowest, 0, up. Linear in len(x) where
 // the values lie close, as numbers of cycles do.
 func (s *scratch) dense(x []int) (index, values []int) {
-	low, high := slices.Min(x), slices.Max(x)
+	low, high := x[0], x[0]
+	for _, v := range x {
+		low, high = min(low, v), max(high, v)
+	}
 	index = s.ints(len(x))
 	if span := uint64(high) - uint64(low); span <= uint64(4*len(x)+64) {
 		seen := s.ints(int(span) + 1)
@@ -213,15 +216,36 @@ func (s *scratch) means(x []float64, group []int, groups int) []float64 {
 	return m
 }
 
-// rank numbers the set pressures from the lowest up, equal ones alike.
+// rank numbers the set pressures from the lowest up, equal ones alike. Few
+// different ones are gathered without sorting all.
 func (w *work) rank() {
-	w.levels = w.floats(len(w.sets))
-	copy(w.levels, w.sets)
+	const few = 32
+	w.levels = w.floats(len(w.sets))[:0]
+	for _, set := range w.sets {
+		if slices.Contains(w.levels, set) {
+			continue
+		}
+		if len(w.levels) == few {
+			w.levels = append(w.levels[:0], w.sets...)
+			break
+		}
+		w.levels = append(w.levels, set)
+	}
 	slices.Sort(w.levels)
 	w.levels = slices.Compact(w.levels)
 	w.level = w.ints(len(w.sets))
-	for i, set := range w.sets {
-		w.level[i], _ = slices.BinarySearch(w.levels, set)
+	l, last := 0, len(w.levels)-1
+	for i, set := range w.sets { // most stand beside the one before
+		switch {
+		case w.levels[l] == set:
+		case l < last && w.levels[l+1] == set:
+			l++
+		case l > 0 && w.levels[l-1] == set:
+			l--
+		default:
+			l, _ = slices.BinarySearch(w.levels, set)
+		}
+		w.level[i] = l
 	}
 }
 

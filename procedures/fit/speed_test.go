@@ -174,18 +174,19 @@ func TestPeer(t *testing.T) {
 
 // One UUT's whole static analysis, 42 readings, with the budgets at 7 set
 // pressures: x-numpy is how many times as long the fastest of the peer's rounds
-// takes as the fastest of ours, in turns on the same machine.
+// takes as the fastest of ours, rounds of some 2 ms each, in turns on the same
+// machine.
 func BenchmarkWhole(b *testing.B) {
 	d := simulated(rand.New(rand.NewPCG(1, 2)), 3)
 	ours, theirs := math.Inf(1), math.Inf(1)
 	for range 3 {
-		theirs = min(theirs, askPeer(b, d, 20, 50).Seconds)
-		for range 20 {
+		theirs = min(theirs, askPeer(b, d, 300, 5).Seconds)
+		for range 300 {
 			begin := time.Now()
-			for range 500 {
+			for range 100 {
 				whole(b, d)
 			}
-			ours = min(ours, time.Since(begin).Seconds()/500)
+			ours = min(ours, time.Since(begin).Seconds()/100)
 		}
 	}
 	for b.Loop() {
