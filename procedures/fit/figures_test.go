@@ -5,6 +5,31 @@ import (
 	"testing"
 )
 
+// Source: testdata/sources/four-linearities, readings and values.
+func TestFourLinearities(t *testing.T) {
+	var d Data
+	for _, row := range rowsOf(t, sources+"four-linearities/four_linearities.csv") {
+		d.Cycle, d.Down = append(d.Cycle, int(number(t, row[0]))), append(d.Down, row[1] == "down")
+		d.Set, d.Reference, d.UUT = append(d.Set, number(t, row[2])), append(d.Reference, number(t, row[3])), append(d.UUT, number(t, row[4]))
+	}
+	f, err := Static(d)
+	if err != nil {
+		t.Fatal(err)
+	}
+	lines := map[string]*Deviation{"independent": f.Linearity.Independent, "terminal": f.Linearity.Terminal, "zero-based": f.Linearity.ZeroBased, "least squares": f.Linearity.LeastSquares}
+	rows := rowsOf(t, sources+"four-linearities/four_linearities_values.csv")
+	for _, row := range rows {
+		l := lines[row[0]]
+		compare(t, []figure{
+			{row[0] + ", intercept", l.Intercept, number(t, row[1]), 1e-12}, {row[0] + ", slope", l.Slope, number(t, row[2]), 1e-13},
+			{row[0], l.Value, number(t, row[3]), 1e-12},
+		})
+	}
+	if len(rows) != 4 {
+		t.Errorf("%d lines", len(rows))
+	}
+}
+
 // What noise leaves in the linearities of the worked table, by hand, for an
 // uncertainty of 1 of each average. Independent: 150 against the middle of 0
 // and 300; terminal-based: 150 against the chord; zero-based: 150 and 300

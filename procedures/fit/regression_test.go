@@ -4,6 +4,8 @@ import (
 	"errors"
 	"math"
 	"math/rand/v2"
+	"strconv"
+	"strings"
 	"testing"
 )
 
@@ -21,19 +23,67 @@ func compare(t *testing.T, all []figure) {
 	}
 }
 
-// thermometer: source GUM (JCGM 100:2008) H.3; readings less 20 degC, and
-// corrections. The full digits wanted of it were computed from the printed
-// data in exact rational sums; the page prints -0.1494, 0.0041 at 30 degC.
-func thermometer() (x, b []float64) {
-	x = []float64{21.521, 22.012, 22.512, 23.003, 23.507, 23.999, 24.513, 25.002, 25.503, 26.010, 26.511}
-	for i := range x {
-		x[i] -= 20
+const sources = "../../testdata/sources/"
+
+// valuesOf reads what a source prints of its quantities, and what was computed
+// from its data in more digits; NaN where either is blank.
+func valuesOf(t *testing.T, path string) (printed, computed map[string]float64) {
+	printed, computed = map[string]float64{}, map[string]float64{}
+	for _, row := range rowsOf(t, sources+path) {
+		for k, to := range []map[string]float64{printed, computed} {
+			to[row[0]] = math.NaN()
+			if row[k+1] != "" {
+				to[row[0]] = number(t, row[k+1])
+			}
+		}
 	}
-	return x, []float64{-.171, -.169, -.166, -.159, -.164, -.165, -.156, -.157, -.159, -.161, -.160}
+	return printed, computed
 }
 
+// against holds figures to both columns: the printed one to half of its last
+// digit, which tol gives by name, the computed one to 1e-9.
+func against(t *testing.T, path string, got map[string]float64) {
+	t.Helper()
+	printed, computed := valuesOf(t, path)
+	for _, row := range rowsOf(t, sources+path) {
+		x, there := got[row[0]]
+		if !there {
+			t.Errorf("%s: nobody looked at %s", path, row[0])
+			continue
+		}
+		delete(got, row[0])
+		if want := computed[row[0]]; !math.IsNaN(want) && math.Abs(x-want) > 1e-9*math.Abs(want) && math.Abs(x-want) > 5*lastDigit(row[2]) {
+			t.Errorf("%s, %s: %.14g, computed %v", path, row[0], x, want)
+		}
+		if want := printed[row[0]]; !math.IsNaN(want) && math.Abs(x-want) > 0.51*lastDigit(row[1]) {
+			t.Errorf("%s, %s: %.14g, printed %s", path, row[0], x, row[1])
+		}
+	}
+	for name := range got {
+		t.Errorf("%s has no %s", path, name)
+	}
+}
+
+// lastDigit is one unit of the last digit of a number as printed.
+func lastDigit(text string) float64 {
+	mantissa, exponent, _ := strings.Cut(text, "e")
+	e, _ := strconv.Atoi(exponent)
+	_, decimals, _ := strings.Cut(mantissa, ".")
+	return math.Pow(10, float64(e-len(decimals)))
+}
+
+// thermometer is the source's, less 20 degC.
+func thermometer(t *testing.T) (x, b []float64) {
+	for _, row := range rowsOf(t, sources+"gum-h3/thermometer.csv") {
+		x, b = append(x, number(t, row[0])-20), append(b, number(t, row[1]))
+	}
+	return x, b
+}
+
+// Source: testdata/sources/gum-h3, by the line and by the polynomial of first
+// order, with a systematic 0.005 degC shared by all corrections.
 func TestThermometer(t *testing.T) {
-	x, b := thermometer()
+	x, b := thermometer(t)
 	l, err := Line(x, b)
 	if err != nil {
 		t.Fatal(err)
@@ -42,22 +92,6 @@ func TestThermometer(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	p, _ := f.Straight()
-	for _, l := range []Straight{l, p} {
-		at, u := l.At(10)
-		compare(t, []figure{
-			{"y1", l.Intercept, -0.17120379013134998, 1e-13}, {"u(y1)", l.UIntercept, 0.0028775978351599537, 1e-13},
-			{"y2", l.Slope, 0.002182697739887278, 1e-12}, {"u(y2)", l.USlope, 0.0006679387732278317, 1e-13},
-			{"r", l.Covariance / l.UIntercept / l.USlope, -0.9304296030934459, 1e-13}, {"s", l.Residual, 0.003497563963505284, 1e-13},
-			{"degrees of freedom", float64(l.DoF), 9, 0}, {"sum of squares", l.Residual * l.Residual * 9, 1.1009658310929713e-4, 1e-13},
-			{"b(30)", at, -0.1493768127324772, 1e-13}, {"u(b(30))", u, 0.004138595752854945, 1e-12},
-		})
-	}
-	if at, u := f.At(10); math.Abs(at+0.1493768127324772) > 1e-15 || math.Abs(u-0.004138595752854945) > 1e-15 {
-		t.Errorf("at 30 degC by the polynomial: %v, %v", at, u)
-	}
-	// A systematic 0.005 degC shared by all corrections: u(y1) = 0.0058 with 145
-	// degrees of freedom; the slope keeps its own.
 	same := make([]float64, len(x))
 	for i := range same {
 		same[i] = 0.005
@@ -66,9 +100,21 @@ func TestThermometer(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
+	p, _ := f.Straight()
+	for _, l := range []Straight{l, p} {
+		at, u := l.At(10)
+		against(t, "gum-h3/thermometer_values.csv", map[string]float64{
+			"y1": l.Intercept, "u(y1)": l.UIntercept, "y2": l.Slope, "u(y2)": l.USlope, "r(y1 y2)": l.Covariance / l.UIntercept / l.USlope,
+			"s": l.Residual, "sum of squares": l.Residual * l.Residual * float64(l.DoF), "b(30)": at, "u(b(30))": u,
+			"u(y1) with 0.005": math.Sqrt(g.Covariance[0][0]), "its degrees of freedom": g.DegreesOfFreedom(0),
+		})
+	}
+	if at, u := f.At(10); math.Abs(at+0.1493768127324772) > 1e-15 || math.Abs(u-0.004138595752854945) > 1e-15 {
+		t.Errorf("at 30 degC by the polynomial: %v, %v", at, u)
+	}
+	// The slope keeps its own uncertainty; an offset does not move it.
 	compare(t, []figure{
-		{"u(y1)", math.Sqrt(g.Covariance[0][0]), 0.00576893138292676, 1e-13}, {"its degrees of freedom", g.DegreesOfFreedom(0), 145.38, 1e-4},
-		{"u(y2)", math.Sqrt(g.Covariance[1][1]), 0.0006679387732278317, 1e-13}, {"its degrees of freedom", g.DegreesOfFreedom(1), 9, 1e-12},
+		{"u(y2)", math.Sqrt(g.Covariance[1][1]), l.USlope, 1e-13}, {"its degrees of freedom", g.DegreesOfFreedom(1), 9, 1e-12},
 		{"offset moves the intercept", g.Shared[0][0], 0.005, 1e-14}, {"degrees of freedom", float64(g.DoF), 9, 0},
 	})
 	if math.Abs(g.Shared[0][1]) > 1e-17 {
@@ -76,14 +122,11 @@ func TestThermometer(t *testing.T) {
 	}
 }
 
-// Source: EURACHEM/CITAC guide QUAM, example A5 (cadmium by atomic
-// absorption), data; S, c and u(c) computed elsewhere from them (the guide
-// prints 0.26 and 0.018).
+// Source: testdata/sources/eurachem-a5.
 func TestWhere(t *testing.T) {
-	y := []float64{.028, .029, .029, .084, .083, .081, .135, .131, .133, .180, .181, .183, .215, .230, .216}
-	var x []float64
-	for _, c := range []float64{.1, .3, .5, .7, .9} {
-		x = append(x, c, c, c)
+	var x, y []float64
+	for _, row := range rowsOf(t, sources+"eurachem-a5/cadmium.csv") {
+		x, y = append(x, number(t, row[0])), append(y, number(t, row[1]))
 	}
 	l, err := Line(x, y)
 	if err != nil {
@@ -93,9 +136,8 @@ func TestWhere(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	compare(t, []figure{
-		{"slope", l.Slope, 0.2410, 1e-4}, {"intercept", l.Intercept, 0.0087, 4e-3}, {"S", l.Residual, 0.005485645604, 1e-9},
-		{"c", c, 0.2601659751, 1e-9}, {"u(c)", u, 0.0178446111, 1e-8},
+	against(t, "eurachem-a5/cadmium_values.csv", map[string]float64{
+		"slope": l.Slope, "intercept": l.Intercept, "S": l.Residual, "c of 0.0712 and 0.0716": c, "u(c)": u,
 	})
 	if _, _, err := l.Where(1, 0); !errors.Is(err, ErrNoLine) {
 		t.Errorf("no further reading: %v", err)
@@ -105,24 +147,19 @@ func TestWhere(t *testing.T) {
 	}
 }
 
-// Source: Pearson's data (Phil. Mag. 2 (1901) 559) with York's weights (Can. J.
-// Phys. 44 (1966) 1079); full digits computed elsewhere with the same method;
-// literature: 5.47991 and -0.48053.
+// Source: testdata/sources/pearson-york.
 func TestYork(t *testing.T) {
-	x := []float64{0, .9, 1.8, 2.6, 3.3, 4.4, 5.2, 6.1, 6.5, 7.4}
-	y := []float64{5.9, 5.4, 4.4, 4.6, 3.5, 3.7, 2.8, 2.8, 2.4, 1.5}
-	ux := []float64{1000, 1000, 500, 800, 200, 80, 60, 20, 1.8, 1}
-	uy := []float64{1, 1.8, 4, 8, 20, 20, 70, 70, 100, 500}
-	for i := range ux {
-		ux[i], uy[i] = 1/math.Sqrt(ux[i]), 1/math.Sqrt(uy[i])
+	var x, y, ux, uy []float64
+	for _, row := range rowsOf(t, sources+"pearson-york/pearson_york.csv") {
+		x, y = append(x, number(t, row[0])), append(y, number(t, row[1]))
+		ux, uy = append(ux, 1/math.Sqrt(number(t, row[2]))), append(uy, 1/math.Sqrt(number(t, row[3])))
 	}
 	l, err := York(x, y, ux, uy)
 	if err != nil {
 		t.Fatal(err)
 	}
-	compare(t, []figure{
-		{"a", l.Intercept, 5.479910224033, 1e-12}, {"b", l.Slope, -0.4805334074462, 1e-12},
-		{"u(a)", l.UIntercept, 0.2949707354931, 1e-11}, {"u(b)", l.USlope, 0.05798500900077, 1e-11}, {"S", l.ChiSquare, 11.86635319406, 1e-11},
+	against(t, "pearson-york/pearson_york_values.csv", map[string]float64{
+		"a": l.Intercept, "b": l.Slope, "u(a)": l.UIntercept, "u(b)": l.USlope, "S": l.ChiSquare,
 	})
 	// Laws: exchanged axes give the same line; without errors in x it is the
 	// weighted line.

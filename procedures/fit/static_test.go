@@ -52,21 +52,15 @@ func TestNorris(t *testing.T) {
 	}
 }
 
-// worked is a small set whose four lines were computed exactly by hand:
-// terminal 1.15, least squares 0.698..., independent 23/40, zero-based 23/30.
+// worked is testdata/sources/four-linearities; its values are held to in
+// TestNoiseOfLines.
 func worked() Data {
-	up := []float64{0.2, 50.1, 100.3, 150.2, 199.9, 249.4, 298.6}
-	down := []float64{0.4, 50.7, 101.1, 151.0, 200.6, 249.8, 298.6}
 	var d Data
-	for i := range up {
-		for _, leg := range []bool{false, true} {
-			x := float64(50 * i)
-			y := up[i]
-			if leg {
-				y = down[i]
-			}
+	for i, leg := range [][]float64{{0.2, 50.1, 100.3, 150.2, 199.9, 249.4, 298.6}, {0.4, 50.7, 101.1, 151.0, 200.6, 249.8, 298.6}} {
+		for k, y := range leg {
+			x := float64(50 * k)
 			d.Reference, d.UUT, d.Set = append(d.Reference, x), append(d.UUT, y), append(d.Set, x)
-			d.Cycle, d.Down = append(d.Cycle, 1), append(d.Down, leg)
+			d.Cycle, d.Down = append(d.Cycle, 1), append(d.Down, i == 1)
 		}
 	}
 	return d
