@@ -42,7 +42,7 @@ func ruleText(rule string) string {
 	const guard = "the guard band lies on both sides of each limit. "
 	switch rule {
 	case "simple":
-		return "simple acceptance. A result inside its limit passes, one outside fails, whatever its uncertainty."
+		return "simple acceptance. A result inside its limit passes, one outside fails, whatever its uncertainty, unless that is wider than the limit."
 	case "guard_band", "guarded":
 		return "guarded acceptance; " + guard + "Only a result inside its limit by the guard band or more passes."
 	case "four_outcome", "four_outcomes":

@@ -43,7 +43,7 @@ func mayImport() map[string][]string {
 		"procedures/tubing":      {},
 		"procedures/ready":       {},
 		"procedures/uncertainty": {},
-		"procedures/verdict":     {"bench/quantity"},
+		"procedures/verdict":     {"bench/quantity", "procedures/uncertainty"}, // the risk of a decision and its interval are of one distribution
 		"procedures/record":      {"bench", "bench/line", "bench/quantity"},
 		"procedures/results": {"bench/line", "bench/quantity", "procedures", "procedures/record", "procedures/verdict",
 			"procedures/fit", "procedures/step", "procedures/pulse", "procedures/tubing", "procedures/ready", "procedures/uncertainty"},
