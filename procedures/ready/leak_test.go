@@ -39,26 +39,3 @@ func TestLeakRateRefusesFewReadings(t *testing.T) {
 		t.Error("three readings gave a rate")
 	}
 }
-
-func TestWatch(t *testing.T) {
-	settings := Settings{Delay: 0.4, SlopeShare: 0.05, Standard: 0.05, LeastReadings: 10, Settling: 0.3}
-	run := func(slope float64) (ready bool) {
-		w := NewWatch(settings)
-		for i := range 60 {
-			x := float64(i) * 0.1
-			wiggle := 0.01 * math.Sin(float64(i)*2.4)
-			s := w.Add(Sample{Time: x, Reference: 100 + slope*x + wiggle, UUT: 101 + slope*x - wiggle})
-			if s.Ready && i < 12 {
-				t.Errorf("ready at reading %d, before settling and ten readings", i+1)
-			}
-			ready = ready || s.Ready
-		}
-		return ready
-	}
-	if !run(0) {
-		t.Error("a steady pressure is never ready")
-	}
-	if run(1) {
-		t.Error("a pressure rising 1 a second is ready, though slope x delay is eight times its share")
-	}
-}
