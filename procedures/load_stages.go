@@ -39,6 +39,7 @@ type stageFile struct {
 	Bore                string   `toml:"bore"`
 	Fluid               string   `toml:"fluid"`
 	FlushDevice         string   `toml:"flush_device"`
+	VentedWithin        string   `toml:"vented_within"`
 	FluidDensity        string   `toml:"fluid_density"`
 	FluidViscosity      string   `toml:"fluid_viscosity"`
 	DesignedFrequency   string   `toml:"designed_frequency"`
@@ -47,7 +48,10 @@ type stageFile struct {
 
 // mayHave lists the keys that a kind of stage may have or not.
 func mayHave(kind string) []string {
-	if kind == "step" {
+	switch kind {
+	case "zero":
+		return []string{"vented_within", "share_of_limit", "standard_uncertainty", "least_readings"}
+	case "step":
 		return []string{"fluid_density", "fluid_viscosity", "designed_frequency", "designed_damping"}
 	}
 	return nil
@@ -81,7 +85,7 @@ func (l *loader) stages(d *Definition) {
 		case "warm_up":
 			stage = WarmUp{Minimum: l.span(i, "minimum"), LongestWait: l.span(i, "longest_wait")}
 		case "zero":
-			stage = Zero{For: l.span(i, "for"), LongestWait: l.span(i, "longest_wait")}
+			stage = l.zero(i)
 		case "exercise":
 			stage = Exercise{
 				Cycles: l.count(i, "cycles", l.file.Stages[i].Cycles, 100), To: l.setPressure(d, i, "to"),
@@ -114,6 +118,39 @@ func (l *loader) keysOf(kind string, i int) {
 	}
 }
 
+// zero takes a zero stage; how well it must be known has defaults.
+func (l *loader) zero(i int) Zero {
+	s := Zero{
+		For: l.span(i, "for"), LongestWait: l.span(i, "longest_wait"),
+		VentedWithin: quantity.MmHg(5), ShareOfLimit: 0.05, StandardUncertainty: quantity.MmHg(0.05), LeastReadings: 8,
+	}
+	if l.doc.Has("stage", i, "vented_within") {
+		s.VentedWithin = l.above(i, "vented_within")
+	}
+	if l.doc.Has("stage", i, "share_of_limit") {
+		s.ShareOfLimit = l.shareOfLimit(i)
+	}
+	if l.doc.Has("stage", i, "standard_uncertainty") {
+		s.StandardUncertainty = l.above(i, "standard_uncertainty")
+	}
+	if l.doc.Has("stage", i, "least_readings") {
+		s.LeastReadings = l.leastReadings(i)
+	}
+	return s
+}
+
+func (l *loader) shareOfLimit(i int) float64 {
+	share := tomlfile.Take(l.doc, &l.err, parseShare, "stage", i, "share_of_limit")
+	l.demand(share > 0 && share <= 0.5, "the share is above 0 % and at most 50 %", "", "stage", i, "share_of_limit")
+	return share
+}
+
+func (l *loader) leastReadings(i int) int {
+	n := l.count(i, "least_readings", l.file.Stages[i].LeastReadings, 1000)
+	l.demand(n >= 5, "a mean of fewer than five readings says nothing of its noise", "", "stage", i, "least_readings")
+	return n
+}
+
 func (l *loader) leak(d *Definition, i int) Leak {
 	s := Leak{
 		At: l.setPressure(d, i, "at"), Settle: l.span(i, "settle"), For: l.span(i, "for"),
@@ -132,9 +169,9 @@ func (l *loader) static(d *Definition, i int) Static {
 		Cycles:              l.count(i, "cycles", f.Cycles, 20),
 		Window:              l.above(i, "window"),
 		Overshoot:           l.above(i, "overshoot"),
-		ShareOfLimit:        tomlfile.Take(l.doc, &l.err, parseShare, "stage", i, "share_of_limit"),
+		ShareOfLimit:        l.shareOfLimit(i),
 		StandardUncertainty: l.above(i, "standard_uncertainty"),
-		LeastReadings:       l.count(i, "least_readings", f.LeastReadings, 1000),
+		LeastReadings:       l.leastReadings(i),
 		LongestWait:         l.span(i, "longest_wait"),
 	}
 	for j := range f.SetPressures {
@@ -146,8 +183,6 @@ func (l *loader) static(d *Definition, i int) Static {
 		return s
 	}
 	l.demand(len(s.SetPressures) >= 3, "fewer than three set pressures cannot show linearity", "", "stage", i, "set_pressures")
-	l.demand(s.ShareOfLimit > 0 && s.ShareOfLimit <= 0.5, "the share is above 0 % and at most 50 %", "", "stage", i, "share_of_limit")
-	l.demand(s.LeastReadings >= 5, "a mean of fewer than five readings says nothing of its noise", "", "stage", i, "least_readings")
 	l.demand(s.StandardUncertainty < s.Window, "the standard uncertainty asked is not below the window", "", "stage", i, "standard_uncertainty")
 	falling := false
 	for j := 1; j < len(s.SetPressures); j++ {

@@ -19,7 +19,8 @@ func TestRefusals(t *testing.T) {
 	}
 	good := string(d.Source)
 	hysteresis := "name = \"hysteresis\"\nlow = \"-1 mmHg\"\nhigh = \"1 mmHg\"\nresolution = \"0.01 mmHg\""
-	zero := "[[stage]]\nkind = \"zero\"\nfor = \"5 s\"\nlongest_wait = \"30 s\"\n"
+	zero := "[[stage]]\nkind = \"zero\"\nfor = \"5 s\"\nlongest_wait = \"30 s\"\n" +
+		"vented_within = \"5 mmHg\"\nshare_of_limit = \"5 %\"\nstandard_uncertainty = \"0.05 mmHg\"\nleast_readings = 8\n"
 	warmUp := "[[stage]]\nkind = \"warm_up\"\nminimum = \"10 min\"\nlongest_wait = \"20 min\"\n"
 	exercise := "[[stage]]\nkind = \"exercise\"\ncycles = 3\nto = \"300 mmHg\"\ndwell = \"1 s\"\nlongest_wait = \"30 s\"\n"
 	step := "[[stage]]\nkind = \"step\"\ncount"
@@ -74,7 +75,7 @@ func TestRefusals(t *testing.T) {
 
 		// stages
 		{`kind = "zero"`, `kind = «"zeroing"`, `"zeroing" is no kind`, "it is one of: warm_up, zero, exercise, leak, static, step"},
-		{"kind = \"zero\"\n", "kind = \"zero\"\n«cycles = 1\n", `a zero stage has no key "cycles"`, "it has: for, longest_wait"},
+		{"kind = \"zero\"\n", "kind = \"zero\"\n«cycles = 1\n", `a zero stage has no key "cycles"`, "it has: for, longest_wait, vented_within, share_of_limit, standard_uncertainty, least_readings"},
 		{zero, "[[«stage]]\nkind = \"zero\"\nfor = \"5 s\"\n", `key "longest_wait" is missing in [[stage]] number 2`, ""},
 		{`for = "5 s"`, `for = «"0 s"`, "a time is above 0 s and at most 24 h", ""},
 		{`minimum = "10 min"`, `minimum = «"25 h"`, "a time is above 0 s and at most 24 h", ""},
@@ -96,6 +97,9 @@ func TestRefusals(t *testing.T) {
 		{`window = "2 mmHg"`, `window = «"11 mmHg"`, "the window at the top reaches beyond the highest pressure", ""},
 		{`share_of_limit = "3 %"`, `share_of_limit = «"60 %"`, "the share is above 0 % and at most 50 %", ""},
 		{`standard_uncertainty = "0.02 mmHg"`, `standard_uncertainty = «"2 mmHg"`, "the standard uncertainty asked is not below the window", ""},
+		{`vented_within = "5 mmHg"`, `vented_within = «"0 mmHg"`, "vented_within is not above zero", ""},
+		{`share_of_limit = "5 %"`, `share_of_limit = «"0 %"`, "the share is above 0 % and at most 50 %", ""},
+		{`least_readings = 8`, `least_readings = «1`, "a mean of fewer than five readings says nothing of its noise", ""},
 		{`least_readings = 15`, `least_readings = «4`, "a mean of fewer than five readings says nothing of its noise", ""},
 		{`count = 5`, `count = «101`, "count is from 1 to 100", ""},
 		{`size = "100 mmHg"`, `size = «"0 mmHg"`, "a release begins above atmosphere", ""},

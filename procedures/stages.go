@@ -24,6 +24,14 @@ type WarmUp struct {
 type Zero struct {
 	For         time.Duration // how long the UUT is averaged
 	LongestWait time.Duration // for the vented pressure to be still
+
+	// The vented reference must read within so much of zero, else the volume is
+	// not open. The zero is ready by the difference rule, as a point is. A file
+	// that leaves these out gets 5 mmHg, 5 %, 0.05 mmHg and 8 readings.
+	VentedWithin        quantity.Pressure
+	ShareOfLimit        float64
+	StandardUncertainty quantity.Pressure
+	LeastReadings       int
 }
 
 // Exercise takes the UUT up and down, unjudged, before the first cycle.

@@ -243,6 +243,24 @@ type Point struct {
 	UUT        string `json:"uut,omitempty"`
 	Excitation string `json:"excitation,omitempty"` // measured with this reading, if it was
 	Ready      string `json:"ready,omitempty"`      // what was waited for, in words
+
+	Settled *Settled `json:"settled,omitempty"`
+}
+
+// Settled is what the difference rule found in the window of a point when it
+// took it; mmHg and seconds. The standard uncertainties are those that the rule
+// decided on; what counts in a budget is worked out anew from the readings.
+type Settled struct {
+	Readings      int     `json:"readings"`
+	Seconds       float64 `json:"seconds"`
+	Slope         float64 `json:"slope"` // of the reference, mean over the window, mmHg/s
+	SlopeStandard float64 `json:"slope_standard_uncertainty"`
+	Trend         float64 `json:"trend"` // of UUT minus reference, mmHg/s
+	TrendStandard float64 `json:"trend_standard_uncertainty"`
+	Correlation   float64 `json:"correlation"`          // variance of the mean over that of white noise
+	Noise         float64 `json:"noise_uncertainty"`    // of the mean difference
+	Delay         float64 `json:"settling_uncertainty"` // slope x uncertainty of lag and skew
+	Standard      float64 `json:"standard_uncertainty"` // of the mean difference, all parts
 }
 
 // Hold is the leak test: the source shut off, the reference read.

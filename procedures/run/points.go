@@ -29,7 +29,14 @@ type asked struct {
 	at     line.Instant
 	middle float64 // s
 	p      quantity.Pressure
-	uuts   []float64 // Pa, mean since the reading before; NaN if it sent nothing
+	uuts   []heard
+}
+
+// heard is what a UUT sent since the reading before: n values (none: 0) with
+// their mean and scatter in Pa, on average behind (s) earlier than the reading.
+type heard struct {
+	n                     int
+	mean, scatter, behind float64
 }
 
 // read asks the reference, records the answer and holds it against the
@@ -57,7 +64,7 @@ func (s *session) read(ctx context.Context) (asked, error) {
 		return asked{}, err
 	}
 	n := len(s.units)
-	a := asked{sent: r.Sent, at: r.At, middle: r.Middle().Seconds(), p: p, uuts: make([]float64, n), lines: make([]int64, n)}
+	a := asked{sent: r.Sent, at: r.At, middle: r.Middle().Seconds(), p: p, uuts: make([]heard, n), lines: make([]int64, n)}
 	for _, u := range s.live() {
 		if f := s.silent(u); f != nil {
 			if err := s.leaveOut(u, f); err != nil {
@@ -65,10 +72,7 @@ func (s *session) read(ctx context.Context) (asked, error) {
 			}
 			continue
 		}
-		a.uuts[u.index] = math.NaN()
-		if u.stream.since.n > 0 {
-			a.uuts[u.index] = u.stream.since.mean
-		}
+		a.uuts[u.index] = u.stream.since.heard(a.middle, seconds(u.UUT.Delay))
 		a.lines[u.index], err = s.put(u, record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text, Watch: u.stream.since.watch()})
 		if err != nil {
 			return asked{}, err
@@ -168,43 +172,67 @@ type settled struct {
 	unit     *unit
 	readings []asked
 	state    ready.State
-	waiting  string
+	outside  bool // the pressure is outside the set pressure's window
+}
+
+// done says that waiting would not make the point better: it is ready, or all
+// that is left is a resolution, which the uncertainty budget has.
+func (p *settled) done() bool {
+	return !p.outside && (p.state.Ready || p.state.Status.Kind == ready.Coarse)
+}
+
+// waiting says in words what the point waits for.
+func (p *settled) waiting(set, window quantity.Pressure) string {
+	if p.outside {
+		return fmt.Sprintf("pressure within %.1f mmHg of %.0f mmHg", window.MmHg(), set.MmHg())
+	}
+	return p.state.Status.Text("mmHg")
 }
 
 // settle reads until the difference of UUT and reference is ready to be taken
 // for every UUT at once, and returns the readings of each one's window.
 // Readings outside the set pressure's window begin the wait anew; a window of 0
 // is no window. Of several UUTs, those that are not ready in time are left out.
+// What is waited for is told when it changes, once the wait is longer than most.
 func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rule ready.Settings, longest time.Duration) ([]settled, error) {
-	until := s.now().Add(longest)
+	began := s.now()
+	until := began.Add(longest)
 	watches := make([]*ready.Watch, len(s.units))
 	points := make([]settled, len(s.units))
+	told := make([]ready.Kind, len(s.units))
 	for _, u := range s.units {
-		watches[u.index], points[u.index].unit = ready.NewWatch(rule), u
+		watches[u.index], points[u.index].unit = ready.NewWatch(u.ruleOf(rule)), u
 	}
 	for {
 		a, err := s.read(ctx)
 		if err != nil {
 			return nil, err
 		}
-		inside := window == 0 || math.Abs(float64(a.p-set)) <= float64(window)
+		outside := window != 0 && math.Abs(float64(a.p-set)) > float64(window)
 		all := true
 		for _, u := range s.live() {
-			p, watch := &points[u.index], watches[u.index]
+			p, h := &points[u.index], a.uuts[u.index]
+			p.outside = outside
 			switch {
-			case !inside:
-				watches[u.index], p.readings, p.state = ready.NewWatch(rule), nil, ready.State{}
-				p.waiting = fmt.Sprintf("pressure within %.1f mmHg of %.0f mmHg", window.MmHg(), set.MmHg())
-			case !math.IsNaN(a.uuts[u.index]):
+			case outside:
+				watches[u.index].Reset()
+				p.readings, p.state = nil, ready.State{}
+			case h.n > 0:
 				p.readings = append(p.readings, a)
-				p.state = watch.Add(ready.Sample{Time: a.middle, Reference: a.p.MmHg(), UUT: quantity.Pressure(a.uuts[u.index]).MmHg()})
-				p.waiting = p.state.Waiting
+				p.state = watches[u.index].Add(ready.Sample{
+					Time: a.middle, Reference: a.p.MmHg(), UUT: quantity.Pressure(h.mean).MmHg(),
+					Behind: h.behind, Scatter: quantity.Pressure(h.scatter).MmHg(),
+				})
 			}
-			all = all && p.state.Ready
+			all = all && p.done()
+			if kind := p.state.Status.Kind; !p.done() && kind != told[u.index] && s.now() > began.Add(tellAfter) {
+				told[u.index] = kind
+				s.Operator.Tell(fmt.Sprintf("  %s: waiting, %s", u.name(), p.waiting(set, window)))
+			}
 		}
 		late := s.now() > until
 		if all || late {
-			done, err := s.take(points, set, longest)
+			done, err := s.take(points, set, window, longest)
 			if all || err != nil || len(done) > 0 {
 				return done, err
 			}
@@ -215,17 +243,21 @@ func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rul
 	}
 }
 
+// tellAfter is how long a point may take before the operator is told what it
+// waits for; most points take less, and a line for each would bury the rest.
+const tellAfter = 3 * time.Second
+
 // take returns the windows that are ready and leaves the other UUTs out.
-func (s *session) take(points []settled, set quantity.Pressure, longest time.Duration) ([]settled, error) {
+func (s *session) take(points []settled, set, window quantity.Pressure, longest time.Duration) ([]settled, error) {
 	var done []settled
 	for _, u := range s.live() {
 		p := points[u.index]
-		if p.state.Ready {
+		if p.done() {
 			p.readings = p.readings[p.state.First:]
 			done = append(done, p)
 			continue
 		}
-		f := &Fault{Code: "not_settling", Text: fmt.Sprintf("the point at %.0f mmHg was not ready within %v, waiting for: %s", set.MmHg(), longest, p.waiting)}
+		f := &Fault{Code: "not_settling", Text: fmt.Sprintf("the point at %.0f mmHg was not ready within %v, waiting for: %s", set.MmHg(), longest, p.waiting(set, window))}
 		if err := s.leaveOut(u, f); err != nil {
 			return nil, err
 		}
@@ -233,29 +265,36 @@ func (s *session) take(points []settled, set quantity.Pressure, longest time.Dur
 	return done, nil
 }
 
-// rule is the difference rule as the procedure and the bench file set it.
-func (s *session) rule(stage procedures.Static) ready.Settings {
-	settings := ready.Settings{
-		Standard:      stage.StandardUncertainty.MmHg(),
-		LeastReadings: stage.LeastReadings,
-		SlopeShare:    stage.ShareOfLimit * s.smallestLimit(),
+// rule is the difference rule as the procedure and the bench file set it, for
+// any UUT. The reference's lag is somewhere from none to its response time with
+// its tolerance, which no figure is corrected for: results counts it as this.
+func (s *session) rule(share float64, standard quantity.Pressure, readings int) ready.Settings {
+	response := seconds(s.Facts.Reference.ResponseTime)
+	return ready.Settings{
+		Standard:            standard.MmHg(),
+		SlopeShare:          share * s.smallestLimit(),
+		DelayUncertainty:    (response + seconds(s.Facts.Reference.ResponseTimeTolerance)) / math.Sqrt(3),
+		Settling:            response,
+		LeastReadings:       readings,
+		LeastSeconds:        response,
+		ReferenceResolution: quantity.Pressure(resolution(s.Facts.Reference.Resolution)).MmHg(),
 	}
-	seconds := func(text string) float64 {
-		v, err := quantity.ParseAs(text, quantity.DimSpan)
-		if err != nil {
-			return 0
-		}
-		return v.SI
+}
+
+// ruleOf is the rule with what the bench file states about one UUT.
+func (u *unit) ruleOf(rule ready.Settings) ready.Settings {
+	rule.DelayUncertainty = math.Hypot(rule.DelayUncertainty, seconds(u.UUT.DelayUncertainty))
+	rule.Resolution = quantity.Pressure(u.resolution()).MmHg()
+	return rule
+}
+
+// seconds reads a stated span of time; 0 when none is.
+func seconds(text string) float64 {
+	v, err := quantity.ParseAs(text, quantity.DimSpan)
+	if err != nil {
+		return 0
 	}
-	f := s.Facts
-	response := seconds(f.Reference.ResponseTime)
-	delay := 0.0
-	for _, u := range s.units {
-		delay = max(delay, seconds(u.UUT.Delay)+seconds(u.UUT.DelayUncertainty))
-	}
-	settings.Delay = response + seconds(f.Reference.ResponseTimeTolerance) + delay
-	settings.Settling = response
-	return settings
+	return v.SI
 }
 
 // smallestLimit is the half-width of the accuracy limit where it is smallest,

@@ -15,10 +15,6 @@ import (
 	"kymobench/procedures/results"
 )
 
-// ventedWithin is how far from zero the reference may read when vented, before
-// it is zeroed; beyond it the volume is not open or the reference is not well.
-const ventedWithin = 5.0 // mmHg
-
 // reachWindow is the window for pressures that are not judged.
 const reachWindow = 3.0 // mmHg
 
@@ -32,14 +28,14 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 	if err := s.command(ctx, func() error { return s.Rig.Source.Vent(ctx) }); err != nil {
 		return s.sourceFault(ctx, err)
 	}
-	rule := s.rule(procedures.Static{ShareOfLimit: 0.05, StandardUncertainty: quantity.MmHg(0.2), LeastReadings: 8})
+	rule := s.rule(stage.ShareOfLimit, stage.StandardUncertainty, stage.LeastReadings)
 	still, err := s.settle(ctx, 0, 0, rule, stage.LongestWait)
 	if err != nil {
 		return err
 	}
 	readings := still[0].readings
-	if p := readings[len(readings)-1].p.MmHg(); math.Abs(p) > ventedWithin {
-		return &Fault{Code: "not_vented", Text: fmt.Sprintf("the reference reads %.1f mmHg with the vent open: is the volume open to atmosphere?", p)}
+	if p := readings[len(readings)-1].p; math.Abs(float64(p)) > float64(stage.VentedWithin) {
+		return &Fault{Code: "not_vented", Text: fmt.Sprintf("the reference reads %.1f mmHg with the vent open: is the volume open to atmosphere?", p.MmHg())}
 	}
 	if err := s.command(ctx, func() error { return s.Rig.Reference.Zero(ctx) }); err != nil {
 		return s.stopOr(ctx, &Fault{Code: "reference_zero", Text: "the reference could not be zeroed", Err: err}, err)
@@ -47,7 +43,7 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 	if err := s.append(record.KindZeroing, record.Zeroing{Role: "reference", How: "device"}); err != nil {
 		return err
 	}
-	rule.LeastReadings = max(rule.LeastReadings, int(math.Ceil(stage.For.Seconds()/readEvery.Seconds())))
+	rule.LeastSeconds = math.Max(rule.LeastSeconds, stage.For.Seconds())
 	if still, err = s.settle(ctx, 0, 0, rule, stage.LongestWait); err != nil {
 		return err
 	}
@@ -62,7 +58,7 @@ func (s *session) zero(ctx context.Context, stage procedures.Zero) error {
 // zeroOf takes a UUT's reading for its zero.
 func (s *session) zeroOf(p settled) error {
 	u := p.unit
-	samples, err := s.keep(u, p.readings, record.Point{Purpose: "zero", Set: "0 mmHg", Ready: inReady(p.state)})
+	samples, err := s.keep(u, p.readings, record.Point{Purpose: "zero", Set: "0 mmHg", Ready: inReady(p.state), Settled: inSettled(p.state)})
 	if err != nil {
 		return err
 	}
@@ -79,6 +75,19 @@ func (s *session) zeroOf(p settled) error {
 func inReady(state ready.State) string {
 	return fmt.Sprintf("difference steady: slope %+.3f mmHg/s, mean of the difference known to %.3f mmHg", state.Slope, state.Standard)
 }
+
+// inSettled puts the window's figures into the record.
+func inSettled(state ready.State) *record.Settled {
+	return &record.Settled{
+		Readings: state.Readings, Seconds: milliths(state.Seconds),
+		Slope: micro(state.Slope), SlopeStandard: micro(state.SlopeSE), Trend: micro(state.Trend), TrendStandard: micro(state.TrendSE),
+		Correlation: milliths(state.Correlation), Noise: micro(state.Noise), Delay: micro(state.Settling), Standard: micro(state.Standard),
+	}
+}
+
+func milliths(x float64) float64 { return math.Round(x*1e3) / 1e3 }
+
+func micro(x float64) float64 { return math.Round(x*1e6) / 1e6 }
 
 // exercise takes the UUT up and down, unjudged.
 func (s *session) exercise(ctx context.Context, stage procedures.Exercise) error {
@@ -212,7 +221,7 @@ func (s *session) exerciseAgain(ctx context.Context) error {
 
 // cycle takes the points from one index to another.
 func (s *session) cycle(ctx context.Context, stage procedures.Static, all []procedures.Point, from, to int) error {
-	rule := s.rule(stage)
+	rule := s.rule(stage.ShareOfLimit, stage.StandardUncertainty, stage.LeastReadings)
 	for i := from; i < to; i++ {
 		point := all[i]
 		if _, err := s.approach(ctx, stage, point, first(stage, i)); err != nil {
@@ -224,7 +233,7 @@ func (s *session) cycle(ctx context.Context, stage procedures.Static, all []proc
 		}
 		for _, p := range points {
 			_, err = s.keep(p.unit, p.readings, record.Point{
-				Purpose: "static", Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(p.state),
+				Purpose: "static", Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(p.state), Settled: inSettled(p.state),
 			})
 			if err != nil {
 				return err

@@ -37,6 +37,7 @@ func (s *stream) add(at line.Instant, text string, p, reference float64) {
 	}
 	s.samples = append(s.samples, sample{at, text, p})
 	s.since.add(p)
+	s.since.at += (at.Seconds() - s.since.at) / float64(s.since.n)
 }
 
 // latest is the last sample's pressure, in Pa; not a number before the first.
@@ -86,6 +87,7 @@ type summary struct {
 	mean, m2 float64
 	min, max float64
 	refused  int
+	at       float64 // s: mean time at which they came, of a stream's summary
 }
 
 // add updates the summary (Welford's recurrence).
@@ -100,17 +102,30 @@ func (s *summary) add(x float64) {
 	s.min, s.max = math.Min(s.min, x), math.Max(s.max, x)
 }
 
+// heard is what the summary says to a reading of the reference, told of delay
+// (s) before the values came.
+func (s *summary) heard(reading, delay float64) heard {
+	if s.n == 0 {
+		return heard{}
+	}
+	return heard{n: s.n, mean: s.mean, scatter: s.sd(), behind: reading - s.at + delay}
+}
+
+// sd is the standard deviation of one value, 0 for fewer than two.
+func (s *summary) sd() float64 {
+	if s.n < 2 {
+		return 0
+	}
+	return math.Sqrt(s.m2 / float64(s.n-1))
+}
+
 // watch turns the summary into mmHg for the record, rounded to what a summary
 // is worth, and begins a new one.
 func (s *summary) watch() *record.Watch {
 	if s.n == 0 && s.refused == 0 {
 		return nil
 	}
-	sd := 0.0
-	if s.n > 1 {
-		sd = math.Sqrt(s.m2 / float64(s.n-1))
-	}
-	w := &record.Watch{N: s.n, Mean: milli(s.mean), SD: milli(sd), Min: milli(s.min), Max: milli(s.max), Refused: s.refused}
+	w := &record.Watch{N: s.n, Mean: milli(s.mean), SD: milli(s.sd()), Min: milli(s.min), Max: milli(s.max), Refused: s.refused}
 	*s = summary{}
 	return w
 }
