@@ -298,6 +298,8 @@ func (w *Watch) decide(a int) (state State, clean bool) {
 		state.Status = Status{Kind: Gathering, Have: state.Readings, Need: state.Readings + 1, Seconds: set.LeastSeconds - state.Seconds}
 	case set.Standard > 0 && enough && moved <= 2*set.Standard && state.Standard <= set.Standard:
 		state.Ready = true
+	case set.Standard > 0 && enough && moved <= 2*set.Standard && state.Resolution > set.Standard && math.Hypot(state.Noise, state.Settling) <= set.Standard:
+		state.Status = Status{Kind: Coarse, Value: state.Resolution, Limit: set.Standard, Seconds: math.Inf(1)}
 	default:
 		state.Status = w.noisy(state)
 	}

@@ -110,11 +110,10 @@ func (w *Watch) moving(state State) Status {
 func (w *Watch) noisy(state State) Status {
 	set := w.settings
 	s := Status{Kind: Noisy, Value: state.Standard, Limit: set.Standard, Seconds: math.Inf(1)}
-	if state.Resolution > set.Standard {
-		s.Kind, s.Value = Coarse, state.Resolution
-		return s
+	left := set.Standard*set.Standard - state.Settling*state.Settling
+	if state.Resolution < set.Standard {
+		left -= state.Resolution * state.Resolution
 	}
-	left := set.Standard*set.Standard - state.Settling*state.Settling - state.Resolution*state.Resolution
 	if left > 0 && !math.IsInf(state.Noise, 1) {
 		n := float64(state.Readings)
 		whole := math.Max(n*state.Noise*state.Noise/left, float64(set.LeastReadings)*state.safe)

@@ -72,7 +72,7 @@ func (s *session) read(ctx context.Context) (asked, error) {
 			}
 			continue
 		}
-		a.uuts[u.index] = u.stream.since.heard(a.middle, seconds(u.UUT.Delay))
+		a.uuts[u.index] = u.stream.since.heard(a.middle, spanOf(u.UUT.Delay))
 		a.lines[u.index], err = s.put(u, record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text, Watch: u.stream.since.watch()})
 		if err != nil {
 			return asked{}, err
@@ -269,11 +269,11 @@ func (s *session) take(points []settled, set, window quantity.Pressure, longest 
 // any UUT. The reference's lag is somewhere from none to its response time with
 // its tolerance, which no figure is corrected for: results counts it as this.
 func (s *session) rule(share float64, standard quantity.Pressure, readings int) ready.Settings {
-	response := seconds(s.Facts.Reference.ResponseTime)
+	response := spanOf(s.Facts.Reference.ResponseTime)
 	return ready.Settings{
 		Standard:            standard.MmHg(),
 		SlopeShare:          share * s.smallestLimit(),
-		DelayUncertainty:    (response + seconds(s.Facts.Reference.ResponseTimeTolerance)) / math.Sqrt(3),
+		DelayUncertainty:    (response + spanOf(s.Facts.Reference.ResponseTimeTolerance)) / math.Sqrt(3),
 		Settling:            response,
 		LeastReadings:       readings,
 		LeastSeconds:        response,
@@ -283,13 +283,13 @@ func (s *session) rule(share float64, standard quantity.Pressure, readings int) 
 
 // ruleOf is the rule with what the bench file states about one UUT.
 func (u *unit) ruleOf(rule ready.Settings) ready.Settings {
-	rule.DelayUncertainty = math.Hypot(rule.DelayUncertainty, seconds(u.UUT.DelayUncertainty))
+	rule.DelayUncertainty = math.Hypot(rule.DelayUncertainty, spanOf(u.UUT.DelayUncertainty))
 	rule.Resolution = quantity.Pressure(u.resolution()).MmHg()
 	return rule
 }
 
-// seconds reads a stated span of time; 0 when none is.
-func seconds(text string) float64 {
+// spanOf reads a stated span of time; 0 when none is.
+func spanOf(text string) float64 {
 	v, err := quantity.ParseAs(text, quantity.DimSpan)
 	if err != nil {
 		return 0
