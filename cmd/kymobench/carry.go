@@ -5,9 +5,11 @@ import (
 	"fmt"
 	"io"
 	"path/filepath"
+	"slices"
 
 	"kymobench/bench"
 	"kymobench/bench/line"
+	"kymobench/bench/serialport"
 	"kymobench/bench/setup"
 	"kymobench/procedures"
 	"kymobench/procedures/record"
@@ -82,6 +84,11 @@ func (j job) carry(ctx context.Context) ([]outcome, error) {
 	if err != nil {
 		return nil, err
 	}
+	release, err := lockInstruments(&file)
+	if err != nil {
+		return nil, err
+	}
+	defer release()
 	rig, err := file.Open(j.ports)
 	if err != nil {
 		return nil, err
@@ -91,6 +98,41 @@ func (j job) carry(ctx context.Context) ([]outcome, error) {
 		err = closing
 	}
 	return out, err
+}
+
+// lockInstruments keeps other runs of this program away from every instrument
+// that the bench file names by its identity, on whatever port: a port's own
+// lock does not keep an administrator out. Simulated instruments of one bench
+// and of another have the same identities, so they are not locked.
+func lockInstruments(f *setup.File) (release func(), err error) {
+	var locks []*serialport.Lock
+	release = func() {
+		for _, l := range locks {
+			_ = l.Release() // the system drops it anyway when the process ends
+		}
+	}
+	if f.Simulated {
+		return release, nil
+	}
+	identities := []string{f.Reference.Identity, f.Pressure.Identity, f.Valve.Identity}
+	for _, p := range f.Places() {
+		if p.Readout != nil {
+			identities = append(identities, p.Readout.Identity)
+		}
+	}
+	slices.Sort(identities)
+	for _, identity := range slices.Compact(identities) {
+		if identity == "" {
+			continue
+		}
+		l, err := serialport.NewLock(identity)
+		if err != nil {
+			release()
+			return func() {}, err
+		}
+		locks = append(locks, l)
+	}
+	return release, nil
 }
 
 // certified refuses, before a port is opened, a run that asks for pressures
