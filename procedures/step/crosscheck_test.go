@@ -103,7 +103,7 @@ func TestSpectrumScatter(t *testing.T) {
 	r := rand.New(rand.NewPCG(8, 1))
 	for _, phi := range []float64{0, 0.7} {
 		p := plan{fn: 20, zeta: 0.5, rate: 500, before: 0.5, spacing: 1, heights: []float64{100}, sigma: 0.5, phi: phi}
-		n := trials(100, 2000)
+		n := trials(60, 2000)
 		var sum, square, told [12]float64
 		for range n {
 			p.phase = r.Float64()
@@ -120,10 +120,10 @@ func TestSpectrumScatter(t *testing.T) {
 		for i := range sum {
 			seen := math.Sqrt(square[i] - sum[i]*sum[i])
 			t.Logf("phi %.1f, %.2f fn: scatter of the gain %.4f, told %.4f", phi, float64(i+1)/8, seen, told[i])
-			// 100 trials know a standard deviation to 7 %; what is told allows for a
+			// 60 trials know a standard deviation to 9 %; what is told allows for a
 			// correlation that is not well known. Levels and time of the
 			// edge, from the fit, add to the lowest frequencies.
-			if i >= 4 && (seen/told[i] > 1.2 || seen/told[i] < 0.7) {
+			if i >= 4 && (seen/told[i] > 1.3 || seen/told[i] < 0.6) {
 				t.Errorf("phi %g, %d/8 fn: scatter %.4f, told %.4f", phi, i+1, seen, told[i])
 			}
 		}
@@ -135,7 +135,7 @@ func TestSpectrumScatter(t *testing.T) {
 func TestCrossCheckTells(t *testing.T) {
 	r := rand.New(rand.NewPCG(4, 9))
 	told := 0
-	n := trials(30, 4000)
+	n := trials(12, 4000)
 	for range n {
 		p := goodPlan(r)
 		c, _ := spectraOf(t, p.make(r), Settings{EdgeStated: true, MinimumStep: 8}, p.fn)
@@ -152,7 +152,7 @@ func TestCrossCheckTells(t *testing.T) {
 	// order at 2.5 times it.
 	for _, kind := range []string{"second mode", "low-pass"} {
 		caught, reserved := 0, 0
-		n = trials(8, 500)
+		n = trials(5, 500)
 		for range n {
 			p := plan{fn: 15, zeta: 0.2 + 0.5*r.Float64(), rate: 1000, before: 0.5, spacing: 1.2, heights: []float64{100}, phase: r.Float64()}
 			trace := p.make(r)

@@ -14,7 +14,7 @@ func TestCorrelation(t *testing.T) {
 		for _, heights := range [][]float64{{100}, {100, -100, 100, -100, 100, -100}} {
 			p := plan{fn: 20, zeta: zeta, rate: 500, before: 0.4, spacing: 1.2, heights: heights, sigma: 0.3}
 			r := rand.New(rand.NewPCG(11, 7))
-			n := trials(24, 1500)
+			n := trials(12, 1500)
 			var x, y []float64
 			claimed := 0.0
 			for range n {
