@@ -44,11 +44,11 @@ func releases(t *testing.T, r *rand.Rand, fn, zeta, noise float64, o recorded.St
 
 // The 95 % intervals of what follows for a pulse hold the truth as often as
 // they promise: errors at 120/min and the fastest rate, lines and noises drawn
-// at random. KYMOBENCH_FULL=1 takes 1,500 lines.
+// at random. KYMOBENCH_FULL=1 takes 600 lines.
 func TestPulseFiguresCover(t *testing.T) {
 	n := 12
 	if os.Getenv("KYMOBENCH_FULL") == "1" {
-		n = 1500
+		n = 600
 	}
 	r := rand.New(rand.NewPCG(12, 6))
 	inside, asked := map[string]int{}, map[string]int{}
