@@ -43,8 +43,11 @@ func derivedRows(d *results.Derived) []FigureRow {
 		switch {
 		case f.Value == nil:
 			row.Value, row.Uncertainty = "none", f.Reason
-			if name == "Resonance at" || name == "Its gain" {
+			switch name {
+			case "Resonance at", "Its gain":
 				row.Uncertainty = "no peak"
+			case "Damped frequency", "Overshoot":
+				row.Uncertainty = "nothing swings"
 			}
 		case f.Interval != nil:
 			half := (f.Interval[1] - f.Interval[0]) / 2 * scale

@@ -62,13 +62,14 @@ func Harmonics(name string, mean float64, cos, sin []float64) (Wave, error) {
 
 // Samples makes a wave of one whole beat of n evenly spaced pressures, the
 // first sample of the next beat not repeated: its harmonics are the discrete
-// Fourier transform, those up to (n-1)/2. Trailing harmonics that together
-// change the pulse by less than a millionth of its range are dropped.
+// Fourier transform, those up to (n-1)/2 and to mostHarmonics. Trailing ones
+// that together change the pulse by less than a millionth of its range are
+// dropped.
 //
 // ErrWave: fewer than 8 samples, a beat that does not close (from the last
 // sample to the first it goes further than half the range in one step, or than
-// three times the largest other step), more harmonics than mostHarmonics that
-// matter.
+// three times the largest other step), or one of which mostHarmonics leave over
+// 1 % of the range (root mean square): what is left out of a recording is noise.
 // Source: discrete Fourier transform, textbook.
 func Samples(name string, p []float64) (Wave, error) {
 	n := len(p)
@@ -96,22 +97,30 @@ func Samples(name string, p []float64) (Wave, error) {
 		mean += v / float64(n)
 	}
 	cos, sin := make([]float64, (n-1)/2), make([]float64, (n-1)/2)
+	table := make([][2]float64, n)
+	total := 0.0
+	for i, v := range p {
+		table[i][1], table[i][0] = math.Sincos(2 * math.Pi * float64(i) / float64(n))
+		total += (v - mean) * (v - mean) / float64(n)
+	}
+	cos, sin = cos[:min(len(cos), mostHarmonics)], sin[:min(len(sin), mostHarmonics)]
 	for k := range cos {
 		for i, v := range p {
 			// The angle is reduced in whole numbers, so that it stays exact.
-			s, c := math.Sincos(2 * math.Pi * float64(i*(k+1)%n) / float64(n))
-			cos[k] += 2 * (v - mean) * c / float64(n)
-			sin[k] += 2 * (v - mean) * s / float64(n)
+			at := &table[i*(k+1)%n]
+			cos[k] += 2 * (v - mean) * at[0] / float64(n)
+			sin[k] += 2 * (v - mean) * at[1] / float64(n)
 		}
+		total -= (cos[k]*cos[k] + sin[k]*sin[k]) / 2
+	}
+	if left := math.Sqrt(math.Max(0, total)); len(cos) == mostHarmonics && left > 0.01*(high-low) {
+		return Wave{}, fmt.Errorf("%w: %d harmonics leave %.2g of its range of %.3g: smooth it", ErrWave, mostHarmonics, left, high-low)
 	}
 	keep := len(cos)
 	for rest := 0.0; keep > 1; keep-- {
 		if rest += math.Hypot(cos[keep-1], sin[keep-1]); rest > 1e-6*(high-low) {
 			break
 		}
-	}
-	if keep > mostHarmonics {
-		return Wave{}, fmt.Errorf("%w: %d harmonics matter, %d are taken: smooth it, or sample it less often", ErrWave, keep, mostHarmonics)
 	}
 	return Harmonics(name, mean, cos[:keep], sin[:keep])
 }

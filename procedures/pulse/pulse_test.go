@@ -171,6 +171,21 @@ func TestSamples(t *testing.T) {
 			t.Errorf("%s: %+v, sampled %+v", w.Name, a, b)
 		}
 	}
+	// A recording has noise; what a hundred harmonics leave of it is no matter.
+	r := rand.New(rand.NewPCG(9, 9))
+	w := Shapes()[2]
+	p := make([]float64, 2000)
+	wild := make([]float64, 2000)
+	for i := range p {
+		v, _, _ := at(w.Cos, w.Sin, 2*math.Pi*float64(i)/2000)
+		p[i], wild[i] = w.Mean+v+0.2*r.NormFloat64(), 100*r.Float64()
+	}
+	if s, err := Samples("recorded", p); err != nil || math.Abs(s.Through(12, 0.3, 100).Systolic-w.Through(12, 0.3, 100).Systolic) > 0.2 {
+		t.Errorf("recorded: %v", err)
+	}
+	if s, err := Samples("noise", wild); err == nil {
+		t.Errorf("noise alone was taken: %d harmonics", len(s.Cos))
+	}
 	ramp := make([]float64, 100)
 	flat := make([]float64, 100)
 	broken := make([]float64, 100)

@@ -50,11 +50,12 @@ func (r *Reach) Errors(fn, zeta, rate float64) Errors {
 	return r.wave.shown(r.e, r.cos, r.sin, rate/60/fn, zeta)
 }
 
-// mostRatio is where Limit stops looking: a line is then lost anyway.
-const mostRatio = 20
+// mostRatio is where Limit stops looking: the gain of the first harmonic is an
+// eighth there.
+const mostRatio = 3
 
 // Limit is the u = rate/(60 fn) up to which, from 0 on, the errors stay within
-// the tolerance for damping ratio zeta > 0; +Inf when they do up to u = 20.
+// the tolerance for damping ratio zeta > 0; +Inf when they do up to u = 3.
 //
 // It starts where the harmonics' own sizes prove that nothing can happen (an
 // extreme of a sum moves by no more than the sum of what each part moves),
@@ -73,7 +74,7 @@ func (r *Reach) Limit(zeta float64) float64 {
 			high = u
 		}
 	}
-	least := math.Min(0.01, zeta/50)
+	least := math.Min(0.01, math.Max(zeta/50, 5e-4))
 	for u, used := low, 0.0; ; {
 		step := (1 - used) * r.harmless / r.steepest(u, 1.1*u, zeta)
 		next := u + math.Min(0.1*u, math.Max(step, least*u))
