@@ -41,7 +41,7 @@ func printStatic(w io.Writer, s *results.Static) error {
 		t.row("zero offset", "", &s.ZeroOffset.Value, u, t.byNoise(s.Repeatability.PooledSD))
 	}
 	for i, z := range s.ZeroReturn {
-		t.row(fmt.Sprintf("zero return, cycle %d", i+1), "zero return", z, u, byNoise)
+		t.row(fmt.Sprintf("zero return, cycle %d", s.CycleNumbers[i]), "zero return", z, u, byNoise)
 	}
 	t.linearity("independent", s.Linearity.Independent, s.Lines.Independent)
 	t.linearity("terminal-based", s.Linearity.Terminal, s.Lines.Terminal)

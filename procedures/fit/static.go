@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 )
 
 // Data are static readings, all slices of one length: the corrected reference
@@ -59,6 +60,7 @@ type AtSet struct {
 type Figures struct {
 	Line           *Straight // of UUT on reference over all readings
 	Cycles         int
+	CycleNumbers   []int // as given, rising; ZeroReturn goes by them
 	ZeroOffset     *float64
 	ZeroReturn     []*float64 // one for each cycle in rising order
 	Linearity      Linearities
@@ -146,7 +148,7 @@ func Static(d Data) (Figures, error) {
 	w.number()
 	grouped := w.group()
 	w.inTime(grouped)
-	f := Figures{Sets: w.sets, Cycles: len(w.cycles), ZeroReturn: make([]*float64, len(w.cycles))}
+	f := Figures{Sets: w.sets, Cycles: len(w.cycles), CycleNumbers: slices.Clone(w.cycles), ZeroReturn: make([]*float64, len(w.cycles))}
 	if line, err := Line(d.Reference, d.UUT); err == nil {
 		f.Line = &line
 	}

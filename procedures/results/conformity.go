@@ -81,6 +81,7 @@ type Undetermined struct {
 // conformity puts what the fit says beyond single figures into the results.
 func (out *Static) conformity(f fit.Figures) {
 	out.Linearity, out.Lines = linearityOf(f.Linearity)
+	out.CycleNumbers = f.CycleNumbers
 	out.EachHysteresis = []HysteresisAt{}
 	for _, h := range f.EachHysteresis {
 		out.EachHysteresis = append(out.EachHysteresis, HysteresisAt{h.Cycle, h.At, h.Value})

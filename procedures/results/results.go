@@ -104,6 +104,7 @@ type Static struct {
 	Reservations   []Reason      `json:"reservations"`
 	NominalUsed    *float64      `json:"nominal_sensitivity_uV_V_mmHg"` // nil for a pressure output
 
+	CycleNumbers    []int          `json:"cycle_numbers"` // zero_return goes by them
 	ResidualDoF     *int           `json:"residual_degrees_of_freedom"`
 	Lines           Lines          `json:"linearity_lines"`
 	EachHysteresis  []HysteresisAt `json:"hysteresis_each"`
