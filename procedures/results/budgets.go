@@ -147,7 +147,7 @@ func (st *staticFigures) atPressures(s *scale) []measured {
 		}
 		legs[t.level][leg] = append(legs[t.level][leg], i)
 	}
-	back := st.widestReturn()
+	back := st.widestReturn(s)
 	var out []measured
 	for l := range legs {
 		set := st.levels[l]
@@ -171,7 +171,7 @@ func (st *staticFigures) atPressures(s *scale) []measured {
 			w := half(st.errorOf(up), st.errorOf(down))
 			a, b := st.reduced(up, set), st.reduced(down, set)
 			both := append(append([]int{}, up...), down...)
-			add(FigureMeanError, "", both, w, (a+b)/2, math.Abs(b-a))
+			add(FigureMeanError, "", both, w, (a+b)/2, beyond(b-a, st.scatterOf(s, st.apart(up, down)), 1))
 		}
 	}
 	return out
@@ -206,14 +206,44 @@ func half(a, b []weight) []weight {
 	return out
 }
 
-// widestReturn is the largest return of zero over the cycles, 0 when none was
-// seen.
-func (st *staticFigures) widestReturn() float64 {
-	var most float64
-	for _, z := range st.figures.ZeroReturn {
-		if z != nil {
-			most = math.Max(most, math.Abs(*z))
-		}
+// apart is down less up, each the mean of its points.
+func (st *staticFigures) apart(up, down []int) []weight {
+	var w []weight
+	for _, i := range down {
+		w = append(w, weight{i, 1 / float64(len(down))})
 	}
-	return most
+	for _, i := range up {
+		w = append(w, weight{i, -1 / float64(len(up))})
+	}
+	return w
+}
+
+// scatterOf is the variance that the scatter of this run leaves in a figure.
+func (st *staticFigures) scatterOf(s *scale, w []weight) float64 {
+	m, n := s.sumsOf(st.points, w), st.noise
+	return m.reference*n.vP + m.blocks*n.vY + m.points*n.vSingle + m.cells*n.vCell
+}
+
+// beyond is what a width, the largest of so many alike, has beyond what scatter
+// of that variance makes it: the root of width^2 less the mean square of the
+// largest of as many normal deviates. The scatter is in the budget already.
+func beyond(width, variance float64, of int) float64 {
+	// Mean squares of the largest of 1, 2, 3... normal deviates, computed from
+	// their distribution with scipy 1.10; from 8 on they grow so slowly that the
+	// last one stands for all: too little is taken off then.
+	largest := [...]float64{1, 1.6366, 2.1027, 2.4702, 2.7737, 3.0324, 3.2577, 3.4574}
+	return math.Sqrt(math.Max(0, width*width-variance*largest[min(max(of, 1), len(largest))-1]))
+}
+
+// widestReturn is the largest return of zero over the cycles beyond their
+// scatter, 0 when none was seen.
+func (st *staticFigures) widestReturn(s *scale) float64 {
+	var widest, variance float64
+	cycles := 0
+	for _, m := range st.zeroReturns(s) {
+		cycles++
+		widest = math.Max(widest, math.Abs(m.value))
+		variance = math.Max(variance, st.scatterOf(s, m.weights))
+	}
+	return beyond(widest, variance, cycles)
 }

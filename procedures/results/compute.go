@@ -19,6 +19,11 @@ func Compute(events []record.Event) (Results, error) {
 	if err != nil {
 		return Results{}, err
 	}
+	return g.compute()
+}
+
+// compute works out what was gathered.
+func (g *gathered) compute() (Results, error) {
 	s, err := newScale(g)
 	if err != nil {
 		return Results{}, err

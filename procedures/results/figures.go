@@ -119,14 +119,7 @@ func (st *staticFigures) downLessUp(cycle int, set float64) []weight {
 			}
 		}
 	}
-	var w []weight
-	for _, i := range down {
-		w = append(w, weight{i, 1 / float64(len(down))})
-	}
-	for _, i := range up {
-		w = append(w, weight{i, -1 / float64(len(up))})
-	}
-	return w
+	return st.apart(up, down)
 }
 
 // within is the noise of the readings alone: that cycles differ is a property
