@@ -161,6 +161,20 @@ func (d *Definition) Limit(name LimitName) (Limit, bool) {
 	return Limit{}, false
 }
 
+// BandAt returns the band that holds at a pressure in mmHg; false where the
+// limit has none.
+func (l Limit) BandAt(mmHg *float64) (Band, bool) {
+	if mmHg == nil {
+		return Band{}, false
+	}
+	for _, b := range l.Bands {
+		if quantity.MmHg(*mmHg) <= b.UpTo {
+			return b, true
+		}
+	}
+	return Band{}, false
+}
+
 // At returns the limits that hold at pressure p, in Unit; nil on a side that
 // has none. Without bands they are the same everywhere. With bands they are
 // minus and plus (Constant + OfReading * |p|) of the first band whose UpTo is

@@ -77,7 +77,7 @@ Exit codes: 0 done; 1 error; 2 usage or a refused file; 3 rejected;
 	root.SetOut(io.out)
 	root.SetErr(io.err)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(newDemoCommand(io), newRunCommand(io), newSimulateCommand(io), newReportCommand(io), newReplayCommand(io), newPortsCommand(io), newExchangeCommand(io), newCheckCommand(io), newPrimeCommand(io), newVerifyCommand(io), newJudgeCommand(io), newFitCommand(io), newVersionCommand(io))
+	root.AddCommand(newDemoCommand(io), newRunCommand(io), newSimulateCommand(io), newReportCommand(io), newReplayCommand(io), newPortsCommand(io), newExchangeCommand(io), newCheckCommand(io), newPrimeCommand(io), newVerifyCommand(io), newJudgeCommand(io), newExplainCommand(io), newFitCommand(io), newVersionCommand(io))
 	return root
 }
 

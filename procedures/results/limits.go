@@ -169,6 +169,7 @@ func (j *judge) dynamic(name procedures.LimitName) found {
 func (j *judge) hold(l procedures.Limit, f found, low, high *float64) (Limit, error) {
 	d := j.g.definition.Decision
 	out := Limit{
+		at:   -1,
 		Name: string(l.Name), Unit: l.Unit, Bounds: Bounds{low, high}, At: f.set, Rule: string(d.Rule), Resolution: l.Resolution,
 		Origin: l.Origin, Known: string(l.OriginStatus), Budget: []BudgetLine{},
 	}
@@ -217,6 +218,7 @@ func (j *judge) accuracy(l procedures.Limit) (Limit, error) {
 		if one.Value == nil {
 			return one, nil
 		}
+		one.at = i
 		if one.FalseAccept != nil {
 			risk = math.Max(risk, *one.FalseAccept)
 		}

@@ -62,6 +62,8 @@ type Limit struct {
 	Coverage   *float64     `json:"coverage_factor"`
 	Sampled    *MonteCarlo  `json:"monte_carlo"` // set when Expanded is by Monte Carlo
 	Budget     []BudgetLine `json:"budget"`
+
+	at int // of accuracy: the point that decided it, -1 for none
 }
 
 // BudgetLine is one contribution to an uncertainty.
