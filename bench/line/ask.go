@@ -230,6 +230,16 @@ func (l *Line) drain(ctx context.Context) error {
 // Send writes a command that has no answer and waits, at most within, until
 // the port has taken it.
 func (l *Line) Send(ctx context.Context, command string, within time.Duration) error {
+	return l.writeOut(ctx, within, func() int64 { return l.write(command) }, func() string { return l.quoted(command) })
+}
+
+// Signal puts a modem line on or off and waits, at most within, until that is
+// done.
+func (l *Line) Signal(ctx context.Context, which ModemLine, on bool, within time.Duration) error {
+	return l.writeOut(ctx, within, func() int64 { return l.engine.inbox.Signal(l.port, which, on) }, which.String)
+}
+
+func (l *Line) writeOut(ctx context.Context, within time.Duration, begin func() int64, what func() string) error {
 	switch {
 	case l.gone != nil:
 		return l.wrong("write", l.gone)
@@ -237,12 +247,12 @@ func (l *Line) Send(ctx context.Context, command string, within time.Duration) e
 		return l.wrong("write", ErrInside)
 	}
 	l.written, l.writeErr = false, nil
-	l.writing = l.write(command)
+	l.writing = begin()
 	err := l.engine.Wait(ctx, l.engine.Now().Add(within), func() bool { return l.written || l.gone != nil })
 	l.writing = 0
 	switch {
 	case errors.Is(err, ErrDeadline):
-		return l.wrong("write", &LateError{"the port did not take " + l.quoted(command), within})
+		return l.wrong("write", &LateError{"the port did not take " + what(), within})
 	case err != nil:
 		return err
 	case l.writeErr != nil:
@@ -252,6 +262,9 @@ func (l *Line) Send(ctx context.Context, command string, within time.Duration) e
 	}
 	return nil
 }
+
+// FireSignal is Fire for a modem line.
+func (l *Line) FireSignal(which ModemLine, on bool) { l.engine.inbox.Signal(l.port, which, on) }
 
 // Fire writes a command at once and does not wait: for venting, also from
 // inside a handler and on a line that is doubtful.

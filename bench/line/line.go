@@ -93,9 +93,19 @@ type Inbox interface {
 	// Send starts writing data on a connected port and returns the number of
 	// the write; a KindWritten event with that number follows.
 	Send(port PortID, data []byte) int64
+	// Signal puts a modem line of a connected port on or off; it counts as a
+	// write, which ends with ErrNoModemLines where there are none.
+	Signal(port PortID, which ModemLine, on bool) int64
 	// Post puts an event of another source (committer, operator, signal) into
 	// the inbox after delay; it never blocks. A real inbox takes only delay 0.
 	Post(delay time.Duration, e Event)
+}
+
+// SignalMachine is a Machine that also sees the port's modem lines.
+type SignalMachine interface {
+	Machine
+	// Signal tells of a modem line that the program has put on or off.
+	Signal(at Instant, which ModemLine, on bool)
 }
 
 // Machine is a simulated instrument at the far end of a port: a state machine

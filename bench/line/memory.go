@@ -149,6 +149,21 @@ type Blocking interface {
 	Blocks(at Instant) time.Duration
 }
 
+// Signal tells the machine of a modem line at once, if it has any.
+func (m *Memory) Signal(port PortID, which ModemLine, on bool) int64 {
+	m.writes++
+	written := Event{Kind: KindWritten, Port: port, Number: m.writes, Err: ErrNoModemLines}
+	w := m.wire(port)
+	if w == nil {
+		written.Err = ErrNoPort
+	} else if s, ok := w.machine.(SignalMachine); ok {
+		s.Signal(m.now, which, on)
+		written.Err = nil
+	}
+	m.Post(0, written)
+	return m.writes
+}
+
 // Post puts an event into the inbox after a delay of virtual time.
 func (m *Memory) Post(delay time.Duration, e Event) { m.push(max(delay, 0), e, nil) }
 

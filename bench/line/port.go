@@ -16,6 +16,32 @@ type Port interface {
 	io.ReadWriteCloser
 }
 
+// ModemLine is one of the two lines of a serial port that the program may put
+// on and off, and on which a relay can hang.
+type ModemLine uint8
+
+// The modem lines.
+const (
+	RTS ModemLine = iota + 1 // request to send
+	DTR                      // data terminal ready
+)
+
+func (m ModemLine) String() string {
+	if m == DTR {
+		return "DTR"
+	}
+	return "RTS"
+}
+
+// ModemLines is a Port that has modem lines. Its call belongs to the goroutine
+// that writes.
+type ModemLines interface {
+	SetModemLine(which ModemLine, on bool) error
+}
+
+// ErrNoModemLines: a port that has none, such as a pseudo-terminal.
+var ErrNoModemLines = errors.New("it has no modem lines: a relay needs a port with RTS and DTR")
+
 // ErrSpinning: a port whose reads return at once with nothing, as those of an
 // unplugged adapter may; it is gone.
 var ErrSpinning = errors.New("its reads return at once with nothing")
@@ -49,6 +75,8 @@ type connection struct {
 type outgoing struct {
 	number int64
 	data   []byte
+	modem  ModemLine // not 0: to be put on or off, and no data
+	on     bool
 }
 
 func newConnection(r *Real, id PortID, p Port) *connection {
@@ -153,6 +181,14 @@ func (c *connection) finish() {
 }
 
 func (c *connection) carryOut(w outgoing) {
+	if w.modem != 0 {
+		err := error(ErrNoModemLines)
+		if lines, ok := c.port.(ModemLines); ok {
+			err = lines.SetModemLine(w.modem, w.on)
+		}
+		c.report(w, err)
+		return
+	}
 	for data := w.data; len(data) > 0; {
 		n, err := c.port.Write(data)
 		if err == nil && (n <= 0 || n > len(data)) {

@@ -147,9 +147,19 @@ func weight(e Event) int { return len(e.Data) + len(e.Text) }
 // Send hands the bytes to the port's writer, which reports the end of the
 // write; it never blocks.
 func (r *Real) Send(port PortID, data []byte) int64 {
+	return r.send(port, outgoing{data: append([]byte(nil), data...)})
+}
+
+// Signal puts a modem line on or off, in its turn among the writes.
+func (r *Real) Signal(port PortID, which ModemLine, on bool) int64 {
+	return r.send(port, outgoing{modem: which, on: on})
+}
+
+func (r *Real) send(port PortID, w outgoing) int64 {
 	r.mu.Lock()
 	defer r.mu.Unlock()
 	r.writes++
+	w.number = r.writes
 	c, err := r.ports[port], error(nil)
 	switch {
 	case r.closed:
@@ -160,7 +170,7 @@ func (r *Real) Send(port PortID, data []byte) int64 {
 		err = ErrGone
 	default:
 		select {
-		case c.writes <- outgoing{r.writes, append([]byte(nil), data...)}:
+		case c.writes <- w:
 		default:
 			err = ErrCrowded
 		}

@@ -113,7 +113,10 @@ type Port struct {
 	writing chan struct{} // holds a token while a Write is under way
 }
 
-var _ line.Port = (*Port)(nil)
+var (
+	_ line.Port       = (*Port)(nil)
+	_ line.ModemLines = (*Port)(nil)
+)
 
 // Open opens a port for this program alone, as far as the system can keep
 // others out (it cannot from an administrator), and throws away what it
@@ -203,6 +206,28 @@ func (p *Port) Close() error {
 		return &Error{p.name, "close", inWords(err)}
 	}
 	return nil
+}
+
+// SetModemLine puts RTS or DTR on or off. A port that lacks them, such as a
+// pseudo-terminal, says line.ErrNoModemLines.
+func (p *Port) SetModemLine(which line.ModemLine, on bool) error {
+	p.writing <- struct{}{} // Close waits for it, as for a Write
+	defer func() { <-p.writing }()
+	if p.closed.Load() {
+		return &Error{p.name, "write", ErrClosed}
+	}
+	set := p.port.SetRTS
+	if which == line.DTR {
+		set = p.port.SetDTR
+	}
+	err := set(on)
+	switch {
+	case err == nil:
+		return nil
+	case errors.Is(err, syscall.ENOTTY), errors.Is(err, syscall.EINVAL):
+		err = line.ErrNoModemLines
+	}
+	return &Error{p.name, "write", inWords(err)}
 }
 
 // Name is the name the port was opened by.

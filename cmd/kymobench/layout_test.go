@@ -34,6 +34,8 @@ func mayImport() map[string][]string {
 		"bench/instruments/asked":  {"bench", "bench/line", "bench/quantity"},
 		"bench/instruments/scpi":   {"bench", "bench/instruments/asked", "bench/line", "bench/quantity"},
 		"bench/instruments/lines":  {"bench", "bench/line", "bench/quantity"},
+		"bench/instruments/modbus": {"bench", "bench/instruments/asked", "bench/checksum", "bench/line", "bench/quantity"},
+		"bench/instruments/relay":  {"bench", "bench/line"},
 		"bench/instruments/frames": {"bench", "bench/line", "bench/quantity"},
 
 		"procedures":             {"bench/quantity", "bench/tomlfile", "procedures/verdict"},
