@@ -382,3 +382,41 @@ func TestRealBlockedWrite(t *testing.T) {
 		close(stuck.block) // lets the goroutine left behind end
 	})
 }
+
+// relay is a cable with modem lines.
+type relay struct {
+	*cable
+	on map[ModemLine]bool
+}
+
+func (r relay) SetModemLine(which ModemLine, on bool) error {
+	r.on[which] = on
+	return nil
+}
+
+// A modem line is put on in its turn among the writes; a port without one says
+// so.
+func TestRealSignal(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		r := NewReal()
+		defer closed(t, r)
+		with := relay{newCable(), map[ModemLine]bool{}}
+		if err := errors.Join(r.Attach(1, with), r.Attach(2, newCable())); err != nil {
+			t.Fatal(err)
+		}
+		e := NewEngine(r)
+		one, two := e.Open(1, Settings{Name: "valve"}), e.Open(2, Settings{Name: "valve on a pty"})
+		ctx := context.Background()
+		if err := one.Signal(ctx, RTS, true, time.Second); err != nil || !with.on[RTS] {
+			t.Errorf("%v, %v", err, with.on)
+		}
+		err := two.Signal(ctx, DTR, true, time.Second)
+		if !errors.Is(err, ErrNoModemLines) || !strings.HasPrefix(err.Error(), "write valve on a pty: it has no modem lines") {
+			t.Error(err)
+		}
+		one.FireSignal(RTS, false)
+		if err := one.Send(ctx, "x", time.Second); err != nil || with.on[RTS] || with.written() != "x\n" {
+			t.Errorf("%v, %v, %q", err, with.on, with.written())
+		}
+	})
+}

@@ -262,6 +262,18 @@ func TestCloseDuringRead(t *testing.T) {
 
 // The system keeps a second program out, though not an administrator: the test
 // gives up that power on a thread of its own, which ends with the goroutine.
+func TestNoModemLines(t *testing.T) {
+	_, name := farEnd(t)
+	p := open(t, name)
+	if err := p.SetModemLine(line.RTS, true); !errors.Is(err, line.ErrNoModemLines) {
+		t.Error(err)
+	}
+	_ = p.Close()
+	if err := p.SetModemLine(line.DTR, true); !errors.Is(err, ErrClosed) {
+		t.Error(err)
+	}
+}
+
 func TestBusy(t *testing.T) {
 	_, name := farEnd(t)
 	open(t, name)
