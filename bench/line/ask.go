@@ -159,6 +159,26 @@ func (l *Line) quoted(s string) string {
 	return fmt.Sprintf("% X", s)
 }
 
+// Await waits, at most within, until done says that what was waited for has
+// come; what names it in the error when it has not.
+func (l *Line) Await(ctx context.Context, what string, within time.Duration, done func() bool) error {
+	if l.gone != nil {
+		return l.wrong("read", l.gone)
+	}
+	came := false
+	err := l.engine.Wait(ctx, l.engine.Now().Add(within), func() bool {
+		came = done()
+		return came || l.gone != nil
+	})
+	switch {
+	case errors.Is(err, ErrDeadline):
+		return l.wrong("read", &LateError{what, within})
+	case err != nil || came:
+		return err
+	}
+	return l.wrong("read", l.gone)
+}
+
 // resyncRounds is how often Resync asks before it gives up.
 const resyncRounds = 3
 

@@ -30,7 +30,7 @@ type Instrument struct {
 	port  *Port
 	place int // in the port's list
 	line  *line.Line
-	field quantity.Field
+	field *quantity.Parser
 	unit  quantity.Unit
 	texts strings.Builder
 }
@@ -51,15 +51,19 @@ func NewPort(l *line.Line) *Port { return &Port{line: l} }
 // does not know.
 func New(l *line.Line, s Settings) (*Instrument, error) { return NewPort(l).Instrument(s) }
 
-// Instrument makes one of the port's instruments. It refuses a unit that it
-// does not know.
+// Instrument makes one of the port's instruments. It refuses a unit or a
+// checksum that it does not know.
 func (p *Port) Instrument(s Settings) (*Instrument, error) {
 	unit, ok := quantity.UnitNamed(s.Field.Unit)
 	if !ok {
 		return nil, fmt.Errorf("%s: %q is no unit known here", p.line.Name(), s.Field.Unit)
 	}
+	field, err := s.Field.Parser()
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", p.line.Name(), err)
+	}
 	p.watched = append(p.watched, nil)
-	return &Instrument{port: p, place: len(p.watched) - 1, line: p.line, field: s.Field, unit: unit}, nil
+	return &Instrument{port: p, place: len(p.watched) - 1, line: p.line, field: field, unit: unit}, nil
 }
 
 // watch hands every line to everyone who watches; the first error is returned
