@@ -22,7 +22,8 @@ import (
 type Reading struct {
 	Sent  line.Instant // when the question left; At for a free-running instrument
 	At    line.Instant // when the last byte of the answer was taken
-	Text  string       // the frame as received, without its terminator
+	Text  string       // the line as received, without its terminator
+	Frame string       // the bytes as received, of a frame that is no text
 	Value quantity.Value
 	// Sequence counts the readings as the instrument does, on over the wraps of
 	// its own number, so that what is missing between two readings is known. It
@@ -34,6 +35,15 @@ type Reading struct {
 // Middle is the instant half way between question and answer, the best single
 // stamp of an asked reading.
 func (r Reading) Middle() line.Instant { return r.Sent + (r.At-r.Sent)/2 }
+
+// Received is what was received as a record keeps it: the text, or the bytes of
+// a frame in hexadecimal digits.
+func (r Reading) Received() string {
+	if r.Frame == "" {
+		return r.Text
+	}
+	return string(quantity.AppendText(nil, []byte(r.Frame)))
+}
 
 // ErrNotStated: the bench file states no question or command for what was
 // asked of an instrument.
@@ -67,8 +77,9 @@ type Manometer interface {
 type Streaming interface {
 	// Watch hands every reading to take, in the order of arrival, from now on;
 	// an error of take ends the engine's present wait. A frame that is not a
-	// number is handed over with its text and err set.
-	Watch(take func(r Reading, err error) error)
+	// number is handed over with its text and err set. The reading is take's
+	// until it returns; what is kept is copied.
+	Watch(take func(r *Reading, err error) error)
 }
 
 // PressureSource makes pressure.

@@ -14,10 +14,14 @@ func ParseDecimal(s string) (float64, error) {
 	return anyDecimal(s)
 }
 
-// powers are the powers of ten that a float64 holds exactly, as far as 15
-// digits need them.
-func power(n int) float64 {
-	return [...]float64{1, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15}[n]
+// powers are the powers of ten that 15 digits need; a float64 holds them
+// exactly.
+func powers() (p [16]float64) {
+	p[0] = 1
+	for i := 1; i < len(p); i++ {
+		p[i] = p[i-1] * 10
+	}
+	return p
 }
 
 // plainDecimal reads what instruments mostly send, [+-]digits[point digits] of
@@ -26,38 +30,56 @@ func power(n int) float64 {
 // nearest to the decimal (Clinger, How to read floating point numbers
 // accurately, 1990, the simple case; from memory).
 func plainDecimal(s string, point byte) (float64, bool) {
-	negative := false
-	if s != "" && (s[0] == '+' || s[0] == '-') {
-		negative = s[0] == '-'
-		s = s[1:]
-	}
-	if len(s) == 0 || len(s) > 16 {
+	whole, decimals, n, negative := leading(s, point)
+	if n == 0 || n != len(s) {
 		return 0, false
 	}
-	var whole int64
-	decimals, seen := 0, false
-	for i := range len(s) {
-		d := s[i] - '0'
-		if d <= 9 {
+	power := 1.0
+	for range decimals {
+		power *= 10
+	}
+	return signed(float64(whole)/power, negative), true
+}
+
+// leading reads the decimal that s begins with and returns its digits as a
+// whole number, how many of them are decimals, and how many characters it has:
+// 0 when there is none, or one of more than 15 digits.
+func leading(s string, point byte) (whole int64, decimals, n int, negative bool) {
+	i := 0
+	if s != "" && (s[0] == '+' || s[0] == '-') {
+		negative = s[0] == '-'
+		i = 1
+	}
+	from, at := i, 0
+	for ; i < len(s); i++ {
+		if d := s[i] - '0'; d <= 9 {
 			whole = whole*10 + int64(d)
 			continue
 		}
-		if s[i] != point || seen || i == 0 || i == len(s)-1 {
-			return 0, false
+		if s[i] != point || at != 0 || i == from {
+			break
 		}
-		seen, decimals = true, len(s)-1-i
+		at = i
 	}
-	if !seen && len(s) > 15 {
-		return 0, false
+	digits := i - from
+	if at != 0 {
+		digits--
+		decimals = i - 1 - at
+		if decimals == 0 {
+			return 0, 0, 0, false
+		}
 	}
-	x := float64(whole)
-	if decimals > 0 {
-		x /= power(decimals)
+	if digits == 0 || digits > 15 {
+		return 0, 0, 0, false
 	}
+	return whole, decimals, i, negative
+}
+
+func signed(x float64, negative bool) float64 {
 	if negative {
-		x = -x
+		return -x
 	}
-	return x, true
+	return x
 }
 
 // anyDecimal reads the whole grammar.

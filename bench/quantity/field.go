@@ -85,6 +85,7 @@ const overflow = 9.9e37
 type Parser struct {
 	f     Field
 	plain bool // the whole line is the number
+	tens  [16]float64
 	unit  string
 	check *checksum.Algorithm
 	frame *FrameReader
@@ -115,6 +116,7 @@ func (p *Parser) prepare(f *Field) (err error) {
 			return fmt.Errorf("%q is no checksum known here", f.Check.Name)
 		}
 	}
+	p.tens = powers()
 	p.plain = f.Separator == "" && !f.Cut && f.Prefix == "" && f.Suffix == "" && f.Length == 0 && f.Begins == "" &&
 		p.check == nil && !f.UnitInText && f.UnitAt == nil && f.StatusAt == nil && len(f.Over) == 0 && !f.Comma
 	return nil
@@ -154,6 +156,21 @@ func (p *Parser) Number(text string) (float64, error) {
 		return 0, fmt.Errorf("%q: %w", text, ErrOverRange)
 	}
 	return x, err
+}
+
+// Line reads the line that text begins with if all of it is a number and a CR
+// or LF follows, and returns the number and the line's length. The length is 0
+// for every other line, which Number may still be able to read: this is the
+// short way for fast streams, which looks at each character once.
+func (p *Parser) Line(text string) (x float64, length int) {
+	if !p.plain {
+		return 0, 0
+	}
+	whole, decimals, n, negative := leading(text, '.')
+	if n == 0 || n == len(text) || text[n] != '\n' && text[n] != '\r' || p.f.Width > 0 && n != p.f.Width {
+		return 0, 0
+	}
+	return signed(float64(whole)/p.tens[decimals&15], negative), n
 }
 
 func (p *Parser) decimal(s string) (float64, error) {
@@ -234,8 +251,11 @@ func (p *Parser) checked(text string) (string, error) {
 		return "", fmt.Errorf("%q is too short for its check value", text)
 	}
 	given := s[len(s)-n:]
-	if s, ok = strings.CutSuffix(s[:len(s)-n], f.Check.Mark); !ok || f.Check.Mark != "" && strings.Contains(s, f.Check.Mark) {
+	if s, ok = strings.CutSuffix(s[:len(s)-n], f.Check.Mark); !ok || f.Length == 0 && f.Check.Mark != "" && strings.Contains(s, f.Check.Mark) {
 		return "", fmt.Errorf("%q has not one %q, before its check value", text, f.Check.Mark)
+	}
+	if f.Length == 0 && f.Begins != "" && strings.Contains(s, f.Begins) {
+		return "", fmt.Errorf("%q has a second %q and no stated length: it could be the end of a longer line", text, f.Begins)
 	}
 	from, to := len(f.Begins), len(text)-n-len(f.Check.Mark)
 	if f.Check.CoversBegins {
@@ -351,7 +371,7 @@ func stretch(s string, start, width int) (part string, ok bool) {
 func saysOverRange(text string) bool {
 	word := strings.ToUpper(strings.Trim(text, " +-.\""))
 	switch word {
-	case "OL", "OVL", "OVLD", "OVFL", "OFL", "OVER", "OVERLOAD", "OVERFLOW", "OVERRANGE", "UNDER", "UNDERRANGE", "INF", "NAN":
+	case "OL", "OVL", "OVLD", "OVFL", "OFL", "OVER", "OVERLOAD", "OVERFLOW", "OVERRANGE", "UNDER", "UNDERRANGE":
 		return true
 	case "":
 		return strings.Contains(text, "-") && len(strings.Trim(text, " ")) > 2 // "-----"

@@ -88,6 +88,9 @@ type FrameReader struct {
 	size  int // of the check value, 0: none
 	check *checksum.Fixed
 	bits  int
+
+	quick  quick
+	simple bool // every bit pattern is a finite number and fine
 }
 
 // longestFrame is the most bytes of a frame.
@@ -142,7 +145,11 @@ func (f Frame) Reader() (*FrameReader, error) {
 	if inverse := math.Round(1 / r.scale); math.Abs(inverse) < 1e15 && inverse != 0 && 1/inverse == r.scale {
 		r.divide = inverse
 	}
-	return r, r.checking(f, used)
+	r.simple = r.number.kind != 'f' && len(f.Over) == 0 && f.Status == nil && !math.IsInf((1<<32)*math.Abs(r.scale)+math.Abs(f.Offset), 0)
+	if err := r.checking(f, used); err != nil {
+		return nil, err
+	}
+	return r, nil
 }
 
 // checking prepares for the check value. What it does not cover must be known
@@ -165,6 +172,7 @@ func (r *FrameReader) checking(f Frame, used []string) error {
 		return &FrameError{"check", "the check value does not stand at the end of the frame: nothing may follow it but the stated end"}
 	}
 	r.size, r.bits, r.check = a.Size(), 8*a.Size(), a.Fixed(f.CheckAt-f.CheckFrom)
+	r.quick = r.quickly()
 	return nil
 }
 
@@ -186,11 +194,13 @@ func occupy(used []string, part string, at, n int) error {
 type coder struct {
 	kind   byte // 'i', 'u', 'f'
 	size   int
+	spare  int    // bits of an int64 that it has not
+	plain  bool   // signed, its bytes in the order of places or against it
 	places [8]int // of the bytes, most significant first
 }
 
 func (l Layout) coder(part string) (coder, error) {
-	c := coder{size: l.Size()}
+	c := coder{size: l.Size(), spare: 64 - 8*l.Size()}
 	if c.size == 0 {
 		return c, &FrameError{part, fmt.Sprintf("%q is no type of number known here", l.Type)}
 	}
@@ -211,6 +221,7 @@ func (l Layout) coder(part string) (coder, error) {
 		}
 		c.places[i] = l.At + place
 	}
+	c.plain = c.kind == 'i' && !swapped
 	return c, nil
 }
 
@@ -227,8 +238,7 @@ func (c *coder) bits(data []byte) uint64 {
 func (c *coder) whole(data []byte) int64 {
 	x := c.bits(data)
 	if c.kind == 'i' {
-		shift := 64 - 8*c.size
-		return int64(x<<shift) >> shift
+		return int64(x<<c.spare) >> c.spare
 	}
 	return int64(x)
 }
@@ -310,16 +320,17 @@ func (r *FrameReader) Number(data []byte) (float64, error) {
 			return 0, fmt.Errorf("% X: status %d: %w", data, status, ErrStatus)
 		}
 	}
-	if r.divide != 0 {
-		x /= r.divide
-	} else {
-		x *= r.scale
-	}
-	x += r.frame.Offset
-	if math.IsInf(x, 0) {
+	if x = r.scaled(x); math.IsInf(x, 0) {
 		return 0, fmt.Errorf("% X holds a number that is too large", data)
 	}
 	return x, nil
+}
+
+func (r *FrameReader) scaled(x float64) float64 {
+	if r.divide != 0 {
+		return x/r.divide + r.frame.Offset
+	}
+	return x*r.scale + r.frame.Offset
 }
 
 // errNoFrame is for a text that is no frame of the stated length.

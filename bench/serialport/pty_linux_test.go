@@ -102,7 +102,7 @@ func TestDriversOnPorts(t *testing.T) {
 		t.Fatal(err)
 	}
 	next := 0
-	stream.Watch(func(r bench.Reading, err error) error {
+	stream.Watch(func(r *bench.Reading, err error) error {
 		if err != nil || r.Value.Stated != float64(next) {
 			return fmt.Errorf("%d expected: %+v, %w", next, r, err)
 		}

@@ -29,24 +29,39 @@ type File struct {
 
 	Reference Reference
 	UUT       UUT
+	Applied   *Applied // nil when it is not measured
 	Readout   *Readout // nil when the UUT puts out pressure
 	Others    []Place  // further UUTs on the same manifold
 	Pressure  Source
 	Valve     Valve
 }
 
-// Dialogue is what every asked instrument has.
+// Dialogue is the port of an instrument and how it is asked.
 type Dialogue struct {
-	Name     string
-	Family   string
-	Port     string
+	Name   string
+	Family string
+	Mode   string // "asked" or "free-running"; "" of a relay
+	Port   string
+	PortMode
+	Terminator   string // "" is LF
+	Echo         bool
+	Identify     string // question, "" when it cannot be asked
+	Identity     string // the answer expected
+	Uptime       string // question, "" when it cannot be asked
+	Clear        string
+	Errors       string
+	Acknowledged string // what commands are answered, "" when nothing is
+	Within       time.Duration
+	Station      int    // of Modbus
+	Order        string // of the bytes of its numbers
+}
+
+// PortMode is how characters go over a port.
+type PortMode struct {
 	Baud     int
-	Identify string // question
-	Identity string // the answer expected
-	Uptime   string // question, "" when it cannot be asked
-	Clear    string
-	Errors   string
-	Within   time.Duration
+	DataBits int    // 7 or 8
+	Parity   string // "none", "odd", "even", "mark" or "space"
+	StopBits int    // 1 or 2
 }
 
 // Reference is the reference manometer.
@@ -77,15 +92,21 @@ type Correction struct{ At, Correction string }
 
 // UUT is how the output of the unit under test is read.
 type UUT struct {
-	Family string
-	Port   string
-	Baud   int
-	Field  quantity.Field
+	Dialogue
+	Read  string // question, "" when it sends by itself
+	Field quantity.Field
 
 	Resolution, SamplePeriod, SamplePeriodTolerance, Excitation, NominalSensitivity string
 	Height, HeightUncertainty, Fluid, Delay, DelayUncertainty                       string
 
 	FluidDensity float64 // kg/m3, 0 when no fluid is named
+}
+
+// Applied is the applied pressure, measured where the step enters, on the UUT's
+// converter clock.
+type Applied struct {
+	Field      quantity.Field
+	Resolution string
 }
 
 // Place is one place on the manifold for a UUT.

@@ -6,10 +6,10 @@ import (
 	"encoding/hex"
 	"fmt"
 	"path/filepath"
-	"slices"
 	"strings"
 	"time"
 
+	"kymobench/bench/instruments/modbus"
 	"kymobench/bench/quantity"
 	"kymobench/bench/tomlfile"
 )
@@ -27,6 +27,7 @@ type benchFile struct {
 	Reference  *instrument    `toml:"reference"`
 	UUT        *uutTable      `toml:"uut"`
 	Others     []otherTable   `toml:"another_uut"`
+	Applied    *appliedTable  `toml:"applied"`
 	Readout    *readoutTable  `toml:"readout"`
 	Source     *instrument    `toml:"source"`
 	Valve      *instrument    `toml:"valve"`
@@ -38,23 +39,13 @@ type pressureTable struct {
 	Volume  string `toml:"volume"`
 }
 
-// instrument holds the keys of every asked instrument; keysOf says which of
-// them a role has.
+// instrument holds the keys of every role but that of the UUT; keysOf and roles
+// say which of them a table may have.
 type instrument struct {
-	Name         string `toml:"name"`
-	Family       string `toml:"family"`
-	Port         string `toml:"port"`
-	Baud         int    `toml:"baud"`
-	Identify     string `toml:"identify"`
-	Identity     string `toml:"identity"`
-	Uptime       string `toml:"uptime"`
-	Clear        string `toml:"clear"`
-	Errors       string `toml:"errors"`
-	AnswerWithin string `toml:"answer_within"`
+	wireKeys
+	numberKeys
+	Name string `toml:"name"`
 
-	Read                  string            `toml:"read"`
-	Unit                  string            `toml:"unit"`
-	UnitInText            bool              `toml:"unit_in_text"`
 	Zero                  string            `toml:"zero"`
 	Resolution            string            `toml:"resolution"`
 	ResponseTime          string            `toml:"response_time"`
@@ -75,30 +66,15 @@ type instrument struct {
 }
 
 type readoutTable struct {
-	Name            string  `toml:"name"`
-	Family          string  `toml:"family"`
-	Port            string  `toml:"port"`
-	Baud            int     `toml:"baud"`
-	Identify        string  `toml:"identify"`
-	Identity        string  `toml:"identity"`
-	Uptime          string  `toml:"uptime"`
-	Clear           string  `toml:"clear"`
-	Errors          string  `toml:"errors"`
-	AnswerWithin    string  `toml:"answer_within"`
-	GainUncertainty string  `toml:"gain_uncertainty"`
-	ZeroUncertainty string  `toml:"zero_uncertainty"`
-	Excitation      string  `toml:"excitation_uncertainty"`
-	CoverageFactor  float64 `toml:"coverage_factor"`
-	Certificate     string  `toml:"certificate"`
-	Due             string  `toml:"due"`
-
-	Filters []string `toml:"filters"`
-}
-
-// dialogue is the part that every asked instrument has.
-func (r *readoutTable) dialogue() *instrument {
-	return &instrument{Name: r.Name, Family: r.Family, Port: r.Port, Baud: r.Baud, Identify: r.Identify, Identity: r.Identity,
-		Uptime: r.Uptime, Clear: r.Clear, Errors: r.Errors, AnswerWithin: r.AnswerWithin}
+	wireKeys
+	Name            string   `toml:"name"`
+	GainUncertainty string   `toml:"gain_uncertainty"`
+	ZeroUncertainty string   `toml:"zero_uncertainty"`
+	Excitation      string   `toml:"excitation_uncertainty"`
+	CoverageFactor  float64  `toml:"coverage_factor"`
+	Certificate     string   `toml:"certificate"`
+	Due             string   `toml:"due"`
+	Filters         []string `toml:"filters"`
 }
 
 type certificateTable struct {
@@ -122,17 +98,8 @@ type correctionTable struct {
 }
 
 type uutTable struct {
-	Family                string `toml:"family"`
-	Mode                  string `toml:"mode"`
-	Port                  string `toml:"port"`
-	Baud                  int    `toml:"baud"`
-	Unit                  string `toml:"unit"`
-	Width                 int    `toml:"width"`
-	Separator             string `toml:"separator"`
-	Column                int    `toml:"column"`
-	Prefix                string `toml:"prefix"`
-	Suffix                string `toml:"suffix"`
-	UnitInText            bool   `toml:"unit_in_text"`
+	wireKeys
+	numberKeys
 	Resolution            string `toml:"resolution"`
 	SamplePeriod          string `toml:"sample_period"`
 	SamplePeriodTolerance string `toml:"sample_period_tolerance"`
@@ -143,6 +110,18 @@ type uutTable struct {
 	Fluid                 string `toml:"fluid"`
 	Delay                 string `toml:"delay"`
 	DelayUncertainty      string `toml:"delay_uncertainty"`
+}
+
+// appliedTable is the applied pressure, a second number in the UUT's frames or
+// lines.
+type appliedTable struct {
+	Unit       string   `toml:"unit"`
+	Resolution string   `toml:"resolution"`
+	Column     int      `toml:"column"`
+	Number     string   `toml:"number"`
+	Scale      float64  `toml:"scale"`
+	Offset     float64  `toml:"offset"`
+	OverRange  []string `toml:"over_range"`
 }
 
 // otherTable is a further UUT on the manifold: what it does not state is as in
@@ -187,6 +166,7 @@ func Load(name string, data []byte) (*File, error) {
 	f.Volume = tomlfile.TakeIf(doc, &l.err, millilitres, "pressure", "volume")
 	l.reference(f)
 	l.uut(f)
+	l.applied(f)
 	l.readout(f)
 	l.others(f)
 	l.source(f)
@@ -214,53 +194,6 @@ func (l *loader) tables() {
 			l.refuse(l.doc.Missing("a table ["+name+"]", name))
 		}
 	}
-	common := "name family port baud identify identity uptime clear errors answer_within "
-	for _, of := range []struct{ role, keys string }{
-		{"reference", "read unit unit_in_text zero resolution response_time response_time_tolerance range_low range_high height certificate"},
-		{"source", "set hold vent"},
-		{"valve", "release shut edge_time edge_time_tolerance"},
-	} {
-		role, known := of.role, strings.Fields(common+of.keys)
-		for _, key := range l.doc.Keys(role) {
-			if l.err == nil && !slices.Contains(known, key) {
-				l.refuse(l.doc.RefuseKey(fmt.Sprintf("the %s has no key %q", role, key), tomlfile.DidYouMean(key, known), role, key))
-			}
-		}
-	}
-}
-
-// dialogue takes what every asked instrument has, at a path of the file. A
-// readout without a port cannot be asked, so it has no questions either.
-func (l *loader) dialogue(role string, in *instrument, d *Dialogue, path ...any) {
-	at := func(name string) []any { return append(slices.Clone(path), name) }
-	*d = Dialogue{Name: in.Name, Baud: in.Baud}
-	if d.Name == "" {
-		d.Name = role
-	} else {
-		l.check(tomlfile.LongestIdentity, at("name")...)
-	}
-	if role == "readout" && !l.doc.Has(at("port")...) {
-		for _, key := range []string{"family", "baud", "identify", "identity", "uptime", "clear", "errors", "answer_within"} {
-			l.demand(!l.doc.Has(at(key)...), fmt.Sprintf("%s of a readout that has no port", key), "state its port, or leave this out", at(key)...)
-		}
-		return
-	}
-	d.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"scpi"}, at("family")...)
-	d.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, at("port")...)
-	d.Identify = tomlfile.TakeText(l.doc, &l.err, longestCommand, at("identify")...)
-	d.Identity = tomlfile.TakeText(l.doc, &l.err, longestCommand, at("identity")...)
-	d.Uptime = l.command(at("uptime")...)
-	d.Clear = l.command(at("clear")...)
-	d.Errors = l.command(at("errors")...)
-	d.Baud = l.baud(in.Baud, path...)
-	d.Within = 2 * time.Second
-	if l.doc.Has(at("answer_within")...) {
-		within := quantity.Span(l.optional(quantity.DimSpan, at("answer_within")...))
-		l.demand(within >= 1e-3 && within <= 60, "an answer is waited for between 1 ms and 60 s", "", at("answer_within")...)
-		if l.err == nil {
-			d.Within = within.Duration()
-		}
-	}
 }
 
 const (
@@ -273,25 +206,31 @@ func (l *loader) command(path ...any) string {
 	if !l.doc.Has(path...) {
 		return ""
 	}
-	return tomlfile.TakeText(l.doc, &l.err, longestCommand, path...)
+	return l.told(path...)
 }
 
-// baud gives 9600 where none is stated.
-func (l *loader) baud(stated int, path ...any) int {
-	path = append(slices.Clone(path), "baud")
-	if !l.doc.Has(path...) {
-		return 9600
+// told takes a line to be sent.
+func (l *loader) told(path ...any) string {
+	text := tomlfile.TakeText(l.doc, &l.err, longestCommand, path...)
+	if l.err != nil {
+		return ""
 	}
-	l.demand(stated >= 50 && stated <= 12_000_000, "no serial port has that rate", "usual rates are 9600 and 115200", path...)
-	return stated
+	out, err := controls(text)
+	if err != nil {
+		l.refuse(l.doc.Refuse(err.Error(), "", path...))
+	}
+	return out
 }
 
 func (l *loader) reference(f *File) {
 	in, r := l.file.Reference, &f.Reference
-	l.dialogue("reference", in, &r.Dialogue, "reference")
-	r.Read = tomlfile.TakeText(l.doc, &l.err, longestCommand, "reference", "read")
+	l.dialogue("reference", in.Name, &in.wireKeys, &r.Dialogue, "reference")
+	l.unit(quantity.DimPressure, "reference", "unit")
+	r.Read, r.Field = l.number(&in.numberKeys, &r.Dialogue, "reference")
 	r.Zero = l.command("reference", "zero")
-	r.Field = quantity.Field{Unit: l.unit(quantity.DimPressure, "reference", "unit"), UnitInText: in.UnitInText}
+	if r.Zero != "" && r.Family == familyModbus {
+		l.sentence(command, "reference", "zero")
+	}
 	r.Resolution = l.above(quantity.DimPressure, "reference", "resolution")
 	r.ResponseTime = l.width(quantity.DimSpan, "reference", "response_time")
 	r.ResponseTimeTolerance = l.widthIf(quantity.DimSpan, "reference", "response_time_tolerance")
@@ -334,6 +273,34 @@ func (l *loader) certificate(in *certificateTable, out *Certificate) {
 		before = here
 		out.Corrections = append(out.Corrections, Correction(p))
 	}
+}
+
+// number takes the question, if there is one, and where the number stands in
+// what comes.
+func (l *loader) number(in *numberKeys, d *Dialogue, path ...any) (read string, f quantity.Field) {
+	if l.err != nil {
+		return "", f
+	}
+	if d.Mode == modeAsked {
+		read = l.told(to(path, "read")...)
+	}
+	switch d.Family {
+	case familyFrames:
+		return "", l.frameField(in, path...)
+	case familyModbus:
+		l.scale(in, path...)
+		l.sentence(question, to(path, "read")...)
+		over := l.wholes(in.OverRange, to(path, "over_range")...)
+		if l.err != nil {
+			return read, f
+		}
+		f, err := modbus.Settings{Station: d.Station, Order: d.Order, Read: read, Unit: in.Unit, Scale: in.Scale, Offset: in.Offset, OverRange: over}.Field()
+		if err != nil {
+			l.refuse(l.doc.Refuse(err.Error(), "", to(path, "read")...))
+		}
+		return read, f
+	}
+	return read, l.textField(in, path...)
 }
 
 // coverage takes a coverage factor, which is not absent.

@@ -5,8 +5,6 @@ import (
 	"fmt"
 
 	"kymobench/bench"
-	"kymobench/bench/instruments/lines"
-	"kymobench/bench/instruments/scpi"
 	"kymobench/bench/line"
 )
 
@@ -16,7 +14,7 @@ type Opener interface {
 	Inbox() line.Inbox
 	// Connect opens the port of that name under an id, also once more when it
 	// has gone.
-	Connect(id line.PortID, name string, baud int) error
+	Connect(id line.PortID, name string, mode PortMode) error
 	// Close ends every port.
 	Close() error
 }
@@ -37,7 +35,7 @@ type opened struct {
 	role string
 	uut  int // index of the UUT, or -1
 	port string
-	baud int
+	mode PortMode
 }
 
 // opening is the work of opening a file's instruments.
@@ -46,7 +44,7 @@ type opening struct {
 	engine *line.Engine
 	ports  []opened // that of PortID i+1 is ports[i]
 	asked  []lateAsked
-	shared map[string]*lines.Port
+	shared map[string]channels
 }
 
 // lateAsked is an instrument that several UUTs share.
@@ -55,51 +53,26 @@ type lateAsked struct {
 	who  bench.Identified
 }
 
-func (w *opening) connect(role string, uut int, port string, baud int) (*line.Line, error) {
-	id := line.PortID(len(w.ports) + 1)
-	if err := w.o.Connect(id, port, baud); err != nil {
-		return nil, fmt.Errorf("open the %s on %s: %w", role, port, err)
-	}
-	l := w.engine.Open(id, line.Settings{Name: role + " on " + port})
-	w.ports = append(w.ports, opened{l, role, uut, port, baud})
-	return l, nil
-}
-
-// dialogue opens the line of an instrument that is asked.
-func (w *opening) dialogue(role string, uut int, d Dialogue) (*line.Line, scpi.Settings, error) {
-	l, err := w.connect(role, uut, d.Port, d.Baud)
-	return l, scpi.Settings{Identify: d.Identify, Identity: d.Identity, Uptime: d.Uptime, Clear: d.Clear, Errors: d.Errors, Within: d.Within}, err
-}
-
 func (f *File) open(o Opener) (*bench.Rig, error) {
-	w := &opening{o: o, engine: line.NewEngine(o.Inbox()), shared: map[string]*lines.Port{}}
+	w := &opening{o: o, engine: line.NewEngine(o.Inbox()), shared: map[string]channels{}}
 	rig := &bench.Rig{Engine: w.engine, Inbox: o.Inbox(), Close: o.Close, Role: w.role, Reconnect: w.reconnect, Moved: w.moved}
-	l, s, err := w.dialogue("reference", -1, f.Reference.Dialogue)
-	if err != nil {
+	var err error
+	r := f.Reference
+	if rig.Reference, err = w.manometer("reference", -1, r.Dialogue, r.Read, r.Zero, r.Field); err != nil {
 		return nil, err
 	}
-	s.Read, s.Field, s.Zero = f.Reference.Read, f.Reference.Field, f.Reference.Zero
-	rig.Reference = scpi.New(l, s)
 	for i, p := range f.Places() {
-		u, err := w.uut(i, p)
+		u, err := w.uut(i, p, f.Applied)
 		if err != nil {
 			return nil, err
 		}
 		rig.UUTs = append(rig.UUTs, u)
 	}
-	if l, s, err = w.dialogue("pressure source", -1, f.Pressure.Dialogue); err != nil {
-		return nil, err
-	}
-	source, err := scpi.NewSource(l, scpi.SourceSettings{
-		Settings: s, Set: f.Pressure.Set, Hold: f.Pressure.Hold, Vent: f.Pressure.Vent, Lowest: f.Lowest, Highest: f.Highest,
-	})
+	source, err := w.source(f)
 	if err != nil {
 		return nil, err
 	}
-	if l, s, err = w.dialogue("valve", -1, f.Valve.Dialogue); err != nil {
-		return nil, err
-	}
-	valve, err := scpi.NewValve(l, scpi.ValveSettings{Settings: s, Release: f.Valve.Release, Shut: f.Valve.Shut})
+	valve, err := w.valve(f)
 	if err != nil {
 		return nil, err
 	}
@@ -113,7 +86,7 @@ func (f *File) open(o Opener) (*bench.Rig, error) {
 
 // uut opens the stream and the readout of one place. UUTs may share a port,
 // each in a column of its lines, and a readout.
-func (w *opening) uut(i int, p Place) (bench.UUT, error) {
+func (w *opening) uut(i int, p Place, applied *Applied) (bench.UUT, error) {
 	u := bench.UUT{Name: p.Name}
 	of := func(what string) string {
 		if p.Name == "" {
@@ -121,20 +94,27 @@ func (w *opening) uut(i int, p Place) (bench.UUT, error) {
 		}
 		return what + " " + p.Name
 	}
-	port := w.shared[p.UUT.Port]
-	if u.SamePort = port != nil; !u.SamePort {
-		l, err := w.connect(of("UUT"), i, p.UUT.Port, p.UUT.Baud)
+	if p.UUT.Mode == modeAsked {
+		var err error
+		u.Asked, err = w.manometer(of("UUT"), i, p.UUT.Dialogue, p.UUT.Read, "", p.UUT.Field)
 		if err != nil {
 			return u, err
 		}
-		port = lines.NewPort(l)
-		w.shared[p.UUT.Port] = port
+	} else {
+		port, shared, err := w.stream(of("UUT"), i, p.UUT.Dialogue)
+		if err != nil {
+			return u, err
+		}
+		u.SamePort = shared
+		if u.Stream, err = port.channel(p.UUT.Field); err != nil {
+			return u, err
+		}
+		if applied != nil && i == 0 {
+			if u.Applied, err = port.channel(applied.Field); err != nil {
+				return u, err
+			}
+		}
 	}
-	stream, err := port.Instrument(lines.Settings{Field: p.UUT.Field})
-	if err != nil {
-		return u, err
-	}
-	u.Stream = stream
 	if p.Readout == nil || p.Readout.Port == "" {
 		return u, nil
 	}
@@ -144,11 +124,10 @@ func (w *opening) uut(i int, p Place) (bench.UUT, error) {
 			return u, nil
 		}
 	}
-	l, s, err := w.dialogue(of("readout"), i, p.Readout.Dialogue)
-	if err != nil {
+	var err error
+	if u.Readout, err = w.identified(of("readout"), i, p.Readout.Dialogue); err != nil {
 		return u, err
 	}
-	u.Readout = scpi.New(l, s)
 	w.asked = append(w.asked, lateAsked{p.Readout.Port, u.Readout})
 	return u, nil
 }
@@ -175,7 +154,7 @@ func (w *opening) reconnect(id line.PortID, name string) error {
 	if name == "" {
 		name = p.port
 	}
-	if err := w.o.Connect(id, name, p.baud); err != nil {
+	if err := w.o.Connect(id, name, p.mode); err != nil {
 		return fmt.Errorf("open the %s on %s once more: %w", p.role, name, err)
 	}
 	p.port = name

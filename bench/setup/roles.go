@@ -4,112 +4,14 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"slices"
 	"strconv"
 	"strings"
 
+	"kymobench/bench/instruments/modbus"
+	"kymobench/bench/instruments/relay"
 	"kymobench/bench/quantity"
 	"kymobench/bench/tomlfile"
 )
-
-func (l *loader) uut(f *File) {
-	in, u := l.file.UUT, &f.UUT
-	u.Family = tomlfile.TakeWord(l.doc, &l.err, []string{"lines"}, "uut", "family")
-	tomlfile.TakeWord(l.doc, &l.err, []string{"free-running"}, "uut", "mode")
-	u.Port = tomlfile.TakeText(l.doc, &l.err, longestPort, "uut", "port")
-	u.Baud = l.baud(in.Baud, "uut")
-	unit := tomlfile.Take(l.doc, &l.err, output, "uut", "unit")
-	u.Field = quantity.Field{
-		Separator: in.Separator, Column: in.Column, Prefix: in.Prefix, Suffix: in.Suffix, Width: in.Width, UnitInText: in.UnitInText, Unit: in.Unit,
-	}
-	l.demand(in.Width >= 0 && in.Width <= 32, "a number has 1 to 32 characters", "leave width out if it varies", "uut", "width")
-	l.demand(in.Column >= 0 && in.Column <= 64, "columns are counted from 0 to 64", "", "uut", "column")
-	l.demand(in.Column == 0 || in.Separator != "", "a column without a separator", `separator = ","`, "uut", "column")
-	u.Resolution = l.above(unit.Dimension, "uut", "resolution")
-	u.SamplePeriod = l.above(quantity.DimSpan, "uut", "sample_period")
-	u.SamplePeriodTolerance = l.widthIf(quantity.DimNone, "uut", "sample_period_tolerance")
-	u.Height = l.stated(quantity.DimLength, "uut", "height")
-	u.HeightUncertainty = l.widthIf(quantity.DimLength, "uut", "height_uncertainty")
-	u.Delay = l.widthIf(quantity.DimSpan, "uut", "delay")
-	u.DelayUncertainty = l.widthIf(quantity.DimSpan, "uut", "delay_uncertainty")
-	if unit.Dimension != quantity.DimPressure || l.doc.Has("uut", "nominal_sensitivity") {
-		u.NominalSensitivity = l.above(quantity.DimSensitivity, "uut", "nominal_sensitivity")
-	}
-	if unit.Dimension == quantity.DimVoltage || l.doc.Has("uut", "excitation") {
-		u.Excitation = l.above(quantity.DimVoltage, "uut", "excitation")
-	}
-	if l.doc.Has("uut", "fluid") {
-		u.Fluid = tomlfile.TakeWord(l.doc, &l.err, []string{"water", "saline", "air"}, "uut", "fluid")
-		u.FluidDensity = fluidDensity(u.Fluid)
-	}
-	level := l.optional(quantity.DimLength, "uut", "height") == l.optional(quantity.DimLength, "reference", "height")
-	l.demand(level || u.Fluid != "", "the UUT is not level with the reference, and no fluid is named", `fluid = "water"`, "uut", "height")
-	l.rate(u)
-}
-
-// output takes a unit that a UUT can put out.
-func output(s string) (quantity.Unit, error) {
-	u, ok := quantity.UnitNamed(s)
-	if !ok || u.Dimension != quantity.DimPressure && u.Dimension != quantity.DimRatio && u.Dimension != quantity.DimVoltage {
-		return quantity.Unit{}, fmt.Errorf("%q is no unit of pressure, voltage or bridge output, such as mmHg, kPa, mV or uV/V", s)
-	}
-	return u, nil
-}
-
-// rate refuses a stream that the line cannot carry at 80 % duty: ten bits a
-// byte, the number's width and a terminator of two bytes. Source: 8N1 has ten
-// bits; the share is the program's own margin.
-func (l *loader) rate(u *UUT) {
-	period := l.optional(quantity.DimSpan, "uut", "sample_period")
-	if l.err != nil || u.Field.Width == 0 {
-		return
-	}
-	bytes := float64(u.Field.Width + len(u.Field.Prefix) + len(u.Field.Suffix) + 2)
-	if u.Field.UnitInText {
-		bytes += float64(len(u.Field.Unit))
-	}
-	most := 0.8 * float64(u.Baud) / 10 / bytes
-	if 1/period > most {
-		l.refuse(l.doc.Refuse(fmt.Sprintf("%.0f samples a second of %.0f bytes do not fit %d baud: %.0f at most, at 80 %% of the line",
-			1/period, bytes, u.Baud, most), "a higher baud rate or a longer sample period", "uut", "sample_period"))
-	}
-}
-
-func (l *loader) readout(f *File) {
-	in := l.file.Readout
-	unit, _ := quantity.UnitNamed(f.UUT.Field.Unit)
-	if in == nil {
-		l.demand(unit.Dimension == quantity.DimPressure, "a UUT that puts out a voltage or a ratio needs a table [readout]: its error is not the UUT's", "", "uut", "unit")
-		return
-	}
-	l.demand(unit.Dimension != quantity.DimPressure, "a UUT that puts out pressure has no readout of the bench's", "leave out [readout]", "readout")
-	f.Readout = l.readoutAt(in, unit, "readout")
-}
-
-// mostFilters of one readout.
-const mostFilters = 8
-
-// readoutAt takes the readout that stands at a path.
-func (l *loader) readoutAt(in *readoutTable, unit quantity.Unit, path ...any) *Readout {
-	key := func(name string) []any { return append(slices.Clone(path), name) }
-	r := &Readout{}
-	l.dialogue("readout", in.dialogue(), &r.Dialogue, path...)
-	r.GainUncertainty = l.width(quantity.DimNone, key("gain_uncertainty")...)
-	r.ZeroUncertainty = l.width(unit.Dimension, key("zero_uncertainty")...)
-	r.ExcitationUncertainty = l.widthIf(quantity.DimNone, key("excitation_uncertainty")...)
-	r.CoverageFactor = l.coverage(in.CoverageFactor, key("coverage_factor")...)
-	r.Certificate = l.text(key("certificate")...)
-	r.Due = tomlfile.Take(l.doc, &l.err, day, key("due")...)
-	r.FiltersStated = l.doc.Has(key("filters")...)
-	l.demand(len(in.Filters) <= mostFilters, fmt.Sprintf("more than %d filters", mostFilters), "", key("filters")...)
-	for i := range in.Filters {
-		r.Filters = append(r.Filters, tomlfile.Take(l.doc, &l.err, func(s string) (string, error) {
-			_, err := quantity.ParseFilter(s)
-			return s, err
-		}, append(key("filters"), i)...))
-	}
-	return r
-}
 
 // others takes the further UUTs of the manifold: each is as [uut] says but for
 // what it states itself.
@@ -150,17 +52,40 @@ func (l *loader) others(f *File) {
 }
 
 func (l *loader) source(f *File) {
-	l.dialogue("source", l.file.Source, &f.Pressure.Dialogue, "source")
-	f.Pressure.Set = tomlfile.Take(l.doc, &l.err, placeholder, "source", "set")
-	f.Pressure.Hold = tomlfile.TakeText(l.doc, &l.err, longestCommand, "source", "hold")
-	f.Pressure.Vent = tomlfile.TakeText(l.doc, &l.err, longestCommand, "source", "vent")
+	in := l.file.Source
+	l.dialogue("source", in.Name, &in.wireKeys, &f.Pressure.Dialogue, "source")
+	f.Pressure.Set = l.told("source", "set")
+	f.Pressure.Hold = l.told("source", "hold")
+	f.Pressure.Vent = l.told("source", "vent")
+	if f.Pressure.Family != familyModbus {
+		tomlfile.Take(l.doc, &l.err, placeholder, "source", "set")
+		return
+	}
+	for _, key := range []string{"set", "hold", "vent"} {
+		l.sentence(func(s string) error {
+			c, err := modbus.ParseCommand(s)
+			if err == nil && (c.Unit.Name != "") != (key == "set") {
+				err = fmt.Errorf("%q: set, and only set, has a place for the pressure, as in \"holding 10 float32 = {kPa}\"", s)
+			}
+			return err
+		}, "source", key)
+	}
 }
 
 func (l *loader) valve(f *File) {
-	l.dialogue("valve", l.file.Valve, &f.Valve.Dialogue, "valve")
-	f.Valve.Release = tomlfile.TakeText(l.doc, &l.err, longestCommand, "valve", "release")
-	f.Valve.Shut = tomlfile.TakeText(l.doc, &l.err, longestCommand, "valve", "shut")
+	in := l.file.Valve
+	l.dialogue("valve", in.Name, &in.wireKeys, &f.Valve.Dialogue, "valve")
+	f.Valve.Release = l.told("valve", "release")
+	f.Valve.Shut = l.told("valve", "shut")
 	l.demand(f.Valve.Release != f.Valve.Shut, "the valve is shut by the command that opens it", "", "valve", "shut")
+	for _, key := range []string{"release", "shut"} {
+		switch f.Valve.Family {
+		case familyModbus:
+			l.sentence(command, "valve", key)
+		case familyRelay:
+			l.sentence(func(s string) error { _, err := relay.ParseStroke(s); return err }, "valve", key)
+		}
+	}
 	f.Valve.EdgeTime = l.width(quantity.DimSpan, "valve", "edge_time")
 	f.Valve.EdgeTimeTolerance = l.widthIf(quantity.DimNone, "valve", "edge_time_tolerance")
 }

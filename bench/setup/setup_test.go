@@ -45,7 +45,7 @@ func TestLoadRefuses(t *testing.T) {
 		{`baud = 230400`, `baud = 9600`, "do not fit"},
 		{`set = "SOUR:PRES {mmHg}"`, `set = "SOUR:PRES"`, "one place for the pressure"},
 		{`coverage_factor = 2.0`, `coverage_factor = 0.5`, "coverage factor"},
-		{`mode = "free-running"`, `mode = "asked"`, "asked"},
+		{`mode = "free-running"`, `mode = "ask"`, "ask"},
 		{`fluid = "water"`, `fluid = "watr"`, "watr"},
 		{`port = "valve"`, `port = "source"`, "port"},
 		{`edge_time = "2 ms"`, `edge_time = "2 mmHg"`, "2 mmHg"},

@@ -33,18 +33,8 @@ volume = "60 mL"
 
 [reference]
 name = "reference manometer"
-family = "scpi"
 port = %s
-baud = 9600
-identify = "*IDN?"
-identity = %s
-uptime = "SYST:UPT?"
-clear = "*CLS"
-errors = "SYST:ERR?"
-read = "MEAS:PRES?"
-unit = "mmHg"
-zero = "CAL:ZERO"
-resolution = "%g mmHg"
+%sresolution = "%g mmHg"
 response_time = "0.3 s"
 response_time_tolerance = "0.1 s"
 range_low = "%g mmHg"
@@ -60,19 +50,15 @@ due = "%s"
 coverage_factor = %.1f
 uncertainty = "%g mmHg"
 uncertainty_of_reading = "%g %%"
-`, port(RoleReference), quoted(identityReference), referenceResolution, sourceLow, sourceHigh,
+`, port(RoleReference), b.referenceKeys(), referenceResolution, sourceLow, sourceHigh,
 		b.day(-91), b.day(273), certificateK, certificatePoint, certificateShare*100)
 	for i, c := range b.drawn.correction {
 		fmt.Fprintf(&w, "\n[[reference.certificate.correction]]\nat = \"%g mmHg\"\ncorrection = \"%.2f mmHg\"\n", nodeLow+nodeStep*float64(i), c)
 	}
 	fmt.Fprintf(&w, `
 [uut]
-family = "lines"
-mode = "free-running"
 port = %s
-baud = 230400
-unit = "uV/V"
-width = %d
+%sunit = "uV/V"
 resolution = "%g uV/V"
 sample_period = "1 ms"
 sample_period_tolerance = "%g %%"
@@ -99,34 +85,17 @@ due = "%s"
 filters = []
 
 [source]
-family = "scpi"
 port = %s
-baud = 9600
-identify = "*IDN?"
-identity = %s
-uptime = "SYST:UPT?"
-clear = "*CLS"
-errors = "SYST:ERR?"
-set = "SOUR:PRES {mmHg}"
-hold = "SOUR:HOLD"
-vent = "SOUR:VENT"
-
+%s
 [valve]
-family = "scpi"
 port = %s
-baud = 9600
-identify = "*IDN?"
-identity = %s
-clear = "*CLS"
-errors = "SYST:ERR?"
-release = "ROUT:OPEN"
-shut = "ROUT:CLOS"
-edge_time = "%g ms"
+%sedge_time = "%g ms"
 edge_time_tolerance = "%g %%"
-`, port(RoleUUT), lineLength-2, converterResolution, clockTolerance*100, nominal, heightSD,
+`, port(RoleUUT), b.uutKeys(), converterResolution, clockTolerance*100, nominal, heightSD,
 		port(RoleReadout), quoted(identityOfReadout(1)), readoutGain*100, readoutZero, readoutK, b.day(273),
-		port(RoleSource), quoted(identitySource),
-		port(RoleValve), quoted(identityValve), edge*1000, edgeTolerance*100)
+		port(RoleSource), b.sourceKeys(),
+		port(RoleValve), b.valveKeys(), edge*1000, edgeTolerance*100)
+	w.WriteString(b.appliedTable())
 	for i := range b.others {
 		fmt.Fprintf(&w, `
 [[another_uut]]

@@ -85,26 +85,34 @@ func (g *gauge) shows(t line.Instant) float64 {
 	return x
 }
 
-func newReference(v *volume, d drawn) *dialogue {
-	g := &gauge{
+func newGauge(v *volume, d drawn) *gauge {
+	return &gauge{
 		d: d, cursor: cursor{v: v},
 		noise: stream(d.seed, "reference noise"), zeroed: stream(d.seed, "reference zeroing"),
 	}
-	read := func(at line.Instant) func() string {
-		return func() string {
-			x := g.shows(at) + 0.02*g.noise.NormFloat64()
-			return signed(math.Round(x/referenceResolution) * referenceResolution)
-		}
+}
+
+// reading is what it shows at an instant, mmHg.
+func (g *gauge) reading(at line.Instant) float64 {
+	x := g.shows(at) + 0.02*g.noise.NormFloat64()
+	return math.Round(x/referenceResolution) * referenceResolution
+}
+
+// zero takes the present pressure for zero, unless it is far from it.
+func (g *gauge) zero(at line.Instant) *fault {
+	x := g.shows(at)
+	if math.Abs(x) > zeroWithin {
+		return &fault{-221, "Settings conflict"}
 	}
-	zero := func(at line.Instant, _ float64) *fault {
-		x := g.shows(at)
-		if math.Abs(x) > zeroWithin {
-			return &fault{-221, "Settings conflict"}
-		}
-		// The device averages a while; what noise that leaves stays.
-		g.taken += x + 0.003*g.zeroed.NormFloat64()
-		return nil
-	}
+	// The device averages a while; what noise that leaves stays.
+	g.taken += x + 0.003*g.zeroed.NormFloat64()
+	return nil
+}
+
+func newReference(v *volume, d drawn) *dialogue {
+	g := newGauge(v, d)
+	read := func(at line.Instant) func() string { return func() string { return signed(g.reading(at)) } }
+	zero := func(at line.Instant, _ float64) *fault { return g.zero(at) }
 	reference := newDialogue(v, d.seed, RoleReference, identityReference,
 		command{header: "MEASure:PRESsure?", ask: read, takes: [2]time.Duration{20 * time.Millisecond, 60 * time.Millisecond}},
 		command{header: "CALibration:ZERO", do: zero},

@@ -79,7 +79,7 @@ func TestReleaseOnTheWire(t *testing.T) {
 	for _, line2 := range []struct{ fn, zeta float64 }{{40, 0.4}, {12, 1.3}} {
 		d := quietly(func(d *drawn) { d.fn, d.zeta, d.clock = line2.fn, line2.zeta, 5e-5 })
 		v := newVolume(d)
-		u := newTransducer(v, newDiaphragm(d), d)
+		u := newTransducer(v, newDiaphragm(d), d, "")
 		v.set(0, 100)
 		out, now := emitUntil(t, u, line.Instant(4*time.Second))
 		v.strike(now, true)

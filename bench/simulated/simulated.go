@@ -80,6 +80,8 @@ type Settings struct {
 	// Others are the conditions of further UUTs on the same manifold, each with
 	// a line, a readout and draws of its own.
 	Others []string
+	// Families are the forms in which the instruments speak.
+	Families Families
 	// Today is the day its certificates are dated for, so that they hold; zero
 	// is that of its virtual start.
 	Today time.Time
@@ -173,6 +175,10 @@ func New(s Settings) (*Bench, error) {
 			return nil, fmt.Errorf("simulated bench: more than %d UUTs", MostUUTs)
 		}
 	}
+	var err error
+	if s.Families, err = s.Families.usual(); err != nil {
+		return nil, err
+	}
 	d := draw(s)
 	dia := newDiaphragm(d)
 	v := newVolume(d)
@@ -182,11 +188,11 @@ func New(s Settings) (*Bench, error) {
 		truth:     trueOf(d, dia),
 		committer: stream(s.Seed, "committer"),
 		machines: map[string]line.Machine{
-			RoleReference: newReference(v, d),
-			RoleUUT:       newTransducer(v, dia, d),
+			RoleReference: referenceAs(s.Families.Reference, v, d),
+			RoleUUT:       newTransducer(v, dia, d, s.Families.UUT),
 			RoleReadout:   newReadout(v, d, 1),
-			RoleSource:    newSource(v, d),
-			RoleValve:     newValve(v, d),
+			RoleSource:    sourceAs(s.Families.Source, v, d),
+			RoleValve:     valveAs(s.Families.Valve, v, d),
 		},
 	}
 	for i, condition := range s.Others {
@@ -194,7 +200,7 @@ func New(s Settings) (*Bench, error) {
 		d := draw(own)
 		d.edgeWidth = b.drawn.edgeWidth // the valve is the bench's
 		dia := newDiaphragm(d)
-		b.machines[numbered(RoleUUT, i+2)] = newTransducer(v, dia, d)
+		b.machines[numbered(RoleUUT, i+2)] = newTransducer(v, dia, d, s.Families.UUT)
 		b.machines[numbered(RoleReadout, i+2)] = newReadout(v, d, i+2)
 		b.others = append(b.others, UUT{
 			Condition: condition, SerialNumber: serialNumber(condition, s.Seed) + fmt.Sprintf("-%d", i+2), Model: b.Model(), Lot: b.Lot(), Truth: trueOf(d, dia),

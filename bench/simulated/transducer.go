@@ -71,6 +71,9 @@ type transducer struct {
 	line   oscillator
 	dia    *diaphragm
 	noise  *rand.Rand
+	put    func(out []byte, x float64) []byte // a sample on the wire
+
+	applied *rand.Rand // the noise of the applied pressure
 
 	period float64      // ns, the converter's true one
 	number int64        // of the next sample
@@ -99,13 +102,22 @@ func (u *transducer) flush() {
 	}
 }
 
-func newTransducer(v *volume, m *diaphragm, d drawn) *transducer {
+func newTransducer(v *volume, m *diaphragm, d drawn, form string) *transducer {
 	u := &transducer{
 		v: v, d: d, cursor: cursor{v: v}, dia: m, noise: stream(d.seed, "converter noise"),
 		period: float64(samplePeriod) * (1 + d.clock),
 		burst:  line.Instant(d.burstPhase),
 	}
 	u.line.tune(d.fn, d.zeta, u.period/1e9)
+	switch u.put = appendOutput; form {
+	case "checked":
+		u.put = appendChecked
+	case "frames":
+		u.applied = stream(d.seed, "applied noise")
+		u.put = func(out []byte, x float64) []byte {
+			return appendFrame(out, uint8(u.number), x, u.input+appliedNoise*u.applied.NormFloat64())
+		}
+	}
 	return u
 }
 
@@ -115,7 +127,7 @@ func (u *transducer) Receive(at line.Instant, _ []byte) { u.v.advance(at) }
 // Due names the next burst.
 func (u *transducer) Due() (line.Instant, bool) { return u.burst, true }
 
-// Emit returns the lines of all samples converted since the last burst.
+// Emit returns the lines or frames of all samples converted since the last burst.
 func (u *transducer) Emit(at line.Instant) []byte {
 	u.v.advance(at)
 	if at < u.burst {
@@ -129,7 +141,7 @@ func (u *transducer) Emit(at line.Instant) []byte {
 		if t > until {
 			return out
 		}
-		out = appendOutput(out, u.sample(t))
+		out = u.put(out, u.sample(t))
 		u.number++
 	}
 }

@@ -57,17 +57,8 @@ func (d *Document) checkNode(n *node, t reflect.Type, path []any) error {
 }
 
 func (d *Document) checkTable(n *node, t reflect.Type, path []any) error {
-	known := make([]string, 0, t.NumField())
 	fields := make(map[string]reflect.Type, t.NumField())
-	for i := range t.NumField() {
-		f := t.Field(i)
-		tag, _, _ := strings.Cut(f.Tag.Get("toml"), ",")
-		if tag == "" {
-			panic("tomlfile: field " + f.Name + " has no toml tag")
-		}
-		known = append(known, tag)
-		fields[tag] = f.Type
-	}
+	known := fieldsOf(t, fields, nil)
 	for _, key := range n.keys {
 		field, ok := fields[key]
 		if !ok {
@@ -78,6 +69,25 @@ func (d *Document) checkTable(n *node, t reflect.Type, path []any) error {
 		}
 	}
 	return nil
+}
+
+// fieldsOf collects the fields of a struct by their tags, those of embedded
+// structs among them as if they were its own.
+func fieldsOf(t reflect.Type, fields map[string]reflect.Type, known []string) []string {
+	for i := range t.NumField() {
+		f := t.Field(i)
+		if f.Anonymous && f.Type.Kind() == reflect.Struct {
+			known = fieldsOf(f.Type, fields, known)
+			continue
+		}
+		tag, _, _ := strings.Cut(f.Tag.Get("toml"), ",")
+		if tag == "" {
+			panic("tomlfile: field " + f.Name + " has no toml tag")
+		}
+		known = append(known, tag)
+		fields[tag] = f.Type
+	}
+	return known
 }
 
 func (d *Document) unknown(n *node, key string, known []string, path []any) *Error {

@@ -61,7 +61,8 @@ type Document struct {
 // Read decodes data strictly into the struct that into points to and returns
 // the Document. Every error is an *Error. The struct's fields are string, bool,
 // int, int64, float64, structs, pointers to these (nil when the key is absent)
-// and slices, each with a toml tag; keys match it exactly, capitals too.
+// and slices, each with a toml tag; keys match it exactly, capitals too. The
+// fields of an embedded struct count as the struct's own.
 //
 // A byte order mark, which some editors write, is skipped.
 func Read(name string, data []byte, into any) (*Document, error) {

@@ -72,7 +72,7 @@ func Read(r io.Reader) (*Player, error) {
 // (0) or must not (-1).
 func forms() map[byte][2]int {
 	return map[byte][2]int{
-		letterSent: {2, 1}, letterWritten: {3, 0}, letterBytes: {2, 1}, letterGone: {2, 0}, letterDurable: {3, 0}, letterAnswer: {1, 1},
+		letterSent: {2, 1}, letterSignal: {2, 1}, letterWritten: {3, 0}, letterBytes: {2, 1}, letterGone: {2, 0}, letterDurable: {3, 0}, letterAnswer: {1, 1},
 		letterEnd: {1, -1}, letterStop: {1, -1}, letterLost: {2, 0}, letterQuiet: {1, -1}, letterCalled: {0, 1}, letterNow: {1, -1}, letterWall: {0, 1},
 		letterOpened: {1, 0}, letterMoved: {1, 1},
 	}
@@ -164,6 +164,19 @@ func (p *Player) Send(port line.PortID, data []byte) int64 {
 	}
 	if e.numbers[0] != int64(port) || e.text != string(data) {
 		p.err = fmt.Errorf("line %d: %w: it sends %q to port %d, then it was %q to port %d", e.number, ErrDiverges, data, port, e.text, e.numbers[0])
+	}
+	return e.numbers[1]
+}
+
+// Signal holds a change of a modem line against what was done then.
+func (p *Player) Signal(port line.PortID, which line.ModemLine, on bool) int64 {
+	what := stroke(which, on)
+	e, ok := p.take(fmt.Sprintf("putting %s at port %d", what, port), string(letterSignal))
+	if !ok {
+		return -1
+	}
+	if e.numbers[0] != int64(port) || e.text != what {
+		p.err = fmt.Errorf("line %d: %w: it puts %s at port %d, then it was %s at port %d", e.number, ErrDiverges, what, port, e.text, e.numbers[0])
 	}
 	return e.numbers[1]
 }

@@ -29,6 +29,7 @@ const Schema = "kymobench-transcript/1"
 // nanoseconds since the start, bytes and texts are quoted as Go quotes them:
 //
 //	> PORT NUMBER BYTES      sent; the write has this number
+//	l PORT NUMBER TEXT       a modem line was put "RTS on" or the like; a write too
 //	w PORT NUMBER AT ERROR   that write ended
 //	< PORT AT BYTES          arrived
 //	! PORT AT ERROR          the port is gone
@@ -42,6 +43,7 @@ const Schema = "kymobench-transcript/1"
 //	m PORT NAME              where its adapter is now, as the system tells
 const (
 	letterSent    = '>'
+	letterSignal  = 'l'
 	letterWritten = 'w'
 	letterBytes   = '<'
 	letterGone    = '!'
@@ -137,6 +139,21 @@ func (k *Keeper) Send(port line.PortID, data []byte) int64 {
 	n := k.inbox.Send(port, data)
 	k.begin(letterSent).number(int64(port)).number(n).quoted(string(data)).end()
 	return n
+}
+
+// Signal is the inbox's.
+func (k *Keeper) Signal(port line.PortID, which line.ModemLine, on bool) int64 {
+	n := k.inbox.Signal(port, which, on)
+	k.begin(letterSignal).number(int64(port)).number(n).quoted(stroke(which, on)).end()
+	return n
+}
+
+// stroke words a change of a modem line.
+func stroke(which line.ModemLine, on bool) string {
+	if on {
+		return which.String() + " on"
+	}
+	return which.String() + " off"
 }
 
 // Opened keeps that a port was opened, or why not.

@@ -20,7 +20,13 @@ import (
 // simulatedJob is the shipped procedure on a simulated bench in memory.
 func simulatedJob(t *testing.T, dir string, seed uint64, conditions ...string) (job, *simulated.Bench) {
 	t.Helper()
-	b, err := simulatedBench(seed, conditions, time.Time{})
+	return simulatedJobAs(t, dir, "", seed, conditions...)
+}
+
+// simulatedJobAs is one whose instruments speak in other forms.
+func simulatedJobAs(t *testing.T, dir, forms string, seed uint64, conditions ...string) (job, *simulated.Bench) {
+	t.Helper()
+	b, err := simulatedBench(seed, conditions, forms, time.Time{})
 	if err != nil {
 		t.Fatal(err)
 	}

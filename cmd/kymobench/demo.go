@@ -22,6 +22,7 @@ import (
 type demoOptions struct {
 	seed  uint64
 	uuts  []string
+	forms string
 	ports string
 	out   string
 	kept  string // transcript
@@ -46,6 +47,7 @@ Exit codes: 0 accepted, 3 rejected, 4 inconclusive.`,
 	}
 	cmd.Flags().Uint64Var(&o.seed, "seed", 1, "what the simulated bench is drawn from")
 	cmd.Flags().StringSliceVar(&o.uuts, "uut", []string{simulated.Good}, conditionsHelp())
+	cmd.Flags().StringVar(&o.forms, "families", "", familiesHelp)
 	cmd.Flags().StringVar(&o.ports, "ports", "memory", "memory (virtual time) or pty (pseudo-terminals, real time)")
 	cmd.Flags().StringVar(&o.out, "out", "", "folder to make, default kymobench-demo-SEED")
 	cmd.Flags().StringVar(&o.kept, "transcript", "", "new file that keeps the bytes of every port")
@@ -68,7 +70,7 @@ func runDemo(ctx context.Context, o demoOptions, named bool, io streams) error {
 	if o.ports == "pty" {
 		today = time.Now() // it runs in real time, so its certificates have to hold today
 	}
-	b, err := simulatedBench(o.seed, o.uuts, today)
+	b, err := simulatedBench(o.seed, o.uuts, o.forms, today)
 	if err != nil {
 		return err
 	}
@@ -131,8 +133,11 @@ func conditionsHelp() string {
 	return "condition of the UUT, or of several on one manifold with commas between: " + strings.Join(simulated.Conditions(), ", ")
 }
 
+// familiesHelp names the flag that says how simulated instruments speak.
+const familiesHelp = "how the instruments speak, such as reference=modbus,uut=frames,source=lines,valve=modem-line"
+
 // simulatedBench is a bench with a UUT in each of the conditions.
-func simulatedBench(seed uint64, conditions []string, today time.Time) (*simulated.Bench, error) {
+func simulatedBench(seed uint64, conditions []string, forms string, today time.Time) (*simulated.Bench, error) {
 	if len(conditions) == 0 {
 		return nil, usagef("no UUT: there are %s", strings.Join(simulated.Conditions(), ", "))
 	}
@@ -141,7 +146,11 @@ func simulatedBench(seed uint64, conditions []string, today time.Time) (*simulat
 			return nil, usagef("no UUT %q: there are %s", c, strings.Join(simulated.Conditions(), ", "))
 		}
 	}
-	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: conditions[0], Others: conditions[1:], Today: today})
+	families, err := simulated.ParseFamilies(forms)
+	if err != nil {
+		return nil, usageError{err}
+	}
+	b, err := simulated.New(simulated.Settings{Seed: seed, Condition: conditions[0], Others: conditions[1:], Families: families, Today: today})
 	if err != nil {
 		return nil, usageError{err}
 	}

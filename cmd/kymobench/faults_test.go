@@ -26,10 +26,10 @@ type faultyPorts struct {
 
 var errNotThere = errors.New("no such port")
 
-func (p *faultyPorts) Connect(id line.PortID, name string, baud int) error {
+func (p *faultyPorts) Connect(id line.PortID, name string, mode setup.PortMode) error {
 	role, renamed := strings.CutPrefix(name, "new-")
 	if role != p.role {
-		return p.memoryPorts.Connect(id, name, baud)
+		return p.memoryPorts.Connect(id, name, mode)
 	}
 	if p.opened && !p.faulty.Plugged(p.inbox.Now(), renamed) || !p.opened && renamed {
 		return errNotThere

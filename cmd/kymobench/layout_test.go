@@ -29,7 +29,8 @@ func mayImport() map[string][]string {
 		"bench/serialport": {"bench/line"},
 		"bench/transcript": {"bench/line"},
 		"bench/simulated":  {"bench/line", "bench/quantity"},
-		"bench/setup":      {"bench", "bench/line", "bench/quantity", "bench/tomlfile", "bench/instruments/scpi", "bench/instruments/lines"},
+		"bench/setup": {"bench", "bench/line", "bench/quantity", "bench/tomlfile", "bench/checksum", "bench/instruments/scpi", "bench/instruments/lines",
+			"bench/instruments/frames", "bench/instruments/modbus", "bench/instruments/relay", "bench/instruments/running"},
 
 		"bench/instruments/asked":   {"bench", "bench/line", "bench/quantity"},
 		"bench/instruments/scpi":    {"bench", "bench/instruments/asked", "bench/line", "bench/quantity"},

@@ -4,6 +4,7 @@ import (
 	"fmt"
 
 	"kymobench/bench/line"
+	"kymobench/bench/setup"
 	"kymobench/bench/simulated"
 )
 
@@ -20,7 +21,7 @@ func newMemoryPorts(b *simulated.Bench) *memoryPorts {
 
 func (p *memoryPorts) Inbox() line.Inbox { return p.inbox }
 
-func (p *memoryPorts) Connect(id line.PortID, name string, _ int) error {
+func (p *memoryPorts) Connect(id line.PortID, name string, _ setup.PortMode) error {
 	machine := p.bench.Machine(name)
 	if machine == nil {
 		return fmt.Errorf("the simulated bench has no port %q", name)

@@ -5,6 +5,7 @@ import (
 
 	"kymobench/bench/line"
 	"kymobench/bench/serialport"
+	"kymobench/bench/setup"
 )
 
 // serialPorts opens ports of this machine.
@@ -22,7 +23,7 @@ func (p *serialPorts) Inbox() line.Inbox { return p.inbox }
 
 // Connect opens a port that no other run of this program has. The name may be a
 // link; the lock is that of the port behind it.
-func (p *serialPorts) Connect(id line.PortID, name string, baud int) error {
+func (p *serialPorts) Connect(id line.PortID, name string, mode setup.PortMode) error {
 	real := serialport.Real(name)
 	if old := p.locks[id]; old != nil { // the port was gone, and is opened once more
 		delete(p.locks, id)
@@ -35,7 +36,9 @@ func (p *serialPorts) Connect(id line.PortID, name string, baud int) error {
 		return err
 	}
 	p.locks[id] = lock
-	port, err := serialport.Open(name, serialport.Mode{Baud: baud})
+	port, err := serialport.Open(name, serialport.Mode{
+		Baud: mode.Baud, DataBits: mode.DataBits, Parity: parityOf(mode.Parity), StopBits: mode.StopBits,
+	})
 	if err != nil {
 		return err
 	}
@@ -78,4 +81,19 @@ func (p *serialPorts) Close() error {
 		errs = append(errs, lock.Release())
 	}
 	return errors.Join(errs...)
+}
+
+// parityOf turns a bench file's word into the port's.
+func parityOf(word string) serialport.Parity {
+	switch word {
+	case "odd":
+		return serialport.ParityOdd
+	case "even":
+		return serialport.ParityEven
+	case "mark":
+		return serialport.ParityMark
+	case "space":
+		return serialport.ParitySpace
+	}
+	return serialport.ParityNone
 }

@@ -15,9 +15,10 @@ import (
 )
 
 type simulateOptions struct {
-	dir  string
-	uuts []string
-	seed uint64
+	forms string
+	dir   string
+	uuts  []string
+	seed  uint64
 }
 
 func newSimulateCommand(s streams) *cobra.Command {
@@ -35,6 +36,7 @@ that is typed drives air out of the simulated line, for kymobench prime.`,
 	}
 	cmd.Flags().StringVar(&o.dir, "dir", "", "folder for ports, bench.toml and trust")
 	cmd.Flags().StringSliceVar(&o.uuts, "uut", []string{simulated.Good}, conditionsHelp())
+	cmd.Flags().StringVar(&o.forms, "families", "", familiesHelp)
 	cmd.Flags().Uint64Var(&o.seed, "seed", 1, "what the simulated bench is drawn from")
 	return cmd
 }
@@ -43,7 +45,7 @@ func runSimulate(ctx context.Context, o simulateOptions, s streams) error {
 	if o.dir == "" {
 		return usagef("--dir is needed")
 	}
-	b, err := simulatedBench(o.seed, o.uuts, time.Now())
+	b, err := simulatedBench(o.seed, o.uuts, o.forms, time.Now())
 	if err != nil {
 		return err
 	}

@@ -39,8 +39,8 @@ func keepPorts(o setup.Opener, path string) (*keptPorts, error) {
 
 func (p *keptPorts) Inbox() line.Inbox { return p.keeper }
 
-func (p *keptPorts) Connect(id line.PortID, name string, baud int) error {
-	err := p.Opener.Connect(id, name, baud)
+func (p *keptPorts) Connect(id line.PortID, name string, mode setup.PortMode) error {
+	err := p.Opener.Connect(id, name, mode)
 	p.keeper.Opened(id, err)
 	return err
 }
@@ -63,7 +63,9 @@ type playedPorts struct{ player *transcript.Player }
 
 func (p playedPorts) Inbox() line.Inbox { return p.player }
 
-func (p playedPorts) Connect(id line.PortID, _ string, _ int) error { return p.player.Opened(id) }
+func (p playedPorts) Connect(id line.PortID, _ string, _ setup.PortMode) error {
+	return p.player.Opened(id)
+}
 
 // Moved is what was known then.
 func (p playedPorts) Moved(id line.PortID, _ string) (string, bool) {

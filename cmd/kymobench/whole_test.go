@@ -13,6 +13,7 @@ import (
 	"time"
 
 	"kymobench/bench/line"
+	"kymobench/bench/setup"
 	"kymobench/bench/simulated"
 	"kymobench/procedures/record"
 	"kymobench/reports/sign"
@@ -255,10 +256,10 @@ type replacing struct {
 	machines map[string]line.Machine
 }
 
-func (r replacing) Connect(id line.PortID, name string, baud int) error {
+func (r replacing) Connect(id line.PortID, name string, mode setup.PortMode) error {
 	if m, ok := r.machines[name]; ok {
 		r.inbox.Connect(id, m, line.MemoryOptions{})
 		return nil
 	}
-	return r.memoryPorts.Connect(id, name, baud)
+	return r.memoryPorts.Connect(id, name, mode)
 }

@@ -30,8 +30,8 @@ const (
 // unless they say otherwise.
 type scale struct {
 	unit       quantity.Unit // the reference's
-	referenceF quantity.Field
-	uutField   quantity.Field
+	referenceF *quantity.Parser
+	uutField   *quantity.Parser
 	uutUnit    quantity.Unit
 	excitation float64 // V, 0 when not stated
 	nominal    float64 // V/V/Pa, 0 for a pressure output
@@ -71,7 +71,14 @@ func newScale(g *gathered) (*scale, error) {
 	if g.reference == nil || g.uut == nil {
 		return nil, fmt.Errorf("the record names no reference and UUT")
 	}
-	s := &scale{referenceF: g.reference.Field, uutField: g.uut.Field}
+	s := &scale{}
+	var err error
+	if s.referenceF, err = g.reference.Field.Parser(); err != nil {
+		return nil, fmt.Errorf("the reference: %w", err)
+	}
+	if s.uutField, err = g.uut.Field.Parser(); err != nil {
+		return nil, fmt.Errorf("the UUT: %w", err)
+	}
 	var ok bool
 	if s.unit, ok = quantity.UnitNamed(g.reference.Field.Unit); !ok || s.unit.Dimension != quantity.DimPressure {
 		return nil, fmt.Errorf("the reference's unit %q is no unit of pressure", g.reference.Field.Unit)

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"slices"
 	"strings"
 	"time"
 
@@ -38,6 +39,12 @@ func (s *session) identify(ctx context.Context) error {
 			return nil
 		}
 		identity, err := i.Identify(ctx)
+		if errors.Is(err, bench.ErrNotStated) {
+			if !slices.Contains(s.nameless, role) {
+				s.nameless = append(s.nameless, role)
+			}
+			return nil
+		}
 		if err != nil {
 			return fmt.Errorf("%s: %w", role, err)
 		}
@@ -109,6 +116,12 @@ func (s *session) open(ctx context.Context) error {
 			if _, err := s.put(u, l.kind, l.payload); err != nil {
 				return err
 			}
+		}
+	}
+	for _, role := range s.nameless {
+		text := "the " + role + " cannot be asked who it is: that it is the one in the bench file is the operator's word"
+		if err := s.append(record.KindReservation, record.Reservation{Code: "identity_not_asked", Text: text}); err != nil {
+			return err
 		}
 	}
 	return s.durable(ctx)

@@ -49,7 +49,7 @@ func (s *session) read(ctx context.Context) (asked, error) {
 	}
 	p := quantity.Pressure(r.Value.SI)
 	if jump := math.Abs(float64(p - s.last)); jump > alonePa && !s.confirmed(p) {
-		if err := s.append(record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text}); err != nil {
+		if err := s.append(record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Received()}); err != nil {
 			return asked{}, err
 		}
 		if r, err = s.readOnce(ctx); err != nil {
@@ -57,7 +57,7 @@ func (s *session) read(ctx context.Context) (asked, error) {
 		}
 		p = quantity.Pressure(r.Value.SI)
 	}
-	if err := s.checkFollows(r.Text, p); err != nil {
+	if err := s.checkFollows(r.Received(), p); err != nil {
 		return asked{}, err
 	}
 	if err := s.checkDisk(); err != nil {
@@ -73,7 +73,7 @@ func (s *session) read(ctx context.Context) (asked, error) {
 			continue
 		}
 		a.uuts[u.index] = u.stream.since.heard(a.middle, spanOf(u.UUT.Delay))
-		a.lines[u.index], err = s.put(u, record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Text, Watch: u.stream.since.watch()})
+		a.lines[u.index], err = s.put(u, record.KindReading, record.Reading{Role: "reference", Sent: r.Sent, Text: r.Received(), Watch: u.stream.since.watch()})
 		if err != nil {
 			return asked{}, err
 		}
@@ -89,7 +89,7 @@ func (s *session) readOnce(ctx context.Context) (bench.Reading, error) {
 		return r, s.stopOr(ctx, &Fault{Code: "reference_lost", Text: "the reference gives no reading", Err: err}, err)
 	}
 	p := quantity.Pressure(r.Value.SI)
-	return r, s.watchPressure("reference", p, r.Text, !s.confirmed(p))
+	return r, s.watchPressure("reference", p, r.Received(), !s.confirmed(p))
 }
 
 // checkDisk holds the disk against the longest it may lag behind.

@@ -24,6 +24,7 @@ type session struct {
 	interruptions int
 	gone          []line.PortID // ports to be opened again
 	booted        booted
+	nameless      []string // roles that cannot be asked who they are
 
 	answers   []record.Answer
 	releasing bool              // a good line rings below zero after a release; only the reference is watched
@@ -55,7 +56,7 @@ func newSession(settings Settings) *session {
 	})
 	e.Handle(line.KindGone, s.tookGone)
 	for _, u := range s.units {
-		u.rig.Stream.Watch(func(r bench.Reading, err error) error { return s.tookSample(u, r, err) })
+		u.rig.Stream.Watch(func(r *bench.Reading, err error) error { return s.tookSample(u, *r, err) })
 	}
 	return s
 }

@@ -120,11 +120,11 @@ func (s *session) tookSample(u *unit, r bench.Reading, err error) error {
 	if err != nil {
 		return &Fault{Code: "unit", Text: err.Error()}
 	}
-	before := u.stream.latest()
-	u.stream.add(r.At, r.Text, p, float64(s.last))
+	before, text := u.stream.latest(), r.Received()
+	u.stream.add(r.At, text, p, float64(s.last))
 	if u.zeroed && !s.releasing && u.fault == nil {
 		alone := math.Abs(p-before) > alonePa && s.inside(quantity.Pressure(before-u.zero))
-		return s.watchPressure(u.name(), quantity.Pressure(p-u.zero), r.Text, alone)
+		return s.watchPressure(u.name(), quantity.Pressure(p-u.zero), text, alone)
 	}
 	return nil
 }

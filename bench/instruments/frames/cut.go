@@ -39,11 +39,22 @@ type cutter struct {
 	doubted int // the last so many of them being whole is enough to doubt
 	ahead   int // whole frames that a frame waits for
 	after   int // bytes of the next frame that a frame waits for
-	seen    int // whole frames at the beginning of the part
+	seen    int // whole frames at the beginning of what is not used yet
 	inStep  bool
 	part    []byte // not decided yet
 	marks   []mark // when its bytes came
+	block   []byte // memory for bytes that are put together; given away once
 	damaged int64
+
+	// whole takes frames that follow each other, with the instant at which the
+	// last byte of the last one came, and may keep them. damage is called when
+	// the step is lost, with the bytes that should have been a frame, and with
+	// frames that waited for it.
+	whole  func(frames []byte, at line.Instant)
+	damage func(bytes []byte, at line.Instant)
+	// quickly, if it is set, takes what whole would, straight from data that
+	// begins with a frame, as far as it can, and returns how many bytes it took.
+	quickly func(data []byte, at line.Instant) int
 }
 
 // mark says when the bytes of the part up to end came.
@@ -52,8 +63,8 @@ type mark struct {
 	at  line.Instant
 }
 
-func newCutter(r *quantity.FrameReader) cutter {
-	c := cutter{r: r, length: r.Length()}
+func newCutter(r *quantity.FrameReader, whole, damage func([]byte, line.Instant)) cutter {
+	c := cutter{r: r, length: r.Length(), whole: whole, damage: damage}
 	bits := r.FixedBits() + r.CheckBits()
 	c.need, c.doubted = (evidence+bits-1)/bits, (doubt+bits-1)/bits
 	switch {
@@ -72,64 +83,117 @@ func newCutter(r *quantity.FrameReader) cutter {
 // may begin anywhere.
 func (c *cutter) lose() { c.part, c.marks, c.inStep, c.seen = c.part[:0], c.marks[:0], false, 0 }
 
-// take takes what came at an instant. Whole frames go to whole, with the
-// instant at which their last byte came; when the step is lost, damage is called
-// with the bytes that should have been a frame, and with frames that waited for
-// it. Both may use what they are given until they return.
-func (c *cutter) take(data []byte, at line.Instant, whole func(frame []byte, at line.Instant), damage func(bytes []byte, at line.Instant)) {
+// take takes what came at an instant; the bytes are its own from now on.
+func (c *cutter) take(data []byte, at line.Instant) {
 	if len(c.part) > 0 {
-		c.part = append(c.part, data...)
-		c.marks = append(c.marks, mark{len(c.part), at})
-		data = c.part
+		if data = c.takePart(data, at); data == nil {
+			return
+		}
 	}
-	used := 0
+	c.keep(data, c.work(data, at), at)
+}
+
+// takePart deals with what was kept and returns what is left of data; nil when
+// all is dealt with. In step, only the frames that begin in the part are put
+// together; the rest need not be copied.
+func (c *cutter) takePart(data []byte, at line.Instant) []byte {
+	begun := (len(c.part) + c.length - 1) / c.length * c.length
+	more := begun + c.ahead*c.length + c.after - len(c.part)
+	if c.inStep && more <= len(data) {
+		joined := c.join(c.part, data[:more])
+		used, lost := c.follow(joined)
+		c.hand(joined[:used], 0, at)
+		if !lost {
+			data, c.seen = data[used-len(c.part):], 0
+			c.part, c.marks = c.part[:0], c.marks[:0]
+			return data
+		}
+		c.drop(used)
+	}
+	joined := c.join(c.part, data)
+	c.marks = append(c.marks, mark{len(joined), at})
+	used := c.work(joined, at)
+	c.part = append(c.part[:0], joined...)
+	c.drop(used)
+	return nil
+}
+
+// join puts bytes together that the receiver of frames may keep.
+func (c *cutter) join(a, b []byte) []byte {
+	n := len(a) + len(b)
+	if cap(c.block)-len(c.block) < n {
+		c.block = make([]byte, 0, max(4096, n))
+	}
+	from := len(c.block)
+	c.block = append(append(c.block, a...), b...)
+	return c.block[from : from+n : from+n]
+}
+
+// work hands over what is whole in data and returns how many bytes are used.
+// Where there are marks, data begins where they do.
+func (c *cutter) work(data []byte, at line.Instant) (used int) {
 	for {
 		if !c.inStep {
 			n, found := c.hunt(data[used:])
 			used += n
 			if !found {
-				break
+				return used
 			}
 			c.inStep = true
 		}
-		n, lost := c.follow(data[used:], used, at, whole)
+		if c.quickly != nil && c.seen == 0 && len(c.marks) == 0 {
+			used += c.quickly(data[used:], at)
+		}
+		n, lost := c.follow(data[used:])
+		c.hand(data[used:used+n], used, at)
 		used += n
 		if !lost {
-			break
+			return used
 		}
 		c.damaged++
 		for range c.seen + 1 {
-			damage(data[used:used+c.length], c.came(used+c.length, at))
+			c.damage(data[used:used+c.length], c.came(used+c.length, at))
 			used += c.length
 		}
 		used -= c.length - 1 // of the last one, all bytes but the first may be good
 		c.inStep, c.seen = false, 0
 	}
-	c.keep(data, used, at)
 }
 
-// follow hands over frames as long as they are whole and proved. It returns how
-// many bytes they had, and whether it ended because a frame, that after the
-// seen ones, is not whole. data begins at offset from in the part.
-func (c *cutter) follow(data []byte, from int, at line.Instant, whole func([]byte, line.Instant)) (used int, lost bool) {
-	for {
-		for c.seen <= c.ahead {
-			next := used + c.seen*c.length
-			if len(data) < next+c.length+c.after {
-				return used, false
-			}
-			if !c.r.Whole(data[next:next+c.length]) || c.after > 0 && !c.begins(data[next+c.length:]) {
-				return used, true
-			}
-			c.seen++
+// follow goes along frames as long as they are whole and proved. It returns how
+// many bytes they have, and whether it ended because a frame, that after the
+// seen ones, is not whole.
+func (c *cutter) follow(data []byte) (used int, lost bool) {
+	n := c.seen + c.r.Run(data[c.seen*c.length:])
+	rest := data[n*c.length:]
+	// The last whole frame may still wait for the next one's beginning.
+	lost = len(rest) >= c.length
+	if c.after > 0 && n > 0 {
+		switch {
+		case len(rest) < c.after:
+			n--
+			lost = false
+		case !c.begins(rest):
+			n--
+			lost = true
 		}
-		when := at
-		if len(c.marks) > 0 {
-			when = c.came(from+used+c.length, at)
-		}
-		whole(data[used:used+c.length], when)
-		used += c.length
-		c.seen--
+	}
+	if lost || n > c.ahead {
+		used = max(0, n-c.ahead)
+	}
+	c.seen = n - used
+	return used * c.length, lost
+}
+
+// hand hands over frames, which begin at an offset of the part, together as far
+// as they came together.
+func (c *cutter) hand(frames []byte, from int, at line.Instant) {
+	for len(c.marks) > 0 && len(frames) > 0 && from+c.length <= c.marks[len(c.marks)-1].end {
+		c.whole(frames[:c.length], c.came(from+c.length, at))
+		frames, from = frames[c.length:], from+c.length
+	}
+	if len(frames) > 0 {
+		c.whole(frames, at)
 	}
 }
 
@@ -195,15 +259,15 @@ func (c *cutter) came(end int, now line.Instant) line.Instant {
 
 // keep keeps what is not used, and when it came.
 func (c *cutter) keep(data []byte, used int, at line.Instant) {
-	if len(c.part) == 0 {
-		c.part = append(c.part, data[used:]...)
-		c.marks = append(c.marks[:0], mark{len(c.part), at})
-		if len(c.part) == 0 {
-			c.marks = c.marks[:0]
-		}
-		return
+	c.part, c.marks = append(c.part[:0], data[used:]...), c.marks[:0]
+	if len(c.part) > 0 {
+		c.marks = append(c.marks, mark{len(c.part), at})
 	}
-	c.part = c.part[:copy(c.part, data[used:])]
+}
+
+// drop takes what is used off the part.
+func (c *cutter) drop(used int) {
+	c.part = c.part[:copy(c.part, c.part[used:])]
 	n := 0
 	for _, m := range c.marks {
 		if m.end > used {

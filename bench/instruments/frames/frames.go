@@ -14,7 +14,7 @@ import (
 	"errors"
 	"fmt"
 	"reflect"
-	"strings"
+	"unsafe"
 
 	"kymobench/bench"
 	"kymobench/bench/line"
@@ -35,7 +35,8 @@ type Port struct {
 	line     *line.Line
 	frame    quantity.Frame // of the first channel
 	cut      cutter
-	channels []*Channel
+	channels []*Channel // those that are made
+	watched  []*Channel
 	open     bool // the line hands its bytes over
 	err      error
 
@@ -43,7 +44,6 @@ type Port struct {
 	number  uint64 // the last one, as it stood
 	total   uint64 // counted on over its wraps
 	frames  int64
-	texts   strings.Builder
 }
 
 // Settings of a channel.
@@ -54,10 +54,11 @@ type Settings struct {
 
 // Channel is one number in the port's frames: a bench.Streaming.
 type Channel struct {
-	port   *Port
-	reader *quantity.FrameReader
-	unit   quantity.Unit
-	take   func(r bench.Reading, err error) error // nil until it is watched
+	port    *Port
+	reader  *quantity.FrameReader
+	unit    quantity.Unit
+	reading bench.Reading
+	take    func(r *bench.Reading, err error) error // nil until it is watched
 }
 
 // NewPort makes a Port of a line that is its own.
@@ -76,11 +77,11 @@ func (p *Port) Channel(s Settings) (*Channel, error) {
 		return nil, fmt.Errorf("%s: %w", p.line.Name(), err)
 	}
 	if len(p.channels) == 0 {
-		p.frame, p.cut = s.Field.Frame, newCutter(reader)
+		p.frame, p.cut = s.Field.Frame, newCutter(reader, p.whole, p.damage)
 	} else if !reflect.DeepEqual(shell(p.frame), shell(s.Field.Frame)) {
 		return nil, fmt.Errorf("%s: two channels are said to stand in different frames", p.line.Name())
 	}
-	c := &Channel{port: p, reader: reader, unit: unit}
+	c := &Channel{port: p, reader: reader, unit: unit, reading: bench.Reading{Value: quantity.Value{Unit: unit}}}
 	p.channels = append(p.channels, c)
 	return c, nil
 }
@@ -92,10 +93,17 @@ func shell(f quantity.Frame) quantity.Frame {
 }
 
 // Watch hands the channel's reading of every frame to take from now on, in the
-// order of arrival, or what came instead of one, with its bytes as text and err
-// set. An error of take ends the engine's present wait.
-func (c *Channel) Watch(take func(r bench.Reading, err error) error) {
+// order of arrival, or what came instead of one, with its bytes and err set. An
+// error of take ends the engine's present wait.
+func (c *Channel) Watch(take func(r *bench.Reading, err error) error) {
+	if c.take == nil {
+		c.port.watched = append(c.port.watched, c)
+	}
 	c.take = take
+	c.port.cut.quickly = nil
+	if len(c.port.watched) == 1 && c.port.frame.Sequence == nil && c.reader.CanTake() && c.port.cut.ahead == 0 {
+		c.port.cut.quickly = c.port.quickly
+	}
 	if !c.port.open {
 		c.port.open = true
 		c.port.line.OnBytes(c.port.bytes)
@@ -115,20 +123,20 @@ func (p *Port) bytes(b line.Bytes) error {
 		p.counted = false // how many frames the hole had is not known
 	}
 	p.err = nil
-	p.cut.take(b.Data, b.At, p.whole, p.damage)
+	p.cut.take(b.Data, b.At)
 	return p.err
 }
 
+// damage hands over bytes that should have been a frame.
 func (p *Port) damage(data []byte, at line.Instant) {
-	err := fmt.Errorf("read %s: %w", p.line.Name(), ErrDamaged)
-	p.hand(bench.Reading{Sent: at, At: at, Text: p.text(data)}, err)
+	r := bench.Reading{Sent: at, At: at, Frame: string(data)}
+	p.refuse(r, ErrDamaged)
 }
 
-func (p *Port) hand(r bench.Reading, err error) {
-	for _, c := range p.channels {
-		if c.take != nil {
-			p.keep(c.take(r, err))
-		}
+// refuse hands over to everyone what is no reading.
+func (p *Port) refuse(r bench.Reading, why error) {
+	for _, c := range p.watched {
+		p.keep(c.take(&r, fmt.Errorf("read %s: %w", p.line.Name(), why)))
 	}
 }
 
@@ -138,28 +146,69 @@ func (p *Port) keep(err error) {
 	}
 }
 
-func (p *Port) whole(frame []byte, at line.Instant) {
-	p.frames++
-	r := bench.Reading{Sent: at, At: at, Text: p.text(frame)}
-	if p.frame.Sequence != nil {
-		if !p.count(frame) {
-			p.hand(r, fmt.Errorf("read %s: %w", p.line.Name(), ErrRepeated))
-			return
-		}
-		r.Sequence, r.HasSequence = p.total, true
+// batch is how many numbers are read at once.
+const batch = 64
+
+// whole takes frames that follow each other. Readings keep their bytes without
+// a copy: nobody changes them any more.
+func (p *Port) whole(frames []byte, at line.Instant) {
+	p.frames += int64(len(frames) / p.cut.length)
+	for _, c := range p.watched {
+		c.reading.Sent, c.reading.At = at, at
 	}
-	for _, c := range p.channels {
-		if c.take == nil {
+	text := unsafe.String(unsafe.SliceData(frames), len(frames))
+	for n := p.cut.length; len(frames) >= n; frames, text = frames[n:], text[n:] {
+		frame := frames[:n:n]
+		if p.frame.Sequence != nil && !p.count(frame) {
+			p.refuse(bench.Reading{Sent: at, At: at, Frame: text[:n]}, ErrRepeated)
 			continue
 		}
-		x, err := c.reader.Number(frame)
-		if err != nil {
-			p.keep(c.take(r, fmt.Errorf("read %s: %w", p.line.Name(), err)))
-			continue
+		for _, c := range p.watched {
+			c.frame(frame, text[:n])
 		}
-		r.Value = quantity.Value{SI: c.unit.ToSI(x), Stated: x, Unit: c.unit}
-		p.keep(c.take(r, nil))
-		r.Value = quantity.Value{}
+	}
+}
+
+// quickly takes frames that are not counted and hold one number, and returns
+// how many bytes it took. The last whole frame is left to the cutter, which
+// knows what it waits for.
+func (p *Port) quickly(data []byte, at line.Instant) (used int) {
+	c := p.watched[0]
+	r, n := &c.reading, p.cut.length
+	r.Sent, r.At, r.Sequence, r.HasSequence = at, at, 0, false
+	text := unsafe.String(unsafe.SliceData(data), len(data))
+	factor, offset, take := c.unit.Factor, c.unit.Offset, c.take
+	var numbers [batch]float64
+	for {
+		k := c.reader.Take(data[used:], numbers[:]) - 1
+		if k <= 0 {
+			return used
+		}
+		p.frames += int64(k)
+		for _, x := range numbers[:k] {
+			r.Frame = text[used : used+n]
+			used += n
+			r.Value.SI, r.Value.Stated = x*factor+offset, x // as Unit.ToSI does
+			if err := take(r, nil); err != nil {
+				p.keep(err)
+			}
+		}
+	}
+}
+
+// frame hands over the channel's number in a whole frame.
+func (c *Channel) frame(frame []byte, text string) {
+	r, p := &c.reading, c.port
+	x, err := c.reader.Number(frame)
+	if err != nil {
+		p.keep(c.take(&bench.Reading{Sent: r.Sent, At: r.At, Frame: text, Sequence: p.total, HasSequence: p.counted},
+			fmt.Errorf("read %s: %w", p.line.Name(), err)))
+		return
+	}
+	r.Frame, r.Sequence, r.HasSequence = text, p.total, p.counted
+	r.Value.SI, r.Value.Stated = c.unit.ToSI(x), x
+	if err := c.take(r, nil); err != nil {
+		p.keep(err)
 	}
 }
 
@@ -176,25 +225,6 @@ func (p *Port) count(frame []byte) bool {
 	}
 	p.total += step
 	return step != 0
-}
-
-// textBlock is how many bytes of text share one piece of memory.
-const textBlock = 4096
-
-// text turns bytes into their text; texts share pieces of memory, as readings
-// are kept in runs.
-func (p *Port) text(data []byte) string {
-	if n := 2 * len(data); p.texts.Cap()-p.texts.Len() < n {
-		p.texts = strings.Builder{}
-		p.texts.Grow(max(textBlock, n))
-	}
-	from := p.texts.Len()
-	const digits = "0123456789ABCDEF"
-	for _, b := range data {
-		p.texts.WriteByte(digits[b>>4])
-		p.texts.WriteByte(digits[b&15])
-	}
-	return p.texts.String()[from:]
 }
 
 var _ bench.Streaming = (*Channel)(nil)

@@ -81,8 +81,8 @@ func heard(t testing.TB, f quantity.Frame, pieces [][]byte) (all []got, p *Port)
 	if err != nil {
 		t.Fatal(err)
 	}
-	c.Watch(func(r bench.Reading, err error) error {
-		all = append(all, got{r.Value.Stated, r.Sequence, r.At, r.Text, err})
+	c.Watch(func(r *bench.Reading, err error) error {
+		all = append(all, got{r.Value.Stated, r.Sequence, r.At, r.Received(), err})
 		return nil
 	})
 	for i, piece := range pieces {
@@ -128,7 +128,7 @@ func TestStream(t *testing.T) {
 		data := stream(k, n)
 		for _, size := range []int{1, 2, 3, 5, 6, 7, 8, 64, 1000, len(data)} {
 			all, p := heard(t, k.frame, pieces(data, size))
-			first := min(newCutter(must(t, k.frame)).ahead, 1) // passed over, for it might be half of a damaged one
+			first := min(newCutter(must(t, k.frame), nil, nil).ahead, 1) // passed over, for it might be half of a damaged one
 			want := n - waiting(t, k.frame) - first
 			if len(all) != want || p.Frames() != int64(want) || p.Damaged() != 0 {
 				t.Fatalf("%s in pieces of %d: %d readings, %d frames, %d damaged", k.name, size, len(all), p.Frames(), p.Damaged())
@@ -148,7 +148,7 @@ func TestStream(t *testing.T) {
 
 // waiting is how many frames wait for what follows them.
 func waiting(t testing.TB, f quantity.Frame) int {
-	c := newCutter(must(t, f))
+	c := newCutter(must(t, f), nil, nil)
 	return c.ahead + min(c.after, 1)
 }
 
@@ -195,7 +195,7 @@ func TestOneFault(t *testing.T) {
 					last = g.x
 				}
 				// Nothing can be in step before as many frames have come as that needs.
-				c := newCutter(must(t, k.frame))
+				c := newCutter(must(t, k.frame), nil, nil)
 				if edge := c.need * k.frame.Length; at > edge && at < len(data)-2*edge-2*k.frame.Length && len(good(all)) < n-3-2*c.ahead-1 {
 					t.Errorf("%s, fault %d at byte %d: only %d of %d frames", k.name, fault, at, len(good(all)), n)
 				}
@@ -280,14 +280,14 @@ func TestTwoChannels(t *testing.T) {
 	}
 	var a, b []bench.Reading
 	over := 0
-	uut.Watch(func(r bench.Reading, err error) error { a = append(a, r); return err })
-	applied.Watch(func(r bench.Reading, err error) error {
+	uut.Watch(func(r *bench.Reading, err error) error { a = append(a, *r); return err })
+	applied.Watch(func(r *bench.Reading, err error) error {
 		if errors.Is(err, quantity.ErrOverRange) {
 			over++
 		} else if err != nil {
 			return err
 		}
-		b = append(b, r)
+		b = append(b, *r)
 		return nil
 	})
 	for i := range 21 {
@@ -310,7 +310,7 @@ func TestTwoChannels(t *testing.T) {
 		if i == 10 {
 			wantB = 0
 		}
-		if a[i].Value.Stated != wantA || b[i].Value.Stated != wantB || a[i].At != b[i].At || a[i].Sequence != b[i].Sequence || a[i].Text != b[i].Text {
+		if a[i].Value.Stated != wantA || b[i].Value.Stated != wantB || a[i].At != b[i].At || a[i].Sequence != b[i].Sequence || a[i].Frame != b[i].Frame {
 			t.Errorf("%d: %+v\n%+v", i, a[i], b[i])
 		}
 	}
@@ -353,9 +353,9 @@ func TestHole(t *testing.T) {
 		t.Fatal(err)
 	}
 	numbers, n := legal(100), 0
-	c.Watch(func(r bench.Reading, err error) error {
+	c.Watch(func(r *bench.Reading, err error) error {
 		if n++; err != nil || !numbers[r.Value.Stated] {
-			t.Errorf("%+v, %v", r, err)
+			t.Errorf("%+v, %v", *r, err)
 		}
 		return nil
 	})

@@ -64,18 +64,20 @@ func TestMutations(t *testing.T) {
 			change := r.IntN(2) == 0
 			data := mutant(r, stream, change)
 			damaged := slices.Clone(data)
-			c := newCutter(reader)
-			whole := func(f []byte, _ line.Instant) {
-				numbers++
-				if x, err := reader.Number(f); err == nil && !sent[x] {
-					wrong++
-					if change && reader.CheckBits() > 0 || reader.CheckBits() >= 16 {
-						t.Errorf("%s: % X from % X", k.name, f, damaged)
+			whole := func(frames []byte, _ line.Instant) {
+				for f := range slices.Chunk(frames, reader.Length()) {
+					numbers++
+					if x, err := reader.Number(f); err == nil && !sent[x] {
+						wrong++
+						if change && reader.CheckBits() > 0 || reader.CheckBits() >= 16 {
+							t.Errorf("%s: % X from % X", k.name, f, damaged)
+						}
 					}
 				}
 			}
+			c := newCutter(reader, whole, func([]byte, line.Instant) {})
 			for size := 1 + r.IntN(40); len(data) > 0; data = data[min(size, len(data)):] {
-				c.take(data[:min(size, len(data))], 0, whole, func([]byte, line.Instant) {})
+				c.take(data[:min(size, len(data))], 0)
 			}
 			done++
 		}
@@ -95,17 +97,19 @@ func FuzzCut(f *testing.F) {
 	f.Fuzz(func(t *testing.T, data []byte, size uint8) {
 		for _, k := range kinds() {
 			reader := must(t, k.frame)
-			c := newCutter(reader)
-			for _, piece := range pieces(data, 1+int(size)) {
-				c.take(piece, 0, func(f []byte, _ line.Instant) {
+			c := newCutter(reader, func(frames []byte, _ line.Instant) {
+				for f := range slices.Chunk(frames, reader.Length()) {
 					if !reader.Whole(f) {
 						t.Fatalf("% X", f)
 					}
-				}, func(f []byte, _ line.Instant) {
-					if len(f) != reader.Length() {
-						t.Fatalf("% X", f)
-					}
-				})
+				}
+			}, func(f []byte, _ line.Instant) {
+				if len(f) != reader.Length() {
+					t.Fatalf("% X", f)
+				}
+			})
+			for _, piece := range pieces(data, 1+int(size)) {
+				c.take(piece, 0)
 				if len(c.part) > (c.need+c.ahead+2)*reader.Length()+int(size) {
 					t.Fatalf("%d bytes are kept", len(c.part))
 				}

@@ -10,7 +10,6 @@ package lines
 import (
 	"errors"
 	"fmt"
-	"strings"
 
 	"kymobench/bench"
 	"kymobench/bench/line"
@@ -25,23 +24,25 @@ type Settings struct {
 	Field quantity.Field
 }
 
-// Instrument is a bench.Streaming.
-type Instrument struct {
-	port  *Port
-	place int // in the port's list
-	line  *line.Line
-	field *quantity.Parser
-	unit  quantity.Unit
-	texts strings.Builder
-}
-
 // ErrLong: a line was longer than the line's cap and was dropped.
 var ErrLong = errors.New("a line is too long")
 
 // Port is a line that one or more instruments share, each with its own column.
 type Port struct {
 	line    *line.Line
-	watched []func(line.Frame) error // nil until its instrument is watched
+	cut     cutter
+	open    bool // the line hands its bytes over
+	watched []*Instrument
+	err     error // the first of this piece
+}
+
+// Instrument is a bench.Streaming.
+type Instrument struct {
+	port    *Port
+	field   *quantity.Parser
+	unit    quantity.Unit
+	reading bench.Reading
+	take    func(r *bench.Reading, err error) error // nil until it is watched
 }
 
 // NewPort makes a Port of a line that is its own.
@@ -62,65 +63,113 @@ func (p *Port) Instrument(s Settings) (*Instrument, error) {
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", p.line.Name(), err)
 	}
-	p.watched = append(p.watched, nil)
-	return &Instrument{port: p, place: len(p.watched) - 1, line: p.line, field: field, unit: unit}, nil
-}
-
-// watch hands every line to everyone who watches; the first error is returned
-// when all have had it.
-func (p *Port) watch(place int, f func(line.Frame) error) {
-	p.watched[place] = f
-	if len(p.watched) == 1 {
-		p.line.OnFrame(f)
-		return
-	}
-	p.line.OnFrame(func(frame line.Frame) (first error) {
-		for _, f := range p.watched {
-			if f == nil {
-				continue
-			}
-			if err := f(frame); err != nil && first == nil {
-				first = err
-			}
-		}
-		return first
-	})
+	return &Instrument{port: p, field: field, unit: unit, reading: bench.Reading{Value: quantity.Value{Unit: unit}}}, nil
 }
 
 // Watch hands every line to take from now on, in the order of arrival: a
 // reading, or a line that is not one, with its text and err set. An error of
 // take ends the engine's present wait.
-func (i *Instrument) Watch(take func(r bench.Reading, err error) error) {
-	i.port.watch(i.place, func(f line.Frame) error {
-		r := bench.Reading{Sent: f.At, At: f.At}
-		if f.Long {
-			return take(r, fmt.Errorf("read %s: %w", i.line.Name(), ErrLong))
-		}
-		r.Text = i.text(f.Data)
-		x, err := i.field.Number(r.Text)
-		if err != nil {
-			return take(r, fmt.Errorf("read %s: %w", i.line.Name(), err))
-		}
-		r.Value = quantity.Value{SI: i.unit.ToSI(x), Stated: x, Unit: i.unit}
-		return take(r, nil)
-	})
+func (i *Instrument) Watch(take func(r *bench.Reading, err error) error) {
+	if i.take == nil {
+		i.port.watched = append(i.port.watched, i)
+	}
+	i.take = take
+	if !i.port.open {
+		i.port.open = true
+		i.port.line.OnBytes(i.port.bytes)
+	}
 }
 
-// textBlock is how many bytes of text share one piece of memory.
-const textBlock = 4096
-
-// text copies a line into a string. Strings made of one piece of memory each
-// would be the larger part of the work; here some hundred share one, which is
-// freed when the last of them is. Readings are kept in runs, so little is held
-// for nothing.
-func (i *Instrument) text(data []byte) string {
-	if i.texts.Cap()-i.texts.Len() < len(data) {
-		i.texts = strings.Builder{}
-		i.texts.Grow(max(textBlock, len(data)))
+// bytes takes what came at once.
+func (p *Port) bytes(b line.Bytes) error {
+	p.err = nil
+	if b.Hole {
+		p.cut.lose()
 	}
-	from := i.texts.Len()
-	i.texts.Write(data)
-	return i.texts.String()[from:]
+	for _, i := range p.watched {
+		i.reading.Sent, i.reading.At = b.At, b.At
+	}
+	rest := asText(b.Data)
+	if p.cut.part != "" || p.cut.over || p.cut.skip {
+		text, after, long, ok := p.cut.first(rest)
+		if !ok {
+			return nil
+		}
+		rest = after
+		p.hand(text, long)
+	}
+	for {
+		if len(p.watched) == 1 {
+			rest = p.watched[0].run(rest)
+		}
+		n := end(rest)
+		if n < 0 {
+			break
+		}
+		if n > 0 {
+			p.hand(rest[:n], false)
+		}
+		rest = rest[n+1:]
+	}
+	p.cut.begin(rest)
+	return p.err
+}
+
+// hand gives a line to everyone who watches; the first error is kept when all
+// have had it.
+func (p *Port) hand(text string, long bool) {
+	if long = long || len(text) > line.LongestLine; long {
+		text = ""
+	} else if text == "" {
+		return
+	}
+	for _, i := range p.watched {
+		if err := i.line(text, long); err != nil && p.err == nil {
+			p.err = err
+		}
+	}
+}
+
+// run takes lines that are nothing but a number, as long as they come, and
+// returns what is left.
+func (i *Instrument) run(rest string) string {
+	r, field, factor, offset, take := &i.reading, i.field, i.unit.Factor, i.unit.Offset, i.take
+	for {
+		x, n := field.Line(rest)
+		if n == 0 {
+			return rest
+		}
+		r.Text = rest[:n]
+		r.Value.SI, r.Value.Stated = x*factor+offset, x // as Unit.ToSI does
+		if err := take(r, nil); err != nil && i.port.err == nil {
+			i.port.err = err
+		}
+		if rest[n] == '\r' && n+1 < len(rest) && rest[n+1] == '\n' {
+			n++
+		}
+		rest = rest[n+1:]
+	}
+}
+
+func (i *Instrument) line(text string, long bool) error {
+	r := &i.reading
+	r.Text = text
+	x, err := i.field.Number(text)
+	if err != nil || long {
+		return i.refuse(err, long)
+	}
+	r.Value.SI, r.Value.Stated = i.unit.ToSI(x), x
+	return i.take(r, nil)
+}
+
+// refuse hands over a line that is no reading.
+func (i *Instrument) refuse(err error, long bool) error {
+	if long {
+		err = ErrLong
+	}
+	r := i.reading
+	r.Value = quantity.Value{}
+	return i.take(&r, fmt.Errorf("read %s: %w", i.port.line.Name(), err))
 }
 
 var _ bench.Streaming = (*Instrument)(nil)

@@ -35,7 +35,7 @@ func (m *stream) Emit(line.Instant) []byte {
 	return []byte(m.bursts[(m.sent-1)%len(m.bursts)])
 }
 
-func watch(t testing.TB, m line.Machine, f quantity.Field, until time.Duration, take func(bench.Reading, error) error) error {
+func watch(t testing.TB, m line.Machine, f quantity.Field, until time.Duration, take func(*bench.Reading, error) error) error {
 	inbox := line.NewMemory(time.Time{})
 	inbox.Connect(1, m, line.MemoryOptions{})
 	e := line.NewEngine(inbox)
@@ -58,7 +58,7 @@ func TestWatch(t *testing.T) {
 	var all []got
 	m := &stream{every: 16 * time.Millisecond, bursts: []string{
 		"0.02\r\n+1500.02\r\n-00", "00.50\r\n+150.02\r\n+15X0.02\r\n", strings.Repeat("1", 300) + "\r\n", "+0001.00\r\n"}}
-	err := watch(t, m, quantity.Field{Width: 8, Unit: "uV/V"}, time.Second, func(r bench.Reading, err error) error {
+	err := watch(t, m, quantity.Field{Width: 8, Unit: "uV/V"}, time.Second, func(r *bench.Reading, err error) error {
 		x, e := r.Value.In(quantity.Unit{Name: "uV/V", Dimension: quantity.DimRatio, Factor: 1e-6})
 		if err == nil && e != nil {
 			t.Error(e)
@@ -86,7 +86,7 @@ func TestWatch(t *testing.T) {
 func TestErrorsNameLineAndText(t *testing.T) {
 	over := errors.New("over pressure")
 	m := &stream{every: time.Millisecond, bursts: []string{"\nOL\n"}}
-	err := watch(t, m, quantity.Field{Unit: "mmHg"}, time.Second, func(r bench.Reading, err error) error {
+	err := watch(t, m, quantity.Field{Unit: "mmHg"}, time.Second, func(r *bench.Reading, err error) error {
 		if err == nil || !strings.Contains(err.Error(), "read uut on port 1: ") || !strings.Contains(err.Error(), `"OL"`) {
 			t.Errorf("%v", err)
 		}
@@ -109,7 +109,7 @@ func TestTextsKeep(t *testing.T) {
 	}
 	var texts []string
 	err := watch(t, &stream{every: time.Millisecond, bursts: []string{"\n" + burst}}, quantity.Field{Unit: "mmHg"}, time.Second,
-		func(r bench.Reading, err error) error { texts = append(texts, r.Text); return err })
+		func(r *bench.Reading, err error) error { texts = append(texts, r.Text); return err })
 	if !errors.Is(err, line.ErrDeadline) || strings.Join(texts, "\n")+"\n" != burst {
 		t.Errorf("%v, %d texts", err, len(texts))
 	}
@@ -122,7 +122,7 @@ func BenchmarkFiveMinutes(b *testing.B) {
 	for b.Loop() {
 		m := &stream{every: 16 * time.Millisecond, bursts: []string{strings.Repeat("+1500.02\r\n", 16)}, round: true}
 		n := 0
-		err := watch(b, m, quantity.Field{Width: 8, Unit: "uV/V"}, 5*time.Minute, func(r bench.Reading, err error) error {
+		err := watch(b, m, quantity.Field{Width: 8, Unit: "uV/V"}, 5*time.Minute, func(r *bench.Reading, err error) error {
 			n++
 			return err
 		})

@@ -23,10 +23,6 @@ type Question struct {
 	Text  int    // characters; 0 for a number
 }
 
-// mostRegisters is how many registers one answer holds. Source: Modbus
-// application protocol V1.1b3, 6.3 and 6.4, from memory.
-const mostRegisters = 125
-
 // ParseQuestion reads a Question.
 func ParseQuestion(s string) (Question, error) {
 	var q Question

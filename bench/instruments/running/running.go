@@ -56,17 +56,17 @@ func New(l *line.Line, stream bench.Streaming, s Settings) *Manometer {
 
 // take takes what comes; only what began after the call of Read counts, and a
 // reading begins when the one before has ended.
-func (m *Manometer) take(r bench.Reading, err error) error {
+func (m *Manometer) take(r *bench.Reading, err error) error {
 	switch {
 	case m.done:
 	case !m.begun:
 		m.begun = true
 	case err == nil:
-		m.done, m.reading = true, r
+		m.done, m.reading = true, *r
 	case errors.Is(err, quantity.ErrOverRange):
-		m.done, m.err = true, &asked.OverRangeError{Name: m.line.Name(), Text: fmt.Sprintf("%q", r.Text)}
+		m.done, m.err = true, &asked.OverRangeError{Name: m.line.Name(), Text: fmt.Sprintf("%q", r.Received())}
 	default:
-		m.garbled = append(m.garbled, fmt.Sprintf("%q", r.Text))
+		m.garbled = append(m.garbled, fmt.Sprintf("%q", r.Received()))
 		if len(m.garbled) == mostGarbled {
 			m.done, m.err = true, &asked.GarbledError{Name: m.line.Name(), Question: "a reading that comes by itself", Texts: m.garbled, Err: err}
 		}

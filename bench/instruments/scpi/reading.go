@@ -62,6 +62,15 @@ const longestQueue = 64
 
 // set sends a command and asks what the instrument has against it.
 func (i *Instrument) set(ctx context.Context, command string) error {
+	if i.s.Acknowledged != "" {
+		_, err := i.Ask(ctx, command, func(text string) error {
+			if text != i.s.Acknowledged {
+				return fmt.Errorf("%q is not %q", text, i.s.Acknowledged)
+			}
+			return nil
+		})
+		return err
+	}
 	if err := i.Line.Send(ctx, command, i.Within()); err != nil {
 		return err
 	}

@@ -28,7 +28,9 @@ type Settings struct {
 	Uptime   string // question answered in seconds; "" cannot be asked
 	Clear    string // command sent before the first question; "" for none
 	Errors   string // question asked after a setting until 0 leads the answer; "" for none
-	Within   time.Duration
+	// Acknowledged is what a command is answered; "" when nothing is.
+	Acknowledged string
+	Within       time.Duration
 
 	// Of a manometer alone.
 	Read  string         // question answered with one number
