@@ -61,12 +61,12 @@ type onePort struct {
 
 func (p onePort) Inbox() line.Inbox { return p.shown }
 
-func (p onePort) Connect(id line.PortID, name string, baud int) error {
+func (p onePort) Connect(id line.PortID, name string, mode setup.PortMode) error {
 	if name != p.name {
 		return nil
 	}
 	p.shown.port = id
-	return p.Opener.Connect(id, name, baud)
+	return p.Opener.Connect(id, name, mode)
 }
 
 // shownInbox prints the bytes of one port.
@@ -235,7 +235,7 @@ func (x *exchange) read(ctx context.Context, m bench.Manometer) error {
 
 // watch listens to a stream.
 func (x *exchange) watch(ctx context.Context, s bench.Streaming) error {
-	s.Watch(func(r bench.Reading, err error) error {
+	s.Watch(func(r *bench.Reading, err error) error {
 		switch {
 		case err != nil:
 			x.refused++
@@ -245,7 +245,7 @@ func (x *exchange) watch(ctx context.Context, s bench.Streaming) error {
 		default:
 			x.understood++
 			if x.understood <= 10 {
-				fmt.Fprintf(x.out, "           = %s\n", inWordsOf(r))
+				fmt.Fprintf(x.out, "           = %s\n", inWordsOf(*r))
 			}
 		}
 		return nil
