@@ -7,7 +7,8 @@
 // Budget. That gives the standard uncertainty, effective degrees of freedom,
 // coverage factor and 95 % interval after the GUM, or the interval by Monte
 // Carlo where the GUM's is more than 5 % off, and which it was and why.
-// Covariances gives what several figures have in common.
+// Covariances gives what several figures have in common, Rectangle the
+// probability that several quantities lie within bounds together.
 package uncertainty
 
 import (
