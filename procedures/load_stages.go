@@ -40,6 +40,9 @@ type stageFile struct {
 	Fluid               string   `toml:"fluid"`
 	FlushDevice         string   `toml:"flush_device"`
 	VentedWithin        string   `toml:"vented_within"`
+	LongestFor          string   `toml:"longest_for"`
+	Relaxation          string   `toml:"relaxation"`
+	LongestTau          string   `toml:"longest_time_constant"`
 	FluidDensity        string   `toml:"fluid_density"`
 	FluidViscosity      string   `toml:"fluid_viscosity"`
 	DesignedFrequency   string   `toml:"designed_frequency"`
@@ -49,6 +52,8 @@ type stageFile struct {
 // mayHave lists the keys that a kind of stage may have or not.
 func mayHave(kind string) []string {
 	switch kind {
+	case "leak":
+		return []string{"longest_for", "relaxation", "longest_time_constant"}
 	case "zero":
 		return []string{"vented_within", "share_of_limit", "standard_uncertainty", "least_readings"}
 	case "step":
@@ -155,7 +160,19 @@ func (l *loader) leak(d *Definition, i int) Leak {
 	s := Leak{
 		At: l.setPressure(d, i, "at"), Settle: l.span(i, "settle"), For: l.span(i, "for"),
 		HighestRate: tomlfile.Take(l.doc, &l.err, parseRate, "stage", i, "highest_rate"),
-		LongestWait: l.span(i, "longest_wait"),
+		LongestWait: l.span(i, "longest_wait"), Relaxation: quantity.MmHg(5), LongestTau: 90 * time.Second,
+	}
+	s.LongestFor = 4 * s.For
+	if l.doc.Has("stage", i, "longest_for") {
+		s.LongestFor = l.span(i, "longest_for")
+		l.demand(s.LongestFor >= s.For, "the longest hold is shorter than the hold", "", "stage", i, "longest_for")
+	}
+	if l.doc.Has("stage", i, "relaxation") {
+		s.Relaxation = l.above(i, "relaxation")
+	}
+	if l.doc.Has("stage", i, "longest_time_constant") {
+		s.LongestTau = l.span(i, "longest_time_constant")
+		l.demand(s.LongestTau >= time.Second && s.LongestTau <= time.Hour, "a time constant from 1 s to 1 h is meant", "", "stage", i, "longest_time_constant")
 	}
 	l.demand(s.At > 0, "a leak test needs a pressure above atmosphere", "", "stage", i, "at")
 	l.demand(s.HighestRate > 0, "the highest rate is the fall that is allowed, above zero", "", "stage", i, "highest_rate")

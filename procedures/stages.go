@@ -49,6 +49,14 @@ type Leak struct {
 	For         time.Duration
 	HighestRate quantity.Pressure // of fall, per second
 	LongestWait time.Duration     // for the pressure to be reached
+
+	// The hold goes on to LongestFor while the leak cannot be told from what the
+	// gas does as it comes to the temperature of its walls. Of that is believed
+	// beforehand that it is within a few times Relaxation, and no slower than
+	// LongestTau. A file that leaves these out gets four times For, 5 mmHg, 90 s.
+	LongestFor time.Duration
+	Relaxation quantity.Pressure
+	LongestTau time.Duration
 }
 
 // Static takes points up and down. SetPressures is one whole cycle, up leg

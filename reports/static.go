@@ -130,6 +130,13 @@ func (d *Document) leak(l *results.Leak) {
 	} else {
 		r.add("Loss of pressure", "not determined: "+l.Reason)
 	}
+	if l.Own != nil {
+		r.add("Bench by itself", withUnit(stated(*l.Own), "mmHg/s")+", taken off")
+	}
+	if l.Flow != nil {
+		v, u := figure(*l.Flow, l.FlowExpanded, 0.001)
+		r.add("As gas", plusMinus(v, u, "mL/min")+" at that pressure, from "+withUnit(stated(*l.Volume), "mL")+" as the bench file states")
+	}
 	within := "within what the procedure allows"
 	if !l.Within {
 		within = "not shown to be within what the procedure allows"

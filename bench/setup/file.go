@@ -27,6 +27,8 @@ type File struct {
 	Highest, Lowest quantity.Pressure // never to be exceeded
 	Volume          string
 
+	OwnLeak, OwnLeakUncertainty string // of pressure per second, standard; "" when not stated
+
 	Reference Reference
 	UUT       UUT
 	Applied   *Applied // nil when it is not measured

@@ -5,6 +5,7 @@ import (
 	"crypto/sha256"
 	"encoding/hex"
 	"fmt"
+	"math"
 	"path/filepath"
 	"strings"
 	"time"
@@ -37,6 +38,9 @@ type pressureTable struct {
 	Highest string `toml:"highest"`
 	Lowest  string `toml:"lowest"`
 	Volume  string `toml:"volume"`
+
+	OwnLeak            string `toml:"own_leak"`
+	OwnLeakUncertainty string `toml:"own_leak_uncertainty"`
 }
 
 // instrument holds the keys of every role but that of the UUT; keysOf and roles
@@ -164,6 +168,9 @@ func Load(name string, data []byte) (*File, error) {
 	f.Lowest = l.pressure("pressure", "lowest")
 	l.demand(f.Lowest <= 0 && f.Highest > 0, "lowest to highest does not hold atmosphere, where every run begins", "", "pressure", "lowest")
 	f.Volume = tomlfile.TakeIf(doc, &l.err, millilitres, "pressure", "volume")
+	f.OwnLeak = tomlfile.TakeIf(doc, &l.err, rate, "pressure", "own_leak")
+	f.OwnLeakUncertainty = tomlfile.TakeIf(doc, &l.err, rate, "pressure", "own_leak_uncertainty")
+	l.demand((f.OwnLeak == "") == (f.OwnLeakUncertainty == ""), "the bench's own leak and its standard uncertainty are stated together", "", "pressure", "volume")
 	l.reference(f)
 	l.uut(f)
 	l.applied(f)
@@ -320,8 +327,15 @@ func day(s string) (string, error) {
 	return s, nil
 }
 
-// millilitres takes a volume such as "60 mL"; it is told beside a leak and
-// enters no arithmetic, so its unit is known here alone.
+// rate takes a loss of pressure such as "0.002 mmHg/s", not below zero.
+func rate(s string) (string, error) {
+	if r, err := quantity.ParsePressureRate(s); err != nil || !(r >= 0) || math.IsInf(float64(r), 1) {
+		return "", fmt.Errorf("%q is no loss of pressure like \"0.002 mmHg/s\"", s)
+	}
+	return s, nil
+}
+
+// millilitres takes a volume such as "60 mL".
 func millilitres(s string) (string, error) {
 	number, ok := strings.CutSuffix(s, " mL")
 	if x, err := quantity.ParseDecimal(number); !ok || err != nil || x <= 0 {

@@ -16,7 +16,7 @@ func instrumentOf(role string, d setup.Dialogue) record.Instrument {
 func factsOf(f *setup.File) run.Facts {
 	ref := f.Reference
 	facts := run.Facts{
-		Highest: f.Highest, Lowest: f.Lowest,
+		Highest: f.Highest, Lowest: f.Lowest, Volume: f.Volume, OwnLeak: f.OwnLeak, OwnLeakUncertainty: f.OwnLeakUncertainty,
 		Reference: record.Reference{
 			Instrument: instrumentOf("reference", ref.Dialogue), Field: ref.Field, Resolution: ref.Resolution,
 			ResponseTime: ref.ResponseTime, ResponseTimeTolerance: ref.ResponseTimeTolerance,

@@ -51,6 +51,7 @@ type world struct {
 	hum       float64 // mmHg: swing of the pressure itself, at 0.3 Hz
 	creep     float64 // mmHg: of the UUT alone, dying away with creepTau
 	creepTau  float64
+	slow      float64 // share of the amplitude that relaxes more slowly, besides
 	late      float64 // mmHg: how far the reference is behind at the start, besides
 
 	red float64 // state of the noise
@@ -142,4 +143,14 @@ func (w *world) take(rule *Watch, limit float64) outcome {
 			return outcome{seconds: t - start, err: state.Mean - w.error(t), ready: true, state: state}
 		}
 	}
+}
+
+// left is what is still to come of what relaxes.
+func (w *world) left(t float64) float64 {
+	return w.amplitude*math.Exp(-t/w.tau) + w.slowPart(t)
+}
+
+// slowPart relaxes two and a half times slower.
+func (w *world) slowPart(t float64) float64 {
+	return w.slow * w.amplitude * math.Exp(-t/(2.5*w.tau))
 }

@@ -268,6 +268,11 @@ type Hold struct {
 	Stage    int     `json:"stage"`
 	Set      string  `json:"set"`
 	Readings []int64 `json:"readings"`
+	// As the bench file states them: the gas volume that was shut off, and what
+	// the bench loses by itself with the UUT's place closed off.
+	Volume             string `json:"volume,omitempty"`               // "60 mL"
+	OwnRate            string `json:"own_rate,omitempty"`             // "0.002 mmHg/s"
+	OwnRateUncertainty string `json:"own_rate_uncertainty,omitempty"` // standard
 }
 
 // Capture is one step: the lines of its sample blocks, in order. Applied

@@ -210,6 +210,13 @@ type Leak struct {
 	Seconds  float64  `json:"seconds"`
 	Within   bool     `json:"within"`
 	Reason   string   `json:"reason"`
+
+	// Own is what the bench loses by itself, already taken off Rate.
+	Own *float64 `json:"own_mmHg_s,omitempty"`
+	// The same as gas that leaves, at the pressure in the volume.
+	Volume       *float64 `json:"volume_mL,omitempty"`
+	Flow         *float64 `json:"rate_mL_min,omitempty"`
+	FlowExpanded *float64 `json:"rate_mL_min_expanded_uncertainty,omitempty"`
 }
 
 // ErrorPoint is one static reading for the error chart, in mmHg, after zeroing.

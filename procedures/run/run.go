@@ -36,6 +36,8 @@ type Facts struct {
 	Source          record.Instrument
 	Valve           record.Valve
 	Highest, Lowest quantity.Pressure // never to be exceeded
+
+	Volume, OwnLeak, OwnLeakUncertainty string // of the bench, "" when not stated
 }
 
 // Subject is one unit under test with what the bench file states about it.

@@ -135,14 +135,10 @@ func (s *session) leak(ctx context.Context, stage procedures.Leak) error {
 		return err
 	}
 	holds := make([]record.Hold, len(s.units))
-	err := s.readFor(ctx, stage.For, func(a asked) {
-		for i, n := range a.lines {
-			if n > 0 {
-				holds[i].Readings = append(holds[i].Readings, n)
-			}
-		}
-	})
-	if err != nil {
+	for i := range holds {
+		holds[i] = record.Hold{Volume: s.Facts.Volume, OwnRate: s.Facts.OwnLeak, OwnRateUncertainty: s.Facts.OwnLeakUncertainty}
+	}
+	if err := s.hold(ctx, stage, holds); err != nil {
 		return err
 	}
 	live := s.live()
@@ -166,6 +162,47 @@ func (s *session) leak(ctx context.Context, stage procedures.Leak) error {
 	}
 	s.Operator.Tell(fmt.Sprintf("  loss %.4f mmHg/s", *res.Leak.Rate))
 	return nil
+}
+
+// holdOn is how much longer a hold is made at a time while the leak cannot be
+// told from warming.
+const holdOn = 5 * time.Second
+
+// hold reads the reference for the stage's time, and on while the leak is not
+// known well enough, as long as the stage allows.
+func (s *session) hold(ctx context.Context, stage procedures.Leak, holds []record.Hold) error {
+	var t, p []float64
+	take := func(a asked) {
+		t, p = append(t, a.middle), append(p, a.p.MmHg())
+		for i, n := range a.lines {
+			if n > 0 {
+				holds[i].Readings = append(holds[i].Readings, n)
+			}
+		}
+	}
+	settings := ready.LeakSettings{
+		Amplitude: stage.Relaxation.MmHg(), ShortestTau: 0.5, LongestTau: stage.LongestTau.Seconds(), Wanted: stage.HighestRate.MmHg() / 4,
+		Noise: quantity.Pressure(resolution(s.Facts.Reference.Resolution)).MmHg() / (2 * math.Sqrt(3)),
+	}
+	begun, told := s.now(), false
+	if err := s.readFor(ctx, stage.For, take); err != nil {
+		return err
+	}
+	for {
+		l, err := ready.LeakRate(t, p, settings)
+		known := err == nil && (l.Standard <= settings.Wanted || l.Rate-3*l.Standard > stage.HighestRate.MmHg())
+		left := stage.LongestFor - s.now().Sub(begun)
+		if known || left < holdOn {
+			return nil
+		}
+		if !told {
+			told = true
+			s.Operator.Tell(fmt.Sprintf("  the leak cannot be told from warming yet: held on, for %.0f s in all at most", stage.LongestFor.Seconds()))
+		}
+		if err := s.readFor(ctx, holdOn, take); err != nil {
+			return err
+		}
+	}
 }
 
 func leakText(res results.Results) string {
