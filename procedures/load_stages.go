@@ -30,6 +30,8 @@ type stageFile struct {
 	StandardUncertainty string   `toml:"standard_uncertainty"`
 	LeastReadings       int      `toml:"least_readings"`
 	Count               int      `toml:"count"`
+	LeastCount          int      `toml:"least_count"`
+	MostCount           int      `toml:"most_count"`
 	Size                string   `toml:"size"`
 	Direction           string   `toml:"direction"`
 	Before              string   `toml:"before"`
@@ -57,7 +59,7 @@ func mayHave(kind string) []string {
 	case "zero":
 		return []string{"vented_within", "share_of_limit", "standard_uncertainty", "least_readings"}
 	case "step":
-		return []string{"fluid_density", "fluid_viscosity", "designed_frequency", "designed_damping"}
+		return []string{"count", "least_count", "most_count", "fluid_density", "fluid_viscosity", "designed_frequency", "designed_damping"}
 	}
 	return nil
 }
@@ -71,7 +73,7 @@ func stageKeys(kind string) []string {
 		"leak":     "at settle for highest_rate longest_wait",
 		"static": "set_pressures cycles window overshoot share_of_limit standard_uncertainty least_readings " +
 			"longest_wait",
-		"step": "count size direction settle before after longest_wait place line_length bore fluid flush_device",
+		"step": "size direction settle before after longest_wait place line_length bore fluid flush_device",
 	}
 	return strings.Fields(keys[kind])
 }
@@ -246,7 +248,6 @@ func (l *loader) ratio(i int, key string) string {
 
 func (l *loader) step(d *Definition, i int) Step {
 	s := Step{
-		Count:       l.count(i, "count", l.file.Stages[i].Count, 100),
 		Size:        l.setPressure(d, i, "size"),
 		Direction:   tomlfile.TakeWord(l.doc, &l.err, []Direction{Release}, "stage", i, "direction"),
 		Settle:      l.span(i, "settle"),
@@ -265,11 +266,34 @@ func (l *loader) step(d *Definition, i int) Step {
 		DesignedDamping:   l.ratio(i, "designed_damping"),
 	}
 	known := func(key string) bool { return l.doc.Has("stage", i, key) }
+	if known("least_count") || known("most_count") {
+		l.untilDecided(i, &s)
+	} else if known("count") {
+		s.Count = l.count(i, "count", l.file.Stages[i].Count, 100)
+	} else {
+		l.refuse(l.doc.Missing("say how many steps with count, or leave it to the limits between least_count and most_count", "stage", i, "count"))
+	}
 	l.demand(known("fluid_density") == known("fluid_viscosity"), "density without viscosity, or viscosity without density", "state both, or neither", "stage", i, "fluid")
 	l.demand(known("designed_frequency") || !known("designed_damping"), "a designed damping without a designed frequency", "", "stage", i, "designed_damping")
 	l.demand(s.Size > 0, "a release begins above atmosphere", "", "stage", i, "size")
 	l.demand(s.Before+s.After <= time.Minute, "a capture of more than a minute", "", "stage", i, "after")
 	return s
+}
+
+// untilDecided takes the range within which the limits decide how many steps
+// are made: below 3 a scatter says next to nothing, and the intervals that
+// allow for looking after every step are known up to 30.
+func (l *loader) untilDecided(i int, s *Step) {
+	f := l.file.Stages[i]
+	l.demand(!l.doc.Has("stage", i, "count"), "count beside least_count or most_count", "a fixed count, or a range: not both", "stage", i, "count")
+	for _, key := range []string{"least_count", "most_count"} {
+		if l.err == nil && !l.doc.Has("stage", i, key) {
+			l.refuse(l.doc.Missing("", "stage", i, key))
+		}
+	}
+	l.demand(f.LeastCount >= 3 && f.LeastCount <= 30, "least_count is from 3 to 30", "", "stage", i, "least_count")
+	l.demand(f.MostCount > f.LeastCount && f.MostCount <= 30, "most_count is above least_count and at most 30", "", "stage", i, "most_count")
+	s.Least, s.Count = f.LeastCount, f.MostCount
 }
 
 // together looks for what no single stage or limit shows: order, and limits

@@ -38,6 +38,12 @@ func TestRefusals(t *testing.T) {
 		{`lowest = "-5 mmHg"`, `lowest = «"310 mmHg"`, "the lowest pressure is not below the highest", ""},
 		{`lowest = "-5 mmHg"`, `lowest = «"1 mmHg"`, "the lowest pressure is above atmosphere, where every run begins", ""},
 
+		// steps until decided
+		{"kind = \"step\"\ncount = 5", "kind = \"step\"\ncount = «5\nleast_count = 3\nmost_count = 10", "count beside least_count or most_count", "a fixed count, or a range: not both"},
+		{"kind = \"step\"\ncount = 5", "kind = \"step\"\nleast_count = «2\nmost_count = 10", "least_count is from 3 to 30", ""},
+		{"kind = \"step\"\ncount = 5", "kind = \"step\"\nleast_count = 5\nmost_count = «5", "most_count is above least_count and at most 30", ""},
+		{"kind = \"step\"\ncount = 5", "kind = \"step\"\nleast_count = 5\nmost_count = «31", "most_count is above least_count and at most 30", ""},
+
 		// decision
 		{"[decision]\n", "[decision]\n«guard = 1\n", `unknown key "guard" in [decision]`, "it is one of: rule, guard_factor, conditional_pass, conditional_fail"},
 		{`rule = "four_outcome"`, `rule = «"four_outcomes"`, `"four_outcomes" is no rule`, `did you mean "four_outcome"?`},

@@ -77,7 +77,8 @@ type Static struct {
 
 // Step releases a pressure to atmosphere and keeps the UUT's answer.
 type Step struct {
-	Count       int
+	Count       int // steps; at most, when Least is above zero
+	Least       int // with that many steps and from then on, it ends once every dynamic limit is decided
 	Size        quantity.Pressure
 	Direction   Direction
 	Settle      time.Duration // at Size, before the capture begins

@@ -63,6 +63,9 @@ func (g *gathered) compute() (Results, error) {
 	if r.Limits, err = j.limits(); err != nil {
 		return Results{}, err
 	}
+	if r.Step != nil {
+		r.Step.Stopping = j.open(r.Limits)
+	}
 	if r.Curve, err = j.curve(); err != nil {
 		return Results{}, err
 	}

@@ -173,6 +173,22 @@ type Step struct {
 	Response     *Response    `json:"response"` // of the line without a model, as a check
 	Pulse        *PulseErrors `json:"pulse"`
 	Opinions     *Opinions    `json:"opinions"`
+	Stopping     *Stopping    `json:"stopping"` // nil without limits that the steps decide
+}
+
+// Stopping is how the number of steps was found, and what they leave open.
+type Stopping struct {
+	Least int         `json:"least_steps"` // 0: the number was fixed
+	Most  int         `json:"most_steps"`
+	Taken int         `json:"determined_steps"`
+	Wider float64     `json:"interval_factor"` // of the steps' part, for looking after every step
+	Open  []OpenLimit `json:"open"`
+}
+
+// OpenLimit is a dynamic limit that the steps do not decide.
+type OpenLimit struct {
+	Limit string `json:"limit"`
+	More  *int   `json:"more_steps"` // that would decide it, as it looks now; nil when no number allowed would
 }
 
 // StepFigure is one step; its estimates are nil when undetermined.

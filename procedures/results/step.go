@@ -26,6 +26,7 @@ type dynamics struct {
 	all      []captured
 	combined step.Combined
 	edge     step.Tolerance // what the tolerance of the valve's edge can do
+	wider    float64        // factor of the rule the steps stopped by
 }
 
 // stepResults analyses every capture. The second value is nil when there is none.
@@ -51,13 +52,14 @@ func (g *gathered) stepResults(s *scale) (*dynamics, *Step, error) {
 		steps = append(steps, one.steps...)
 		d.all = append(d.all, one)
 	}
-	d.combined = step.Combine(steps)
+	d.combined = step.CombineStopped(steps, g.stopping())
 	out.Combined = Combined{Determined: d.combined.Determined, Reasons: notNil(d.combined.Reasons)}
 	out.Line = g.statedLine()
 	if !d.combined.Determined {
 		return d, out, nil
 	}
 	out.Combined.Frequency, out.Combined.Damping = estimateOf(d.combined.Frequency), estimateOf(d.combined.Damping)
+	d.wider = g.stopping().Factor(d.combined.DegreesOfFreedom)
 	d.edge = edgeShift(s, d.all, d.combined)
 	return d, out, g.derive(s, d, out)
 }
@@ -177,6 +179,9 @@ func (d *dynamics) budgets(s *scale) (frequency, damping *budget) {
 	combined, fn := d.combined, d.combined.Frequency.Value
 	share, zeta := math.Abs(math.Expm1(d.edge.Log)), math.Abs(d.edge.Damping)
 	name := fmt.Sprintf("the fits and the spread of %d steps", combined.Steps)
+	if d.wider > 1 {
+		name += fmt.Sprintf(", %.2f times wider for looking after each", d.wider)
+	}
 	frequency.add(name, fromRun, studentT, "Hz", combined.Frequency.StandardUncertainty, 1, combined.DegreesOfFreedom)
 	frequency.add("sample period, tolerance", fromBench, rectangular, "1", s.periodTolerance/math.Sqrt(3), fn, 0)
 	frequency.add("valve edge, tolerance", fromBench, rectangular, "1", share/math.Sqrt(3), fn, 0)

@@ -75,7 +75,7 @@ func (s *session) trials(ctx context.Context, stage procedures.Step, out *Primin
 	if err := s.closeValve(ctx); err != nil {
 		return err
 	}
-	stage.Count = 1
+	stage.Count, stage.Least = 1, 0
 	u := s.units[0]
 	known := len(u.events)
 	for {

@@ -226,6 +226,9 @@ func inWords(stage procedures.Stage) string {
 	case procedures.Static:
 		return fmt.Sprintf("set pressures, %d points", len(stage.Points()))
 	case procedures.Step:
+		if stage.Least > 0 {
+			return fmt.Sprintf("step response, %d to %d releases from %.0f mmHg, until the limits are decided", stage.Least, stage.Count, stage.Size.MmHg())
+		}
 		return fmt.Sprintf("step response, %d releases from %.0f mmHg", stage.Count, stage.Size.MmHg())
 	}
 	return stage.Kind()

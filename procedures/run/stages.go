@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"strings"
 	"time"
 
 	"kymobench/bench/line"
@@ -337,12 +338,53 @@ func (s *session) step(ctx context.Context, stage procedures.Step) error {
 				return err
 			}
 		}
-		s.Operator.Tell(fmt.Sprintf("  step %d of %d captured", number, stage.Count))
+		if stage.Least == 0 {
+			s.Operator.Tell(fmt.Sprintf("  step %d of %d captured", number, stage.Count))
+			continue
+		}
+		s.Operator.Tell(fmt.Sprintf("  step %d captured, %d at most", number, stage.Count))
+		if number < stage.Least || number == stage.Count {
+			continue
+		}
+		decided, err := s.stepsDecide()
+		if err != nil {
+			return err
+		}
+		if decided {
+			break
+		}
 	}
 	if err := s.command(ctx, func() error { return s.Rig.Source.Vent(ctx) }); err != nil {
 		return s.sourceFault(ctx, err)
 	}
 	return s.durable(ctx)
+}
+
+// stepsDecide says whether the steps so far decide every dynamic limit of every
+// UUT, and tells what is open. It looks at the record alone, so that the same
+// record stops at the same step.
+func (s *session) stepsDecide() (bool, error) {
+	all := true
+	for _, u := range s.live() {
+		res, err := results.Compute(u.events)
+		if err != nil {
+			return false, fmt.Errorf("judge the steps so far: %w", err)
+		}
+		if res.Step == nil || res.Step.Stopping == nil {
+			continue
+		}
+		for _, open := range res.Step.Stopping.Open {
+			all = false
+			text := fmt.Sprintf("  %s of %s is not decided yet", strings.ReplaceAll(open.Limit, "_", " "), u.name())
+			if open.More != nil {
+				text += fmt.Sprintf("; about %d more would do, as it looks now", *open.More)
+			} else {
+				text += "; as it looks now, no number of steps allowed would do"
+			}
+			s.Operator.Tell(text)
+		}
+	}
+	return all, nil
 }
 
 // captured says that every UUT that takes part has its capture.

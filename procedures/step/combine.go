@@ -15,6 +15,9 @@ type Combined struct {
 	Steps              int // determined steps used
 	DegreesOfFreedom   float64
 	Correlation        float64 // of what is uncertain in ln Frequency and in Damping
+	// Standard deviation from step to step, of ln fn and of zeta, at least
+	// what the fits themselves claim of a mean; 0 for a single step.
+	LogScatter, DampingScatter float64
 	// Edge is what the stated edge may do to all steps alike: in the intervals
 	// if the edge time was a bound, else the caller's to add.
 	Edge Tolerance
@@ -41,7 +44,12 @@ const largestUncertainty = 0.05
 //
 // Without a determined step the reasons are those of the steps, or no_step.
 // A mean whose standard uncertainty of ln fn is over 5 % is undetermined.
-func Combine(steps []Step) Combined {
+func Combine(steps []Step) Combined { return CombineStopped(steps, Stopping{}) }
+
+// CombineStopped is Combine for a run that stopped by itself: what comes from
+// the steps, their standard uncertainty and intervals, is larger by the factor
+// of the rule it stopped by.
+func CombineStopped(steps []Step, stopping Stopping) Combined {
 	var c Combined
 	var frequency, damping, frequencyOwn, dampingOwn []float64
 	var within float64 // mean correlation within the fits
@@ -77,23 +85,46 @@ func Combine(steps []Step) Combined {
 	case c.Steps == 0:
 		return c
 	case c.Steps == 1:
-		return Combined{Determined: true, Frequency: only.Frequency, Damping: only.Damping, Steps: 1, DegreesOfFreedom: only.DegreesOfFreedom, Correlation: only.Correlation, Edge: only.Edge}
+		return only.alone(stopping)
 	}
 	c.DegreesOfFreedom = float64(c.Steps - 1)
 	t := studentT(c.DegreesOfFreedom)
 	m, u := mean(frequency, frequencyOwn, t)
-	uLog := u
+	c.LogScatter = u * math.Sqrt(float64(c.Steps))
 	if !(u <= largestUncertainty) {
 		c.Reasons = []string{UncertaintyTooLarge}
 		return c
 	}
+	factor := stopping.Factor(c.DegreesOfFreedom)
+	u *= factor
+	uLog := u
 	c.Determined, c.Reasons = true, nil
 	n := float64(c.Steps)
 	c.Edge = Tolerance{edge.Log / n, edge.Damping / n}
 	c.Frequency = logEstimate(m, u, t).widen(true, widened.Log/n)
 	m, u = mean(damping, dampingOwn, t)
+	c.DampingScatter = u * math.Sqrt(float64(c.Steps))
+	u *= factor
 	c.Damping = Estimate{m, u, math.Max(0, m-t*u), m + t*u}.widen(false, widened.Damping/n)
-	c.Correlation = together(frequency, damping, uLog, u, within/float64(c.Steps))
+	c.Correlation = together(frequency, damping, uLog/factor, u/factor, within/float64(c.Steps))
+	return c
+}
+
+// alone is what a single step says.
+func (s Step) alone(stopping Stopping) Combined {
+	c := Combined{Determined: true, Frequency: s.Frequency, Damping: s.Damping, Steps: 1, DegreesOfFreedom: s.DegreesOfFreedom, Correlation: s.Correlation, Edge: s.Edge}
+	if factor := stopping.Factor(s.DegreesOfFreedom); factor > 1 {
+		inside := Tolerance{}
+		if s.bound {
+			inside = s.Edge
+		}
+		t := studentT(s.DegreesOfFreedom)
+		f, z := s.Frequency, s.Damping
+		u := factor * narrow(f.StandardUncertainty/f.Value, inside.Log)
+		c.Frequency = logEstimate(math.Log(f.Value), u, t).widen(true, inside.Log)
+		u = factor * narrow(z.StandardUncertainty, inside.Damping)
+		c.Damping = Estimate{z.Value, u, math.Max(0, z.Value-t*u), z.Value + t*u}.widen(false, inside.Damping)
+	}
 	return c
 }
 
