@@ -121,7 +121,11 @@ func (q *quality) reserve(fn, zeta float64) {
 		s.reserve(Misfit, fmt.Sprintf("%d single samples stand far out of the rest and were left out", k))
 	}
 	if phi := s.Autocorrelation; phi > 0.2 && phi*math.Sqrt(n) > 5 && s.Noise > 1e-6*math.Abs(s.Height) {
-		s.reserve(ColouredNoise, fmt.Sprintf("the noise is correlated from sample to sample (%.2f); the intervals allow for it", phi))
+		if rate, height, is := q.wave(settling(2*math.Pi*fn, zeta)); is {
+			s.reserve(ResidualWave, fmt.Sprintf("a wave of %.2g from trough to crest, %.0f a minute, lies under the step; the intervals allow for noise that is correlated, not for its shape", height, 60*rate))
+		} else {
+			s.reserve(ColouredNoise, fmt.Sprintf("the noise is correlated from sample to sample (%.2f); the intervals allow for it", phi))
+		}
 	}
 	if text, is := q.misfit(fn, zeta); is {
 		s.reserve(Misfit, text)

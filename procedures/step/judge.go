@@ -96,8 +96,17 @@ func (a *analysis) judge(f fitted, name bool) (Step, bool) {
 	}
 	// With less than one time constant of answer the uncertainty is not to be
 	// trusted either.
-	if !(uLog <= largestUncertainty) || float64(f.to-f.post)*a.dt < settling(2*math.Pi*fn, zeta) {
-		add(UncertaintyTooLarge)
+	tau := settling(2*math.Pi*fn, zeta)
+	answer := float64(f.to-f.post) * a.dt
+	if !(uLog <= largestUncertainty) || answer < tau {
+		switch short := answer < 4*tau || float64(f.pre-f.from)*a.dt < 0.25/fn; {
+		case short && f.to < len(a.y):
+			add(Overlapping)
+		case short:
+			add(Truncated)
+		default:
+			add(UncertaintyTooLarge)
+		}
 	}
 	q.sentence(s.trial, a.settings.ReadoutStated || len(a.settings.Readout) > 0)
 	q.reserve(fn, zeta)
