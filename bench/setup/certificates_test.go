@@ -1,6 +1,7 @@
 package setup
 
 import (
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -52,6 +53,35 @@ func TestCertified(t *testing.T) {
 		low, high := f.Certified()
 		if low.MmHg() != c.low && low.MmHg() > -29 || high.MmHg() < c.high-1e-9 || high.MmHg() > c.high+1e-9 {
 			t.Errorf("%v to %v mmHg, want %v to %v", low.MmHg(), high.MmHg(), c.low, c.high)
+		}
+	}
+}
+
+// A certificate that gives errors is taken with the other sign; one that gives
+// both is refused.
+func TestErrorsOfACertificate(t *testing.T) {
+	good := simulatedFile(t, 1)
+	before, after, _ := strings.Cut(good, "[[reference.certificate.correction]]")
+	_, rest, _ := strings.Cut(after, "[uut]")
+	with := func(tables string) (*File, error) {
+		return Load("bench.toml", []byte(before+tables+"[uut]"+rest))
+	}
+	f, err := with("[[reference.certificate.error]]\nat = \"0 mmHg\"\nerror = \"0 mmHg\"\n[[reference.certificate.error]]\nat = \"200 mmHg\"\nerror = \"0.06 mmHg\"\n" +
+		"[[reference.certificate.error]]\nat = \"40 kPa\"\nerror = \"-0.02 kPa\"\n")
+	if err != nil {
+		t.Fatal(err)
+	}
+	want := []Correction{{"0 mmHg", "0 mmHg"}, {"200 mmHg", "-0.06 mmHg"}, {"40 kPa", "0.02 kPa"}}
+	if !slices.Equal(f.Reference.Certificate.Corrections, want) {
+		t.Errorf("%v, want %v", f.Reference.Certificate.Corrections, want)
+	}
+	for _, bad := range []string{
+		"[[reference.certificate.error]]\nat = \"0 mmHg\"\nerror = \"0 mmHg\"\n[[reference.certificate.correction]]\nat = \"0 mmHg\"\ncorrection = \"0 mmHg\"\n",
+		"[[reference.certificate.error]]\nat = \"100 mmHg\"\nerror = \"0 mmHg\"\n[[reference.certificate.error]]\nat = \"0 mmHg\"\nerror = \"0 mmHg\"\n",
+		"[[reference.certificate.error]]\nat = \"0 mmHg\"\nerror = \"0.06\"\n",
+	} {
+		if _, err := with(bad); err == nil {
+			t.Errorf("taken: %s", bad)
 		}
 	}
 }

@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"math"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"time"
 
@@ -94,6 +95,14 @@ type certificateTable struct {
 	DriftYearly          string            `toml:"drift_per_year"`
 	Temperature          string            `toml:"temperature_of_reading"`
 	Corrections          []correctionTable `toml:"correction"`
+	Errors               []errorTable      `toml:"error"`
+}
+
+// errorTable is what a certificate states that gives errors, reading less true
+// pressure, in place of corrections.
+type errorTable struct {
+	At    string `toml:"at"`
+	Error string `toml:"error"`
 }
 
 type correctionTable struct {
@@ -271,15 +280,42 @@ func (l *loader) certificate(in *certificateTable, out *Certificate) {
 	out.TemperatureOfReading = l.widthIf(quantity.DimNone, at("temperature_of_reading")...)
 	nothing := l.optional(quantity.DimPressure, at("uncertainty")...) == 0 && l.optional(quantity.DimNone, at("uncertainty_of_reading")...) == 0
 	l.demand(!nothing, "a certificate without any uncertainty", "", at("uncertainty")...)
-	var before quantity.Pressure
-	for i, p := range in.Corrections {
-		point := func(key string) []any { return []any{"reference", "certificate", "correction", i, key} }
-		here := l.pressure(point("at")...)
-		l.pressure(point("correction")...)
-		l.demand(i == 0 || here > before, "corrections stand in the order of rising pressure", "", point("at")...)
-		before = here
+	l.demand(len(in.Corrections) == 0 || len(in.Errors) == 0, "the certificate gives corrections and errors",
+		"a correction is what is added to a reading, an error is the reading less the true pressure: state one of the two", at("error")...)
+	l.rising("correction", len(in.Corrections))
+	for _, p := range in.Corrections {
 		out.Corrections = append(out.Corrections, Correction(p))
 	}
+	l.rising("error", len(in.Errors))
+	for i, p := range in.Errors {
+		negative := tomlfile.Take(l.doc, &l.err, opposite, "reference", "certificate", "error", i, "error")
+		out.Corrections = append(out.Corrections, Correction{At: p.At, Correction: negative})
+	}
+}
+
+// rising takes the points of a certificate's table, which stand in the order of
+// rising pressure.
+func (l *loader) rising(what string, n int) {
+	var before quantity.Pressure
+	for i := range n {
+		point := func(key string) []any { return []any{"reference", "certificate", what, i, key} }
+		here := l.pressure(point("at")...)
+		l.pressure(point(what)...)
+		l.demand(i == 0 || here > before, what+"s stand in the order of rising pressure", "", point("at")...)
+		before = here
+	}
+}
+
+// opposite gives a stated pressure with the other sign, in its own unit.
+func opposite(s string) (string, error) {
+	v, err := quantity.ParseAs(s, quantity.DimPressure)
+	if err != nil {
+		return "", err
+	}
+	if v.Stated == 0 {
+		return s, nil
+	}
+	return strconv.FormatFloat(-v.Stated, 'f', -1, 64) + " " + v.Unit.Name, nil
 }
 
 // number takes the question, if there is one, and where the number stands in
