@@ -74,3 +74,25 @@ func TestReplayInterrupted(t *testing.T) {
 		t.Error(err)
 	}
 }
+
+// So is a run whose instruments are of other families: registers, frames, a
+// modem line.
+func TestReplayFamilies(t *testing.T) {
+	j, b := simulatedJobAs(t, t.TempDir(), "reference=modbus,uut=frames,source=lines,valve=modem-line", 4, simulated.Good)
+	path := filepath.Join(t.TempDir(), "run.transcript")
+	var err error
+	if j.ports, err = kept(newMemoryPorts(b), path); err != nil {
+		t.Fatal(err)
+	}
+	out, err := j.carryOne(t.Context())
+	if err != nil || out.Results.Verdict.String() != "accepted" {
+		t.Fatalf("%v, %v, %v", out.Results.Verdict, out.Results.Reasons, err)
+	}
+	if err := runReplay(t.Context(), path, []string{out.record}, "", streams{out: io.Discard, err: io.Discard}); err != nil {
+		t.Error(err)
+	}
+	text, err := os.ReadFile(path)
+	if err != nil || !bytes.Contains(text, []byte("DTR on")) {
+		t.Errorf("%v: no modem line in the transcript", err)
+	}
+}
