@@ -58,6 +58,9 @@ type Dialogue struct {
 	Order        string // of the bytes of its numbers
 }
 
+// Text says that what goes over the port is text.
+func (d Dialogue) Text() bool { return d.Family != familyFrames && d.Family != familyModbus }
+
 // PortMode is how characters go over a port.
 type PortMode struct {
 	Baud     int

@@ -2,6 +2,7 @@ package main
 
 import (
 	"context"
+	"encoding/hex"
 	"errors"
 	"fmt"
 	"io"
@@ -32,7 +33,8 @@ several UUTs "uut NAME"), asks who it is, reads from it for a while, and shows
 every byte that goes either way, what was understood and what was refused. The
 pressure source and the valve are asked who they are and told nothing.
 
---send sends a line of yours instead, and shows what comes back.`,
+--send sends a line of yours instead, and shows what comes back; to an
+instrument that speaks no text, the bytes in hexadecimal digits.`,
 		Example: `  kymobench exchange --bench bench.toml reference
   kymobench exchange --bench bench.toml reference --send "MEAS:PRES?"`,
 		Args: func(_ *cobra.Command, args []string) error {
@@ -46,7 +48,7 @@ pressure source and the valve are asked who they are and told nothing.
 		},
 	}
 	cmd.Flags().StringVar(&o.bench, "bench", "", "bench file")
-	cmd.Flags().StringVar(&o.send, "send", "", "a line to send; the terminator is added")
+	cmd.Flags().StringVar(&o.send, "send", "", "a line to send, with the terminator of the bench file added; bytes such as \"01 03 00 00 00 02 C4 0B\" where no text is spoken")
 	cmd.Flags().Float64Var(&o.seconds, "seconds", 3, "how long to listen, or to read")
 	return cmd
 }
@@ -75,11 +77,20 @@ type shownInbox struct {
 	port line.PortID
 	w    io.Writer
 	most int // bytes of a stream still to be shown
+	hex  bool
+}
+
+// show writes bytes as text in quotes, or as hexadecimal digits.
+func (s *shownInbox) show(data []byte) string {
+	if s.hex {
+		return fmt.Sprintf("% X", data)
+	}
+	return strconv.QuoteToASCII(string(data))
 }
 
 func (s *shownInbox) Send(port line.PortID, data []byte) int64 {
 	if port == s.port {
-		fmt.Fprintf(s.w, "%10.3f > %s\n", s.Now().Seconds(), strconv.QuoteToASCII(string(data)))
+		fmt.Fprintf(s.w, "%10.3f > %s\n", s.Now().Seconds(), s.show(data))
 	}
 	return s.Inbox.Send(port, data)
 }
@@ -90,7 +101,7 @@ func (s *shownInbox) Next(ctx context.Context, until line.Instant) (line.Event, 
 	case err != nil || e.Port != s.port:
 	case e.Kind == line.KindBytes && s.most > 0:
 		s.most -= len(e.Data)
-		fmt.Fprintf(s.w, "%10.3f < %s\n", e.At.Seconds(), strconv.QuoteToASCII(string(e.Data)))
+		fmt.Fprintf(s.w, "%10.3f < %s\n", e.At.Seconds(), s.show(e.Data))
 		if s.most <= 0 {
 			fmt.Fprintln(s.w, "             more of the like comes and is not shown")
 		}
@@ -103,33 +114,34 @@ func (s *shownInbox) Next(ctx context.Context, until line.Instant) (line.Event, 
 // shownBytes is how much of a stream is printed: some screens.
 const shownBytes = 2000
 
-// portOf finds the port of a role in a bench file, and which UUT it is.
-func portOf(f *setup.File, role string) (port string, uut int, err error) {
+// portOf finds the port of a role in a bench file, how it is spoken with, and
+// which UUT it is.
+func portOf(f *setup.File, role string) (d setup.Dialogue, uut int, err error) {
 	places := f.Places()
 	kind, name, _ := strings.Cut(role, " ")
 	switch kind {
 	case "reference":
-		return f.Reference.Port, -1, nil
+		return f.Reference.Dialogue, -1, nil
 	case "source":
-		return f.Pressure.Port, -1, nil
+		return f.Pressure.Dialogue, -1, nil
 	case "valve":
-		return f.Valve.Port, -1, nil
+		return f.Valve.Dialogue, -1, nil
 	case "uut", "readout":
 		for i, p := range places {
 			if p.Name != name && !(name == "" && i == 0) {
 				continue
 			}
 			if kind == "uut" {
-				return p.UUT.Port, i, nil
+				return p.UUT.Dialogue, i, nil
 			}
 			if p.Readout == nil || p.Readout.Port == "" {
-				return "", 0, usagef("the readout has no port of its own in %s", f.Name)
+				return d, 0, usagef("the readout has no port of its own in %s", f.Name)
 			}
-			return p.Readout.Port, i, nil
+			return p.Readout.Dialogue, i, nil
 		}
-		return "", 0, usagef("%s has no UUT %q", f.Name, name)
+		return d, 0, usagef("%s has no UUT %q", f.Name, name)
 	}
-	return "", 0, usagef("no instrument %q: there are reference, uut, readout, source and valve", role)
+	return d, 0, usagef("no instrument %q: there are reference, uut, readout, source and valve", role)
 }
 
 func runExchange(ctx context.Context, role string, o exchangeOptions, ports setup.Opener, io streams) error {
@@ -147,11 +159,15 @@ func runExchange(ctx context.Context, role string, o exchangeOptions, ports setu
 	if err != nil {
 		return err
 	}
-	port, uut, err := portOf(file, role)
+	d, uut, err := portOf(file, role)
 	if err != nil {
 		return err
 	}
-	one := onePort{ports, port, &shownInbox{Inbox: ports.Inbox(), w: io.out, most: shownBytes}}
+	send, err := bytesToSend(o.send, d)
+	if err != nil {
+		return err
+	}
+	one := onePort{ports, d.Port, &shownInbox{Inbox: ports.Inbox(), w: io.out, most: shownBytes, hex: !d.Text()}}
 	rig, err := file.Open(one)
 	if err != nil {
 		return err
@@ -159,7 +175,7 @@ func runExchange(ctx context.Context, role string, o exchangeOptions, ports setu
 	defer rig.Close()
 	until := rig.Inbox.Now().Add(time.Duration(o.seconds * float64(time.Second)))
 	if o.send != "" {
-		rig.Inbox.Send(one.shown.port, []byte(o.send+"\n"))
+		rig.Inbox.Send(one.shown.port, send)
 		return listen(ctx, rig, until)
 	}
 	kind, _, _ := strings.Cut(role, " ")
@@ -179,6 +195,21 @@ func runExchange(ctx context.Context, role string, o exchangeOptions, ports setu
 		return x.read(ctx, u.Asked)
 	}
 	return x.watch(ctx, u.Stream)
+}
+
+// bytesToSend are what --send sends.
+func bytesToSend(text string, d setup.Dialogue) ([]byte, error) {
+	switch {
+	case !d.Text():
+		data, err := hex.DecodeString(strings.ReplaceAll(text, " ", ""))
+		if err != nil {
+			return nil, usagef("%s speaks no text: --send takes bytes such as \"01 03 00 00 00 02 C4 0B\", not %q", d.Family, text)
+		}
+		return data, nil
+	case d.Terminator == "":
+		return []byte(text + "\n"), nil
+	}
+	return []byte(text + d.Terminator), nil
 }
 
 // exchange is one conversation.
@@ -240,7 +271,7 @@ func (x *exchange) watch(ctx context.Context, s bench.Streaming) error {
 		case err != nil:
 			x.refused++
 			if x.refused <= 10 {
-				fmt.Fprintf(x.out, "           x %s: %v\n", strconv.QuoteToASCII(r.Text), err)
+				fmt.Fprintf(x.out, "           x %s: %v\n", strconv.QuoteToASCII(r.Received()), err)
 			}
 		default:
 			x.understood++
@@ -257,7 +288,7 @@ func (x *exchange) watch(ctx context.Context, s bench.Streaming) error {
 }
 
 func inWordsOf(r bench.Reading) string {
-	return fmt.Sprintf("%s is %.6g %s", strconv.QuoteToASCII(r.Text), r.Value.Stated, r.Value.Unit.Name)
+	return fmt.Sprintf("%s is %.6g %s", strconv.QuoteToASCII(r.Received()), r.Value.Stated, r.Value.Unit.Name)
 }
 
 // sum counts what was understood and what was not.

@@ -32,6 +32,7 @@ func mayImport() map[string][]string {
 		"bench/setup": {"bench", "bench/line", "bench/quantity", "bench/tomlfile", "bench/checksum", "bench/instruments/scpi", "bench/instruments/lines",
 			"bench/instruments/frames", "bench/instruments/modbus", "bench/instruments/relay", "bench/instruments/running"},
 
+		"bench/instrumenttest":      {"bench", "bench/line", "bench/quantity"},
 		"bench/instruments/asked":   {"bench", "bench/line", "bench/quantity"},
 		"bench/instruments/scpi":    {"bench", "bench/instruments/asked", "bench/line", "bench/quantity"},
 		"bench/instruments/lines":   {"bench", "bench/line", "bench/quantity"},
