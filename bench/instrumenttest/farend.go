@@ -17,10 +17,10 @@ type farEnd struct {
 
 	silent  bool
 	echoes  bool
-	pieces  int           // answers come in pieces of as many bytes, 0 whole
-	late    time.Duration // of the next answer to Read
-	always  []byte        // in place of every reading
-	instead [][]byte      // in place of the next ones
+	pieces  int             // answers come in pieces of as many bytes, 0 whole
+	lates   []time.Duration // how late the next answers to Read are
+	always  []byte          // in place of every reading
+	instead [][]byte        // in place of the next ones
 
 	heard string
 	out   []line.Event
@@ -69,8 +69,10 @@ func (e *farEnd) answer(at line.Instant, question string) {
 			e.put(at, e.f.Zeroed)
 		}
 	case question == e.f.Read:
-		e.put(at.Add(e.late), e.reading())
-		e.late = 0
+		if len(e.lates) > 0 {
+			at, e.lates = at.Add(e.lates[0]), e.lates[1:]
+		}
+		e.put(at, e.reading())
 	}
 }
 
