@@ -150,6 +150,9 @@ func (g *gathered) conditions() []Row {
 	if ref.ResponseTime != "" {
 		r.add("Response time of the reference", quantityText(ref.ResponseTime))
 	}
+	if ref.Lag != "" {
+		r.add("Lag of the reference", quantityText(ref.Lag)+", corrected; standard uncertainty "+quantityText(ref.LagUncertainty))
+	}
 	r.add("Reference switched on", g.uptime())
 	var zeroed []string
 	for _, z := range g.zeroings {

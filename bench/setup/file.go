@@ -78,6 +78,10 @@ type Reference struct {
 
 	Resolution, ResponseTime, ResponseTimeTolerance, RangeLow, RangeHigh, Height string
 
+	// Lag is how far the reference follows a slow change behind, with its
+	// standard uncertainty; "" when all that is stated is the response time.
+	Lag, LagUncertainty string
+
 	Certificate Certificate
 }
 

@@ -55,6 +55,8 @@ type instrument struct {
 	Resolution            string            `toml:"resolution"`
 	ResponseTime          string            `toml:"response_time"`
 	ResponseTimeTolerance string            `toml:"response_time_tolerance"`
+	Lag                   string            `toml:"lag"`
+	LagUncertainty        string            `toml:"lag_uncertainty"`
 	RangeLow              string            `toml:"range_low"`
 	RangeHigh             string            `toml:"range_high"`
 	Height                string            `toml:"height"`
@@ -250,6 +252,9 @@ func (l *loader) reference(f *File) {
 	r.Resolution = l.above(quantity.DimPressure, "reference", "resolution")
 	r.ResponseTime = l.width(quantity.DimSpan, "reference", "response_time")
 	r.ResponseTimeTolerance = l.widthIf(quantity.DimSpan, "reference", "response_time_tolerance")
+	r.Lag = l.widthIf(quantity.DimSpan, "reference", "lag")
+	r.LagUncertainty = l.widthIf(quantity.DimSpan, "reference", "lag_uncertainty")
+	l.demand((r.Lag == "") == (r.LagUncertainty == ""), "the reference's lag and its standard uncertainty are stated together", "", "reference", "response_time")
 	r.RangeLow = l.stated(quantity.DimPressure, "reference", "range_low")
 	r.RangeHigh = l.stated(quantity.DimPressure, "reference", "range_high")
 	l.demand(l.pressure("reference", "range_low") < l.pressure("reference", "range_high"), "the lowest pressure of the range is not below the highest", "", "reference", "range_low")

@@ -54,6 +54,9 @@ func TestRefusals(t *testing.T) {
 		{`lowest = "-30 mmHg"`, `lowest = «"5 mmHg"`, `lowest to highest does not hold atmosphere, where every run begins`, ""},
 		{`lowest = "-30 mmHg"`, `lowest = «"-300 mmHg"`, `the lowest pressure is below the reference's range: nobody would see it`, ""},
 		{`volume = "60 mL"`, `volume = «"60 ml"`, `"60 ml" is no volume like "60 mL"`, ""},
+		{`volume = "60 mL"`, "own_leak = «\"2 mmHg\"", `"2 mmHg" is no loss of pressure like "0.002 mmHg/s"`, ""},
+		{`volume = "60 mL"`, "own_leak = «\"-2 mmHg/s\"", `"-2 mmHg/s" is no loss of pressure like "0.002 mmHg/s"`, ""},
+		{`volume = "60 mL"`, "volume = «\"60 mL\"\nown_leak = \"0.002 mmHg/s\"", "the bench's own leak and its standard uncertainty are stated together", ""},
 		{`volume = "60 mL"`, `volume = «"-60 mL"`, `"-60 mL" is no volume like "60 mL"`, ""},
 		{"[pressure]\nhighest = \"330 mmHg\"\n", "[«pressure]\n", `key "highest" is missing in [pressure]`, ""},
 
@@ -69,6 +72,8 @@ func TestRefusals(t *testing.T) {
 		{`range_low = "`, `range_low = «"1000 mmHg" # "`, `the lowest pressure of the range is not below the highest`, ""},
 		{uncertainties, "\nuncertainty = «\"0 mmHg\"\nuncertainty_of_reading = \"0 %\"\n", `a certificate without any uncertainty`, ""},
 		{`width = 8`, "separator = \";\"\ncolumn = «-1", `columns are counted from 0 to 64`, ""},
+		{`response_time = "0.3 s"`, "response_time = \"0.3 s\"\nlag = «\"-1 s\"", `lag is below zero`, ""},
+		{`response_time = "0.3 s"`, "response_time = «\"0.3 s\"\nlag = \"0.1 s\"", "the reference's lag and its standard uncertainty are stated together", ""},
 		{`response_time = "0.3 s"`, `response_time = «"-0.3 s"`, `response_time is below zero`, ""},
 		{`response_time_tolerance = "0.1 s"`, `response_time_tolerance = «"-0.1 s"`, `response_time_tolerance is below zero`, ""},
 		{`date = "2026-03-02"`, `date = «2026-03-02`, `key "date" takes text in quotes, not a date or time`, `write the date in quotes: date = "2026-03-02"`},

@@ -14,7 +14,7 @@ import (
 // roleKeys are the keys of a role beside those of its family.
 func roleKeys(role string) string {
 	return map[string]string{
-		"reference": "name zero resolution response_time response_time_tolerance range_low range_high height certificate ",
+		"reference": "name zero resolution response_time response_time_tolerance lag lag_uncertainty range_low range_high height certificate ",
 		"source":    "name set hold vent ",
 		"valve":     "name release shut edge_time edge_time_tolerance ",
 		"uut": "resolution sample_period sample_period_tolerance excitation nominal_sensitivity height height_uncertainty fluid " +

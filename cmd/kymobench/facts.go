@@ -20,6 +20,7 @@ func factsOf(f *setup.File) run.Facts {
 		Reference: record.Reference{
 			Instrument: instrumentOf("reference", ref.Dialogue), Field: ref.Field, Resolution: ref.Resolution,
 			ResponseTime: ref.ResponseTime, ResponseTimeTolerance: ref.ResponseTimeTolerance,
+			Lag: ref.Lag, LagUncertainty: ref.LagUncertainty,
 			RangeLow: ref.RangeLow, RangeHigh: ref.RangeHigh, Height: ref.Height,
 			Certificate: record.Certificate{
 				Number: ref.Certificate.Number, Laboratory: ref.Certificate.Laboratory, Date: ref.Certificate.Date, Due: ref.Certificate.Due,

@@ -23,9 +23,13 @@ func (w *work) compare(f *Figures) {
 // hysteresis compares the legs of each cycle at each set pressure.
 func (w *work) hysteresis(f *Figures) {
 	zero := w.zeroLevel()
+	astray := w.astray()
+	paired := func(k int) bool {
+		return w.paired(k) && !astray[[2]int{w.cells[k].cycle, w.cells[k].level}]
+	}
 	pairs := 0
 	for k := 1; k < len(w.cells); k++ {
-		if w.paired(k) {
+		if paired(k) {
 			pairs++
 		}
 	}
@@ -36,7 +40,7 @@ func (w *work) hysteresis(f *Figures) {
 	mean, n := make([]float64, len(w.levels)), w.ints(len(w.levels))
 	var most float64
 	for k := 1; k < len(w.cells); k++ {
-		if !w.paired(k) {
+		if !paired(k) {
 			continue
 		}
 		c := w.cells[k]
@@ -62,6 +66,22 @@ func (w *work) hysteresis(f *Figures) {
 			f.Points[l].Hysteresis = &mean[l]
 		}
 	}
+}
+
+// astray is the cycles and levels with a reading that was come to from the
+// wrong side; nil, which holds nothing, when there is none.
+func (w *work) astray() map[[2]int]bool {
+	var found map[[2]int]bool
+	for i, yes := range w.Astray {
+		if !yes {
+			continue
+		}
+		if found == nil {
+			found = map[[2]int]bool{}
+		}
+		found[[2]int{w.cycle[i], w.level[i]}] = true
+	}
+	return found
 }
 
 // paired says that cell k is the down leg of the cell before it.

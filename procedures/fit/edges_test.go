@@ -236,3 +236,33 @@ func TestManyRanks(t *testing.T) {
 	same(t, "slope", &f.Line.Slope, 1)
 	same(t, "zero offset", f.ZeroOffset, 1)
 }
+
+// A pair of legs of which one was come to from the wrong side has no
+// hysteresis; everything else is as it was. By hand: the line through what is
+// symmetric about 50 is y = p, so h is what was put in.
+func TestAstray(t *testing.T) {
+	d := Data{
+		Reference: []float64{0, 25, 50, 75, 100, 75, 50, 25, 0}, UUT: []float64{0, 25, 50, 75, 100, 75.4, 50.8, 25.4, 0},
+		Cycle: []int{1, 1, 1, 1, 1, 1, 1, 1, 1}, Down: []bool{false, false, false, false, false, true, true, true, true},
+		Set: []float64{0, 25, 50, 75, 100, 75, 50, 25, 0},
+	}
+	whole, err := Static(d)
+	if err != nil {
+		t.Fatal(err)
+	}
+	d.Astray = []bool{false, false, false, false, false, false, true, false, false}
+	f, err := Static(d)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if math.Abs(whole.Hysteresis.Value-0.8) > 1e-12 || whole.Hysteresis.At != 50 || len(whole.EachHysteresis) != 4 {
+		t.Errorf("all counted: %+v", whole.Hysteresis)
+	}
+	if math.Abs(f.Hysteresis.Value-0.4) > 1e-12 || len(f.EachHysteresis) != 3 || f.Points[2].Hysteresis != nil || f.Line.Slope != whole.Line.Slope {
+		t.Errorf("50 left out: %+v of %d", f.Hysteresis, len(f.EachHysteresis))
+	}
+	d.Astray = d.Astray[1:]
+	if _, err := Static(d); err == nil {
+		t.Error("a mark short is taken")
+	}
+}

@@ -341,7 +341,7 @@ func TestReasons(t *testing.T) {
 	r := rand.New(rand.NewPCG(5, 6))
 	for range 2000 {
 		d := drawn(r)
-		before := Data{append([]float64(nil), d.Reference...), append([]float64(nil), d.UUT...), append([]int(nil), d.Cycle...), append([]bool(nil), d.Down...), append([]float64(nil), d.Set...), append([]int(nil), d.Mounting...), d.Zero}
+		before := Data{append([]float64(nil), d.Reference...), append([]float64(nil), d.UUT...), append([]int(nil), d.Cycle...), append([]bool(nil), d.Down...), append([]float64(nil), d.Set...), append([]int(nil), d.Mounting...), d.Zero, d.Astray}
 		f, err := Static(d)
 		if err != nil {
 			t.Fatal(err)

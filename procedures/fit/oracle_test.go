@@ -40,6 +40,7 @@ type staticTask struct {
 	Set       []float64 `json:"set"`
 	Mounting  []int     `json:"mounting"`
 	Zero      *float64  `json:"zero"`
+	Astray    []bool    `json:"-"`
 }
 
 type answer struct {

@@ -21,6 +21,8 @@ type Data struct {
 	// Zero is y - p at the one zeroing before the first cycle, where it was read
 	// apart from the cycles; nil: the zero offset serves.
 	Zero *float64
+	// Astray marks readings that were come to from the wrong side; nil: none.
+	Astray []bool
 }
 
 // Reservation weakens the figures.
@@ -105,7 +107,8 @@ var ErrData = errors.New("static readings not usable")
 //	linearity      each reading reduced to its set pressure, y + b (set - p);
 //	               averaged over the cycles, then over the legs; largest
 //	               |deviation| of these averages from each of four lines
-//	hysteresis     r(down) - r(up) for each cycle and set pressure
+//	hysteresis     r(down) - r(up) for each cycle and set pressure, unless one of
+//	               its readings was come to from the wrong side
 //	repeatability  range over the cycles of r at one set pressure in one leg, the
 //	               largest; pooled SD over those cells, with its degrees of freedom
 //	zero offset    y - p of the first cell at the set pressure nearest zero
@@ -166,7 +169,8 @@ func Static(d Data) (Figures, error) {
 
 func refuse(d Data) error {
 	n := len(d.Reference)
-	if n == 0 || len(d.UUT) != n || len(d.Cycle) != n || len(d.Down) != n || d.Set != nil && len(d.Set) != n || d.Mounting != nil && len(d.Mounting) != n {
+	if n == 0 || len(d.UUT) != n || len(d.Cycle) != n || len(d.Down) != n || d.Set != nil && len(d.Set) != n || d.Mounting != nil && len(d.Mounting) != n ||
+		d.Astray != nil && len(d.Astray) != n {
 		return fmt.Errorf("%w: columns of unequal length, or no reading", ErrData)
 	}
 	for _, column := range [][]float64{d.Reference, d.UUT, d.Set} {

@@ -68,11 +68,6 @@ func newBank(shortest, longest, slow float64) *bank {
 	return b
 }
 
-func (b *bank) reset() {
-	clear(b.moments)
-	b.n, b.kept = 0, b.kept[:0]
-}
-
 // row5 is a model's columns at a time since the origin, the last only if slow
 // is not 0.
 func row5(slow, tau, t, c float64) [columns]float64 {

@@ -17,11 +17,12 @@ const (
 	Noisy          // its mean is known to Value, Limit is asked; Need more readings
 	Coarse         // the resolution alone leaves Value, Limit is asked: waiting does not help
 	Relaxing       // Still: Value may still be to come, Limit is allowed
+	WrongSide      // Approach: the pressure has been beyond by Value, Limit is allowed
 )
 
 // String is a word for records: "gathering", "moving" and so on, "" for nothing.
 func (k Kind) String() string {
-	words := [...]string{"", "gathering", "moving", "trending", "noisy", "coarse", "relaxing"}
+	words := [...]string{"", "gathering", "moving", "trending", "noisy", "coarse", "relaxing", "wrong side"}
 	if int(k) < len(words) {
 		return words[k]
 	}
@@ -57,6 +58,8 @@ func (s Status) Text(unit string) string {
 		return fmt.Sprintf("noise: difference known to %s %s, %s asked", short(s.Value), unit, short(s.Limit))
 	case Coarse:
 		return fmt.Sprintf("the resolution alone leaves %s %s, %s asked: waiting does not help", short(s.Value), unit, short(s.Limit))
+	case WrongSide:
+		return fmt.Sprintf("approached from the wrong side: the pressure has been beyond by %s %s, so its hysteresis will not count; going back and coming again mends it", short(s.Value), unit)
 	case Relaxing:
 		return fmt.Sprintf("the pressure may still move by %s %s, %s allowed%s", short(s.Value), unit, short(s.Limit), s.within())
 	}

@@ -113,6 +113,8 @@ type Reference struct {
 	Resolution            string         `json:"resolution,omitempty"`
 	ResponseTime          string         `json:"response_time,omitempty"`
 	ResponseTimeTolerance string         `json:"response_time_tolerance,omitempty"`
+	Lag                   string         `json:"lag,omitempty"`             // behind a slow change; readings are corrected for it
+	LagUncertainty        string         `json:"lag_uncertainty,omitempty"` // standard
 	RangeLow              string         `json:"range_low,omitempty"`
 	RangeHigh             string         `json:"range_high,omitempty"`
 	Height                string         `json:"height,omitempty"`
@@ -244,7 +246,11 @@ type Point struct {
 	Excitation string `json:"excitation,omitempty"` // measured with this reading, if it was
 	Ready      string `json:"ready,omitempty"`      // what was waited for, in words
 
-	Settled *Settled `json:"settled,omitempty"`
+	// WrongSide is how far the pressure had been beyond the set pressure on the
+	// way to it ("1.4 mmHg"); "" within the procedure's threshold. The point's
+	// hysteresis is not the UUT's alone and does not count.
+	WrongSide string   `json:"wrong_side,omitempty"`
+	Settled   *Settled `json:"settled,omitempty"`
 }
 
 // Settled is what the difference rule found in the window of a point when it

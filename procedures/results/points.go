@@ -72,6 +72,7 @@ func (g *gathered) takePoint(s *scale, pt record.Point) (taken, error) {
 	}
 	t.nP = len(ps)
 	t.p, t.slope, t.vP, t.dofP = trend(times, ps)
+	t.p += s.lag * t.slope
 	if pt.UUT != "" {
 		y, err := s.uut(pt.UUT, pt.Excitation)
 		t.y, t.nY = y, 1

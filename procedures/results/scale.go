@@ -55,7 +55,8 @@ type scale struct {
 	resolutionReference float64
 	resolutionUUT       float64
 	repeatability       float64 // of a single reading, stated; 0 when not
-	delay               float64 // s: response time, its tolerance and the skew, for slopes
+	lag                 float64 // s: that the readings are corrected for, the reference's less the UUT's
+	delay               float64 // s: half-width of what is left of it, and of the skew, for slopes
 	periodTolerance     float64 // share, half-width
 	edge                string
 	edgeTolerance       float64 // share, half-width
@@ -106,8 +107,14 @@ func newScale(g *gathered) (*scale, error) {
 		s.volts = certified(r.si(g.readout.ExcitationUncertainty, quantity.DimNone), k)
 		s.zeroOf = certified(s.equivalent(g.readout.ZeroUncertainty, per, &r), k)
 	}
+	// A reference whose lag nobody stated follows somewhere within its response
+	// time, and is not corrected.
 	s.delay = r.si(g.reference.ResponseTime, quantity.DimSpan) + r.si(g.reference.ResponseTimeTolerance, quantity.DimSpan) +
 		r.si(g.uut.Delay, quantity.DimSpan) + r.si(g.uut.DelayUncertainty, quantity.DimSpan)
+	if g.reference.Lag != "" {
+		s.lag = r.si(g.reference.Lag, quantity.DimSpan) - r.si(g.uut.Delay, quantity.DimSpan)
+		s.delay = math.Sqrt(3) * math.Hypot(r.si(g.reference.LagUncertainty, quantity.DimSpan), r.si(g.uut.DelayUncertainty, quantity.DimSpan))
+	}
 	s.periodTolerance = r.si(g.uut.SamplePeriodTolerance, quantity.DimNone)
 	if g.valve != nil {
 		s.edge = g.valve.EdgeTime

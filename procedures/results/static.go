@@ -47,6 +47,7 @@ func (g *gathered) staticResults(s *scale) (staticFigures, error) {
 		data.Cycle, data.Down = append(data.Cycle, t.Cycle), append(data.Down, t.Leg == legDown)
 		data.Set = append(data.Set, t.set)
 		data.Mounting = append(data.Mounting, t.Mounting)
+		data.Astray = append(data.Astray, t.WrongSide != "")
 	}
 	all := out.points
 	if out.zero != nil {

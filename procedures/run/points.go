@@ -63,6 +63,9 @@ func (s *session) read(ctx context.Context) (asked, error) {
 	if err := s.checkDisk(); err != nil {
 		return asked{}, err
 	}
+	if s.approach != nil {
+		s.approach.Add(p.MmHg())
+	}
 	n := len(s.units)
 	a := asked{sent: r.Sent, at: r.At, middle: r.Middle().Seconds(), p: p, uuts: make([]heard, n), lines: make([]int64, n)}
 	for _, u := range s.live() {
@@ -266,14 +269,20 @@ func (s *session) take(points []settled, set, window quantity.Pressure, longest 
 }
 
 // rule is the difference rule as the procedure and the bench file set it, for
-// any UUT. The reference's lag is somewhere from none to its response time with
-// its tolerance, which no figure is corrected for: results counts it as this.
+// any UUT. A reference whose lag nobody stated follows somewhere from at once to
+// its response time with its tolerance, and is not corrected; results count the
+// same.
 func (s *session) rule(share float64, standard quantity.Pressure, readings int) ready.Settings {
 	response := spanOf(s.Facts.Reference.ResponseTime)
+	lag, uncertain := 0.0, (response+spanOf(s.Facts.Reference.ResponseTimeTolerance))/math.Sqrt(3)
+	if s.Facts.Reference.Lag != "" {
+		lag, uncertain = spanOf(s.Facts.Reference.Lag), spanOf(s.Facts.Reference.LagUncertainty)
+	}
 	return ready.Settings{
 		Standard:            standard.MmHg(),
 		SlopeShare:          share * s.smallestLimit(),
-		DelayUncertainty:    (response + spanOf(s.Facts.Reference.ResponseTimeTolerance)) / math.Sqrt(3),
+		Delay:               lag,
+		DelayUncertainty:    uncertain,
 		Settling:            response,
 		LeastReadings:       readings,
 		LeastSeconds:        response,

@@ -10,6 +10,7 @@ import (
 	"kymobench/bench"
 	"kymobench/bench/line"
 	"kymobench/bench/quantity"
+	"kymobench/procedures/ready"
 	"kymobench/procedures/record"
 )
 
@@ -30,6 +31,7 @@ type session struct {
 	releasing bool              // a good line rings below zero after a release; only the reference is watched
 	last      quantity.Pressure // of the reference; not a number before its first reading
 	still     still             // of the reference
+	approach  *ready.Approach   // to the point that is being taken, or nil
 }
 
 // within is how long the bookkeeping on a vented bench may take.

@@ -262,16 +262,20 @@ func (s *session) cycle(ctx context.Context, stage procedures.Static, all []proc
 	rule := s.rule(stage.ShareOfLimit, stage.StandardUncertainty, stage.LeastReadings)
 	for i := from; i < to; i++ {
 		point := all[i]
-		if _, err := s.approach(ctx, stage, point, first(stage, i)); err != nil {
+		if err := s.goTo(ctx, stage, point, first(stage, i)); err != nil {
 			return err
 		}
 		points, err := s.settle(ctx, point.Set, stage.Window, rule, stage.LongestWait)
 		if err != nil {
 			return err
 		}
+		wrong, err := s.wrongSide(point)
+		if err != nil {
+			return err
+		}
 		for _, p := range points {
 			_, err = s.keep(p.unit, p.readings, record.Point{
-				Purpose: "static", Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(p.state), Settled: inSettled(p.state),
+				Purpose: "static", WrongSide: wrong, Cycle: point.Cycle, Leg: string(point.Leg), Set: inMmHg(point.Set), Ready: inReady(p.state), Settled: inSettled(p.state),
 			})
 			if err != nil {
 				return err
@@ -292,25 +296,32 @@ func (s *session) cycle(ctx context.Context, stage procedures.Static, all []proc
 // pressure was, so no side is wrong.
 func first(stage procedures.Static, i int) bool { return i%len(stage.SetPressures) == 0 }
 
-// approach goes to the set pressure and notices a wrong-side approach beyond
-// the procedure's threshold.
-func (s *session) approach(ctx context.Context, stage procedures.Static, point procedures.Point, begins bool) (asked, error) {
-	a, err := s.reach(ctx, point.Set, stage.Window, stage.LongestWait)
-	if err != nil {
-		return a, err
+// goTo goes to the set pressure and, from there until the point is taken,
+// follows whether the pressure comes from the right side.
+func (s *session) goTo(ctx context.Context, stage procedures.Static, point procedures.Point, begins bool) error {
+	s.approach = nil
+	if !begins && stage.Overshoot > 0 {
+		s.approach = &ready.Approach{Set: point.Set.MmHg(), Up: point.Leg == procedures.Up, Threshold: stage.Overshoot.MmHg()}
 	}
-	over := a.p - point.Set
-	if point.Leg == procedures.Down {
-		over = -over
+	_, err := s.reach(ctx, point.Set, stage.Window, stage.LongestWait)
+	return err
+}
+
+// wrongSide tells of a pressure that was beyond the procedure's threshold on
+// its way, and returns by how much, as the record states it.
+func (s *session) wrongSide(point procedures.Point) (string, error) {
+	if s.approach == nil {
+		return "", nil
 	}
-	if !begins && stage.Overshoot > 0 && over > stage.Overshoot {
-		text := fmt.Sprintf("cycle %d, %s at %.0f mmHg was approached from the wrong side by %.2f mmHg; its hysteresis is not the UUT's alone",
-			point.Cycle, point.Leg, point.Set.MmHg(), over.MmHg())
-		if err := s.append(record.KindReservation, record.Reservation{Code: "wrong_side", Text: text}); err != nil {
-			return a, err
-		}
+	status := s.approach.Status()
+	s.approach = nil
+	if status.Kind != ready.WrongSide {
+		return "", nil
 	}
-	return a, nil
+	text := fmt.Sprintf("cycle %d, %s at %.0f mmHg was approached from the wrong side by %.2f mmHg; its hysteresis is not the UUT's alone and does not count",
+		point.Cycle, point.Leg, point.Set.MmHg(), status.Value)
+	s.Operator.Tell("  " + status.Text("mmHg"))
+	return inMmHg(quantity.MmHg(status.Value)), s.append(record.KindReservation, record.Reservation{Code: "wrong_side", Text: text})
 }
 
 // captureTries is how often one step is taken again when a line of a UUT was
