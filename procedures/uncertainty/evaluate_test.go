@@ -44,14 +44,14 @@ func TestMethod(t *testing.T) {
 			t.Fatal(c.name, err)
 		}
 		want := GUM
-		if math.Abs(1/(1+c.off)-1) > 0.05 {
+		if math.Abs(c.off) > 0.05 {
 			want = MonteCarlo
 		}
 		exact := e.Shortcut / (1 + c.off)
 		if e.Method != want || e.Why == "" {
 			t.Errorf("%s: by %s, for %q", c.name, e.Method, e.Why)
 		}
-		if e.Method == MonteCarlo && (math.Abs(e.Expanded-exact) > 4*e.Error+1e-4*exact || 2*e.Error > 0.005*e.Expanded) {
+		if e.Method == MonteCarlo && (math.Abs(e.Expanded-exact) > 4*e.Error+1e-4*exact || 2*e.Error > 0.01*e.Expanded) {
 			t.Errorf("%s: %v +- %v, want %v", c.name, e.Expanded, e.Error, exact)
 		}
 		if e.Method == GUM && e.Expanded != e.Shortcut || e.Low != -e.Expanded || e.High != e.Expanded || math.Abs(e.Coverage*e.Standard-e.Expanded) > 1e-12 {
@@ -90,14 +90,14 @@ func TestTolerance(t *testing.T) {
 		least, most int
 	}{
 		{Settings{}, firstDraws, firstDraws}, // a rectangle needs few
-		{Settings{Tolerance: 0.002}, 30_000, 200_000},
+		{Settings{Tolerance: 0.002}, 50_000, 200_000},
 		{Settings{Tolerance: 1e-5, MostDraws: 60_000}, 60_000, 60_000},
 		{Settings{MostDraws: 5000}, 5000, 5000},
 	} {
 		e, err := Evaluate(mixed(Rectangular, 0.99, 0), c.s)
 		tolerance := c.s.Tolerance
 		if tolerance == 0 {
-			tolerance = 0.005
+			tolerance = 0.01
 		}
 		kept := 2*e.Error <= tolerance*e.Expanded
 		if err != nil || e.Draws < c.least || e.Draws > c.most || !kept && e.Draws != c.s.MostDraws {

@@ -89,14 +89,11 @@ func (s *sampler) take(p part) {
 // run draws until two standard errors of the half-width are within the
 // tolerance, and returns the interval and that standard error.
 func (s *sampler) run(set Settings) (low, high, stderr float64, err error) {
-	tolerance, most := set.Tolerance, set.MostDraws
-	if !(tolerance > 0) {
-		tolerance = 0.005
-	}
+	tolerance, most := set.tolerance(), set.MostDraws
 	if most <= 0 {
 		most = 1_000_000
 	}
-	for n := min(firstDraws, most); ; {
+	for n := max(len(s.values), min(firstDraws, most)); ; {
 		if err := s.draw(n); err != nil {
 			return 0, 0, 0, err
 		}

@@ -5,7 +5,10 @@
 //
 // Every probability of deciding wrongly is about this one result, given what
 // was measured and a flat prior: nothing is taken as known of UUTs like it. It
-// is no long-run rate. Rates need a prior: GlobalRisk.
+// is no long-run rate. Rates need a prior: GlobalRisk. With few degrees of
+// freedom it is also on the safe side of what is counted over UUTs that share
+// one unknown scatter: of those passed by a guard band of U, 0.94 times as many
+// as predicted are wrong with 50 degrees of freedom, 0.69 with 9, 0.29 with 3.
 package verdict
 
 import (
