@@ -5,14 +5,15 @@ import (
 	"testing"
 )
 
-// Five simultaneous readings of voltage (V), current (mA) and phase (rad).
-// Source: GUM H.2, table H.2, as printed.
-func impedanceReadings() [3][]float64 {
-	return [3][]float64{
-		{5.007, 4.994, 5.005, 4.990, 4.999},
-		{19.663, 19.639, 19.640, 19.685, 19.678},
-		{1.0456, 1.0438, 1.0468, 1.0428, 1.0433},
+// impedanceReadings are five simultaneous readings of voltage (V), current (mA)
+// and phase (rad).
+func impedanceReadings(t *testing.T) (read [3][]float64) {
+	for _, row := range rowsOf(t, "gum-h2/impedance.csv") {
+		for i := range read {
+			read[i] = append(read[i], number(t, row[i]))
+		}
 	}
+	return read
 }
 
 // moments are the means, the standard uncertainties of the means and their
@@ -41,13 +42,13 @@ func moments(read [3][]float64) (mean, u [3]float64, r [3][3]float64) {
 	return mean, u, r
 }
 
-// Source: GUM H.2, tables H.2 to H.4, printed digits: R = V/I cos(phi),
-// X = V/I sin(phi), Z = V/I with 0.071, 0.295, 0.236 (the second computes to
-// 0.29558 from the readings) and correlations -0.588, -0.485, 0.993.
+// Source: gum-h2, printed digits: R = V/I cos(phi), X = V/I sin(phi), Z = V/I;
+// u(X) computes to 0.29558 from the readings.
 func TestImpedance(t *testing.T) {
-	mean, u, r := moments(impedanceReadings())
+	mean, u, r := moments(impedanceReadings(t))
+	printed := valuesOf(t, "gum-h2/impedance_values.csv", 1)
 	compare(t, []figure{
-		{"r(V,I)", r[0][1], -0.36, 0.02}, {"r(V,phi)", r[0][2], 0.86, 0.01}, {"r(I,phi)", r[1][2], -0.65, 0.01},
+		{"r(V,I)", r[0][1], printed["r(V I)"], 0.02}, {"r(V,phi)", r[0][2], printed["r(V phi)"], 0.01}, {"r(I,phi)", r[1][2], printed["r(I phi)"], 0.01},
 	})
 	keys := []string{"V", "I", "phi"}
 	var in []Input
@@ -62,7 +63,7 @@ func TestImpedance(t *testing.T) {
 		ohm,
 	}
 	var budgets []Budget
-	for i, want := range []struct{ value, u float64 }{{127.732, 0.071}, {219.847, 0.29558}, {254.260, 0.236}} {
+	for i, want := range []struct{ value, u float64 }{{printed["R"], printed["u(R)"]}, {printed["X"], 0.29558}, {printed["Z"], printed["u(Z)"]}} {
 		b := Budget{Inputs: in, Correlations: correlations, Model: models[i]}
 		e, err := Evaluate(b, Settings{Seed: 2, MostDraws: 200_000})
 		if err != nil {
@@ -87,7 +88,7 @@ func TestImpedance(t *testing.T) {
 	}
 	r3 := c.Correlation()
 	compare(t, []figure{
-		{"r(R,X)", r3.At(0, 1), -0.588, 1e-3}, {"r(R,Z)", r3.At(0, 2), -0.485, 1.1e-3}, {"r(X,Z)", r3.At(1, 2), 0.993, 5e-4},
+		{"r(R,X)", r3.At(0, 1), printed["r(R X)"], 1e-3}, {"r(R,Z)", r3.At(0, 2), printed["r(R Z)"], 1.1e-3}, {"r(X,Z)", r3.At(1, 2), printed["r(X Z)"], 5e-4},
 		{"u(X)", math.Sqrt(c.At(1, 1)), 0.29558, 2e-5},
 	})
 }

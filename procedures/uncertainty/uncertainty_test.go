@@ -41,27 +41,6 @@ func TestCombine(t *testing.T) {
 	})
 }
 
-// Source: GUM (JCGM 100:2008) H.1, end gauge; data as printed, in nm. The
-// comparator's inputs make u(d) = 9.7 with 25.6 degrees of freedom; the whole
-// prints 32 nm and 16. Full digits computed elsewhere from the printed data.
-func TestCombineEndGauge(t *testing.T) {
-	comparator := Combine([]Input{
-		{Standard: 5.8, Sensitivity: 1, DegreesOfFreedom: 24}, {Standard: 3.9, Sensitivity: 1, DegreesOfFreedom: 5},
-		{Standard: 6.7, Sensitivity: 1, DegreesOfFreedom: 8},
-	})
-	const length = 50e6 // nominal, as printed
-	whole := Combine([]Input{
-		{Standard: FromExpanded(75, 3), Sensitivity: 1, DegreesOfFreedom: 18},
-		{Standard: comparator.Standard, Sensitivity: 1, DegreesOfFreedom: comparator.DegreesOfFreedom},
-		{Standard: FromHalfWidth(0.05), Sensitivity: -length * 11.5e-6, DegreesOfFreedom: 2},
-		{Standard: FromHalfWidth(1e-6), Sensitivity: length * 0.1, DegreesOfFreedom: 50},
-	})
-	compare(t, []figure{
-		{"u(d)", comparator.Standard, 9.68194195, 1e-8}, {"nu of d", comparator.DegreesOfFreedom, 25.44725, 1e-6},
-		{"u_c", whole.Standard, 31.663767411, 1e-9}, {"nu_eff", whole.DegreesOfFreedom, 16.752147509, 1e-9},
-	})
-}
-
 // Student's t for 95 % by mpmath 1.3.0, those of one, two, three, twelve also as
 // tables print them; out to degrees of freedom where other ways break down
 // (1e9 and more: 1.959963984540054 + 2.3722712/dof).
