@@ -37,7 +37,7 @@ func (g *gathered) compute() (Results, error) {
 		return Results{}, err
 	}
 	r.Static = st.static
-	dyn, steps, err := g.stepResults(s)
+	dyn, steps, err := g.stepResults(s, &st)
 	if err != nil {
 		return Results{}, err
 	}

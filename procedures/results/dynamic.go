@@ -114,7 +114,7 @@ func (g *gathered) statedAt() ([]float64, error) {
 // derive fills in everything that follows from the determined figures.
 func (g *gathered) derive(s *scale, d *dynamics, out *Step) error {
 	joint := d.combined.Joint()
-	joint.Tolerances = []step.Tolerance{{Log: s.periodTolerance}, d.edge}
+	joint.Tolerances = []step.Tolerance{{Log: s.periodTolerance}, d.edge, d.memory}
 	drawn, err := joint.Draw(draws, drawSeed)
 	if err != nil {
 		return err
