@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"os"
+	"strings"
 	"testing"
 )
 
@@ -20,6 +22,13 @@ func checkCoverage(t *testing.T, name string, fn, zeta float64, n int, most floa
 	}
 }
 
+// The 95 % intervals: white noise, noise correlated from sample to sample,
+// coarse digits, several steps with and without a spread of their own three
+// times what the fits claim, edges known, stated and fitted.
+//
+//	KYMOBENCH_FULL=1 go test -run 'TestCoverage$' -v -timeout 90m ./procedures/step
+//
+// makes 5,000 trials a row; KYMOBENCH_ROWS picks rows by a part of their name.
 func TestCoverage(t *testing.T) {
 	type row struct {
 		name  string
@@ -47,6 +56,12 @@ func TestCoverage(t *testing.T) {
 			p.heights = []float64{100, -100, 100, -100, 100}
 			p.spacing += 0.7
 			rows = append(rows, row{"five steps", p, known, 150})
+			p.heights = p.heights[:1]
+			if p.spreadFn, p.spreadZeta = p.bound(false); true {
+				p.spreadFn, p.spreadZeta = 3*p.spreadFn, 3*p.spreadZeta
+			}
+			p.heights = []float64{100, -100, 100, -100, 100}
+			rows = append(rows, row{"five steps, spread", p, known, 150})
 			p = base(fn, zeta)
 			p.sigma = 0.2
 			rows = append(rows, row{"width fitted, T fn 0", p, Settings{MinimumStep: 8}, 400})
@@ -60,7 +75,10 @@ func TestCoverage(t *testing.T) {
 	}
 	var pooled, inside float64
 	for _, row := range rows {
-		sum := simulate(t, row.plan, row.s, trials(row.count/16, 4*row.count), 3)
+		if rows := os.Getenv("KYMOBENCH_ROWS"); full() && !strings.Contains(row.name, rows) {
+			continue
+		}
+		sum := simulate(t, row.plan, row.s, trials(row.count/16, 5000), campaignSeed(3))
 		n := float64(sum.count - sum.refused)
 		rmseFn, rmseZeta := sum.rmse()
 		p := row.plan

@@ -52,6 +52,7 @@ type plan struct {
 	level, drift          float64
 	quantum               float64
 	start                 float64
+	spreadFn, spreadZeta  float64 // standard deviation of ln fn and zeta from step to step
 }
 
 // make draws the trace.
@@ -59,13 +60,21 @@ func (p plan) make(r *rand.Rand) Trace {
 	n := int((p.before + p.spacing*float64(len(p.heights))) * p.rate)
 	t := Trace{Rate: p.rate, Start: p.start, Pressure: make([]float64, n)}
 	noise := r.NormFloat64()
+	fn, zeta := make([]float64, len(p.heights)), make([]float64, len(p.heights))
+	for k := range p.heights {
+		fn[k], zeta[k] = p.fn, p.zeta
+		if p.spreadFn > 0 {
+			fn[k] *= math.Exp(p.spreadFn * r.NormFloat64())
+			zeta[k] += p.spreadZeta * r.NormFloat64()
+		}
+	}
 	for i := range n {
 		at := float64(i) / p.rate
 		v := p.level + p.drift*at
 		for k, h := range p.heights {
 			since := at - p.at(k)
 			if since > -1 {
-				v += h * trueEdge(since, p.width, p.fn, p.zeta)
+				v += h * trueEdge(since, p.width, fn[k], zeta[k])
 			}
 		}
 		noise = p.phi*noise + math.Sqrt(1-p.phi*p.phi)*r.NormFloat64()

@@ -12,7 +12,6 @@ import (
 const (
 	surely   = 1e-6 // beyond this chance a suspect is there, whatever it does
 	probably = 1e-4 // beyond this, and far-reaching, it is reserved
-	lagOnly  = 4e-3 // the same for a lag alone, which hides best and shifts most
 	// farReaching is the shift of ln fn beyond which a suspect that is only
 	// probable is told: less than half the error that must not pass unsaid.
 	farReaching = 0.08
@@ -120,11 +119,7 @@ func (q *quality) sentence(t trial, readoutStated bool) {
 		return
 	}
 	for _, u := range t.all {
-		p := probably
-		if u.kind == lagged && u.z > 0 {
-			p = lagOnly
-		}
-		if math.Abs(u.shift) > farReaching && math.Abs(u.z) > beyond(p, t.freedom) {
+		if math.Abs(u.shift) > farReaching && math.Abs(u.z) > beyond(probably, t.freedom) {
 			s.reserve(Misfit, fmt.Sprintf("the residuals look like %s, by %.1f standard deviations; were it there, the natural frequency would be %.2g %% %s", u.kind, math.Abs(u.z), 100*math.Abs(math.Expm1(u.shift)), higher(u.shift)))
 			return
 		}
