@@ -1,6 +1,11 @@
-// Package fit draws straight lines through static readings. It knows no units
-// and judges nothing. Order of use: NewCurve to correct the reference, then
-// Static, which uses Line and Lines.
+// Package fit draws lines and curves through readings and works out what static
+// readings say of a UUT. It knows no units and judges nothing.
+//
+// Order of use: NewCurve to correct the reference, then Static for all figures;
+// it uses Line (ordinary, in float64), Lines (the four linearities) and, where
+// the noise grows, a weighted line. Linear and FitPolynomial are least squares
+// with stated noise and shared errors in some 32 digits, York the line with
+// errors in both.
 package fit
 
 import (
