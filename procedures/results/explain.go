@@ -43,7 +43,7 @@ func Explain(events []record.Event, rules *procedures.Rules, name string) (Expla
 	if err != nil {
 		return Explanation{}, err
 	}
-	dyn, _, err := g.stepResults(s)
+	dyn, _, err := g.stepResults(s, &st)
 	if err != nil {
 		return Explanation{}, err
 	}
