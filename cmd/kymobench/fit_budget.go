@@ -52,7 +52,7 @@ func printBudget(b *strings.Builder, x results.Budget) {
 	fmt.Fprintf(b, "  u %.4g, dof %s, k %.4g, U %.3g %s: 95 %% interval %.6g to %.6g\n",
 		*x.Standard, dofText(x.DoF), *x.Coverage, *x.Expanded, x.Unit, x.Interval[0], x.Interval[1])
 	if m := x.Sampled; m != nil {
-		fmt.Fprintf(b, "  U is by Monte Carlo, %d draws, seed %d: k x u gives %.3g, more than 5 %% off\n", m.Draws, m.Seed, m.Shortcut)
+		fmt.Fprintf(b, "  U is by Monte Carlo, %d draws, seed %d: the shortcut gives %.3g, more than 5 %% off\n", m.Draws, m.Seed, m.Shortcut)
 	}
 }
 

@@ -113,77 +113,20 @@ func (b *budget) scaled(by float64) *budget {
 	return out
 }
 
-// sampled is how many draws a Monte Carlo takes; they leave some 0.4 % in its
-// half-width.
-const sampled = 50_000
+// drawnTo is the share of the half-width that two standard errors of a Monte
+// Carlo may be: two digits of it are printed.
+const drawnTo = 0.01
 
-// doubtful is by how much the shortcut of GUM (effective degrees of freedom, t
-// factor) and the Monte Carlo may differ before the latter is used.
-const doubtful = 0.05
-
-// summed is what a budget adds up to.
-type summed struct {
-	uncertainty.Combined
-	sampled *MonteCarlo // set when it gave Expanded
+// sum is what the budget adds up to: after the GUM, or by Monte Carlo where
+// that is more than 5 % off.
+func (b *budget) sum(seed uint64) (uncertainty.Evaluation, error) {
+	return uncertainty.Evaluate(uncertainty.Budget{Inputs: b.inputs()}, uncertainty.Settings{Seed: seed, Tolerance: drawnTo})
 }
 
-// sum combines the budget. The shortcut is checked by a Monte Carlo where it
-// can be off: one rectangle outweighs the rest, or few degrees of freedom carry
-// a good part. Where it is off by more than 5 % the Monte Carlo counts.
-func (b *budget) sum(seed uint64) (summed, error) {
-	in := b.inputs()
-	out := summed{Combined: uncertainty.Combine(in)}
-	if b.why != "" || !suspect(in) {
-		return out, nil
+// sampledOf says that an interval was sampled; nil when it was not.
+func sampledOf(e uncertainty.Evaluation) *MonteCarlo {
+	if e.Method != uncertainty.MonteCarlo {
+		return nil
 	}
-	s, err := uncertainty.Sample(together(in, out.Standard), sampled, seed)
-	if err != nil {
-		return out, err
-	}
-	if math.Abs(s.Expanded/out.Expanded-1) > doubtful {
-		out.sampled = &MonteCarlo{Draws: s.Draws, Seed: seed, Expanded: s.Expanded, Error: s.Error, Shortcut: out.Expanded}
-		out.Expanded = s.Expanded
-	}
-	return out, nil
+	return &MonteCarlo{Draws: e.Draws, Seed: e.Seed, Expanded: e.Expanded, Error: e.Error, Shortcut: e.Shortcut}
 }
-
-// together puts what is normal with many degrees of freedom, and what is under
-// a hundredth of the whole, into one contribution: their sum is normal, and one
-// is drawn faster than ten.
-func together(in []uncertainty.Input, whole float64) []uncertainty.Input {
-	rest := uncertainty.Input{Name: "together", Distribution: uncertainty.Normal, Sensitivity: 1}
-	var out []uncertainty.Input
-	for _, i := range in {
-		c := i.Standard * i.Sensitivity
-		many := i.DegreesOfFreedom == 0 || i.DegreesOfFreedom > 200
-		if i.Distribution != uncertainty.Rectangular && many || math.Abs(c) < whole/100 {
-			rest.Standard = math.Hypot(rest.Standard, c)
-			continue
-		}
-		out = append(out, i)
-	}
-	return append(out, rest)
-}
-
-// suspect says whether a Monte Carlo could come out more than 5 % away from
-// the shortcut. Computed with scipy 1.10: one rectangle beside a normal rest is
-// 4.5 % off at 65 % of the variance and 5.5 % at 70 %; a t with 8 degrees of
-// freedom beside a normal rest at worst 4.7 %, with 2 already 14 % at a tenth
-// of the variance.
-func suspect(in []uncertainty.Input) bool {
-	var v, wide, few float64
-	for _, i := range in {
-		c := i.Standard * i.Sensitivity
-		v += c * c
-		switch {
-		case i.Distribution == uncertainty.Rectangular:
-			wide = math.Max(wide, c*c)
-		case i.DegreesOfFreedom > 0 && i.DegreesOfFreedom < fewDegrees:
-			few += c * c
-		}
-	}
-	return wide > 0.65*v || few > 0.05*v && few < 0.999*v
-}
-
-// fewDegrees is below how many the effective degrees of freedom are doubted.
-const fewDegrees = 8

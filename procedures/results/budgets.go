@@ -77,7 +77,7 @@ func (m *measured) stated(seed uint64) (Budget, error) {
 	if err != nil {
 		return out, err
 	}
-	out.Standard, out.Coverage, out.Expanded, out.Sampled = &u.Standard, &u.Coverage, &u.Expanded, u.sampled
+	out.Standard, out.Coverage, out.Expanded, out.Sampled = &u.Standard, &u.Coverage, &u.Expanded, sampledOf(u)
 	if !math.IsInf(u.DegreesOfFreedom, 1) {
 		out.DoF = &u.DegreesOfFreedom
 	}

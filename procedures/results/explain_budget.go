@@ -45,7 +45,11 @@ func (e *explainer) budgeted(f found, judged Limit) bool {
 		}
 		e.u = s.calculate("combined standard uncertainty", root(plus(squares...)), e.l.Unit)
 		u := e.u
-		k := figure(*judged.Coverage)
+		factor := *judged.Coverage
+		if m := judged.Sampled; m != nil {
+			factor = m.Shortcut / *judged.Standard
+		}
+		k := figure(factor)
 		if len(fourths) > 0 {
 			dof := s.calculate("effective degrees of freedom", over(power(u, 4), term{plus(fourths...).text, sum(fourths), 0}), "")
 			s.say("k", fmt.Sprintf("%s: the 97.5 %% point of Student's t with %s degrees of freedom, from a table", k.text, plain(dof.v, 6)))

@@ -186,10 +186,18 @@ func (j *judge) hold(l procedures.Limit, f found, low, high *float64) (Limit, er
 	if err != nil {
 		return out, err
 	}
-	decision := verdict.Judge(f.value, u.Expanded, u.Standard, u.DegreesOfFreedom,
-		verdict.Limit{Low: low, High: high, Resolution: l.Resolution}, d.Rule, d.GuardFactor)
-	out.Outcome, out.FalseAccept, out.GuardBand, out.Reason = decision.Outcome, decision.FalseAccept, decision.GuardBand, decision.Reason
-	out.Value, out.Expanded, out.Standard, out.Coverage, out.Sampled = &f.value, &u.Expanded, &u.Standard, &u.Coverage, u.sampled
+	decision := verdict.Decide(f.value, &u, verdict.Limit{Low: low, High: high, Resolution: l.Resolution}, d.Rule, d.GuardFactor)
+	out.Outcome, out.GuardBand, out.Reason = decision.Outcome, decision.GuardBand, decision.Reason
+	switch decision.Outcome {
+	case verdict.Pass, verdict.ConditionalPass:
+		out.FalseAccept = &decision.WrongAccept
+	case verdict.Fail, verdict.ConditionalFail:
+		out.FalseReject = &decision.WrongReject
+	}
+	if decision.Needed > 0 {
+		out.Needed = &decision.Needed
+	}
+	out.Value, out.Expanded, out.Standard, out.Coverage, out.Sampled = &f.value, &u.Expanded, &u.Standard, &u.Coverage, sampledOf(u)
 	if !math.IsInf(u.DegreesOfFreedom, 1) {
 		out.DoF = &u.DegreesOfFreedom
 	}

@@ -63,6 +63,11 @@ type Limit struct {
 	Sampled    *MonteCarlo  `json:"monte_carlo"` // set when Expanded is by Monte Carlo
 	Budget     []BudgetLine `json:"budget"`
 
+	FalseReject *float64 `json:"false_reject_probability"`
+	// Needed is the expanded uncertainty with which this value would have been
+	// decided without condition; nil when it was, or when none would do.
+	Needed *float64 `json:"needed_expanded_uncertainty"`
+
 	at int // of accuracy: the point that decided it, -1 for none
 }
 
