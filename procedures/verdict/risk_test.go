@@ -176,9 +176,9 @@ func TestRisk(t *testing.T) {
 // within reach of the limit. With r = found/u, wrong over predicted is E[(z - w)+]/(E[r] E[(t - k)+]), w = k r. By quadrature with scipy
 // 1.10.1 over r (chi).
 func TestRiskOneForAll(t *testing.T) {
-	n := 300_000
+	n := 100_000
 	if os.Getenv("KYMOBENCH_FULL") != "" {
-		n *= 10
+		n *= 30
 	}
 	for _, c := range []struct {
 		l     lot
