@@ -33,6 +33,9 @@ func Prime(ctx context.Context, settings Settings) (Priming, error) {
 		return Priming{}, fmt.Errorf("one line is filled at a time, not %d", len(settings.Subjects))
 	}
 	s := newSession(settings)
+	if err := s.streams(); err != nil {
+		return Priming{}, err
+	}
 	defer s.vent("")
 	if err := s.identify(ctx); err != nil {
 		return Priming{}, fmt.Errorf("the bench is not as its file says: %w", err)

@@ -110,6 +110,9 @@ func Carry(ctx context.Context, settings Settings) ([]Outcome, error) {
 		return nil, fmt.Errorf("%d units under test for %d places of the bench", len(settings.Subjects), len(settings.Rig.UUTs))
 	}
 	s := newSession(settings)
+	if err := s.streams(); err != nil {
+		return nil, err
+	}
 	defer s.vent("end of the program's work")
 	if err := s.identify(ctx); err != nil {
 		return nil, fmt.Errorf("the bench is not as its file says: %w", err)

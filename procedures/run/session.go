@@ -58,6 +58,9 @@ func newSession(settings Settings) *session {
 	})
 	e.Handle(line.KindGone, s.tookGone)
 	for _, u := range s.units {
+		if u.rig.Stream == nil {
+			continue // refused by streams before anything is done
+		}
 		u.rig.Stream.Watch(func(r *bench.Reading, err error) error { return s.tookSample(u, *r, err) })
 	}
 	return s
@@ -161,4 +164,15 @@ func ventReason(err error) string {
 		return "all stages done"
 	}
 	return err.Error()
+}
+
+// streams refuses a UUT that is only asked: points and steps are taken from a
+// stream so far.
+func (s *session) streams() error {
+	for _, u := range s.units {
+		if u.rig.Stream == nil {
+			return fmt.Errorf("%s is asked for its readings and does not send them by itself: a run cannot read such a UUT yet", u.name())
+		}
+	}
+	return nil
 }
