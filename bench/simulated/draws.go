@@ -174,6 +174,13 @@ func (d *drawn) worsen(s Settings) {
 		// A narrowing, or a restrictor of the wrong kind. Above 1.7 the fits'
 		// own uncertainty of fn nears 5 % at this noise.
 		d.zeta = between(r, 1.35, 1.7)
+	case Nonlinear:
+		// At 100 mmHg, 8/9 of it: 4.4 mmHg or more, where 3 are allowed.
+		d.bow = sign * between(r, 5, 8)
+	case Noisy:
+		// The mean of a point asks for 0.02 mmHg, which this noise gives in more
+		// than a minute; and it stays within 330 mmHg at 300.
+		d.noise = between(r, 5.4, 5.8)
 	}
 }
 

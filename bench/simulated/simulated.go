@@ -38,6 +38,10 @@
 //	                              bubble lowers fn to U(10, 15) Hz, fn x zeta
 //	                              as it was; damping ratio then 0.64 to 1.6
 //	  overdamped                  damping ratio U(1.35, 1.7)
+//	  nonlinear                   bow +-U(5, 8) mmHg, either sign
+//	  noisy                       white, N(s), s = U(5.4, 5.8) mmHg: no point is
+//	                              ready in time, and whose noise it is, the
+//	                              UUT's or its readout's, no run can tell
 //	the bench
 //	  reference, scale            N(0.03 %), common to all readings
 //	  reference, at each 50 mmHg  N(0.02 mmHg), linear between, 0 at 0
@@ -96,11 +100,13 @@ const (
 	Leak             = "leak"
 	AirBubble        = "air-bubble"
 	Overdamped       = "overdamped"
+	Nonlinear        = "nonlinear"
+	Noisy            = "noisy"
 )
 
 // Conditions lists the names that Settings.Condition takes.
 func Conditions() []string {
-	return []string{Good, WrongSensitivity, Offset, Hysteresis, Leak, AirBubble, Overdamped}
+	return []string{Good, WrongSensitivity, Offset, Hysteresis, Leak, AirBubble, Overdamped, Nonlinear, Noisy}
 }
 
 // Roles of the bench, the names of its machines and of its ports.
@@ -254,6 +260,8 @@ func serialNumber(condition string, seed uint64) string {
 		code = "B"
 	case Overdamped:
 		code = "D"
+	case Noisy:
+		code = "Y"
 	}
 	return fmt.Sprintf("SIM-%s%06d", code, seed)
 }

@@ -194,7 +194,7 @@ func truths(b *Bench) map[string]float64 {
 func TestRanges(t *testing.T) {
 	outside := map[string]string{
 		WrongSensitivity: "sensitivity", Offset: "zero_offset", Hysteresis: "hysteresis", Leak: "leak", AirBubble: "natural_frequency",
-		Overdamped: "damping_ratio",
+		Overdamped: "damping_ratio", Nonlinear: "accuracy",
 	}
 	for _, condition := range Conditions() {
 		for seed := range uint64(400) {
@@ -237,6 +237,10 @@ func TestConditionsChangeOnlyTheirs(t *testing.T) {
 				d.fn, d.zeta, d.dry = good.fn, good.zeta, good.dry
 			case Overdamped:
 				d.zeta = good.zeta
+			case Nonlinear:
+				d.bow = good.bow
+			case Noisy:
+				d.noise = good.noise
 			}
 			if d != good {
 				t.Errorf("seed %d: %s changes more than its own", seed, condition)

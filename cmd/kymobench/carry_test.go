@@ -125,13 +125,16 @@ func TestBadIsNotAccepted(t *testing.T) {
 		switch condition {
 		case simulated.Good:
 			continue
-		case simulated.Leak:
+		case simulated.Leak, simulated.Noisy:
 			want = "inconclusive"
 		}
 		for seed := range seeds(3) {
 			out, _ := simulatedRun(t, t.TempDir(), seed+1, condition)
 			if got := out.Results.Verdict.String(); got != want {
 				t.Errorf("%s, seed %d: %s, %v", condition, seed+1, got, out.Results.Reasons)
+			}
+			if condition == simulated.Noisy && (len(out.Results.Reasons) == 0 || out.Results.Reasons[0].Code != "not_settling") {
+				t.Errorf("noisy, seed %d: %v", seed+1, out.Results.Reasons)
 			}
 			if condition == simulated.Leak && (len(out.Results.Reasons) == 0 || out.Results.Reasons[0].Code != "leak") {
 				t.Errorf("leak, seed %d: %v", seed+1, out.Results.Reasons)
