@@ -198,6 +198,14 @@ func (w *Watch) seconds(readings int) float64 {
 	return float64(max(readings, 0)) * w.sums.period()
 }
 
+// readings is how many readings a time brings, at least one.
+func (w *Watch) readings(seconds float64) int {
+	if period := w.sums.period(); period > 0 {
+		return max(1, int(math.Ceil(seconds/period-1e-9)))
+	}
+	return 1
+}
+
 // window returns the start of the window to be judged: of the starts that keep
 // the slope's share, the one that makes noise and delay together least, the
 // noise of one difference being that over the longest of them; false, and the
@@ -295,11 +303,18 @@ func (w *Watch) decide(a int) (state State, clean bool) {
 	case trend:
 		state.Status = Status{Kind: Trending, Value: state.Trend, Seconds: math.Inf(1)}
 	case state.Seconds < set.LeastSeconds:
-		state.Status = Status{Kind: Gathering, Have: state.Readings, Need: state.Readings + 1, Seconds: set.LeastSeconds - state.Seconds}
+		left := set.LeastSeconds - state.Seconds
+		state.Status = Status{Kind: Gathering, Have: state.Readings, Need: state.Readings + w.readings(left), Seconds: left}
 	case set.Standard > 0 && enough && moved <= 2*set.Standard && state.Standard <= set.Standard:
 		state.Ready = true
 	case set.Standard > 0 && enough && moved <= 2*set.Standard && state.Resolution > set.Standard && math.Hypot(state.Noise, state.Settling) <= set.Standard:
 		state.Status = Status{Kind: Coarse, Value: state.Resolution, Limit: set.Standard, Seconds: math.Inf(1)}
+	case !enough && state.Standard <= set.Standard:
+		more := int(math.Ceil(float64(set.LeastReadings)*state.safe)) - state.Readings
+		state.Status = Status{Kind: Unsure, Value: state.Trend, Need: max(more, 1), Seconds: w.seconds(more)}
+	case moved > 2*set.Standard && state.Standard <= set.Standard:
+		more := int(float64(state.Readings) * (math.Sqrt(moved/(2*set.Standard)) - 1))
+		state.Status = Status{Kind: Unsure, Value: state.Trend, Need: max(more, 1), Seconds: w.seconds(max(more, 1))}
 	default:
 		state.Status = w.noisy(state)
 	}

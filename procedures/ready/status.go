@@ -14,6 +14,7 @@ const (
 	Gathering      // readings: Have of Need
 	Moving         // the reference's slope, Value a second
 	Trending       // the difference itself, Value a second
+	Unsure         // whether the difference stands still, by so few readings: Need more
 	Noisy          // its mean is known to Value, Limit is asked; Need more readings
 	Coarse         // the resolution alone leaves Value, Limit is asked: waiting does not help
 	Relaxing       // Still: Value may still be to come, Limit is allowed
@@ -22,7 +23,7 @@ const (
 
 // String is a word for records: "gathering", "moving" and so on, "" for nothing.
 func (k Kind) String() string {
-	words := [...]string{"", "gathering", "moving", "trending", "noisy", "coarse", "relaxing", "wrong side"}
+	words := [...]string{"", "gathering", "moving", "trending", "unsure", "noisy", "coarse", "relaxing", "wrong side"}
 	if int(k) < len(words) {
 		return words[k]
 	}
@@ -51,6 +52,8 @@ func (s Status) Text(unit string) string {
 		return fmt.Sprintf("reference still moving %s %s/s%s", short(s.Value), unit, s.within())
 	case Trending:
 		return fmt.Sprintf("the UUT moves against the reference, %s %s/s%s", short(s.Value), unit, s.within())
+	case Unsure:
+		return fmt.Sprintf("too few readings to be sure that the difference stands still: %d more%s", s.Need, s.within())
 	case Noisy:
 		if s.Need > 0 {
 			return fmt.Sprintf("noise: difference known to %s %s, %s asked: %d more readings%s", short(s.Value), unit, short(s.Limit), s.Need, s.within())

@@ -200,6 +200,7 @@ func (p *settled) waiting(set, window quantity.Pressure) string {
 func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rule ready.Settings, longest time.Duration) ([]settled, error) {
 	began := s.now()
 	until := began.Add(longest)
+	begin := began.Add(tellAfter + time.Duration(rule.LeastSeconds*float64(time.Second)))
 	watches := make([]*ready.Watch, len(s.units))
 	points := make([]settled, len(s.units))
 	told := make([]ready.Kind, len(s.units))
@@ -228,7 +229,7 @@ func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rul
 				})
 			}
 			all = all && p.done()
-			if kind := p.state.Status.Kind; !p.done() && kind != told[u.index] && s.now() > began.Add(tellAfter) {
+			if kind := p.state.Status.Kind; !p.done() && kind != told[u.index] && s.now() > begin {
 				told[u.index] = kind
 				s.Operator.Tell(fmt.Sprintf("  %s: waiting, %s", u.name(), p.waiting(set, window)))
 			}
@@ -246,8 +247,8 @@ func (s *session) settle(ctx context.Context, set, window quantity.Pressure, rul
 	}
 }
 
-// tellAfter is how long a point may take before the operator is told what it
-// waits for; most points take less, and a line for each would bury the rest.
+// tellAfter is how long a point may take, beside the time it is to last, before
+// the operator is told what it waits for; most points take less, and a line for each would bury the rest.
 const tellAfter = 3 * time.Second
 
 // take returns the windows that are ready and leaves the other UUTs out.
