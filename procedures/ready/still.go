@@ -22,8 +22,8 @@ type StillSettings struct {
 	// ShortestTau and LongestTau bound the time constant of what relaxes (s).
 	ShortestTau, LongestTau float64
 	// TwoParts is the probability given beforehand to a second, slower part.
-	// Without it a slow fifth of what relaxes is overlooked in two points of
-	// five; with 5 % in one of forty, but points take half as long again.
+	// With 0, a slow fifth of what relaxes is overlooked in two points of five;
+	// with 5 % in one of sixty, but points take half as long again.
 	TwoParts float64
 	// Least is the shortest wait (s).
 	Least float64

@@ -90,10 +90,11 @@ func TestStillHostile(t *testing.T) {
 		most float64
 		with func(w *world)
 	}{
-		{"red 0.5", stillSettings(), 0.01, func(w *world) { w.phi = 0.5 }},
-		{"red 0.9", stillSettings(), 0.02, func(w *world) { w.phi = 0.9 }},
+		{"red 0.5", stillSettings(), 0.003, func(w *world) { w.phi = 0.5 }},
+		{"red 0.9", stillSettings(), 0.003, func(w *world) { w.phi = 0.9 }},
 		{"1 Hz", stillSettings(), 0.003, func(w *world) { w.rate = 1 }},
 		{"amplitude 5", stillSettings(), 0.003, func(w *world) { w.amplitude = 5 }},
+		{"two parts believed where there is one", two, 0.003, func(*world) {}},
 		{"a fifth relaxes more slowly, one part believed", stillSettings(), 0.5, func(w *world) { w.amplitude *= 0.8; w.slow = 0.25 }},
 		{"a fifth relaxes more slowly, two parts believed", two, 0.03, func(w *world) { w.amplitude *= 0.8; w.slow = 0.25 }},
 	}
