@@ -65,6 +65,10 @@ func (e *explainer) point(s *sheet, t *taken) (p, y term) {
 		terms = append(terms, s.calculate(fmt.Sprintf("reference, line %d, %q", n, text), e.correctedTerm(text), unit))
 	}
 	p = s.calculate("reference, mean", over(term{plus(terms...).text, sum(terms), 0}, figure(float64(len(terms)))), unit)
+	if e.s.lag != 0 {
+		p = s.calculate("reference, its lag made good: mean + (lag less that of the UUT) x slope by least squares over the readings' times",
+			plus(p, times(figure(e.s.lag), figure(t.slope))), unit)
+	}
 	return p, e.output(s, t)
 }
 
