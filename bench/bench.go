@@ -104,12 +104,11 @@ type Valve interface {
 
 // UUT is how one unit under test of a rig is read.
 type UUT struct {
-	Name     string     // of its place on the manifold, "" when it is the only one
-	Stream   Streaming  // nil when it does not send by itself
-	Asked    Manometer  // nil when it is not asked
-	Applied  Streaming  // the applied pressure on the same converter clock; nil when it is not measured
-	Readout  Identified // who turns the bridge into numbers; nil when it cannot be asked
-	SamePort bool       // its port is that of another UUT
+	Name    string     // of its place on the manifold, "" when it is the only one
+	Stream  Streaming  // nil when it does not send by itself
+	Asked   Manometer  // nil when it is not asked
+	Applied Streaming  // the applied pressure on the same converter clock; nil when it is not measured
+	Readout Identified // who turns the bridge into numbers; nil when it cannot be asked
 }
 
 // Rig is the set of instruments of one run.

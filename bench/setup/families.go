@@ -144,19 +144,18 @@ func (p framePort) channel(f quantity.Field) (bench.Streaming, error) {
 
 // stream opens a port that sends by itself, or gives that which another UUT has
 // opened.
-func (w *opening) stream(role string, uut int, d Dialogue) (c channels, shared bool, err error) {
-	if c, shared = w.shared[d.Port]; shared {
-		return c, true, nil
+func (w *opening) stream(role string, uut int, d Dialogue) (channels, error) {
+	if c, shared := w.shared[d.Port]; shared {
+		return c, nil
 	}
 	l, err := w.connect(role, uut, d)
 	if err != nil {
-		return nil, false, err
+		return nil, err
 	}
+	var c channels = linePort{lines.NewPort(l)}
 	if d.Family == familyFrames {
 		c = framePort{frames.NewPort(l)}
-	} else {
-		c = linePort{lines.NewPort(l)}
 	}
 	w.shared[d.Port] = c
-	return c, false, nil
+	return c, nil
 }

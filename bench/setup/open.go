@@ -101,11 +101,10 @@ func (w *opening) uut(i int, p Place, applied *Applied) (bench.UUT, error) {
 			return u, err
 		}
 	} else {
-		port, shared, err := w.stream(of("UUT"), i, p.UUT.Dialogue)
+		port, err := w.stream(of("UUT"), i, p.UUT.Dialogue)
 		if err != nil {
 			return u, err
 		}
-		u.SamePort = shared
 		if u.Stream, err = port.channel(p.UUT.Field); err != nil {
 			return u, err
 		}
