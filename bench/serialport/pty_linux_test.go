@@ -24,6 +24,16 @@ import (
 	"kymobench/bench/quantity"
 )
 
+// without skips what this machine lacks, and fails where KYMOBENCH_OUTSIDE=1
+// says that nothing is lacking.
+func without(t *testing.T, format string, a ...any) {
+	t.Helper()
+	if os.Getenv("KYMOBENCH_OUTSIDE") == "1" {
+		t.Fatalf(format, a...)
+	}
+	t.Skipf(format, a...)
+}
+
 // farEnd opens a pseudo-terminal and returns its master, the far end of the
 // cable, and the name of the port. The system's own raw mode is not set here:
 // the library does that when it opens the port.
@@ -31,7 +41,7 @@ func farEnd(t *testing.T) (*os.File, string) {
 	t.Helper()
 	fd, err := unix.Open("/dev/ptmx", unix.O_RDWR|unix.O_NOCTTY|unix.O_CLOEXEC|unix.O_NONBLOCK, 0)
 	if err != nil {
-		t.Skipf("no pseudo-terminals here: %v", err)
+		without(t, "no pseudo-terminals here: %v", err)
 	}
 	master := os.NewFile(uintptr(fd), "far end")
 	t.Cleanup(func() { _ = master.Close() })
@@ -315,7 +325,7 @@ func TestNotAPort(t *testing.T) {
 func TestTooManyFiles(t *testing.T) {
 	var limit syscall.Rlimit
 	if err := syscall.Getrlimit(syscall.RLIMIT_NOFILE, &limit); err != nil || limit.Cur < 1200 {
-		t.Skipf("only %d files may be open here, %v", limit.Cur, err)
+		without(t, "only %d files may be open here, %v", limit.Cur, err)
 	}
 	_, name := farEnd(t)
 	for {
