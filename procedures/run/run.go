@@ -114,7 +114,7 @@ func Carry(ctx context.Context, settings Settings) ([]Outcome, error) {
 		return nil, err
 	}
 	defer s.vent("end of the program's work")
-	if err := s.identify(ctx); err != nil {
+	if err := s.meet(ctx); err != nil {
 		return nil, fmt.Errorf("the bench is not as its file says: %w", err)
 	}
 	for _, u := range s.units {
@@ -131,19 +131,48 @@ func Carry(ctx context.Context, settings Settings) ([]Outcome, error) {
 	return s.end(ctx, err)
 }
 
+// meet asks every instrument who it is, again where a port went away and came
+// back meanwhile. There is no record yet, and nothing is under pressure.
+func (s *session) meet(ctx context.Context) error {
+	err := s.identify(ctx)
+	for f := spoilt(err); f != nil && s.interruptions < mostInterruptions; f = spoilt(err) {
+		s.interruptions++
+		s.Operator.Tell("! " + f.Error() + "; it is waited for")
+		if err = s.reconnect(ctx, f); err == nil {
+			err = s.identify(ctx)
+		}
+	}
+	return err
+}
+
 // work is everything from the opening line to the last stage.
 func (s *session) work(ctx context.Context) error {
 	if err := s.open(ctx); err != nil {
 		return err
 	}
-	if err := s.warn(ctx); err != nil {
-		return err
+	err := s.prepare(ctx)
+	for f := spoilt(err); f != nil; f = spoilt(err) {
+		if err = s.interrupt(ctx, f, s.mark()); err == error(f) {
+			return err
+		}
+		if err == nil {
+			err = s.prepare(ctx)
+		}
 	}
-	// An earlier run may have ended by opening the fast valve.
-	if err := s.closeValve(ctx); err != nil {
+	if err != nil {
 		return err
 	}
 	return s.stages(ctx)
+}
+
+// prepare is what comes before the first stage: the warnings, the UUTs being
+// connected, the fast valve shut, for an earlier run may have ended by opening
+// it.
+func (s *session) prepare(ctx context.Context) error {
+	if err := s.warn(ctx); err != nil {
+		return err
+	}
+	return s.closeValve(ctx)
 }
 
 // stages carries the stages out in order. A fault that may be taken again sends
