@@ -130,10 +130,10 @@ func (c faultCase) carry(t *testing.T, exchanges int) faultOutcome {
 
 // Every fault of a line at every place of it: no verdict is wrong, no record is
 // lost, and of the runs that can be brought to their true verdict in spite of
-// the fault at least 99 % are. KYMOBENCH_FULL=1 takes 22 faults x 250 positions
+// the fault at least 99 % are. KYMOBENCH_FULL=1 takes 23 faults x 250 positions
 // x 4 roles; KYMOBENCH_FAULT picks one kind.
 func TestLineFaults(t *testing.T) {
-	positions := 1
+	positions := 5
 	if os.Getenv("KYMOBENCH_FULL") == "1" {
 		positions = 250
 	}

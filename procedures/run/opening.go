@@ -118,6 +118,15 @@ func (s *session) open(ctx context.Context) error {
 			}
 		}
 	}
+	for _, u := range s.units {
+		if u.rig.Applied == nil {
+			continue
+		}
+		text := "the bench measures the applied pressure, and a run does not read it yet: the valve's stated edge was used for the steps"
+		if _, err := s.put(u, record.KindReservation, record.Reservation{Code: "applied_not_read", Text: text}); err != nil {
+			return err
+		}
+	}
 	for _, role := range s.nameless {
 		text := "the " + role + " cannot be asked who it is: that it is the one in the bench file is the operator's word"
 		if err := s.append(record.KindReservation, record.Reservation{Code: "identity_not_asked", Text: text}); err != nil {
